@@ -1,0 +1,1 @@
+"""What people touch: command line, web pages, drawing, workbook."""
