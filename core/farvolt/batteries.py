@@ -1,0 +1,94 @@
+"""Batteries by chemistry: rest voltage against state of charge, and a typical internal resistance.
+
+Tables: data `batteries/`, each row with its source. Ranges are taken at their middle and said to be typical.
+"""
+
+import csv
+from dataclasses import dataclass
+from functools import lru_cache
+
+from farvolt_data import ROOT
+
+from farvolt.plan import Battery
+
+ESTIMATED = "estimated from a table of typical values"
+
+
+@dataclass(frozen=True, slots=True)
+class BatteryModel:
+    """One battery as the network sees it: EMF behind a resistance, and where each figure comes from."""
+
+    emf_V: float
+    resistance_ohm: float
+    emf_source: str
+    resistance_source: str
+
+    @property
+    def resistance_is_estimated(self) -> bool:
+        """True when nothing in the plan states the resistance: never a basis for an interrupting rating."""
+        return self.resistance_source.startswith(ESTIMATED)
+
+
+@lru_cache
+def _rest_rows() -> dict[str, tuple[float, list[tuple[float, float]]]]:
+    table: dict[str, tuple[float, list[tuple[float, float]]]] = {}
+    with (ROOT / "batteries" / "rest_voltage.csv").open(newline="", encoding="utf-8") as file:
+        for row in csv.DictReader(file):
+            middle = (float(row["low_V_per_cell"]) + float(row["high_V_per_cell"])) / 2
+            nominal, points = table.setdefault(row["chemistry"], (float(row["cell_nominal_V"]), []))
+            points.append((float(row["charge_percent"]) / 100, middle))
+    return {name: (nominal, sorted(points)) for name, (nominal, points) in table.items()}
+
+
+@lru_cache
+def _resistance_rows() -> dict[str, float]:
+    with (ROOT / "batteries" / "resistance.csv").open(newline="", encoding="utf-8") as file:
+        return {
+            row["chemistry"]: (float(row["low_mohm_100Ah_12V"]) + float(row["high_mohm_100Ah_12V"])) / 2e3
+            for row in csv.DictReader(file)
+        }
+
+
+def cells(chemistry: str, nominal_V: float) -> int:
+    """Cells in series for a nominal voltage: 12 V lead-acid has 6, 12.8 V LFP has 4."""
+    return max(1, round(nominal_V / _rest_rows()[chemistry][0]))
+
+
+def rest_voltage_V(chemistry: str, charge: float, nominal_V: float) -> float:
+    """Rest voltage of a string at a state of charge 0..1, linear between the table's rows."""
+    points = _rest_rows()[chemistry][1]
+    charge = min(max(charge, points[0][0]), points[-1][0])
+    for (low, low_V), (high, high_V) in zip(points, points[1:], strict=False):
+        if charge <= high:
+            per_cell = low_V + (high_V - low_V) * (charge - low) / (high - low)
+            return per_cell * cells(chemistry, nominal_V)
+    return points[-1][1] * cells(chemistry, nominal_V)
+
+
+def typical_resistance_ohm(chemistry: str, capacity_Ah: float, nominal_V: float) -> float:
+    """Typical resistance of one string, from 100 Ah at 12 V scaled with voltage and inversely with capacity."""
+    return _resistance_rows()[chemistry] * (nominal_V / 12) * (100 / capacity_Ah)
+
+
+def model(battery: Battery, charge: float, nominal_V: float, emf_V: float | None = None) -> BatteryModel:
+    """The battery of `strings` equal strings in parallel at a state of charge 0..1; `emf_V` overrides its curve."""
+    nominal_V = battery.nominal.si if battery.nominal else nominal_V
+    stated = emf_V if emf_V is not None else battery.emf.si if battery.emf else None
+    if stated is not None:
+        emf, emf_source = stated, "stated in the plan"
+    else:
+        chemistry = battery.chemistry or ""
+        emf = rest_voltage_V(chemistry, charge, nominal_V)
+        emf_source = f"rest voltage of {chemistry} at {charge:.0%} of charge, typical"
+    resistance, source = _string_resistance(battery, nominal_V, emf)
+    return BatteryModel(emf, resistance / battery.strings, emf_source, source)
+
+
+def _string_resistance(battery: Battery, nominal_V: float, emf_V: float) -> tuple[float, str]:
+    if battery.resistance is not None:
+        return battery.resistance.si, "stated in the plan"
+    if battery.short_circuit is not None:
+        return emf_V / battery.short_circuit.si, "EMF over the maker's short-circuit current"
+    # The plan's own validation makes sure that chemistry and capacity are there.
+    chemistry, capacity = battery.chemistry or "", battery.capacity.si if battery.capacity else 100.0
+    return typical_resistance_ohm(chemistry, capacity, nominal_V), f"{ESTIMATED} ({chemistry}, from memory)"

@@ -1,0 +1,539 @@
+"""The plan: what the file says, validated field by field, immutable, and ignorant of solving.
+
+Each class is one table of format 1. What concerns several entries at once is in `integrity`; reading a file,
+lines and messages are in `planfile`. Quantities keep the text as written (`units.Quantity`).
+"""
+
+from functools import cached_property
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, WithJsonSchema, field_validator, model_validator
+from pydantic_core import PydanticCustomError
+
+from farvolt import conductors, units
+from farvolt.errors import QuantityError
+from farvolt.units import Quantity
+
+CHASSIS = "chassis"
+"""The reserved point of one node: the metal body used as a return."""
+
+FORMAT = 1
+NAME_LIMIT = 200
+
+
+def _custom(error: QuantityError) -> PydanticCustomError:
+    context = {"problem": error.problem, "accepted": error.accepted, "nearest": error.nearest}
+    return PydanticCustomError("quantity", "{problem}", context)
+
+
+def _reader(dimension: str, *, minimum: float | None = None, above: float | None = None, maximum: float | None = None) -> Any:
+    """A validator that reads a quantity and holds it to a range in base units."""
+
+    def read(value: Any) -> Quantity:
+        if isinstance(value, Quantity):
+            return value
+        example = units.EXAMPLES[dimension]
+        if not isinstance(value, str):
+            bare = isinstance(value, int | float) and not isinstance(value, bool)
+            first = next(iter(units.DIMENSIONS[dimension]))
+            raise _custom(
+                QuantityError(
+                    "a bare number has no unit" if bare else "is not a text with a number and a unit",
+                    accepted=f"a {dimension} in quotes such as {example}",
+                    nearest=f'"{value} {first}"' if bare else "",
+                )
+            )
+        try:
+            quantity = units.parse(value, dimension)
+        except QuantityError as error:
+            raise _custom(error) from None
+        limit = _broken_limit(quantity.si, minimum, above, maximum)
+        if limit:
+            raise _custom(QuantityError(limit, accepted=f"a {dimension} such as {example}"))
+        return quantity
+
+    return read
+
+
+def _broken_limit(value: float, minimum: float | None, above: float | None, maximum: float | None) -> str:
+    if above is not None and value <= above:
+        return "must be more than zero" if above == 0 else f"must be more than {above:g}"
+    if minimum is not None and value < minimum:
+        return "must not be negative" if minimum == 0 else f"must not be less than {minimum:g}"
+    if maximum is not None and value > maximum:
+        return f"must not be more than {maximum:g} (in base units)"
+    return ""
+
+
+def _schema(dimension: str) -> WithJsonSchema:
+    return WithJsonSchema({"type": "string", "description": f"a {dimension}, such as {units.EXAMPLES[dimension]}"})
+
+
+def _read_size(value: Any) -> conductors.Size | None:
+    if value is None or isinstance(value, conductors.Size):
+        return value
+    if not isinstance(value, str):
+        value = str(value)
+    if value.strip() == "free":
+        return None
+    try:
+        return conductors.parse_size(value)
+    except QuantityError as error:
+        raise _custom(error) from None
+
+
+def _read_name(value: Any) -> Any:
+    if isinstance(value, str):
+        if not value.strip():
+            raise _custom(QuantityError("is empty", accepted="a text"))
+        if len(value) > NAME_LIMIT:
+            raise _custom(QuantityError(f"is longer than {NAME_LIMIT} characters", accepted="a shorter text"))
+        if any(ord(character) < 32 for character in value):
+            raise _custom(QuantityError("holds a control character", accepted="a text on one line"))
+    return value
+
+
+Length = Annotated[Quantity, BeforeValidator(_reader("length", above=0, maximum=1e5)), _schema("length")]
+Distance = Annotated[Quantity, BeforeValidator(_reader("length", minimum=0, maximum=1e5)), _schema("length")]
+Power = Annotated[Quantity, BeforeValidator(_reader("power", minimum=0, maximum=1e7)), _schema("power")]
+Current = Annotated[Quantity, BeforeValidator(_reader("current", minimum=0, maximum=1e6)), _schema("current")]
+Rating = Annotated[Quantity, BeforeValidator(_reader("current", above=0, maximum=1e6)), _schema("current")]
+Voltage = Annotated[Quantity, BeforeValidator(_reader("voltage", above=0, maximum=1500)), _schema("voltage")]
+Resistance = Annotated[Quantity, BeforeValidator(_reader("resistance", above=0, maximum=1e9)), _schema("resistance")]
+AnyResistance = Annotated[Quantity, BeforeValidator(_reader("resistance", minimum=0, maximum=1e9)), _schema("resistance")]
+Charge = Annotated[Quantity, BeforeValidator(_reader("charge", above=0, maximum=1e7)), _schema("charge")]
+Share = Annotated[Quantity, BeforeValidator(_reader("share", minimum=0, maximum=1)), _schema("share")]
+Efficiency = Annotated[Quantity, BeforeValidator(_reader("share", above=0, maximum=1)), _schema("share")]
+Temperature = Annotated[
+    Quantity, BeforeValidator(_reader("temperature", minimum=-100, maximum=300)), _schema("temperature")
+]
+CableSize = Annotated[
+    conductors.Size | None,
+    BeforeValidator(_read_size),
+    WithJsonSchema({"type": "string", "description": 'a conductor size, such as "6 mm2", "10 AWG", "10 SAE", or "free"'}),
+]
+Name = Annotated[str, BeforeValidator(_read_name), Field(strict=True)]
+Text = Annotated[str, Field(strict=True, max_length=10_000)]
+Count = Annotated[int, Field(strict=True, ge=1, le=1000)]
+Flag = Annotated[bool, Field(strict=True)]
+Factor = Annotated[float, Field(ge=0, le=1000, allow_inf_nan=False)]
+Hours = Annotated[float, Field(ge=0, le=24, allow_inf_nan=False)]
+
+
+class Entry(BaseModel):
+    """Base of all tables: unknown fields are errors, values never change."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True, arbitrary_types_allowed=True)
+
+
+class PlanInfo(Entry):
+    """Table `plan`: what holds for the whole plan."""
+
+    name: Name = "Unnamed plan"
+    nominal: Voltage
+    rulebook: Name = "small-craft-iso"
+    reference: Name | None = None
+    conductor_temperature: Annotated[
+        Quantity | Literal["rulebook", "rated", "ambient", "estimated"],
+        BeforeValidator(lambda value: _read_conductor_temperature(value)),
+        WithJsonSchema({"type": "string", "description": 'rulebook | rated | ambient | estimated | such as "60 degC"'}),
+    ] = "rulebook"
+    ambient: Temperature = units.parse("30 degC", "temperature")
+    chassis_bond: Resistance = units.parse("1 mohm", "resistance")
+    notes: Text = ""
+
+
+def _read_conductor_temperature(value: Any) -> Any:
+    words = ("rulebook", "rated", "ambient", "estimated")
+    if value in words or isinstance(value, Quantity):
+        return value
+    accepted = f'{", ".join(words)}, or a temperature such as "60 degC"'
+    if not isinstance(value, str) or not value[:1].lstrip("+-").isdigit():
+        import difflib
+
+        close = difflib.get_close_matches(str(value), words, n=1)
+        raise _custom(QuantityError("is not a known choice", accepted=accepted, nearest=f'"{close[0]}"' if close else ""))
+    return _reader("temperature", minimum=-100, maximum=300)(value)
+
+
+class Zone(Entry):
+    """Table `zones`: a place with its own ambient temperature."""
+
+    ambient: Temperature
+    engine_space: Flag = False
+
+
+class Route(Entry):
+    """Table `routes`: a loom, conduit or channel that runs pass through."""
+
+    zone: Name | None = None
+    sheathed: Flag = False
+    conductors: Count | None = None
+    """Current-carrying conductors laid together, if not to be counted from the runs."""
+
+
+class Point(Entry):
+    """Table `points`: optional; says more about a place that runs name."""
+
+    name: Name
+    kind: Literal["busbar", "fuse block", "splice", "stud", "terminals", "battery"] = "terminals"
+    zone: Name | None = None
+    rating: Rating | None = None
+    stud: Name | None = None
+    resistance: AnyResistance | None = None
+    notes: Text = ""
+
+
+class LinkCable(Entry):
+    """The cable between parallel strings of a battery."""
+
+    length: Length
+    size: CableSize
+
+
+class Battery(Entry):
+    """A source of kind `battery`: EMF behind a resistance, in parallel strings."""
+
+    name: Name
+    kind: Literal["battery"]
+    at: Name
+    chemistry: Literal["flooded", "agm", "gel", "lfp", "nmc"] | None = None
+    nominal: Voltage | None = None
+    capacity: Charge | None = None
+    strings: Count = 1
+    take_off: Literal["ends", "same end", "bar"] = "ends"
+    link: LinkCable | None = None
+    charge: Share = units.parse("100 %", "share")
+    emf: Voltage | None = None
+    resistance: Resistance | None = None
+    short_circuit: Rating | None = None
+    max_discharge: Rating | None = None
+    max_charge: Rating | None = None
+    notes: Text = ""
+
+    @model_validator(mode="after")
+    def _can_be_modelled(self) -> "Battery":
+        if self.emf is None and self.chemistry is None:
+            raise _custom(QuantityError('needs "chemistry", or "emf"', accepted="flooded, agm, gel, lfp, nmc"))
+        if self.resistance is None and self.short_circuit is None and (self.chemistry is None or self.capacity is None):
+            problem = 'needs "resistance", or "short_circuit", or "chemistry" with "capacity" to estimate it from'
+            raise _custom(QuantityError(problem, accepted='such as resistance = "4 mohm"'))
+        return self
+
+
+class Charger(Entry):
+    """A source of kind `charger`: constant voltage, current-limited, one way (alternator, mains)."""
+
+    name: Name
+    kind: Literal["charger"]
+    at: Name
+    nominal: Voltage | None = None
+    volts: Voltage
+    amps: Rating
+    resistance: Resistance | None = None
+    """Droop of the output; 0.1 % of the voltage at rated current unless stated."""
+    self_limiting: Flag = False
+    notes: Text = ""
+
+
+class SolarArray(Entry):
+    """The modules behind a solar controller."""
+
+    at: Name
+    modules: Count = 1
+    series: Count = 1
+    voc: Voltage
+    isc: Rating
+    vmp: Voltage
+    imp: Rating
+
+
+class Solar(Entry):
+    """A source of kind `solar`: what the controller delivers, a power up to a voltage ceiling."""
+
+    name: Name
+    kind: Literal["solar"]
+    at: Name
+    nominal: Voltage | None = None
+    power: Power
+    ceiling: Voltage
+    amps: Rating | None = None
+    """Output limit of the controller; power over 40 % of nominal unless stated."""
+    array: SolarArray | None = None
+    notes: Text = ""
+
+
+class Converter(Entry):
+    """A source of kind `converter`: draws at one point and delivers at another."""
+
+    name: Name
+    kind: Literal["converter"]
+    from_point: Name = Field(alias="from")
+    at: Name
+    nominal: Voltage
+    volts: Voltage
+    amps: Rating
+    resistance: Resistance | None = None
+    efficiency: Efficiency
+    standby: Power = units.parse("0 W", "power")
+    isolated: Flag = False
+    return_bond: Resistance = units.parse("1 mohm", "resistance")
+    """Resistance that joins the two returns of a converter that is not isolated."""
+    notes: Text = ""
+
+
+Source = Annotated[Battery | Charger | Solar | Converter, Field(discriminator="kind")]
+
+
+class Protection(Entry):
+    """A fuse or breaker on a run, at one of its ends and in one of its poles."""
+
+    type: Name
+    rating: Rating
+    distance: Distance | None = None
+    """Along the conductor from that end of the run."""
+    end: Literal["from", "to"] = "from"
+    pole: Literal["feed", "return"] = "feed"
+    volts: Voltage | None = None
+    interrupting: Rating | None = None
+    resistance: AnyResistance | None = None
+
+
+class ReturnConductor(Entry):
+    """A return conductor that differs from the feed of its run."""
+
+    size: CableSize = None
+    length: Length | None = None
+
+
+class Run(Entry):
+    """A cable run between two points; `length` is one way."""
+
+    name: Name
+    label: Name | None = None
+    from_point: Name = Field(alias="from")
+    to_point: Name = Field(alias="to")
+    length: Length
+    size: CableSize = None
+    material: Literal["copper", "tinned copper", "aluminium", "copper-clad aluminium"] = "copper"
+    strand: Literal["flexible", "stranded", "solid"] | None = None
+    parallel: Count = 1
+    carries: Literal["both", "feed", "return"] | None = None
+    return_path: Literal["same", "chassis"] | ReturnConductor = Field(default="same", alias="return")
+    insulation: Temperature | None = None
+    zone: Name | None = None
+    route: Name | None = None
+    sheathed: Flag | None = None
+    bundled: Count | None = None
+    resistance: Resistance | None = None
+    resistance_temperature: Temperature = units.parse("20 degC", "temperature")
+    joints: Annotated[int, Field(strict=True, ge=0, le=1000)] = 0
+    joint_resistance: AnyResistance = units.parse("0.2 mohm", "resistance")
+    purpose: Literal["power", "cranking", "bond"] = "power"
+    protection: Protection | tuple[Protection, ...] | None = None
+    protection_to: Protection | None = None
+    colour: Name | None = None
+    notes: Text = ""
+
+    @field_validator("return_path", mode="before")
+    @classmethod
+    def _return_word(cls, value: Any) -> Any:
+        if isinstance(value, str) and value not in ("same", "chassis"):
+            accepted = '"same", "chassis", or a table such as { size = "10 mm2", length = "3 m" }'
+            raise _custom(QuantityError("is not a known choice", accepted=accepted))
+        return ReturnConductor.model_validate(value) if isinstance(value, dict) else value
+
+    @field_validator("protection", mode="before")
+    @classmethod
+    def _protection_shape(cls, value: Any) -> Any:
+        # Validating here, not through the union, keeps an error's place free of the branches that were tried.
+        if isinstance(value, dict):
+            return Protection.model_validate(value)
+        if isinstance(value, list | tuple):
+            return tuple(Protection.model_validate(one) for one in value)
+        if value is None or isinstance(value, Protection):
+            return value
+        accepted = '{ type = "blade", rating = "20 A", distance = "0.15 m" }'
+        raise _custom(QuantityError("is not a table", accepted=accepted))
+
+    @cached_property
+    def conducts(self) -> str:
+        """Which conductors the run has: "both", "feed" or "return"; a run to the chassis has a return only."""
+        if self.carries is not None:
+            return self.carries
+        return "return" if CHASSIS in (self.from_point, self.to_point) else "both"
+
+    @cached_property
+    def protections(self) -> tuple[Protection, ...]:
+        """All protection of the run, whichever way the file writes it."""
+        found = self.protection if isinstance(self.protection, tuple) else (self.protection,)
+        at_to = self.protection_to.model_copy(update={"end": "to"}) if self.protection_to else None
+        return tuple(one for one in (*found, at_to) if one is not None)
+
+
+class Device(Entry):
+    """What sits in line between two points; the pole it is not in passes straight through."""
+
+    name: Name
+    kind: Literal["switch", "selector", "relay", "shunt", "diode", "connector"]
+    from_point: Name = Field(alias="from")
+    to_point: Name = Field(alias="to")
+    pole: Literal["feed", "return", "both"] = "feed"
+    resistance: AnyResistance | None = None
+    drop: Voltage | None = None
+    """Forward drop of a diode."""
+    continuous: Rating | None = None
+    volts: Voltage | None = None
+    state: Literal["closed", "open"] = "closed"
+    notes: Text = ""
+
+
+class Surge(Entry):
+    """A short larger demand: exactly one of a current, a resistance or a multiple of the rated demand."""
+
+    current: Rating | None = None
+    resistance: Resistance | None = None
+    times: Annotated[float, Field(gt=0, le=1000, allow_inf_nan=False)] | None = None
+    seconds: Annotated[float, Field(gt=0, le=3600, allow_inf_nan=False)] | None = None
+
+    @model_validator(mode="after")
+    def _one_measure(self) -> "Surge":
+        if sum(value is not None for value in (self.current, self.resistance, self.times)) != 1:
+            raise _custom(QuantityError("needs exactly one of current, resistance, times", accepted='{ current = "18 A" }'))
+        return self
+
+
+class Load(Entry):
+    """What consumes at a point: rated by exactly one of power, current or resistance."""
+
+    name: Name
+    at: Name
+    power: Power | None = None
+    current: Current | None = None
+    resistance: Resistance | None = None
+    rated_volts: Voltage | None = None
+    behaves: Literal["power", "current", "resistance"] | None = None
+    drop_class: Name | None = Field(default=None, alias="class")
+    min_volts: Voltage | None = None
+    max_volts: Voltage | None = None
+    cut_out: Voltage | None = None
+    recovery: Voltage | None = None
+    surge: Surge | None = None
+    max_protection: Rating | None = None
+    continuous: Flag = False
+    hours_per_day: Hours | None = None
+    schedule: tuple[Annotated[str, Field(pattern=r"^\d{1,2}:\d{2}-\d{1,2}:\d{2}$")], ...] = ()
+    duty: Share | None = None
+    notes: Text = ""
+
+    @model_validator(mode="after")
+    def _one_rating(self) -> "Load":
+        given = [name for name in ("power", "current", "resistance") if getattr(self, name) is not None]
+        if len(given) != 1:
+            problem = f"has {len(given)} ratings ({', '.join(given)})" if given else "has no rating"
+            accepted = 'exactly one of power = "60 W", current = "5 A", resistance = "2.4 ohm"'
+            raise _custom(QuantityError(problem, accepted=accepted))
+        for low, high in (("min_volts", "max_volts"), ("cut_out", "recovery")):
+            below, above = getattr(self, low), getattr(self, high)
+            if below is not None and above is not None and below.si > above.si:
+                raise _custom(QuantityError(f"{low} is above {high}", accepted=f"{low} not above {high}"))
+        return self
+
+    @property
+    def rated_as(self) -> str:
+        """Which of "power", "current", "resistance" the load is rated by."""
+        return "power" if self.power is not None else "current" if self.current is not None else "resistance"
+
+
+class SourceState(Entry):
+    """A case's say on one source; a bare word in the file is its `state`."""
+
+    state: Literal["on", "off", "full"] = "on"
+    charge: Share | None = None
+    emf: Voltage | None = None
+    volts: Voltage | None = None
+    amps: Rating | None = None
+    irradiance: Share | None = None
+
+
+class Case(Entry):
+    """An operating condition to be checked."""
+
+    name: Name
+    ambient: Temperature | None = None
+    loads: Literal["all", "none"] | dict[str, Factor] = "all"
+    sources: dict[str, SourceState] = Field(default_factory=dict)
+    devices: dict[str, Literal["closed", "open"]] = Field(default_factory=dict)
+    notes: Text = ""
+
+    @field_validator("loads", mode="before")
+    @classmethod
+    def _loads_shape(cls, value: Any) -> Any:
+        if isinstance(value, str) and value not in ("all", "none"):
+            raise _custom(QuantityError("is not a known choice", accepted='"all", "none", or { "name of a load" = 1.0 }'))
+        return value
+
+    @field_validator("sources", mode="before")
+    @classmethod
+    def _bare_states(cls, value: Any) -> Any:
+        if not isinstance(value, dict):
+            return value
+        return {name: {"state": state} if isinstance(state, str) else state for name, state in value.items()}
+
+    def share(self, load: str) -> float:
+        """Share of its rating at which `load` is on."""
+        if isinstance(self.loads, dict):
+            return self.loads.get(load, 0.0)
+        return 1.0 if self.loads == "all" else 0.0
+
+
+class Plan(Entry):
+    """The document: everything in one file."""
+
+    format: Annotated[int, Field(strict=True)]
+    plan: PlanInfo
+    zones: dict[Name, Zone] = Field(default_factory=dict)
+    routes: dict[Name, Route] = Field(default_factory=dict)
+    points: tuple[Point, ...] = ()
+    sources: tuple[Source, ...] = ()
+    runs: tuple[Run, ...] = ()
+    devices: tuple[Device, ...] = ()
+    loads: tuple[Load, ...] = ()
+    cases: tuple[Case, ...] = ()
+
+    @cached_property
+    def checked_cases(self) -> tuple[Case, ...]:
+        """The cases to solve: the plan's own, or one with everything on."""
+        return self.cases or (Case(name="Everything on"),)
+
+    @cached_property
+    def point_names(self) -> tuple[str, ...]:
+        """All points, in order of first mention; the chassis is not among them."""
+        seen: dict[str, None] = {point.name: None for point in self.points}
+        for source in self.sources:
+            if isinstance(source, Converter):
+                seen[source.from_point] = None
+            seen[source.at] = None
+        for between in (*self.runs, *self.devices):
+            seen[between.from_point] = seen[between.to_point] = None
+        for load in self.loads:
+            seen[load.at] = None
+        seen.pop(CHASSIS, None)
+        return tuple(seen)
+
+    @cached_property
+    def reference(self) -> str | None:
+        """Name of the reference source of the main island: as stated, else the first battery, else the first source."""
+        batteries = [source.name for source in self.sources if source.kind == "battery"]
+        first = [source.name for source in self.sources if source.kind != "converter"]
+        return self.plan.reference or (batteries or first or [None])[0]
+
+    def ambient_degC(self, zone: str | None, case: Case | None = None) -> float:
+        """Ambient of a zone (None: the plan's own), or the case's where that replaces it."""
+        if case is not None and case.ambient is not None:
+            return case.ambient.si
+        return self.zones[zone].ambient.si if zone is not None else self.plan.ambient.si
+
+    def zone_of(self, run: Run) -> str | None:
+        """The zone of a run: its own, else that of its route."""
+        return run.zone or (self.routes[run.route].zone if run.route is not None else None)
