@@ -1,0 +1,211 @@
+"""Operating conditions: what each source, load and device does in one case, as arrays beside the network.
+
+Two laws cover every port. A source delivers clip((V − u)/r, lo, hi) at its voltage u, further held to a power p.
+A load draws P/u + I + G·u above its knee and, below it, what a resistance would that draws the same at the knee.
+A diode is a source law between its two nodes: it delivers at `to` when `from` stands more than the drop above.
+"""
+
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from farvolt import batteries
+from farvolt.network import DIODE_DROP_V, Floats, Ints, Network, device_ohm
+from farvolt.plan import Battery, Case, Charger, Converter, Load, Plan, Solar, Source, SourceState
+
+KNEE_SHARE = 0.4
+"""Below this share of the island's nominal voltage a constant-power or constant-current load is a resistance."""
+
+DROOP_SHARE = 1e-3
+"""Droop of a charger or converter at rated current, as a share of its voltage, unless its resistance is stated."""
+
+DIODE_LEAK_S = 1e-9
+"""What a blocking diode lets through, so that no part of a network floats."""
+
+
+@dataclass(frozen=True)
+class Operating:
+    """One case on a network. Sources come first in the source ports, then diodes; loads first in the load ports,
+    then the inputs of converters. Arrays are over ports unless said otherwise."""
+
+    case: Case
+    branch_on: np.ndarray
+    """Over branches: False where an open device breaks it."""
+    source_a: Ints
+    source_b: Ints
+    source_on: np.ndarray
+    volts: Floats
+    ohm: Floats
+    low: Floats
+    high: Floats
+    power: Floats
+    leak: Floats
+    load_a: Ints
+    load_b: Ints
+    load_W: Floats
+    load_A: Floats
+    load_S: Floats
+    knee: Floats
+    converters: tuple[tuple[int, int, float, float], ...]
+    """(source port, load port, efficiency, standby W) of each converter."""
+    nominal: Floats
+    """Nominal voltage of each source port's island."""
+    islands: "Islands" = field(repr=False)
+
+
+@dataclass(frozen=True)
+class Islands:
+    """The parts of a plan fed without passing a converter, with every device closed."""
+
+    of_node: Ints
+    nominal_V: dict[int, float]
+    """Nominal voltage by island number; the plan's where no source states another."""
+
+    def nominal(self, node: int) -> float:
+        """Nominal voltage at a node."""
+        return self.nominal_V[int(self.of_node[node])]
+
+
+def components(count: int, a: Ints, b: Ints) -> Ints:
+    """Connected parts of a graph of `count` nodes with edges (a, b): a part's number for each node."""
+    parent = list(range(count))
+
+    def root(node: int) -> int:
+        while parent[node] != node:
+            parent[node] = parent[parent[node]]
+            node = parent[node]
+        return node
+
+    for one, other in zip(a.tolist(), b.tolist(), strict=True):
+        parent[root(other)] = root(one)
+    return np.array([root(node) for node in range(count)], dtype=np.int64)
+
+
+def islands(network: Network) -> Islands:
+    """The islands of a plan and the nominal voltage of each."""
+    plan = network.plan
+    feed = network.pole == 0
+    a, b = [network.a[feed]], [network.b[feed]]
+    for _, start, end in network.diodes:
+        a.append(np.array([start]))
+        b.append(np.array([end]))
+    part = components(network.node_count, np.concatenate(a), np.concatenate(b))
+    nominal = {int(number): plan.plan.nominal.si for number in np.unique(part)}
+    for source in sorted(plan.sources, key=lambda one: one.name != plan.reference, reverse=True):
+        if source.nominal is not None and not isinstance(source, Battery):
+            nominal[int(part[network.feed(source.at)])] = source.nominal.si
+    reference = next((source for source in plan.sources if source.name == plan.reference), None)
+    if reference is not None:
+        nominal[int(part[network.feed(reference.at)])] = plan.plan.nominal.si
+    return Islands(part, nominal)
+
+
+def operating(network: Network, case: Case, found: Islands | None = None) -> Operating:
+    """The arrays of one case."""
+    found = found or islands(network)
+    plan = network.plan
+    laws = [_source_law(plan, source, case, found.nominal(network.feed(source.at))) for source in plan.sources]
+    laws += [_diode_law(plan, index) for index, _, _ in network.diodes]
+    at = [network.feed(source.at) for source in plan.sources] + [end for _, _, end in network.diodes]
+    back = [network.ret(source.at) for source in plan.sources] + [start for _, start, _ in network.diodes]
+    draws = [_load_law(load, case, found.nominal(network.feed(load.at))) for load in plan.loads]
+    load_a = [network.feed(load.at) for load in plan.loads]
+    load_b = [network.ret(load.at) for load in plan.loads]
+    knee = [KNEE_SHARE * found.nominal(node) for node in load_a]
+    converters = []
+    for port, source in enumerate(plan.sources):
+        if isinstance(source, Converter):
+            converters.append((port, len(load_a), source.efficiency.si, source.standby.si if laws[port][0] else 0.0))
+            node = network.feed(source.from_point)
+            load_a.append(node)
+            load_b.append(network.ret(source.from_point))
+            knee.append(KNEE_SHARE * found.nominal(node))
+            draws.append((0.0, 0.0, 0.0))
+    columns = np.array(laws, dtype=float).reshape(len(laws), 7).T
+    load_columns = np.array(draws, dtype=float).reshape(len(draws), 3).T
+    return Operating(
+        case=case,
+        branch_on=_branches_on(network, case),
+        source_a=np.array(at, dtype=np.int64),
+        source_b=np.array(back, dtype=np.int64),
+        source_on=columns[0].astype(bool),
+        volts=columns[1],
+        ohm=columns[2],
+        low=columns[3],
+        high=columns[4],
+        power=columns[5],
+        leak=columns[6],
+        load_a=np.array(load_a, dtype=np.int64),
+        load_b=np.array(load_b, dtype=np.int64),
+        load_W=load_columns[0],
+        load_A=load_columns[1],
+        load_S=load_columns[2],
+        knee=np.array(knee, dtype=float),
+        converters=tuple(converters),
+        nominal=np.array([found.nominal(node) for node in at], dtype=float),
+        islands=found,
+    )
+
+
+def device_closed(plan: Plan, index: int, case: Case) -> bool:
+    """Whether a device conducts in a case."""
+    device = plan.devices[index]
+    return case.devices.get(device.name, device.state) == "closed"
+
+
+def _branches_on(network: Network, case: Case) -> np.ndarray:
+    closed = np.array([device_closed(network.plan, index, case) for index in range(len(network.plan.devices))] + [True])
+    return closed[network.device]
+
+
+Law = tuple[float, float, float, float, float, float, float]
+"""on, V, r, lo, hi, power, leak."""
+
+
+def _source_law(plan: Plan, source: Source, case: Case, nominal_V: float) -> Law:
+    state = case.sources.get(source.name, SourceState())
+    on = float(state.state != "off")
+    inf = float("inf")
+    if isinstance(source, Battery):
+        charge = 1.0 if state.state == "full" else state.charge.si if state.charge else source.charge.si
+        model = batteries.model(source, charge, nominal_V, state.emf.si if state.emf else None)
+        # A full battery takes no current: it stands at whatever voltage the chargers hold, and helps below its EMF.
+        return on, model.emf_V, model.resistance_ohm, 0.0 if state.state == "full" else -inf, inf, inf, 0.0
+    if isinstance(source, Solar):
+        power = source.power.si * (state.irradiance.si if state.irradiance else 1.0)
+        volts = state.volts.si if state.volts else source.ceiling.si
+        amps = source.amps.si if source.amps else source.power.si / (KNEE_SHARE * nominal_V)
+        return on, volts, DROOP_SHARE * volts / max(amps, 1e-9), 0.0, amps, power, 0.0
+    volts = state.volts.si if state.volts else source.volts.si
+    amps = state.amps.si if state.amps else source.amps.si
+    ohm = source.resistance.si if source.resistance else DROOP_SHARE * volts / amps
+    return on, volts, ohm, 0.0, amps, inf, 0.0
+
+
+def _diode_law(plan: Plan, index: int) -> Law:
+    device = plan.devices[index]
+    drop = device.drop.si if device.drop else DIODE_DROP_V
+    return 1.0, -drop, max(device_ohm(device), 1e-6), 0.0, float("inf"), float("inf"), DIODE_LEAK_S
+
+
+def rated(load: Load, nominal_V: float) -> tuple[float, float, float]:
+    """Constant power W, constant current A and conductance S of a load at its full share, by how it behaves."""
+    volts = load.rated_volts.si if load.rated_volts else nominal_V
+    if load.power is not None:
+        watts = load.power.si
+    elif load.current is not None:
+        watts = load.current.si * volts
+    else:
+        assert load.resistance is not None
+        watts = volts**2 / load.resistance.si
+    behaves = load.behaves or load.rated_as
+    return {"power": (watts, 0.0, 0.0), "current": (0.0, watts / volts, 0.0)}.get(behaves, (0.0, 0.0, watts / volts**2))
+
+
+def _load_law(load: Load, case: Case, nominal_V: float) -> tuple[float, float, float]:
+    share = case.share(load.name)
+    watts, amps, siemens = rated(load, nominal_V)
+    return share * watts, share * amps, share * siemens
+
+
+__all__ = ["Charger", "Islands", "Operating", "components", "device_closed", "islands", "operating", "rated"]
