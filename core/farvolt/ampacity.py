@@ -102,8 +102,8 @@ def conductor_temperature_degC(  # noqa: N802 - the name carries the unit
 ) -> float:
     """Conductor temperature in °C: Ta + (Tc − Ta) · (I / Iz)², the rise going with the square of the current.
 
-    `ampacity_A` is that at the same ambient: carrying it, the conductor reaches its insulation's rating. For a
-    loaded conductor without any ampacity the answer is infinity.
+    `ampacity_A` is that at the same ambient: with it the conductor reaches its insulation's rating. A loaded
+    conductor without any ampacity gives infinity.
     """
     if current_A == 0:
         return ambient_degC
