@@ -390,7 +390,7 @@ def test_every_protection_type_is_complete(name: str) -> None:
     assert kind.interrupting_at(kind.volts) == kind.interrupting_A
     assert kind.interrupting_at(kind.volts + 1) is None
     # Common practice: a fuse or breaker drops some tens to hundreds of millivolts at its rating.
-    assert 0.03 < resistance_ohm(kind, 20) * 20 < 0.3
+    assert 0.03 < resistance_ohm(name, 20) * 20 < 0.3
 
 
 def test_interrupting_falls_as_the_system_voltage_rises() -> None:

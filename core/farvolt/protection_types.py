@@ -49,9 +49,9 @@ def protection_type(name: str) -> ProtectionType:
     return found
 
 
-def resistance_ohm(kind: ProtectionType, rating_A: float) -> float:
-    """Resistance in ohm of one protection, from the typical drop at its rated current: R = U / I."""
-    return kind.drop_at_rating_mV / 1000 / rating_A
+def resistance_ohm(name: str, rating_A: float) -> float:
+    """Resistance in ohm of one protection of a type, from the typical drop at its rated current: R = U / I."""
+    return protection_type(name).drop_at_rating_mV / 1000 / rating_A
 
 
 @lru_cache(maxsize=1)
