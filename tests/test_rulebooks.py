@@ -317,6 +317,9 @@ START = 'starts_from = "small-craft-us"\n'
         ('[refused]\nmaterials = ["steel"]', 'refused, materials: "steel" is not known'),
         ('[missing]\nambience = "?"', "missing, ambience: unknown field; did you mean ambient?"),
         ("title = ", "own.toml: not a TOML file in UTF-8"),
+        ("[drop_basis]\ntemperature_degC = 1" + "0" * 400, "drop_basis, temperature_degC: must lie from -50"),
+        ('"a\\nb" = 1', "a?b: unknown field"),
+        ("title = [" + "1, " * 99 + "]", "1, 1, 1, 1,...)"),
     ],
 )
 def test_a_faulty_rulebook_says_where_and_what_is_accepted(tmp_path: Path, text: str, message: str) -> None:
@@ -345,6 +348,10 @@ HEAD = "size,insulation_degC,ampacity_A,source,status\n"
         (HEAD + "7 mm2,105,50,x,computed\n", '"7 mm2": no table knows 7 mm2'),
         (HEAD + "6 mm2,105,50,,computed\n", "every row of the table needs its source"),
         (HEAD + "6 mm2,105,50,x,guessed\n", 'mine.csv, line 2: status "guessed" is none of'),
+        (
+            HEAD + "6 mm2,105,50,x,computed\n6mm²,105,60,x,computed\n",
+            "6 mm2 at 105 degC insulation is listed twice",
+        ),
         (HEAD + "6 mm2,105\n", "line 2: the row does not have one value per column"),
         ("size,amps\n6 mm2,50\n", "the table has no column insulation_degC"),
         (None, "ampacity 1, file: no such file beside the rulebook or among the shipped tables"),
@@ -366,6 +373,8 @@ def test_a_table_is_never_fetched_from_another_folder(tmp_path: Path) -> None:
 def test_a_file_that_cannot_be_read_is_named(tmp_path: Path) -> None:
     with pytest.raises(RulebookError, match=r"gone\.toml: the rulebook cannot be read"):
         load("gone.toml", tmp_path)
+    with pytest.raises(RulebookError):
+        load("\0.toml", tmp_path)
     (tmp_path / "binary.toml").write_bytes(b"\xff\xfe\x00")
     with pytest.raises(RulebookError, match=r"binary\.toml: not a TOML file in UTF-8"):
         load("binary.toml", tmp_path)

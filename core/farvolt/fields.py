@@ -5,7 +5,6 @@ Every fault is raised as one sentence that names the table, the field, the value
 
 import difflib
 import itertools
-import math
 from collections.abc import Callable, Sequence
 
 Raise = Callable[[str], Exception]
@@ -26,8 +25,10 @@ class Fields:
     def fail(self, key: str, problem: str) -> Exception:
         """The exception for a fault of one field."""
         where = f"{self.place}, {key}" if self.place else key
-        given = f" (given: {self._values[key]!r})" if key in self._values else ""
-        return self.fault(f"{where}: {problem}{given}")
+        given = f" (given: {_short(repr(self._values[key]))})" if key in self._values else ""
+        sentence = f"{where}: {problem}{given}"
+        # A quoted key may hold line ends and worse; the message stays one line of plain text.
+        return self.fault("".join(c if c.isprintable() else "?" for c in sentence))
 
     def text(self, key: str, default: str | None = None) -> str:
         """A text that is not empty, unless the default is taken."""
@@ -127,7 +128,7 @@ class Fields:
     def _checked(self, key: str, value: object, low: float, high: float) -> float:
         if isinstance(value, bool) or not isinstance(value, (int, float)):
             raise self.fail(key, f"must be a number from {low:g} to {high:g}")
-        if math.isnan(value) or not low <= value <= high:
+        if not low <= value <= high:  # true of NaN as well
             raise self.fail(key, f"must lie from {low:g} to {high:g}")
         return float(value)
 
@@ -142,3 +143,7 @@ class Fields:
         if not isinstance(value, dict):
             raise self.fail(key, "must be a table")
         return Fields(value, f"{self.place}.{name}" if self.place else name, self.fault)
+
+
+def _short(text: str) -> str:
+    return text if len(text) <= 60 else text[:57] + "..."

@@ -50,7 +50,7 @@ def protection_type(name: str) -> ProtectionType:
 
 
 def resistance_ohm(name: str, rating_A: float) -> float:
-    """Resistance in ohm of one protection of a type, from the typical drop at its rated current: R = U / I."""
+    """Resistance in ohm of one protection, from its type's typical drop at rated current: R = U / I."""
     return protection_type(name).drop_at_rating_mV / 1000 / rating_A
 
 

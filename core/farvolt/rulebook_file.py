@@ -66,7 +66,7 @@ def _toml(path: Path) -> dict[str, object]:
         return tomllib.loads(path.read_text(encoding="utf-8"))
     except OSError as error:
         raise RulebookError(f"{path.name}: the rulebook cannot be read ({error.strerror})") from error
-    except (UnicodeDecodeError, tomllib.TOMLDecodeError) as error:
+    except ValueError as error:  # wrong TOML, wrong UTF-8, or a path that no file system has
         raise RulebookError(f"{path.name}: not a TOML file in UTF-8 ({error})") from error
     except RecursionError as error:
         raise RulebookError(f"{path.name}: tables are nested too deep") from error
@@ -233,7 +233,9 @@ def _ampacity(fields: Fields, find: Find) -> AmpacityTable:
     for row in find(fields, "file"):
         size = _size(fields, "file", row.get("size", ""))
         insulation = _value(fields, row, "insulation_degC", 40, _HOTTEST_DEGC)
-        cells.setdefault(size, {})[insulation] = _cell(fields, row, "ampacity_A", _MOST_AMPS)
+        if insulation in cells.setdefault(size, {}):
+            raise fields.fail("file", f"{size.name} at {insulation:g} degC insulation is listed twice")
+        cells[size][insulation] = _cell(fields, row, "ampacity_A", _MOST_AMPS)
     insulations = sorted({insulation for row in cells.values() for insulation in row})
     rows = sorted(cells.items(), key=lambda item: item[0].area_mm2)
     materials = fields.choices("materials", MATERIALS)
