@@ -88,7 +88,7 @@ def _read_name(value: Any) -> Any:
             raise _custom(QuantityError("is empty", accepted="a text"))
         if len(value) > NAME_LIMIT:
             raise _custom(QuantityError(f"is longer than {NAME_LIMIT} characters", accepted="a shorter text"))
-        if any(ord(character) < 32 for character in value):
+        if any(ord(character) < 32 or 127 <= ord(character) < 160 for character in value):
             raise _custom(QuantityError("holds a control character", accepted="a text on one line"))
     return value
 

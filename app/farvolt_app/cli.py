@@ -1,0 +1,183 @@
+"""The command line: arguments to the library, results to standard output, everything else to standard error.
+
+Heavy libraries are imported by the commands that need them, so that each command answers quickly.
+"""
+
+import json
+import sys
+from collections.abc import Iterator
+from contextlib import contextmanager
+from pathlib import Path
+
+import click
+
+from farvolt import __version__
+from farvolt.errors import FarvoltError
+
+FAILS, BAD_INPUT = 1, 2
+"""Exit codes beside 0: a limit is broken; the input cannot be used."""
+
+
+class _Commands(click.Group):
+    """Turns the library's errors into one message and exit code 2."""
+
+    def invoke(self, ctx: click.Context) -> object:
+        try:
+            return super().invoke(ctx)
+        except FarvoltError as error:
+            click.echo(str(error), err=True)
+            ctx.exit(BAD_INPUT)
+        except BrokenPipeError:
+            # The reader of our output has gone (`farvolt check … | head`): that is no fault.
+            sys.stderr.close()
+            ctx.exit(0)
+
+
+@click.group(cls=_Commands, invoke_without_command=True, context_settings={"help_option_names": ["-h", "--help"]})
+@click.version_option(__version__, prog_name="farvolt")
+@click.pass_context
+def main(ctx: click.Context) -> None:
+    """Plan low-voltage DC wiring (12, 24, 48 V): every voltage, every limit, and the cable schedule to buy from.
+
+    \b
+    Start here:
+      farvolt                          open the web pages on an example plan
+      farvolt new my-van.toml          write a commented plan to start from
+      farvolt check my-van.toml        solve it and hold it against its rulebook
+      farvolt schedule my-van.toml -o cables.xlsx
+
+    A plan is one text file; PLAN may be - for standard input. Exit codes: 0 nothing fails, 1 something fails a
+    check, 2 the input cannot be used. Figures are for planning: check local codes and have the work inspected.
+    """
+    if ctx.invoked_subcommand is None:
+        ctx.invoke(open_pages, plan=None)
+
+
+@main.command("open")
+@click.argument("plan", required=False)
+@click.option("--port", type=click.IntRange(1, 65535), help="Port of the pages; a free one unless given.")
+@click.option("--address", default="127.0.0.1", show_default=True, help="Address to listen on; this machine only unless changed.")
+@click.option("--browser/--no-browser", default=True, help="Open the pages in the browser (default) or only say their address.")
+def open_pages(plan: str | None, port: int | None = None, address: str = "127.0.0.1", browser: bool = True) -> None:
+    """Open the web pages on PLAN, or on an example plan; end with Ctrl+C."""
+    from farvolt_app import server
+
+    if plan is not None:
+        from farvolt import planfile
+
+        planfile.read_text(Path(plan))
+    sys.exit(server.serve(Path(plan) if plan else None, port=port, address=address, open_browser=browser))
+
+
+@main.command()
+@click.argument("plan")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object for machines.")
+@click.option("--case", "case_name", help="Show every number of this case instead of the worst of each.")
+@click.option("--working/--no-working", default=False, help="Show the working of each finding: formula, numbers, result.")
+def check(plan: str, as_json: bool, case_name: str | None, working: bool) -> None:
+    """Solve PLAN in all its cases and check it: voltages, drops, ampacity, protection, slips.
+
+    Prints the findings, then the worst voltage of each load and the largest current of each run. The exit code is
+    1 when anything fails.
+    """
+    from farvolt import planfile
+    from farvolt.study import study
+
+    read = planfile.read(plan)
+    with _progress("Solving and checking"):
+        found = study(read.plan, read.folder)
+    if as_json:
+        from farvolt.output import as_object
+
+        click.echo(json.dumps(as_object(found), ensure_ascii=False, allow_nan=False))
+    else:
+        from farvolt_app import report_text
+
+        report_text.show(found, case_name, working)
+    sys.exit(FAILS if found.failing else 0)
+
+
+@main.command()
+@click.argument("plan")
+@click.option("--output", "-o", required=True, help="File to write: .xlsx or .csv; - writes CSV to standard output.")
+def schedule(plan: str, output: str) -> None:
+    """Write the cable schedule of PLAN: cables, loads, protection, shopping totals, findings.
+
+    The workbook is live: change a length in it and the drop changes.
+    """
+    from farvolt import planfile
+    from farvolt.errors import SaveError
+    from farvolt.study import study
+
+    suffix = Path(output).suffix.lower()
+    if output != planfile.STDIN and suffix not in (".xlsx", ".csv"):
+        raise click.BadParameter(f'"{suffix or output}" is not written; accepted: .xlsx, .csv', param_hint="--output")
+    read = planfile.read(plan)
+    with _progress("Solving and checking"):
+        found = study(read.plan, read.folder)
+    from farvolt_app import schedule as rows
+    from farvolt_app import workbook
+
+    if output == planfile.STDIN:
+        click.echo(rows.to_csv(found), nl=False)
+        return
+    data = workbook.to_bytes(found) if suffix == ".xlsx" else rows.to_csv(found).encode("utf-8-sig")
+    try:
+        planfile.write_whole(Path(output), data)
+    except OSError as error:
+        raise SaveError(f"{output}: cannot be written ({error.strerror})") from None
+    click.echo(f"Wrote {output}", err=True)
+
+
+@main.command()
+@click.argument("file")
+def new(file: str) -> None:
+    """Write a commented starter plan to FILE; - writes it to standard output."""
+    from farvolt import examples, planfile
+
+    if file == planfile.STDIN:
+        click.echo(examples.starter_text(), nl=False)
+        return
+    planfile.save(Path(file), examples.starter_text(), expected=None)
+    click.echo(f"Wrote {file}. Next: farvolt check {file}", err=True)
+
+
+@main.command("examples")
+@click.argument("name", required=False)
+@click.option("--output", "-o", help="File to copy the example to; NAME.toml in this folder unless given.")
+def list_examples(name: str | None, output: str | None) -> None:
+    """List the example plans, or copy the one called NAME. All are invented."""
+    from farvolt import examples, planfile
+
+    if name is None:
+        for one in examples.names():
+            click.echo(f"{one:30}{examples.title(one)}")
+        click.echo("Copy one with: farvolt examples NAME", err=True)
+        return
+    text = examples.text(name)
+    if output == planfile.STDIN:
+        click.echo(text, nl=False)
+        return
+    path = Path(output or f"{name}.toml")
+    planfile.save(path, text, expected=None)
+    click.echo(f"Wrote {path}. Next: farvolt check {path}", err=True)
+
+
+@main.command()
+def schema() -> None:
+    """Print the JSON Schema of the plan format, for editors that check a file while it is typed."""
+    from farvolt.schema import json_schema
+
+    click.echo(json.dumps(json_schema(), indent=2, ensure_ascii=False))
+
+
+@contextmanager
+def _progress(what: str) -> Iterator[None]:
+    """Show on a terminal that work goes on; silent elsewhere."""
+    if not sys.stderr.isatty():
+        yield
+        return
+    from rich.console import Console
+
+    with Console(stderr=True).status(f"{what} …"):
+        yield

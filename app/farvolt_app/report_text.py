@@ -1,0 +1,149 @@
+"""A study as readable tables on a terminal. Text from the plan is shown as text, never as markup."""
+
+from collections.abc import Iterable
+
+from rich.console import Console
+from rich.table import Table
+from rich.text import Text
+
+from farvolt.conductors import other_system
+from farvolt.errors import FarvoltError
+from farvolt.integrity import nearest
+from farvolt.results import CaseResult, Finding, Study
+from farvolt.units import both_lengths, number
+
+_MARKS = {"fail": "FAIL", "warn": "warn", "note": "note"}
+_STYLES = {"fail": "bold red", "warn": "yellow", "note": "dim"}
+CAUTION = "For planning only: check local codes, have the work inspected, and leave to licensed people what the law reserves to them."
+
+
+def show(study: Study, case_name: str | None, working: bool) -> None:
+    """Print a study: its findings, then the worst of every case, or all of one case."""
+    console = Console(highlight=False, soft_wrap=False)
+    plan = study.plan.plan
+    console.print(Text(plan.name, style="bold"))
+    console.print(Text(f"{plan.nominal}, rulebook {study.rulebook.name}: {study.rulebook.title} ({study.rulebook.edition})"))
+    _findings(console, study.findings, working)
+    if case_name is None:
+        _cases(console, study.cases)
+        _loads(console, study)
+        _runs(console, study)
+    else:
+        _one_case(console, study, _named(study, case_name))
+    if study.assumptions:
+        console.print(Text("\nTaken as given", style="bold"))
+        for line in study.assumptions:
+            console.print(Text(f"- {line}"))
+    counts = {severity: sum(one.severity == severity for one in study.findings) for severity in _MARKS}
+    console.print(Text(f"\n{counts['fail']} failing, {counts['warn']} doubtful, {counts['note']} noted. {CAUTION}"))
+
+
+def _named(study: Study, name: str) -> CaseResult:
+    known = [case.name for case in study.cases]
+    if name not in known:
+        close = nearest(name, known)
+        hint = f"; did you mean {close}?" if close else ""
+        raise FarvoltError(f'there is no case "{name}"; accepted: {", ".join(known)}{hint}')
+    return study.cases[known.index(name)]
+
+
+def _table(console: Console, title: str, columns: Iterable[tuple[str, bool]], rows: Iterable[Iterable[str]]) -> None:
+    table = Table(title=Text(title, style="bold"), title_justify="left", box=None, pad_edge=False, padding=(0, 2, 0, 0))
+    for name, right in columns:
+        table.add_column(Text(name), justify="right" if right else "left", overflow="fold")
+    for row in rows:
+        table.add_row(*(Text(cell) for cell in row))
+    console.print()
+    console.print(table)
+
+
+def _findings(console: Console, findings: tuple[Finding, ...], working: bool) -> None:
+    console.print(Text("\nFindings", style="bold"))
+    if not findings:
+        console.print(Text("Nothing found by the checks that were made."))
+    for one in findings:
+        head = Text(f"{_MARKS[one.severity]:5}", style=_STYLES[one.severity])
+        head.append(f"{one.rule}  ", style="bold")
+        head.append(one.message + (f'  [case "{one.case}"]' if one.case else ""), style="default not bold")
+        console.print(head)
+        for line in one.working if working else ():
+            console.print(Text(f"       {line}"))
+        if one.remedy:
+            console.print(Text(f"       Remedy: {one.remedy}"))
+        if working or one.severity == "fail":
+            console.print(Text(f"       Basis: {one.basis}", style="dim"))
+
+
+def _cases(console: Console, cases: tuple[CaseResult, ...]) -> None:
+    columns = (("Case", False), ("Solved", False), ("Sources W", True), ("Loads W", True), ("Lost W", True), ("Imbalance A", True))
+    rows = [
+        (
+            case.name,
+            "yes" if case.solved else f"gives way at {number(100 * case.share_held)} % of its loads",
+            *(_value(one if case.solved else None, 4) for one in (case.power_in_W, case.power_loads_W, case.power_lost_W)),
+            f"{case.imbalance_A:.0e}",
+        )
+        for case in cases
+    ]
+    _table(console, "Cases", columns, rows)
+
+
+def _loads(console: Console, study: Study) -> None:
+    rows = []
+    for index, load in enumerate(study.plan.loads):
+        found = [(case.name, case.loads[index]) for case in study.cases if case.loads[index].volts is not None]
+        on = [(name, one) for name, one in found if one.amps]
+        if not on:
+            rows.append((load.name, load.at, "", "", "", "not on, or not fed, in any case"))
+            continue
+        name, worst = max(on, key=lambda pair: pair[1].drop_percent or 0.0)
+        rows.append(
+            (load.name, load.at, _value(worst.volts, 4), _value(worst.amps), _value(worst.drop_percent), name)
+        )
+    columns = (("Load", False), ("at", False), ("volts", True), ("amps", True), ("drop %", True), ("in case", False))
+    _table(console, "Loads, in the case with the largest drop", columns, rows)
+
+
+def _runs(console: Console, study: Study) -> None:
+    rows = []
+    for index, run in enumerate(study.plan.runs):
+        results = [case.runs[index] for case in study.cases]
+        currents = [max(abs(one.feed_A or 0.0), abs(one.return_A or 0.0)) for one in results]
+        worst = results[currents.index(max(currents))]
+        rows.append((
+            run.label or "", run.name, run.from_point, run.to_point, both_lengths(run.length.si), _size(run.size),
+            _value(max(currents)), _value(worst.ampacity_A), _value(worst.drop_V),
+        ))  # fmt: skip
+    columns = (
+        ("Label", False), ("Run", False), ("from", False), ("to", False), ("length", False), ("size", False),
+        ("amps", True), ("ampacity", True), ("drop V", True),
+    )  # fmt: skip
+    _table(console, "Runs, with their largest current", columns, rows)
+
+
+def _size(size: object) -> str:
+    from farvolt.conductors import Size
+
+    return f"{size.name} (~{other_system(size).name})" if isinstance(size, Size) else "to be chosen"
+
+
+def _one_case(console: Console, study: Study, case: CaseResult) -> None:
+    _cases(console, (case,))
+    columns = (("Point", False), ("feed V", True), ("return V", True), ("volts", True))
+    _table(console, "Points", columns, [(p.name, _value(p.feed_V, 5), _value(p.return_V, 5), _value(p.volts, 5)) for p in case.points])
+    columns = (("Source", False), ("volts", True), ("amps", True), ("watts", True))
+    _table(console, "Sources", columns, [(s.name, _value(s.volts, 5), _value(s.amps, 4), _value(s.watts, 4)) for s in case.sources])
+    run_columns = (("Run", False), ("feed A", True), ("return A", True), ("drop V", True), ("loss W", True), ("°C", True), ("ampacity A", True))
+    _table(console, "Runs", run_columns, [
+        (r.name, _value(r.feed_A, 4), _value(r.return_A, 4), _value(r.drop_V, 4), _value(r.loss_W), _value(r.conductor_degC), _value(r.ampacity_A))
+        for r in case.runs
+    ])  # fmt: skip
+    load_columns = (("Load", False), ("volts", True), ("amps", True), ("watts", True), ("drop V", True), ("drop %", True))
+    _table(console, "Loads", load_columns, [
+        (one.name, _value(one.volts, 5), _value(one.amps, 4), _value(one.watts, 4), _value(one.drop_V, 4), _value(one.drop_percent))
+        for one in case.loads
+    ])  # fmt: skip
+
+
+def _value(value: float | None, digits: int = 3) -> str:
+    return "-" if value is None else number(value, digits)

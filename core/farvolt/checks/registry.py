@@ -1,0 +1,38 @@
+"""Where a check says its rule, its title and what it reads of the rulebook."""
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+
+from farvolt.context import Context
+from farvolt.results import Finding
+
+Function = Callable[[Context], Iterator[Finding]]
+
+
+@dataclass(frozen=True, slots=True)
+class Check:
+    """A registered check."""
+
+    rules: tuple[str, ...]
+    title: str
+    reads: tuple[str, ...]
+    """Entries of the rulebook that the check needs."""
+    run: Function
+
+
+_CHECKS: dict[str, Check] = {}
+
+
+def check(*rules: str, title: str, reads: tuple[str, ...] = ()) -> Callable[[Function], Function]:
+    """Register a check that reports under `rules`."""
+
+    def register(function: Function) -> Function:
+        _CHECKS[f"{function.__module__}.{function.__name__}"] = Check(rules, title, reads, function)
+        return function
+
+    return register
+
+
+def registered() -> tuple[Check, ...]:
+    """All checks registered so far."""
+    return tuple(_CHECKS.values())

@@ -1,0 +1,148 @@
+"""How the plan hangs together: what is not fed, what has no return, what looks like a slip of the pen."""
+
+import difflib
+from collections.abc import Iterator
+
+from farvolt.checks.registry import check
+from farvolt.context import Context, label
+from farvolt.network import FEED, RETURN
+from farvolt.plan import CHASSIS, Entry, Run
+from farvolt.results import Finding, Kind, Severity
+
+_BASIS = "common practice: every load has a way from a source and a way back"
+_SLIP = "common practice: a name used once is often a slip of the pen"
+
+
+def _finding(
+    rule: str, severity: Severity, subject: str, kind: Kind, message: str, basis: str, remedy: str | None = None,
+    case: str | None = None, working: tuple[str, ...] = (),
+) -> Finding:  # fmt: skip
+    return Finding(rule, severity, subject, kind, case, None, None, None, message, basis, working, remedy)
+
+
+@check("plan.unfed", "plan.no-return", title="Loads without a source, and loads without a way back")
+def unfed(context: Context) -> Iterator[Finding]:
+    """Each load that is on in a case and not fed there, or whose return does not lead back; said once, in its first case."""
+    told: set[tuple[str, str]] = set()
+    for one in context.cases:
+        supply, condition = one.solutions["plan"].supply, one.solutions["plan"].condition
+        for index, load in enumerate(context.plan.loads):
+            if supply.load_on[index] or one.case.share(load.name) == 0:
+                continue
+            fed = bool(supply.live[condition.load_a[index]])
+            rule = "plan.no-return" if fed else "plan.unfed"
+            if (rule, load.name) in told:
+                continue
+            told.add((rule, load.name))
+            if fed:
+                message = f'"{load.name}" at "{load.at}" is fed but its return leads back to no source'
+                remedy = 'a run that carries the return, or return = "chassis" with the source bonded to it'
+            else:
+                message = f'"{load.name}" at "{load.at}" is not fed: {_why_unfed(context, load.at)}'
+                remedy = f'a run to "{load.at}" that carries the feed, or a closed switch, or a working source'
+            yield _finding(rule, "fail", load.name, "load", message, _BASIS, remedy, one.name)
+
+
+def _why_unfed(context: Context, point: str) -> str:
+    reaching = [run for run in context.plan.runs if point in (run.from_point, run.to_point)]
+    free = [run for run in reaching if run.size is None and run.resistance is None]
+    if free:
+        return f"run {label(free[0])} has no size yet"
+    if not reaching and not any(point in (one.from_point, one.to_point) for one in context.plan.devices):
+        return "no run reaches that point" + _like(context, point)
+    return "no closed way leads there from a source that is on"
+
+
+def _like(context: Context, point: str) -> str:
+    others = [name for name in context.plan.point_names if name != point]
+    close = difflib.get_close_matches(point, others, n=1, cutoff=0.6)
+    return f'; did you mean "{close[0]}"?' if close else ""
+
+
+@check("plan.two-runs", title="Two runs between the same points")
+def two_runs(context: Context) -> Iterator[Finding]:
+    """Runs that join the same two points in the same pole: meant as parallel cables, or entered twice?"""
+    seen: dict[tuple[frozenset[str], int], Run] = {}
+    for run in context.plan.runs:
+        ends = frozenset((run.from_point, run.to_point))
+        poles = {"both": (FEED, RETURN), "feed": (FEED,), "return": (RETURN,)}[run.conducts]
+        first = next((seen[ends, pole] for pole in poles if (ends, pole) in seen), None)
+        for pole in poles:
+            seen.setdefault((ends, pole), run)
+        if first is not None:
+            yield _finding(
+                "plan.two-runs", "warn", run.name, "run",
+                f"{label(run)} joins the same points as {label(first)}: they share the current as parallel cables",
+                "common practice: parallel cables are equal, and each is protected",
+                "delete one if it was entered twice; for equal cables in parallel write parallel = 2 on one run",
+            )  # fmt: skip
+
+
+@check("plan.lonely-point", title="Points that are named only once")
+def lonely_point(context: Context) -> Iterator[Finding]:
+    """Points at which a single run or device ends and nothing stands: a slip in the name?"""
+    uses: dict[str, int] = {}
+    for between in (*context.plan.runs, *context.plan.devices):
+        for name in (between.from_point, between.to_point):
+            uses[name] = uses.get(name, 0) + 1
+    listed = {point.name for point in context.plan.points}
+    for source in context.plan.sources:
+        for name in (source.at, getattr(source, "from_point", source.at)):
+            uses[name] = uses.get(name, 0) + 1
+        array = getattr(source, "array", None)
+        if array is not None:
+            uses[array.at] = uses.get(array.at, 0) + 1
+    for load in context.plan.loads:
+        uses[load.at] = uses.get(load.at, 0) + 1
+    for name, count in uses.items():
+        if count == 1 and name != CHASSIS and name not in listed:
+            message = f'"{name}" is named only once{_like(context, name)}'
+            yield _finding(
+                "plan.lonely-point", "warn", name, "point", message, _SLIP,
+                "correct the name, or list the point under [[points]] if it is meant to end there",
+            )  # fmt: skip
+
+
+@check("plan.free-size", title="Runs whose size is still to be chosen")
+def free_size(context: Context) -> Iterator[Finding]:
+    """Runs without a size: they are left out of the network until they have one."""
+    for run in context.plan.runs:
+        if run.size is None and run.resistance is None:
+            yield _finding(
+                "plan.free-size", "warn", run.name, "run", f"{label(run)} has no size yet and is left out of the network",
+                "common practice: a cable without a size can be neither solved nor bought",
+                f'give it a size, such as size = "{"10 AWG" if context.rulebook.default_system == "AWG" else "6 mm2"}"',
+            )  # fmt: skip
+
+
+_UNUSED: dict[str, tuple[str, ...]] = {
+    "points": ("rating", "resistance"),
+    "sources": ("take_off", "link", "max_discharge", "max_charge", "array", "self_limiting"),
+    "runs": (),
+    "devices": ("continuous", "volts"),
+    "loads": ("cut_out", "recovery", "surge", "max_protection", "hours_per_day", "schedule", "duty"),
+}
+
+
+@check("plan.not-used-yet", title="Fields that are read and kept, but that nothing uses yet")
+def not_used(context: Context) -> Iterator[Finding]:
+    """One note naming the fields of the plan that no calculation of this version uses."""
+    counts: dict[str, int] = {}
+    for table, names in _UNUSED.items():
+        entries: tuple[Entry, ...] = getattr(context.plan, table)
+        for entry in entries:
+            for name in entry.model_fields_set.intersection(names):
+                counts[f"{table}.{name}"] = counts.get(f"{table}.{name}", 0) + 1
+        if table == "runs":
+            guards = [one for run in context.plan.runs for one in run.protections]
+            for name in ("volts", "interrupting"):
+                found = sum(getattr(one, name) is not None for one in guards)
+                if found:
+                    counts[f"runs.protection.{name}"] = found
+    if counts:
+        listed = ", ".join(f"{name} ({count})" for name, count in sorted(counts.items()))
+        yield _finding(
+            "plan.not-used-yet", "note", context.plan.plan.name, "plan",
+            "Some fields are kept in the file but no check of this version uses them", "this program",
+            "judge these by hand", working=(f"Not used: {listed}",),
+        )  # fmt: skip

@@ -1,0 +1,148 @@
+"""The study of a plan: file stages in order, from the plan to the numbers and the findings."""
+
+from collections.abc import Mapping
+from functools import partial
+from pathlib import Path
+
+import numpy as np
+
+from farvolt import checks, network, operating, solve, temperatures
+from farvolt.ampacity import Ampacity
+from farvolt.batteries import model as battery_model
+from farvolt.conductors import Size
+from farvolt.context import CaseStudy, Context
+from farvolt.errors import Fault, PlanError, QuantityError
+from farvolt.integrity import nearest
+from farvolt.network import CONTACT_OHM, Floats, Network
+from farvolt.plan import Battery, Case, Plan
+from farvolt.protection_types import protection_type
+from farvolt.results import Study
+from farvolt.rulebook import Rulebook, load
+from farvolt.solution import Solution
+from farvolt.temperatures import Conductors, Mode
+
+MODES: tuple[Mode, ...] = ("plan", "basis", "hot", "cold")
+
+
+def study(plan: Plan, folder: Path | None = None) -> Study:
+    """Solve and check a plan; `folder` is where a rulebook of the user's own is looked for.
+
+    Raises RulebookError, and PlanError where the plan names what its rulebook or the tables do not have.
+    """
+    rulebook = load(plan.plan.rulebook, folder)
+    faults = [*_class_faults(plan, rulebook), *_protection_faults(plan)]
+    if faults:
+        raise PlanError(faults)
+    context = build_context(plan, rulebook)
+    results = tuple(
+        one.solutions["plan"].result(None, [found.amps if found else None for found in one.ampacities])
+        for one in context.cases
+    )
+    return Study(plan, rulebook, results, checks.run_all(context), _assumptions(context))
+
+
+def build_context(plan: Plan, rulebook: Rulebook) -> Context:
+    """All cases of a plan solved at each conductor temperature."""
+    net = network.build(plan, rulebook)
+    islands = operating.islands(net)
+    together = temperatures.laid_together(plan)
+    cases = []
+    for case in plan.checked_cases:
+        ampacities = tuple(temperatures.run_ampacity(plan, rulebook, run, case, together[run.name]) for run in plan.runs)
+        condition = operating.operating(net, case, islands)
+        cases.append(CaseStudy(case, ampacities, _solutions(net, rulebook, condition, ampacities)))
+    return Context(plan, rulebook, net, tuple(cases), together, partial(_resolve, plan, rulebook))
+
+
+def _solutions(
+    net: Network, rulebook: Rulebook, condition: operating.Operating, ampacities: tuple[Ampacity | None, ...]
+) -> dict[Mode, Solution]:
+    """The case at each conductor temperature; equal temperatures are solved once."""
+    supply = solve.fed(net, condition)
+    done: list[Solution] = []
+
+    def at(wanted: Conductors) -> Solution:
+        same = next((one for one in done if np.array_equal(one.conductors.factor_of_20, wanted.factor_of_20)), None)
+        if same is None:
+            state = solve.solve(net, condition, wanted.factor_of_20, supply)
+            same = Solution(net, condition, supply, wanted, state)
+            done.append(same)
+        return Solution(net, condition, supply, wanted, same.state)
+
+    found: dict[Mode, Solution] = {}
+    for mode in MODES:
+        if mode == "plan" and net.plan.plan.conductor_temperature == "estimated":
+            amps = [one.amps if one else None for one in ampacities]
+
+            def currents(wanted: Conductors) -> Floats:
+                state = solve.solve(net, condition, wanted.factor_of_20, supply)
+                return Solution(net, condition, supply, wanted, state).largest_run_amps
+
+            found[mode] = at(temperatures.estimated(net.plan, rulebook, condition.case, currents, amps))
+        else:
+            found[mode] = at(temperatures.at(net.plan, rulebook, condition.case, mode))
+    return found
+
+
+def _resolve(plan: Plan, rulebook: Rulebook, sizes: Mapping[str, Size], case: int, mode: Mode) -> Solution:
+    """One case again, with other sizes for some runs."""
+    runs = tuple(run.model_copy(update={"size": sizes[run.name]}) if run.name in sizes else run for run in plan.runs)
+    changed = plan.model_copy(update={"runs": runs})
+    net = network.build(changed, rulebook)
+    entry: Case = changed.checked_cases[case]
+    condition = operating.operating(net, entry)
+    supply = solve.fed(net, condition)
+    wanted = temperatures.at(changed, rulebook, entry, mode)
+    return Solution(net, condition, supply, wanted, solve.solve(net, condition, wanted.factor_of_20, supply))
+
+
+def _class_faults(plan: Plan, rulebook: Rulebook) -> list[Fault]:
+    known = list(rulebook.classes)
+    accepted = ", ".join(f'"{name}"' for name in known)
+    problem = f'the rulebook "{rulebook.name}" has no such class'
+    return [
+        Fault(f'loads "{one.name}"', "class", one.drop_class, problem, accepted, nearest(one.drop_class, known))
+        for one in plan.loads
+        if one.drop_class is not None and one.drop_class not in rulebook.classes
+    ]
+
+
+def _protection_faults(plan: Plan) -> list[Fault]:
+    faults = []
+    for run in plan.runs:
+        for one in run.protections:
+            try:
+                protection_type(one.type)
+            except QuantityError as error:
+                fault = Fault(f'runs "{run.name}"', "protection.type", one.type, error.problem, error.accepted, error.nearest)
+                faults.append(fault)
+    return faults
+
+
+def _assumptions(context: Context) -> tuple[str, ...]:
+    """What the numbers rest on that the plan does not state."""
+    plan, rulebook, found = context.plan, context.rulebook, list(context.network.assumptions)
+    for source in plan.sources:
+        if isinstance(source, Battery):
+            model = battery_model(source, source.charge.si, plan.plan.nominal.si)
+            if model.resistance_is_estimated:
+                found.append(f'Battery "{source.name}": internal resistance {model.resistance_source}; state it from the data sheet.')
+            if source.emf is None:
+                found.append(f'Battery "{source.name}": EMF from the {model.emf_source}.')
+            if source.strings > 1:
+                found.append(f'Battery "{source.name}": its {source.strings} strings are taken to share equally.')
+    silent = [device.name for device in plan.devices if device.resistance is None]
+    if silent:
+        kinds = ", ".join(f"{kind} {1000 * ohm:g} mohm" for kind, ohm in CONTACT_OHM.items())
+        found.append(f"Devices that state no resistance are taken at typical values, from memory: {kinds}.")
+    if any(run.insulation is None for run in plan.runs):
+        found.append(f"Cables that state no insulation are taken at {rulebook.default_insulation_degC:g} degC, the rulebook's default.")
+    if any(one.resistance is None for run in plan.runs for one in run.protections):
+        found.append("Protection that states no resistance is taken at the typical drop of its type at rated current, from memory.")
+    if any(plan.zone_of(run) is None for run in plan.runs):
+        found.append(f"Cables in no zone are taken at an ambient of {plan.plan.ambient}.")
+    if not plan.cases:
+        found.append('The plan states no cases: one case, "Everything on", is checked.')
+    basis = rulebook.drop_basis
+    found.append(f"Drop limits are held against resistances as the rulebook means them: {basis.basis}. {basis.note}".strip())
+    return tuple(found)
