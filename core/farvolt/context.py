@@ -42,6 +42,8 @@ class Context:
     together: Mapping[str, int]
     """Current-carrying conductors laid with each run."""
     resolve: Resolve
+    interim: Mapping[str, Size]
+    """Sizes taken for the runs that state none; `plan` has them filled in."""
 
     @cached_property
     def sections(self) -> Sections:

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import numpy as np
 
-from farvolt import checks, network, operating, solve, temperatures
+from farvolt import checks, interim, network, operating, solve, temperatures
 from farvolt.ampacity import Ampacity
 from farvolt.batteries import model as battery_model
 from farvolt.conductors import Size
@@ -34,6 +34,7 @@ def study(plan: Plan, folder: Path | None = None) -> Study:
     if faults:
         raise PlanError(faults)
     context = build_context(plan, rulebook)
+    # The study keeps the plan as it was written; interim sizes are the context's.
     results = tuple(
         one.solutions["plan"].result(None, [found.amps if found else None for found in one.ampacities])
         for one in context.cases
@@ -42,7 +43,9 @@ def study(plan: Plan, folder: Path | None = None) -> Study:
 
 
 def build_context(plan: Plan, rulebook: Rulebook) -> Context:
-    """All cases of a plan solved at each conductor temperature."""
+    """All cases of a plan solved at each conductor temperature, with interim sizes where it states none."""
+    chosen = interim.sizes(plan, rulebook)
+    plan = interim.with_sizes(plan, chosen)
     net = network.build(plan, rulebook)
     islands = operating.islands(net)
     together = temperatures.laid_together(plan)
@@ -51,7 +54,7 @@ def build_context(plan: Plan, rulebook: Rulebook) -> Context:
         ampacities = tuple(temperatures.run_ampacity(plan, rulebook, run, case, together[run.name]) for run in plan.runs)
         condition = operating.operating(net, case, islands)
         cases.append(CaseStudy(case, ampacities, _solutions(net, rulebook, condition, ampacities)))
-    return Context(plan, rulebook, net, tuple(cases), together, partial(_resolve, plan, rulebook))
+    return Context(plan, rulebook, net, tuple(cases), together, partial(_resolve, plan, rulebook), chosen)
 
 
 def _solutions(
@@ -86,8 +89,7 @@ def _solutions(
 
 def _resolve(plan: Plan, rulebook: Rulebook, sizes: Mapping[str, Size], case: int, mode: Mode) -> Solution:
     """One case again, with other sizes for some runs."""
-    runs = tuple(run.model_copy(update={"size": sizes[run.name]}) if run.name in sizes else run for run in plan.runs)
-    changed = plan.model_copy(update={"runs": runs})
+    changed = interim.with_sizes(plan, sizes)
     net = network.build(changed, rulebook)
     entry: Case = changed.checked_cases[case]
     condition = operating.operating(net, entry)
@@ -128,7 +130,7 @@ def _assumptions(context: Context) -> tuple[str, ...]:
             if model.resistance_is_estimated:
                 found.append(f'Battery "{source.name}": internal resistance {model.resistance_source}; state it from the data sheet.')
             if source.emf is None:
-                found.append(f'Battery "{source.name}": EMF from the {model.emf_source}.')
+                found.append(f'Battery "{source.name}": EMF from the rest voltage of {source.chemistry} at its charge, typical.')
             if source.strings > 1:
                 found.append(f'Battery "{source.name}": its {source.strings} strings are taken to share equally.')
     silent = [device.name for device in plan.devices if device.resistance is None]

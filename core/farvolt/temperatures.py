@@ -96,6 +96,14 @@ def _basis(plan: Plan, rulebook: Rulebook) -> Conductors:
     return Conductors(np.array(degC, dtype=float), np.full(len(plan.runs), factor), text)
 
 
+def basis_factor(rulebook: Rulebook, run: Run) -> float:
+    """Resistance of a run at the rulebook's basis over that at 20 °C."""
+    basis = rulebook.drop_basis
+    if basis.temperature_degC is not None:
+        return 1 + _alpha(run) * (basis.temperature_degC - 20)
+    return basis.factor_on_R20 or 1.0
+
+
 def _uniform(plan: Plan, degC: float, text: str) -> Conductors:
     return _from_temperatures(plan, [degC] * len(plan.runs), text)
 

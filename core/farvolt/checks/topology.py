@@ -45,9 +45,6 @@ def unfed(context: Context) -> Iterator[Finding]:
 
 def _why_unfed(context: Context, point: str) -> str:
     reaching = [run for run in context.plan.runs if point in (run.from_point, run.to_point)]
-    free = [run for run in reaching if run.size is None and run.resistance is None]
-    if free:
-        return f"run {label(free[0])} has no size yet"
     if not reaching and not any(point in (one.from_point, one.to_point) for one in context.plan.devices):
         return "no run reaches that point" + _like(context, point)
     return "no closed way leads there from a source that is on"
@@ -105,13 +102,15 @@ def lonely_point(context: Context) -> Iterator[Finding]:
 
 @check("plan.free-size", title="Runs whose size is still to be chosen")
 def free_size(context: Context) -> Iterator[Finding]:
-    """Runs without a size: they are left out of the network until they have one."""
+    """Runs without a size, and the interim size that everything else was solved with."""
     for run in context.plan.runs:
-        if run.size is None and run.resistance is None:
+        size = context.interim.get(run.name)
+        if size is not None:
             yield _finding(
-                "plan.free-size", "warn", run.name, "run", f"{label(run)} has no size yet and is left out of the network",
-                "common practice: a cable without a size can be neither solved nor bought",
-                f'give it a size, such as size = "{"10 AWG" if context.rulebook.default_system == "AWG" else "6 mm2"}"',
+                "plan.free-size", "warn", run.name, "run",
+                f"{label(run)} has no size yet; {size.name} is taken for now",
+                "common practice: each cable alone, at its share of the allowed drop by length, and its ampacity",
+                f'size = "{size.name}", or any other that you choose',
             )  # fmt: skip
 
 
@@ -143,6 +142,6 @@ def not_used(context: Context) -> Iterator[Finding]:
         listed = ", ".join(f"{name} ({count})" for name, count in sorted(counts.items()))
         yield _finding(
             "plan.not-used-yet", "note", context.plan.plan.name, "plan",
-            "Some fields are kept in the file but no check of this version uses them", "this program",
-            "judge these by hand", working=(f"Not used: {listed}",),
+            f"Kept in the file, but used by no check of this version: {listed}", "what this version does",
+            "judge these by hand",
         )  # fmt: skip
