@@ -16,7 +16,7 @@ ESTIMATED = "estimated from a table of typical values"
 
 @dataclass(frozen=True, slots=True)
 class BatteryModel:
-    """One battery as the network sees it: EMF behind a resistance, and where each figure comes from."""
+    """One string as the network sees it: EMF behind a resistance, and where each figure comes from."""
 
     emf_V: float
     resistance_ohm: float
@@ -71,7 +71,7 @@ def typical_resistance_ohm(chemistry: str, capacity_Ah: float, nominal_V: float)
 
 
 def model(battery: Battery, charge: float, nominal_V: float, emf_V: float | None = None) -> BatteryModel:
-    """The battery of `strings` equal strings in parallel at a state of charge 0..1; `emf_V` overrides its curve."""
+    """One string of the battery at a state of charge 0..1; `emf_V` overrides its curve."""
     nominal_V = battery.nominal.si if battery.nominal else nominal_V
     stated = emf_V if emf_V is not None else battery.emf.si if battery.emf else None
     if stated is not None:
@@ -81,7 +81,7 @@ def model(battery: Battery, charge: float, nominal_V: float, emf_V: float | None
         emf = rest_voltage_V(chemistry, charge, nominal_V)
         emf_source = f"rest voltage of {chemistry} at {charge:.0%} of charge, typical"
     resistance, source = _string_resistance(battery, nominal_V, emf)
-    return BatteryModel(emf, resistance / battery.strings, emf_source, source)
+    return BatteryModel(emf, resistance, emf_source, source)
 
 
 def _string_resistance(battery: Battery, nominal_V: float, emf_V: float) -> tuple[float, str]:

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from farvolt import conductors, protection_types
-from farvolt.plan import CHASSIS, Converter, Device, Plan, ReturnConductor, Run
+from farvolt.plan import CHASSIS, Battery, Converter, Device, Plan, ReturnConductor, Run
 from farvolt.rulebook import Rulebook
 
 Floats = NDArray[np.float64]
@@ -52,6 +52,8 @@ class Network:
     pole: Ints
     diodes: tuple[tuple[int, int, int], ...]
     """(device index, node at `from`, node at `to`) of each diode."""
+    strings: tuple[tuple[int, int, int], ...]
+    """(source index, feed node, return node) of each battery string with link cables of its own."""
     assumptions: tuple[str, ...] = field(default=())
 
     def feed(self, point: str) -> int:
@@ -79,6 +81,11 @@ def build(plan: Plan, rulebook: Rulebook) -> Network:
     assumptions: list[str] = []
     names = _Names()
     branches = list(_run_branches(plan, rulebook))
+    strings: list[tuple[int, tuple[str, int], tuple[str, int]]] = []
+    for index, source in enumerate(plan.sources):
+        if isinstance(source, Battery) and linked(source):
+            strings.extend((index, *ends) for ends in _string_ends(source))
+            branches.extend(_link_branches(source, rulebook))
     diodes: list[tuple[int, tuple[str, int], tuple[str, int]]] = []
     for index, device in enumerate(plan.devices):
         branches.extend(_device_branches(index, device))
@@ -91,7 +98,7 @@ def build(plan: Plan, rulebook: Rulebook) -> Network:
     for point in plan.point_names:
         for pole in (FEED, RETURN):
             names.node((point, pole))
-    return _arrays(plan, branches, diodes, names, tuple(assumptions))
+    return _arrays(plan, branches, diodes, strings, names, tuple(assumptions))
 
 
 class _Names:
@@ -213,6 +220,42 @@ def device_ohm(device: Device) -> float:
     return device.resistance.si if device.resistance is not None else CONTACT_OHM[device.kind]
 
 
+def linked(battery: Battery) -> bool:
+    """Whether the strings of a battery stand apart in the network, joined by the link cables the plan states."""
+    return battery.strings > 1 and battery.link is not None
+
+
+def _string_ends(battery: Battery) -> list[tuple[tuple[str, int], tuple[str, int]]]:
+    """Feed and return node of every string: the point's own at the take-off, inner nodes elsewhere.
+
+    Taken off at the same end, both are at the first string; at opposite ends the return is at the last; at a bar
+    every string has cables of its own to the point.
+    """
+    count, bar = battery.strings, battery.take_off == "bar"
+    last = count - 1 if battery.take_off == "ends" else 0
+    ends = []
+    for place in range(count):
+        inner = f"\x1f{battery.name}\x1f{place}"  # no name in a plan holds a control character
+        feed = (battery.at, FEED) if place == 0 and not bar else (inner, FEED)
+        back = (battery.at, RETURN) if place == last and not bar else (inner, RETURN)
+        ends.append((feed, back))
+    return ends
+
+
+def _link_branches(battery: Battery, rulebook: Rulebook) -> Iterator[_Branch]:
+    """Link cables between neighbouring strings, or from each string to the bar, one in each pole, at 20 °C."""
+    assert battery.link is not None
+    size = battery.link.size
+    per_m = conductors.resistance_20_ohm_per_m(size, "copper", rulebook.default_strand).value if size else 0.0
+    ohm = max(per_m * battery.link.length.si, LEAST_OHM)
+    ends = _string_ends(battery)
+    for pole in (FEED, RETURN):
+        if battery.take_off == "bar":
+            yield from (_Branch((battery.at, pole), one[pole], ohm, pole=pole) for one in ends)
+        else:
+            yield from (_Branch(one[pole], after[pole], ohm, pole=pole) for one, after in zip(ends, ends[1:], strict=False))
+
+
 def _converter_bonds(plan: Plan) -> Iterator[_Branch]:
     for source in plan.sources:
         if isinstance(source, Converter) and not source.isolated:
@@ -252,6 +295,7 @@ def _arrays(
     plan: Plan,
     branches: list[_Branch],
     diodes: list[tuple[int, tuple[str, int], tuple[str, int]]],
+    strings: list[tuple[int, tuple[str, int], tuple[str, int]]],
     names: _Names,
     assumptions: tuple[str, ...],
 ) -> Network:
@@ -271,5 +315,6 @@ def _arrays(
         device=np.array([one.device for one in branches], dtype=np.int64),
         pole=np.array([one.pole for one in branches], dtype=np.int64),
         diodes=tuple((index, numbers[a], numbers[b]) for index, a, b in diodes),
+        strings=tuple((index, numbers[a], numbers[b]) for index, a, b in strings),
         assumptions=assumptions,
     )

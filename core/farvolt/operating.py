@@ -10,7 +10,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from farvolt import batteries
-from farvolt.network import DIODE_DROP_V, Floats, Ints, Network, device_ohm
+from farvolt.network import DIODE_DROP_V, Floats, Ints, Network, device_ohm, linked
 from farvolt.plan import Battery, Case, Charger, Converter, Load, Plan, Solar, Source, SourceState
 
 KNEE_SHARE = 0.4
@@ -25,8 +25,10 @@ DIODE_LEAK_S = 1e-9
 
 @dataclass(frozen=True)
 class Operating:
-    """One case on a network. Sources come first in the source ports, then diodes; loads first in the load ports,
-    then the inputs of converters. Arrays are over ports unless said otherwise."""
+    """One case on a network. Arrays are over ports unless said otherwise.
+
+    Source ports: one for each source of the plan, then battery strings that stand apart (their battery's own port is
+    idle), then diodes. Load ports: the loads, then the inputs of converters."""
 
     case: Case
     branch_on: np.ndarray
@@ -105,9 +107,12 @@ def operating(network: Network, case: Case, found: Islands | None = None) -> Ope
     found = found or islands(network)
     plan = network.plan
     laws = [_source_law(plan, source, case, found.nominal(network.feed(source.at))) for source in plan.sources]
+    laws += [_string_law(plan, index, case, found.nominal(a)) for index, a, _ in network.strings]
     laws += [_diode_law(plan, index) for index, _, _ in network.diodes]
-    at = [network.feed(source.at) for source in plan.sources] + [end for _, _, end in network.diodes]
-    back = [network.ret(source.at) for source in plan.sources] + [start for _, start, _ in network.diodes]
+    at = [network.feed(source.at) for source in plan.sources]
+    at += [a for _, a, _ in network.strings] + [end for _, _, end in network.diodes]
+    back = [network.ret(source.at) for source in plan.sources]
+    back += [b for _, _, b in network.strings] + [start for _, start, _ in network.diodes]
     draws = [_load_law(load, case, found.nominal(network.feed(load.at))) for load in plan.loads]
     load_a = [network.feed(load.at) for load in plan.loads]
     load_b = [network.ret(load.at) for load in plan.loads]
@@ -167,10 +172,9 @@ def _source_law(plan: Plan, source: Source, case: Case, nominal_V: float) -> Law
     on = float(state.state != "off")
     inf = float("inf")
     if isinstance(source, Battery):
-        charge = 1.0 if state.state == "full" else state.charge.si if state.charge else source.charge.si
-        model = batteries.model(source, charge, nominal_V, state.emf.si if state.emf else None)
-        # A full battery takes no current: it stands at whatever voltage the chargers hold, and helps below its EMF.
-        return on, model.emf_V, model.resistance_ohm, 0.0 if state.state == "full" else -inf, inf, inf, 0.0
+        if linked(source):
+            return _IDLE
+        return _battery_law(source, state, nominal_V, source.strings)
     if isinstance(source, Solar):
         power = source.power.si * (state.irradiance.si if state.irradiance else 1.0)
         volts = state.volts.si if state.volts else source.ceiling.si
@@ -180,6 +184,26 @@ def _source_law(plan: Plan, source: Source, case: Case, nominal_V: float) -> Law
     amps = state.amps.si if state.amps else source.amps.si
     ohm = source.resistance.si if source.resistance else DROOP_SHARE * volts / amps
     return on, volts, ohm, 0.0, amps, inf, 0.0
+
+
+_IDLE: Law = (0.0, 1.0, 1.0, 0.0, 0.0, float("inf"), 0.0)
+
+
+def _battery_law(battery: Battery, state: SourceState, nominal_V: float, strings: int) -> Law:
+    """`strings` equal strings in parallel. A full battery takes no current: it stands at whatever voltage the
+    chargers hold, and helps below its own EMF."""
+    full = state.state == "full"
+    charge = 1.0 if full else state.charge.si if state.charge else battery.charge.si
+    model = batteries.model(battery, charge, nominal_V, state.emf.si if state.emf else None)
+    inf = float("inf")
+    on = float(state.state != "off")
+    return on, model.emf_V, model.resistance_ohm / strings, 0.0 if full else -inf, inf, inf, 0.0
+
+
+def _string_law(plan: Plan, index: int, case: Case, nominal_V: float) -> Law:
+    battery = plan.sources[index]
+    assert isinstance(battery, Battery)
+    return _battery_law(battery, case.sources.get(battery.name, SourceState()), nominal_V, 1)
 
 
 def _diode_law(plan: Plan, index: int) -> Law:

@@ -21,6 +21,6 @@ def as_object(study: Study) -> dict[str, Any]:
 
 def _case(case: CaseResult) -> dict[str, Any]:
     whole = asdict(case)
-    # Devices are for the views; they have no place in version 1 of the output.
-    del whole["devices"]
+    # Devices and strings are for the views; they have no place in version 1 of the output.
+    del whole["devices"], whole["strings"]
     return {name: list(value) if isinstance(value, tuple) else value for name, value in whole.items()}

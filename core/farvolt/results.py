@@ -60,6 +60,15 @@ class DeviceResult:
 
 
 @dataclass(frozen=True, slots=True)
+class StringResult:
+    """One of the parallel strings of a battery whose link cables are stated; positive when it delivers."""
+
+    battery: str
+    string: int
+    amps: float | None
+
+
+@dataclass(frozen=True, slots=True)
 class LoadResult:
     """A load: drop is against the reference source of its island, in percent of the island's nominal voltage."""
 
@@ -88,6 +97,7 @@ class CaseResult:
     runs: tuple[RunResult, ...]
     devices: tuple[DeviceResult, ...]
     loads: tuple[LoadResult, ...]
+    strings: tuple[StringResult, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

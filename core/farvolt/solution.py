@@ -9,8 +9,8 @@ import numpy as np
 from farvolt.network import BOND, FEED, RETURN, Floats, Network
 from farvolt.operating import Operating
 from farvolt.plan import Converter
-from farvolt.results import CaseResult, DeviceResult, LoadResult, PointResult, RunResult, SourceResult
-from farvolt.solve import Fed, State
+from farvolt.results import CaseResult, DeviceResult, LoadResult, PointResult, RunResult, SourceResult, StringResult
+from farvolt.solve import Fed, State, first_diode
 from farvolt.temperatures import Conductors
 
 
@@ -75,14 +75,24 @@ class Solution:
     def references(self) -> tuple[int | None, ...]:
         """For every load, the source its drop is counted from: the working reference source of its island."""
         c, plan = self.condition, self.network.plan
-        order = sorted(range(len(plan.sources)), key=lambda i: (plan.sources[i].name != plan.reference, plan.sources[i].kind != "battery"))
+        sources = plan.sources
+        order = sorted(range(len(sources)), key=lambda i: (sources[i].name != plan.reference, sources[i].kind != "battery"))
         best: dict[tuple[int, int], int] = {}
         for port in order:
             node = c.source_a[port]
-            if self.supply.source_on[port]:
+            if self.working(port):
                 best.setdefault((int(c.islands.of_node[node]), int(self.supply.group[node])), port)
         keys = [(int(c.islands.of_node[node]), int(self.supply.group[node])) for node in c.load_a[: len(plan.loads)]]
         return tuple(best.get(key) for key in keys)
+
+    def working(self, source: int) -> bool:
+        """Whether a source, or any of its strings, is on and part of the fed network."""
+        return any(bool(self.supply.source_on[port]) for port in self._ports(source))
+
+    def _ports(self, source: int) -> list[int]:
+        """The source ports of a source: its own, and those of its strings that stand apart."""
+        first = len(self.network.plan.sources)
+        return [source, *(first + place for place, (index, _, _) in enumerate(self.network.strings) if index == source)]
 
     @cached_property
     def load_drop_V(self) -> Floats:
@@ -198,7 +208,7 @@ class Solution:
     @cached_property
     def diode_amps(self) -> Floats:
         """Current of every diode, from `from` to `to`."""
-        return self.state.delivered_A[len(self.network.plan.sources) :]
+        return self.state.delivered_A[first_diode(self.network) :]
 
     def result(self, margin: float | None, ampacities: list[float | None]) -> CaseResult:
         """The case as the output shows it; a case that gives way has no numbers, only where it gives way."""
@@ -216,6 +226,7 @@ class Solution:
             sources=tuple(self._sources()),
             runs=tuple(self._runs(ampacities)),
             devices=tuple(self._devices()),
+            strings=tuple(self._strings()),
             loads=tuple(self._loads()),
         )
 
@@ -247,7 +258,7 @@ class Solution:
         for port, source in enumerate(plan.sources):
             a, b = c.source_a[port], c.source_b[port]
             volts = self.state.volts[a] - self.state.volts[b] if self.supply.group[a] == self.supply.group[b] else np.nan
-            amps = float(self.state.delivered_A[port]) if self.supply.source_on[port] else 0.0
+            amps = float(sum(self.state.delivered_A[one] for one in self._ports(port) if self.supply.source_on[one]))
             drawn = None
             if isinstance(source, Converter):
                 load = inputs[port]
@@ -275,6 +286,16 @@ class Solution:
                     self._number(drop), self._number(loss), float(self.conductors.degC[index]), ampacities[index],
                 )
             )  # fmt: skip
+        return found
+
+    def _strings(self) -> list[StringResult]:
+        plan, first = self.network.plan, len(self.network.plan.sources)
+        counts: dict[int, int] = {}
+        found = []
+        for place, (index, _, _) in enumerate(self.network.strings):
+            counts[index] = counts.get(index, 0) + 1
+            amps = self._number(float(self.state.delivered_A[first + place]))
+            found.append(StringResult(plan.sources[index].name, counts[index], amps))
         return found
 
     def _devices(self) -> list[DeviceResult]:

@@ -55,10 +55,15 @@ class Fed:
     load_on: np.ndarray
 
 
+def first_diode(network: Network) -> int:
+    """Where the diodes begin among the source ports."""
+    return len(network.plan.sources) + len(network.strings)
+
+
 def fed(network: Network, condition: Operating) -> Fed:
     """Graph search before solving: live nodes, the ports that work, the ground of each galvanic part."""
     on = condition.branch_on
-    ports = len(network.plan.sources)
+    ports = first_diode(network)
     converters = {source: load for source, load, _, _ in condition.converters}
     active = condition.source_on.copy()
     for port in converters:
@@ -79,8 +84,7 @@ def fed(network: Network, condition: Operating) -> Fed:
     load_on = live[condition.load_a] & (group[condition.load_a] == group[condition.load_b])
     for port, load in converters.items():
         load_on[load] &= active[port]
-    diodes = np.arange(len(active)) >= ports
-    active &= live[condition.source_a] & live[condition.source_b] | ~diodes
+    active[ports:] &= live[condition.source_a[ports:]] & live[condition.source_b[ports:]]
     return Fed(live, group, _grounds(network, condition, active, group, live), active, load_on)
 
 
@@ -96,10 +100,14 @@ def _grounds(
     """The return of the reference source, or of the first working source, in each live galvanic part."""
     grounds: dict[int, int] = {}
     sources = network.plan.sources
-    order = sorted(range(len(sources)), key=lambda i: (sources[i].name != network.plan.reference, not active[i], sources[i].kind != "battery"))
+    working = set(np.flatnonzero(active).tolist()) | {index for index, _, _ in network.strings}
+    order = sorted(
+        range(len(sources)),
+        key=lambda i: (sources[i].name != network.plan.reference, i not in working, sources[i].kind != "battery"),
+    )
     for port in order:
-        node = int(condition.source_b[port])
-        if live[node] and (active[port] or sources[port].name == network.plan.reference):
+        node = network.ret(sources[port].at)
+        if live[node]:
             grounds.setdefault(int(group[node]), node)
     return tuple(grounds.values())
 
@@ -162,11 +170,10 @@ class _System:
         """All feeds of a galvanic part at its highest source voltage, all returns at zero."""
         c = self.condition
         volts = np.zeros(self.network.node_count)
-        sources = self.network.plan.sources
         feeds = {node for (_, pole), node in self.network.nodes.items() if pole == 0}
         high: dict[int, float] = {}
         for port in self.sources:
-            if port < len(sources):
+            if port < first_diode(self.network):
                 island = int(c.islands.of_node[c.source_a[port]])
                 high[island] = max(high.get(island, 0.0), float(c.volts[port]))
         for node in feeds:
@@ -423,7 +430,7 @@ class _System:
         load_u, drawn, _ = self.load_law(volts, share)
         flow = self.all_siemens * (volts[network.a] - volts[network.b])
         lost = float(np.sum(flow * (volts[network.a] - volts[network.b])))
-        diodes = self.sources >= len(network.plan.sources)
+        diodes = self.sources >= first_diode(network)
         lost -= float(np.sum((source_u * delivered)[diodes]))
         inputs = self.loads >= len(network.plan.loads)
         power_in = float(np.sum((source_u * delivered)[~diodes]) - np.sum((load_u * drawn)[inputs]))

@@ -131,7 +131,7 @@ def _assumptions(context: Context) -> tuple[str, ...]:
                 found.append(f'Battery "{source.name}": internal resistance {model.resistance_source}; state it from the data sheet.')
             if source.emf is None:
                 found.append(f'Battery "{source.name}": EMF from the rest voltage of {source.chemistry} at its charge, typical.')
-            if source.strings > 1:
+            if source.strings > 1 and source.link is None:
                 found.append(f'Battery "{source.name}": its {source.strings} strings are taken to share equally.')
     silent = [device.name for device in plan.devices if device.resistance is None]
     if silent:
