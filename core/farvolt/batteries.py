@@ -6,10 +6,10 @@ Tables: data `batteries/`, each row with its source. Ranges are taken at their m
 import csv
 from dataclasses import dataclass
 from functools import lru_cache
-
-from farvolt_data import ROOT
+from itertools import pairwise
 
 from farvolt.plan import Battery
+from farvolt_data import ROOT
 
 ESTIMATED = "estimated from a table of typical values"
 
@@ -35,7 +35,7 @@ def _rest_rows() -> dict[str, tuple[float, list[tuple[float, float]]]]:
     with (ROOT / "batteries" / "rest_voltage.csv").open(newline="", encoding="utf-8") as file:
         for row in csv.DictReader(file):
             middle = (float(row["low_V_per_cell"]) + float(row["high_V_per_cell"])) / 2
-            nominal, points = table.setdefault(row["chemistry"], (float(row["cell_nominal_V"]), []))
+            _, points = table.setdefault(row["chemistry"], (float(row["cell_nominal_V"]), []))
             points.append((float(row["charge_percent"]) / 100, middle))
     return {name: (nominal, sorted(points)) for name, (nominal, points) in table.items()}
 
@@ -58,7 +58,7 @@ def rest_voltage_V(chemistry: str, charge: float, nominal_V: float) -> float:
     """Rest voltage of a string at a state of charge 0..1, linear between the table's rows."""
     points = _rest_rows()[chemistry][1]
     charge = min(max(charge, points[0][0]), points[-1][0])
-    for (low, low_V), (high, high_V) in zip(points, points[1:], strict=False):
+    for (low, low_V), (high, high_V) in pairwise(points):
         if charge <= high:
             per_cell = low_V + (high_V - low_V) * (charge - low) / (high - low)
             return per_cell * cells(chemistry, nominal_V)

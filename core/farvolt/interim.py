@@ -82,7 +82,11 @@ def _budgets(plan: Plan, rulebook: Rulebook, solutions: list[Solution]) -> dict[
 def _smallest(plan: Plan, rulebook: Rulebook, run: Run, amps: float, budget_V: float | None) -> Size:
     """The smallest made size that carries `amps` and the run's protection, and drops at most `budget_V`."""
     together = temperatures.laid_together(plan)[run.name]
-    least = rulebook.minimum_size.least(rulebook.default_system, sheathed(plan, run)).area_mm2 if rulebook.minimum_size else 0.0
+    least = (
+        rulebook.minimum_size.least(rulebook.default_system, sheathed(plan, run)).area_mm2
+        if rulebook.minimum_size
+        else 0.0
+    )
     carried = max([amps, *(one.rating.si for one in run.protections)])
     made = made_sizes(rulebook.default_system)
     for size in made:

@@ -11,7 +11,7 @@ DENSE_LIMIT = 200
 """Up to this many unknowns a dense factorisation is the faster one, and no sparse library is loaded."""
 
 
-class Singular(Exception):
+class SingularError(Exception):
     """A matrix without an inverse; never leaves the solver."""
 
 
@@ -24,7 +24,7 @@ class Factor:
 
 
 def factor(size: int, rows: np.ndarray, columns: np.ndarray, values: Floats, *, symmetric: bool) -> Factor:
-    """Factorise the matrix of the summed entries (rows, columns, values). Raises Singular.
+    """Factorise the matrix of the summed entries (rows, columns, values). Raises SingularError.
 
     `positive` of a matrix that is not symmetric is told from its pivots, which is enough to see a fold.
     """
@@ -45,7 +45,7 @@ def _dense(size: int, rows: np.ndarray, columns: np.ndarray, values: Floats, sym
             positive = bool(sign > 0) and _has_cholesky((matrix + matrix.T) / 2 + _skew_allowance(matrix))
         inverse = np.linalg.inv(matrix)
     except np.linalg.LinAlgError:
-        raise Singular from None
+        raise SingularError from None
 
     def solve(right: Floats) -> Floats:
         first = inverse @ right
@@ -76,7 +76,7 @@ def _sparse(size: int, rows: np.ndarray, columns: np.ndarray, values: Floats, sy
     try:
         factors = splu(matrix, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0, options={"SymmetricMode": True})
     except RuntimeError:
-        raise Singular from None
+        raise SingularError from None
     positive = bool(np.all(factors.U.diagonal() > 0))
 
     def solve(right: Floats) -> Floats:

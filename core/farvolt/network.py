@@ -7,6 +7,7 @@ Conductors are branches; sources, loads and diodes are ports, which `solve` give
 
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,7 +22,14 @@ Ints = NDArray[np.int64]
 FEED, RETURN, BOND = 0, 1, 2
 """Poles of a branch; a bond ties a return to the chassis or the returns of a converter together."""
 
-CONTACT_OHM = {"switch": 0.3e-3, "selector": 0.3e-3, "relay": 0.3e-3, "shunt": 0.1e-3, "connector": 0.5e-3, "diode": 2e-3}
+CONTACT_OHM = {
+    "switch": 0.3e-3,
+    "selector": 0.3e-3,
+    "relay": 0.3e-3,
+    "shunt": 0.1e-3,
+    "connector": 0.5e-3,
+    "diode": 2e-3,
+}
 """Resistance of a device that states none. From memory of typical data sheets: provisional."""
 
 DIODE_DROP_V = 0.5
@@ -178,7 +186,10 @@ def _run_branches(plan: Plan, rulebook: Rulebook) -> Iterator[_Branch]:
         if run.size is None and run.resistance is None:
             continue
         parts = _run_ohm_20(run, rulebook)
-        ends = {FEED: ((run.from_point, FEED), (run.to_point, FEED)), RETURN: ((run.from_point, RETURN), (run.to_point, RETURN))}
+        ends = {
+            FEED: ((run.from_point, FEED), (run.to_point, FEED)),
+            RETURN: ((run.from_point, RETURN), (run.to_point, RETURN)),
+        }
         for pole, (cable, fixed) in parts.items():
             a, b = ends[pole]
             yield _Branch(a, b, fixed, cable, run=index, pole=pole)
@@ -211,7 +222,9 @@ def _measured(run: Run, computed: dict[int, tuple[float, float]]) -> dict[int, t
 def _device_branches(index: int, device: Device) -> Iterator[_Branch]:
     ohm = max(device_ohm(device), LEAST_OHM)
     for pole, word in ((FEED, "feed"), (RETURN, "return")):
-        if device.pole in (word, "both") and not (device.kind == "diode" and pole == (FEED if device.pole != "return" else RETURN)):
+        if device.pole in (word, "both") and not (
+            device.kind == "diode" and pole == (FEED if device.pole != "return" else RETURN)
+        ):
             yield _Branch((device.from_point, pole), (device.to_point, pole), ohm, device=index, pole=pole)
 
 
@@ -253,7 +266,7 @@ def _link_branches(battery: Battery, rulebook: Rulebook) -> Iterator[_Branch]:
         if battery.take_off == "bar":
             yield from (_Branch((battery.at, pole), one[pole], ohm, pole=pole) for one in ends)
         else:
-            yield from (_Branch(one[pole], after[pole], ohm, pole=pole) for one, after in zip(ends, ends[1:], strict=False))
+            yield from (_Branch(one[pole], after[pole], ohm, pole=pole) for one, after in pairwise(ends))
 
 
 def _converter_bonds(plan: Plan) -> Iterator[_Branch]:

@@ -28,7 +28,9 @@ def _custom(error: QuantityError) -> PydanticCustomError:
     return PydanticCustomError("quantity", "{problem}", context)
 
 
-def _reader(dimension: str, *, minimum: float | None = None, above: float | None = None, maximum: float | None = None) -> Any:
+def _reader(
+    dimension: str, *, minimum: float | None = None, above: float | None = None, maximum: float | None = None
+) -> Any:
     """A validator that reads a quantity and holds it to a range in base units."""
 
     def read(value: Any) -> Quantity:
@@ -102,7 +104,9 @@ Current = Annotated[Quantity, BeforeValidator(_reader("current", minimum=0, maxi
 Rating = Annotated[Quantity, BeforeValidator(_reader("current", above=0, maximum=1e6)), _schema("current")]
 Voltage = Annotated[Quantity, BeforeValidator(_reader("voltage", above=0, maximum=1500)), _schema("voltage")]
 Resistance = Annotated[Quantity, BeforeValidator(_reader("resistance", above=0, maximum=1e9)), _schema("resistance")]
-AnyResistance = Annotated[Quantity, BeforeValidator(_reader("resistance", minimum=0, maximum=1e9)), _schema("resistance")]
+AnyResistance = Annotated[
+    Quantity, BeforeValidator(_reader("resistance", minimum=0, maximum=1e9)), _schema("resistance")
+]
 Charge = Annotated[Quantity, BeforeValidator(_reader("charge", above=0, maximum=1e7)), _schema("charge")]
 Share = Annotated[Quantity, BeforeValidator(_reader("share", minimum=0, maximum=1)), _schema("share")]
 Efficiency = Annotated[Quantity, BeforeValidator(_reader("share", above=0, maximum=1)), _schema("share")]
@@ -112,7 +116,9 @@ Temperature = Annotated[
 CableSize = Annotated[
     conductors.Size | None,
     BeforeValidator(_read_size),
-    WithJsonSchema({"type": "string", "description": 'a conductor size, such as "6 mm2", "10 AWG", "10 SAE", or "free"'}),
+    WithJsonSchema(
+        {"type": "string", "description": 'a conductor size, such as "6 mm2", "10 AWG", "10 SAE", or "free"'}
+    ),
 ]
 Name = Annotated[str, BeforeValidator(_read_name), Field(strict=True)]
 Text = Annotated[str, Field(strict=True, max_length=10_000)]
@@ -154,7 +160,9 @@ def _read_conductor_temperature(value: Any) -> Any:
         import difflib
 
         close = difflib.get_close_matches(str(value), words, n=1)
-        raise _custom(QuantityError("is not a known choice", accepted=accepted, nearest=f'"{close[0]}"' if close else ""))
+        raise _custom(
+            QuantityError("is not a known choice", accepted=accepted, nearest=f'"{close[0]}"' if close else "")
+        )
     return _reader("temperature", minimum=-100, maximum=300)(value)
 
 
@@ -401,7 +409,9 @@ class Surge(Entry):
     @model_validator(mode="after")
     def _one_measure(self) -> "Surge":
         if sum(value is not None for value in (self.current, self.resistance, self.times)) != 1:
-            raise _custom(QuantityError("needs exactly one of current, resistance, times", accepted='{ current = "18 A" }'))
+            raise _custom(
+                QuantityError("needs exactly one of current, resistance, times", accepted='{ current = "18 A" }')
+            )
         return self
 
 
@@ -472,7 +482,9 @@ class Case(Entry):
     @classmethod
     def _loads_shape(cls, value: Any) -> Any:
         if isinstance(value, str) and value not in ("all", "none"):
-            raise _custom(QuantityError("is not a known choice", accepted='"all", "none", or { "name of a load" = 1.0 }'))
+            raise _custom(
+                QuantityError("is not a known choice", accepted='"all", "none", or { "name of a load" = 1.0 }')
+            )
         return value
 
     @field_validator("sources", mode="before")
@@ -509,6 +521,12 @@ class Plan(Entry):
         return self.cases or (Case(name="Everything on"),)
 
     @cached_property
+    def joins(self) -> tuple[tuple[str, str], ...]:
+        """The two points of every run and of every device."""
+        runs = tuple((run.from_point, run.to_point) for run in self.runs)
+        return runs + tuple((device.from_point, device.to_point) for device in self.devices)
+
+    @cached_property
     def point_names(self) -> tuple[str, ...]:
         """All points, in order of first mention; the chassis is not among them."""
         seen: dict[str, None] = {point.name: None for point in self.points}
@@ -516,8 +534,8 @@ class Plan(Entry):
             if isinstance(source, Converter):
                 seen[source.from_point] = None
             seen[source.at] = None
-        for between in (*self.runs, *self.devices):
-            seen[between.from_point] = seen[between.to_point] = None
+        for start, end in self.joins:
+            seen[start] = seen[end] = None
         for load in self.loads:
             seen[load.at] = None
         seen.pop(CHASSIS, None)
@@ -528,7 +546,7 @@ class Plan(Entry):
         """Name of the reference source of the main island: as stated, else the first battery, else the first source."""
         batteries = [source.name for source in self.sources if source.kind == "battery"]
         first = [source.name for source in self.sources if source.kind != "converter"]
-        return self.plan.reference or (batteries or first or [None])[0]
+        return self.plan.reference or next(iter(batteries or first), None)
 
     def ambient_degC(self, zone: str | None, case: Case | None = None) -> float:
         """Ambient of a zone (None: the plan's own), or the case's where that replaces it."""

@@ -42,7 +42,8 @@ class Solution:
     def ohm(self) -> Floats:
         """Resistance of every branch."""
         factors = np.append(self.conductors.factor_of_20, 1.0)[self.network.run]
-        return self.network.fixed_ohm + self.network.cable_ohm_20 * factors
+        ohm: Floats = self.network.fixed_ohm + self.network.cable_ohm_20 * factors
+        return ohm
 
     @cached_property
     def run_branches(self) -> tuple[np.ndarray, np.ndarray]:
@@ -76,7 +77,9 @@ class Solution:
         """For every load, the source its drop is counted from: the working reference source of its island."""
         c, plan = self.condition, self.network.plan
         sources = plan.sources
-        order = sorted(range(len(sources)), key=lambda i: (sources[i].name != plan.reference, sources[i].kind != "battery"))
+        order = sorted(
+            range(len(sources)), key=lambda i: (sources[i].name != plan.reference, sources[i].kind != "battery")
+        )
         best: dict[tuple[int, int], int] = {}
         for port in order:
             node = c.source_a[port]
@@ -159,7 +162,8 @@ class Solution:
             root = int(self.condition.source_a[port])
             beyond = np.zeros((2, network.node_count))
             mine = [i for i, one in enumerate(self.references) if one == port]
-            np.add.at(beyond, (slice(None), self.condition.load_a[mine]), np.array([drawn[mine], (drawn * continuous)[mine]]))
+            for row, amps in enumerate((drawn, drawn * continuous)):
+                np.add.at(beyond[row], self.condition.load_a[mine], amps[mine])
             for node, (branch, before) in reversed(self._parents(root).items()):
                 if node != root:
                     beyond[:, before] += beyond[:, node]
@@ -257,7 +261,9 @@ class Solution:
         inputs = {source: load for source, load, _, _ in c.converters}
         for port, source in enumerate(plan.sources):
             a, b = c.source_a[port], c.source_b[port]
-            volts = self.state.volts[a] - self.state.volts[b] if self.supply.group[a] == self.supply.group[b] else np.nan
+            volts = (
+                self.state.volts[a] - self.state.volts[b] if self.supply.group[a] == self.supply.group[b] else np.nan
+            )
             amps = float(sum(self.state.delivered_A[one] for one in self._ports(port) if self.supply.source_on[one]))
             drawn = None
             if isinstance(source, Converter):
@@ -265,7 +271,13 @@ class Solution:
                 at_input = self.state.volts[c.load_a[load]] - self.state.volts[c.load_b[load]]
                 drawn = self._number(np.nan_to_num(at_input) * self.state.drawn_A[load])
             found.append(
-                SourceResult(source.name, self._number(volts), self._number(amps), self._number(np.nan_to_num(volts) * amps), drawn)
+                SourceResult(
+                    source.name,
+                    self._number(volts),
+                    self._number(amps),
+                    self._number(np.nan_to_num(volts) * amps),
+                    drawn,
+                )
             )
         return found
 

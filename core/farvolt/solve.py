@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from farvolt.linear import Singular, factor
+from farvolt.linear import SingularError, factor
 from farvolt.network import Floats, Network
 from farvolt.operating import KNEE_SHARE, Operating, components
 
@@ -157,7 +157,8 @@ class _System:
 
     def _imbalance_scale(self) -> Floats:
         """Over nodes: 64 ε times the largest conductance that meets there (times volts: the rounding of a sum)."""
-        # `_allowed` takes the largest voltage of the network for |v|: a grounded node's currents round like its neighbours'.
+        # `_allowed` takes the largest voltage of the network for |v|: currents at a grounded node round like
+        # those of its neighbours.
         largest = np.zeros(self.network.node_count)
         np.maximum.at(largest, self.a, self.siemens)
         np.maximum.at(largest, self.b, self.siemens)
@@ -252,7 +253,11 @@ class _System:
         a = np.concatenate([self.a, c.source_a[self.sources], c.load_a[self.loads]])
         b = np.concatenate([self.b, c.source_b[self.sources], c.load_b[self.loads]])
         g = np.concatenate([self.siemens, source_S, load_S])
-        rows, columns, values = np.concatenate([a, b, a, b]), np.concatenate([a, b, b, a]), np.concatenate([g, g, -g, -g])
+        rows, columns, values = (
+            np.concatenate([a, b, a, b]),
+            np.concatenate([a, b, b, a]),
+            np.concatenate([g, g, -g, -g]),
+        )
         if self.converters:
             extra = np.array(list(self._coupling(volts))).reshape(-1, 3)
             rows = np.concatenate([rows, extra[:, 0].astype(np.int64)])
@@ -282,7 +287,8 @@ class _System:
 
     def _allowed(self, volts: Floats) -> Floats:
         """The certificate's bound on the imbalance at every node, A."""
-        return np.maximum(IMBALANCE_A, self.scale * np.abs(volts).max(initial=0.0))
+        allowed: Floats = np.maximum(IMBALANCE_A, self.scale * np.abs(volts).max(initial=0.0))
+        return allowed
 
     def newton(self, volts: Floats, share: float, *, falling: bool = False) -> Floats | None:
         """Newton's method from `volts`; None where it does not converge on a stable solution.
@@ -300,7 +306,7 @@ class _System:
             previous = np.abs(out[unknown]).max(initial=0.0) if done else np.inf
             try:
                 solution = factor(self.size, *self._reduced(volts, share), symmetric=not self.converters)
-            except Singular:
+            except SingularError:
                 return volts if done else None
             if not solution.positive:
                 return None
@@ -387,8 +393,14 @@ class _System:
             rows, columns, values = self._reduced(volts, share)
             own = np.flatnonzero(capacitance[unknown])
             try:
-                held = factor(self.size, np.append(rows, own), np.append(columns, own), np.append(values, np.full(len(own), hold)), symmetric=not self.converters)
-            except Singular:
+                held = factor(
+                    self.size,
+                    np.append(rows, own),
+                    np.append(columns, own),
+                    np.append(values, np.full(len(own), hold)),
+                    symmetric=not self.converters,
+                )
+            except SingularError:
                 return None
             if not held.positive:
                 hold *= 4
@@ -411,7 +423,7 @@ class _System:
         c, unknown = self.condition, self.position >= 0
         try:
             solution = factor(self.size, *self._reduced(volts, share), symmetric=False)
-        except Singular:
+        except SingularError:
             return None
         rate = np.zeros_like(volts)
         ahead = self.residual(volts, share + 1e-6) - self.residual(volts, share)
@@ -437,7 +449,10 @@ class _System:
         power_loads = float(np.sum((load_u * drawn)[~inputs]))
         live, allowed = self.supply.live, self._allowed(volts)
         turnover = max(abs(power_in), power_loads + abs(lost), 1e-9)
-        holds = bool(np.all(np.abs(out[live]) <= allowed[live])) and abs(power_in - power_loads - lost) <= POWER_SHARE * turnover + 1e-9
+        holds = (
+            bool(np.all(np.abs(out[live]) <= allowed[live]))
+            and abs(power_in - power_loads - lost) <= POWER_SHARE * turnover + 1e-9
+        )
         return State(
             solved=share >= 1.0 and holds,
             share_held=share,

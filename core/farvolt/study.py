@@ -8,13 +8,13 @@ import numpy as np
 
 from farvolt import checks, interim, network, operating, solve, temperatures
 from farvolt.ampacity import Ampacity
-from farvolt.batteries import model as battery_model
+from farvolt.assumptions import assumptions
 from farvolt.conductors import Size
 from farvolt.context import CaseStudy, Context
 from farvolt.errors import Fault, PlanError, QuantityError
 from farvolt.integrity import nearest
-from farvolt.network import CONTACT_OHM, Floats, Network
-from farvolt.plan import Battery, Case, Plan
+from farvolt.network import Floats, Network
+from farvolt.plan import Case, Plan
 from farvolt.protection_types import protection_type
 from farvolt.results import Study
 from farvolt.rulebook import Rulebook, load
@@ -39,7 +39,7 @@ def study(plan: Plan, folder: Path | None = None) -> Study:
         one.solutions["plan"].result(None, [found.amps if found else None for found in one.ampacities])
         for one in context.cases
     )
-    return Study(plan, rulebook, results, checks.run_all(context), _assumptions(context))
+    return Study(plan, rulebook, results, checks.run_all(context), assumptions(context))
 
 
 def build_context(plan: Plan, rulebook: Rulebook) -> Context:
@@ -51,7 +51,9 @@ def build_context(plan: Plan, rulebook: Rulebook) -> Context:
     together = temperatures.laid_together(plan)
     cases = []
     for case in plan.checked_cases:
-        ampacities = tuple(temperatures.run_ampacity(plan, rulebook, run, case, together[run.name]) for run in plan.runs)
+        ampacities = tuple(
+            temperatures.run_ampacity(plan, rulebook, run, case, together[run.name]) for run in plan.runs
+        )
         condition = operating.operating(net, case, islands)
         cases.append(CaseStudy(case, ampacities, _solutions(net, rulebook, condition, ampacities)))
     return Context(plan, rulebook, net, tuple(cases), together, partial(_resolve, plan, rulebook), chosen)
@@ -116,35 +118,8 @@ def _protection_faults(plan: Plan) -> list[Fault]:
             try:
                 protection_type(one.type)
             except QuantityError as error:
-                fault = Fault(f'runs "{run.name}"', "protection.type", one.type, error.problem, error.accepted, error.nearest)
+                fault = Fault(
+                    f'runs "{run.name}"', "protection.type", one.type, error.problem, error.accepted, error.nearest
+                )
                 faults.append(fault)
     return faults
-
-
-def _assumptions(context: Context) -> tuple[str, ...]:
-    """What the numbers rest on that the plan does not state."""
-    plan, rulebook, found = context.plan, context.rulebook, list(context.network.assumptions)
-    for source in plan.sources:
-        if isinstance(source, Battery):
-            model = battery_model(source, source.charge.si, plan.plan.nominal.si)
-            if model.resistance_is_estimated:
-                found.append(f'Battery "{source.name}": internal resistance {model.resistance_source}; state it from the data sheet.')
-            if source.emf is None:
-                found.append(f'Battery "{source.name}": EMF from the rest voltage of {source.chemistry} at its charge, typical.')
-            if source.strings > 1 and source.link is None:
-                found.append(f'Battery "{source.name}": its {source.strings} strings are taken to share equally.')
-    silent = [device.name for device in plan.devices if device.resistance is None]
-    if silent:
-        kinds = ", ".join(f"{kind} {1000 * ohm:g} mohm" for kind, ohm in CONTACT_OHM.items())
-        found.append(f"Devices that state no resistance are taken at typical values, from memory: {kinds}.")
-    if any(run.insulation is None for run in plan.runs):
-        found.append(f"Cables that state no insulation are taken at {rulebook.default_insulation_degC:g} degC, the rulebook's default.")
-    if any(one.resistance is None for run in plan.runs for one in run.protections):
-        found.append("Protection that states no resistance is taken at the typical drop of its type at rated current, from memory.")
-    if any(plan.zone_of(run) is None for run in plan.runs):
-        found.append(f"Cables in no zone are taken at an ambient of {plan.plan.ambient}.")
-    if not plan.cases:
-        found.append('The plan states no cases: one case, "Everything on", is checked.')
-    basis = rulebook.drop_basis
-    found.append(f"Drop limits are held against resistances as the rulebook means them: {basis.basis}. {basis.note}".strip())
-    return tuple(found)

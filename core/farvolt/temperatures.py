@@ -11,7 +11,7 @@ from typing import Literal
 import numpy as np
 
 from farvolt import conductors
-from farvolt.ampacity import Ampacity, ampacity, conductor_temperature_degC
+from farvolt.ampacity import Ampacity, ampacity
 from farvolt.network import Floats, insulation_degC, return_size
 from farvolt.plan import Case, Plan, Run
 from farvolt.rulebook import Rulebook
@@ -37,7 +37,10 @@ def run_ambient_degC(plan: Plan, run: Run, case: Case | None) -> float:
 
 def laid_together(plan: Plan) -> dict[str, int]:
     """Current-carrying conductors that lie together with each run, by its name, the run's own included."""
-    counts = {run.name: (2 if run.conducts == "both" and run.return_path != "chassis" else 1) * run.parallel for run in plan.runs}
+    counts = {
+        run.name: (2 if run.conducts == "both" and run.return_path != "chassis" else 1) * run.parallel
+        for run in plan.runs
+    }
     by_route: dict[str, int] = {}
     for run in plan.runs:
         if run.route is not None and run.purpose != "bond":
@@ -127,15 +130,14 @@ def estimated(
     """
     ambient = np.array([run_ambient_degC(plan, run, case) for run in plan.runs], dtype=float)
     rated = np.array([insulation_degC(run, rulebook) for run in plan.runs], dtype=float)
+    limits = np.array([limit or 0.0 for limit in amps], dtype=float)
     text = "at the temperature estimated from the current"
     degC = ambient
     for _ in range(50):
-        conductors_at = _from_temperatures(plan, degC.tolist(), text)
-        current = np.nan_to_num(currents(conductors_at))
-        target = np.array([
-            min(conductor_temperature_degC(float(current[i]), limit, ambient[i], rated[i]), rated[i]) if limit is not None else rated[i]
-            for i, limit in enumerate(amps)
-        ]) if len(amps) else degC  # fmt: skip
+        current = currents(_from_temperatures(plan, degC.tolist(), text))
+        with np.errstate(divide="ignore", invalid="ignore"):
+            target = np.minimum(ambient + (rated - ambient) * (current / limits) ** 2, rated)
+        target = np.where(limits > 0, target, rated)
         if np.abs(target - degC).max(initial=0.0) < 1e-6:
             break
         degC = target

@@ -120,7 +120,7 @@ def material(context: Context) -> Iterator[Finding]:
         return
     for run in context.plan.runs:
         strand = run.strand or context.rulebook.default_strand
-        refused = [word for word in (run.material,) if word in rule.materials]
+        refused: list[str] = [run.material] if run.material in rule.materials else []
         refused += [f"{strand} conductors" for word in (strand,) if word in rule.strands]
         for what in refused:
             yield _finding(

@@ -79,8 +79,8 @@ def two_runs(context: Context) -> Iterator[Finding]:
 def lonely_point(context: Context) -> Iterator[Finding]:
     """Points at which a single run or device ends and nothing stands: a slip in the name?"""
     uses: dict[str, int] = {}
-    for between in (*context.plan.runs, *context.plan.devices):
-        for name in (between.from_point, between.to_point):
+    for ends in context.plan.joins:
+        for name in ends:
             uses[name] = uses.get(name, 0) + 1
     listed = {point.name for point in context.plan.points}
     for source in context.plan.sources:
