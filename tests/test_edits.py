@@ -155,7 +155,8 @@ def test_a_name_that_another_has_takes_no_references_along() -> None:
         'format = 1\n[[runs]]\nname = "a"\n[[runs]]\nname = "b"\n',
         'format = 1\r\n[[runs]]\r\nname = "a"\r\n\r\n[[runs]]   # [[runs]]\r\nname = "b"\r\n',
         'format = 1\n[[runs]]\nname = """a"""\nnotes = """\n[[runs]]\n# x\n"""\n[[ runs ]]\n  name = \'b\'',
-        'format = 1\n[[runs]]\nname = "a"\nlist = [\n  1,\n  [2],\n]\n[["runs"]]\nname = "b"\n[x]\n[runs.protection]\ntype="t"',
+        'format = 1\n[[runs]]\nname = "a"\nlist = [\n  1,\n  [2],\n]\n[["runs"]]\nname = "b"\n[x]\n'
+        '[runs.protection]\ntype="t"',
     ],
 )
 def test_other_ways_of_writing_the_same(text: str) -> None:
