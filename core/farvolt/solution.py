@@ -6,11 +6,12 @@ from functools import cached_property
 
 import numpy as np
 
+from farvolt.fed import Fed, first_diode
 from farvolt.network import BOND, FEED, RETURN, Floats, Network
 from farvolt.operating import Operating
 from farvolt.plan import Converter
 from farvolt.results import CaseResult, DeviceResult, LoadResult, PointResult, RunResult, SourceResult, StringResult
-from farvolt.solve import Fed, State, first_diode
+from farvolt.solve import State
 from farvolt.temperatures import Conductors
 
 

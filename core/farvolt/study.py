@@ -23,6 +23,9 @@ from farvolt.temperatures import Conductors, Mode
 
 MODES: tuple[Mode, ...] = ("plan", "basis", "hot", "cold")
 
+MARGIN_RUNS = 400
+"""Margins take some thirty solutions each; they are worked out for plans of up to this many runs."""
+
 
 def study(plan: Plan, folder: Path | None = None) -> Study:
     """Solve and check a plan; `folder` is where a rulebook of the user's own is looked for.
@@ -36,7 +39,7 @@ def study(plan: Plan, folder: Path | None = None) -> Study:
     context = build_context(plan, rulebook)
     # The study keeps the plan as it was written; interim sizes are the context's.
     results = tuple(
-        one.solutions["plan"].result(None, [found.amps if found else None for found in one.ampacities])
+        one.solutions["plan"].result(_margin(one), [found.amps if found else None for found in one.ampacities])
         for one in context.cases
     )
     return Study(plan, rulebook, results, checks.run_all(context), assumptions(context))
@@ -57,6 +60,14 @@ def build_context(plan: Plan, rulebook: Rulebook) -> Context:
         condition = operating.operating(net, case, islands)
         cases.append(CaseStudy(case, ampacities, _solutions(net, rulebook, condition, ampacities)))
     return Context(plan, rulebook, net, tuple(cases), together, partial(_resolve, plan, rulebook), chosen)
+
+
+def _margin(one: CaseStudy) -> float | None:
+    """How many times its loads a case holds; None where it does not hold, or where the plan is too large."""
+    found = one.solutions["plan"]
+    if not found.state.solved or len(found.network.plan.runs) > MARGIN_RUNS:
+        return None
+    return solve.margin(found.network, found.condition, found.conductors.factor_of_20, found.supply, found.state)
 
 
 def _solutions(

@@ -1,0 +1,203 @@
+"""The nodal equations of one case: element laws, Kirchhoff's current law, and its Jacobian."""
+
+import numpy as np
+
+from farvolt.fed import Fed, first_diode
+from farvolt.network import Floats, Network
+from farvolt.operating import KNEE_SHARE, Operating
+
+IMBALANCE_A = 1e-9
+"""No node may be out of balance by more than this, or by the rounding of its own currents."""
+
+_EPSILON = float(np.finfo(float).eps)
+
+
+class Equations:
+    """The nodal equations F(v) = G·v + element currents = 0 of one case at one set of conductor temperatures.
+
+    Voltages are over all nodes; `position` maps a node to its unknown (-1: grounded or not fed). `sources` and `loads`
+    are the working ports, and the laws below are over these.
+    """
+
+    def __init__(self, network: Network, condition: Operating, factor_of_20: Floats, supply: Fed) -> None:
+        self.condition = condition
+        self.network = network
+        self.supply = supply
+        live = supply.live
+        factors = np.append(factor_of_20, 1.0)[network.run]
+        ohm = network.fixed_ohm + network.cable_ohm_20 * factors
+        self.branches = np.flatnonzero(condition.branch_on & live[network.a] & live[network.b])
+        self.all_siemens = np.zeros(len(ohm))
+        self.all_siemens[self.branches] = 1 / ohm[self.branches]
+        self.a, self.b = network.a[self.branches], network.b[self.branches]
+        self.siemens = self.all_siemens[self.branches]
+        self.sources = np.flatnonzero(supply.source_on)
+        self.loads = np.flatnonzero(supply.load_on)
+        self.converters = [row for row in condition.converters if supply.source_on[row[0]]]
+        unknown = live.copy()
+        unknown[list(supply.grounds)] = False
+        self.position = np.where(unknown, np.cumsum(unknown) - 1, -1)
+        self.size = int(unknown.sum())
+        self.scale = self._rounding()
+
+    def _rounding(self) -> Floats:
+        """Over nodes: 64 ε times the largest conductance that meets there (times volts: the rounding of a sum)."""
+        # `_allowed` takes the largest voltage of the network for |v|: currents at a grounded node round like
+        # those of its neighbours.
+        largest = np.zeros(self.network.node_count)
+        np.maximum.at(largest, self.a, self.siemens)
+        np.maximum.at(largest, self.b, self.siemens)
+        c = self.condition
+        for nodes in (c.source_a, c.source_b):
+            np.maximum.at(largest, nodes[self.sources], 1 / c.ohm[self.sources])
+        return 64 * _EPSILON * largest
+
+    def first_guess(self) -> Floats:
+        """All feeds of a galvanic part at its highest source voltage, all returns at zero."""
+        c = self.condition
+        volts = np.zeros(self.network.node_count)
+        feeds = {node for (_, pole), node in self.network.nodes.items() if pole == 0}
+        high: dict[int, float] = {}
+        for port in self.sources:
+            if port < first_diode(self.network):
+                island = int(c.islands.of_node[c.source_a[port]])
+                high[island] = max(high.get(island, 0.0), float(c.volts[port]))
+        for node in feeds:
+            volts[node] = high.get(int(c.islands.of_node[node]), 0.0)
+        return volts
+
+    # Element laws -----------------------------------------------------------------------------------------
+
+    def source_law(self, volts: Floats) -> tuple[Floats, Floats, Floats]:
+        """Port voltage, current delivered and its slope −di/du (≥ 0) of the working source ports."""
+        c, on = self.condition, self.sources
+        u = self.source_volts(volts)
+        ohm, low, power = c.ohm[on], c.low[on], c.power[on]
+        amps = (c.volts[on] - u) / ohm
+        slope = 1 / ohm
+        floor = KNEE_SHARE * c.nominal[on]
+        by_power = np.where(np.isfinite(power), power / np.maximum(u, floor), np.inf)
+        high = np.minimum(c.high[on], by_power)
+        idle, limited = amps < low, amps > high
+        power_bound = limited & (by_power <= c.high[on]) & (u > floor)
+        amps = np.clip(amps, low, high)
+        with np.errstate(invalid="ignore"):
+            slope = np.where(idle, 0.0, np.where(limited, np.where(power_bound, by_power / u, 0.0), slope))
+        leak = c.leak[on]
+        return u, amps - leak * u, slope + leak
+
+    def load_law(self, volts: Floats, share: float) -> tuple[Floats, Floats, Floats]:
+        """Port voltage, current drawn and its slope di/du of the working load ports, loads raised to `share`."""
+        c, on = self.condition, self.loads
+        u = self.load_volts(volts)
+        watts = self._watts(volts, share)[on]
+        amps, siemens, knee = share * c.load_A[on], share * c.load_S[on], c.knee[on]
+        above = u >= knee
+        safe = np.where(above, u, knee)
+        below_S = watts / knee**2 + amps / knee
+        drawn = np.where(above, watts / safe + amps, below_S * u) + siemens * u
+        slope = np.where(above, -watts / safe**2, below_S) + siemens
+        return u, drawn, slope
+
+    def _watts(self, volts: Floats, share: float) -> Floats:
+        """Constant power of every load port; a converter's input follows its output."""
+        c = self.condition
+        watts = share * c.load_W
+        if self.converters:
+            u, amps, _ = self.source_law(volts)
+            of_port = {int(port): place for place, port in enumerate(self.sources)}
+            for port, load, efficiency, standby in self.converters:
+                place = of_port[port]
+                watts[load] = u[place] * amps[place] / efficiency + share * standby
+        return watts
+
+    # Equations --------------------------------------------------------------------------------------------
+
+    def residual(self, volts: Floats, share: float) -> Floats:
+        """Current leaving every node: zero where Kirchhoff's current law holds. Grounds included."""
+        c = self.condition
+        out = np.zeros(self.network.node_count)
+        flow = self.siemens * (volts[self.a] - volts[self.b])
+        _, delivered, _ = self.source_law(volts)
+        _, drawn, _ = self.load_law(volts, share)
+        for nodes, amps, sign in (
+            (self.a, flow, 1.0), (self.b, flow, -1.0),
+            (c.source_a[self.sources], delivered, -1.0), (c.source_b[self.sources], delivered, 1.0),
+            (c.load_a[self.loads], drawn, 1.0), (c.load_b[self.loads], drawn, -1.0),
+        ):  # fmt: skip
+            np.add.at(out, nodes, sign * amps)
+        return out
+
+    def _stamps(self, volts: Floats, share: float) -> tuple[np.ndarray, np.ndarray, Floats]:
+        """Rows, columns and values of the Jacobian over all nodes."""
+        c = self.condition
+        _, _, source_S = self.source_law(volts)
+        _, _, load_S = self.load_law(volts, share)
+        # A trace of slope keeps a part whose sources are all at a limit from being singular; F stays exact.
+        source_S = np.maximum(source_S, 1e-9 / c.ohm[self.sources])
+        a = np.concatenate([self.a, c.source_a[self.sources], c.load_a[self.loads]])
+        b = np.concatenate([self.b, c.source_b[self.sources], c.load_b[self.loads]])
+        g = np.concatenate([self.siemens, source_S, load_S])
+        rows, columns, values = (
+            np.concatenate([a, b, a, b]),
+            np.concatenate([a, b, b, a]),
+            np.concatenate([g, g, -g, -g]),
+        )
+        if self.converters:
+            extra = np.array(list(self._coupling(volts))).reshape(-1, 3)
+            rows = np.concatenate([rows, extra[:, 0].astype(np.int64)])
+            columns = np.concatenate([columns, extra[:, 1].astype(np.int64)])
+            values = np.concatenate([values, extra[:, 2]])
+        return rows, columns, values
+
+    def _coupling(self, volts: Floats) -> list[tuple[int, int, float]]:
+        """How a converter's input current follows the voltage at its output."""
+        c = self.condition
+        u, amps, slope = self.source_law(volts)
+        of_port = {int(port): place for place, port in enumerate(self.sources)}
+        found = []
+        for port, load, efficiency, _ in self.converters:
+            place = of_port[port]
+            rate = (amps[place] - u[place] * slope[place]) / efficiency
+            u_in = volts[c.load_a[load]] - volts[c.load_b[load]]
+            per_volt = rate / u_in if u_in >= c.knee[load] else rate * u_in / c.knee[load] ** 2
+            for row, sign_row in ((c.load_a[load], 1.0), (c.load_b[load], -1.0)):
+                for column, sign in ((c.source_a[port], 1.0), (c.source_b[port], -1.0)):
+                    found.append((int(row), int(column), sign_row * sign * per_volt))
+        return found
+
+    def balanced(self, out: Floats, volts: Floats) -> bool:
+        """Whether every node balances, with a quarter of what the certificate allows."""
+        live = self.supply.live
+        return bool(np.all(np.abs(out[live]) <= self.allowed(volts)[live] / 4))
+
+    def allowed(self, volts: Floats) -> Floats:
+        """The certificate's bound on the imbalance at every node, A."""
+        allowed: Floats = np.maximum(IMBALANCE_A, self.scale * np.abs(volts).max(initial=0.0))
+        return allowed
+
+    def jacobian(self, volts: Floats, share: float) -> tuple[np.ndarray, np.ndarray, Floats]:
+        """Rows, columns and values of the Jacobian over the unknown nodes."""
+        rows, columns, values = self._stamps(volts, share)
+        rows, columns = self.position[rows], self.position[columns]
+        keep = (rows >= 0) & (columns >= 0)
+        return rows[keep], columns[keep], values[keep]
+
+    def load_volts(self, volts: Floats) -> Floats:
+        """Voltage across every working load port, of node voltages or of a change in them."""
+        c, on = self.condition, self.loads
+        across: Floats = volts[c.load_a[on]] - volts[c.load_b[on]]
+        return across
+
+    def source_volts(self, volts: Floats) -> Floats:
+        """Voltage across every working source port, of node voltages or of a change in them."""
+        c, on = self.condition, self.sources
+        across: Floats = volts[c.source_a[on]] - volts[c.source_b[on]]
+        return across
+
+    def above_knees(self, volts: Floats) -> bool:
+        """True when no constant-power or constant-current load stands below its knee."""
+        c, on = self.condition, self.loads
+        u = self.load_volts(volts)
+        demands = (self._watts(volts, 1.0)[on] > 0) | (c.load_A[on] > 0)
+        return not bool(np.any(demands & (u < c.knee[on])))
