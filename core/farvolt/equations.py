@@ -9,6 +9,9 @@ from farvolt.operating import KNEE_SHARE, Operating
 IMBALANCE_A = 1e-9
 """No node may be out of balance by more than this, or by the rounding of its own currents."""
 
+_TRACE_S = 1e-9
+"""Slope given to a source at its limit in the Jacobian alone; far below a blocking diode's leak."""
+
 _EPSILON = float(np.finfo(float).eps)
 
 
@@ -134,7 +137,7 @@ class Equations:
         _, _, source_S = self.source_law(volts)
         _, _, load_S = self.load_law(volts, share)
         # A trace of slope keeps a part whose sources are all at a limit from being singular; F stays exact.
-        source_S = np.maximum(source_S, 1e-9 / c.ohm[self.sources])
+        source_S = np.maximum(source_S, _TRACE_S)
         a = np.concatenate([self.a, c.source_a[self.sources], c.load_a[self.loads]])
         b = np.concatenate([self.b, c.source_b[self.sources], c.load_b[self.loads]])
         g = np.concatenate([self.siemens, source_S, load_S])

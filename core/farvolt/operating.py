@@ -19,7 +19,7 @@ KNEE_SHARE = 0.4
 DROOP_SHARE = 1e-3
 """Droop of a charger or converter at rated current, as a share of its voltage, unless its resistance is stated."""
 
-DIODE_LEAK_S = 1e-9
+DIODE_LEAK_S = 1e-6
 """What a blocking diode lets through, so that no part of a network floats."""
 
 

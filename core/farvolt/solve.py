@@ -170,6 +170,8 @@ def _settle(equations: Equations, volts: Floats, share: float) -> Floats | None:
             return None
         if not held.positive:
             hold *= 4
+            if hold > 1e9:
+                return None
             continue
         step = np.zeros_like(volts)
         step[unknown] = -held.solve(out[unknown])
