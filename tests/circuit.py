@@ -22,7 +22,7 @@ CLASS_5_OHM_PER_KM = {
 COPPER_PER_K = 0.00393
 """Temperature coefficient of copper at 20 °C: IEC 60028."""
 
-BLOCKED_S = 1e-9
+BLOCKED_S = 1e-6
 """What a diode lets through backwards, as the solver states it."""
 
 
@@ -192,7 +192,9 @@ def _run_ohm(run: Run) -> dict[str, float]:
         assert run.return_path.size is not None
         assert run.return_path.length is not None
         lengths["-"], sizes["-"] = run.return_path.length.si, run.return_path.size.name
-    only = {"feed": "+", "return": "-"}.get(run.carries or "", "-" if "chassis" in (run.from_point, run.to_point) else "+-")
+    only = {"feed": "+", "return": "-"}.get(
+        run.carries or "", "-" if "chassis" in (run.from_point, run.to_point) else "+-"
+    )
     poles = only.replace("-", "") if run.return_path == "chassis" else only
     cable = {pole: CLASS_5_OHM_PER_KM[sizes[pole]] / 1000 * lengths[pole] / run.parallel for pole in poles}
     if run.resistance is not None:
@@ -231,7 +233,11 @@ def _feeder(plan: Plan, source: object, case: Case, pins: dict[Pin, int], nomina
     if isinstance(source, Battery):
         assert source.emf is not None
         emf = state.emf.si if state is not None and state.emf is not None else source.emf.si
-        ohm = source.resistance.si if source.resistance is not None else emf / (source.short_circuit.si if source.short_circuit else 0)
+        ohm = (
+            source.resistance.si
+            if source.resistance is not None
+            else emf / (source.short_circuit.si if source.short_circuit else 0)
+        )
         low = 0.0 if state is not None and state.state == "full" else float("-inf")
         return Feeder(source.name, a, b, emf, ohm / source.strings, low, float("inf"))
     if isinstance(source, Solar):
@@ -263,7 +269,11 @@ def _drain(load: Load, share: float, pins: dict[Pin, int], nominal: dict[int, fl
         assert load.resistance is not None
         rated, watts = "resistance", volts**2 / load.resistance.si
     behaves, watts = load.behaves or rated, watts * share
-    laws = {"power": (watts, 0.0, 0.0), "current": (0.0, watts / volts, 0.0), "resistance": (0.0, 0.0, watts / volts**2)}
+    laws = {
+        "power": (watts, 0.0, 0.0),
+        "current": (0.0, watts / volts, 0.0),
+        "resistance": (0.0, 0.0, watts / volts**2),
+    }
     return Drain(load.name, a, b, *laws[behaves], 0.4 * nominal[a])
 
 
@@ -272,7 +282,9 @@ def _converters(plan: Plan, feeders: list[Feeder]) -> list[tuple[Converter, Feed
     return [(one, by_name[one.name]) for one in plan.sources if isinstance(one, Converter) and one.name in by_name]
 
 
-def _coupling(plan: Plan, source: Converter, feeder: Feeder, pins: dict[Pin, int], nominal: dict[int, float]) -> Coupling:
+def _coupling(
+    plan: Plan, source: Converter, feeder: Feeder, pins: dict[Pin, int], nominal: dict[int, float]
+) -> Coupling:
     a, b = pins[source.from_point, "+"], pins[source.from_point, "-"]
     drain = Drain(source.name, a, b, 0.0, 0.0, 0.0, 0.4 * nominal[a])
     return Coupling(feeder, drain, source.efficiency.si, source.standby.si)
@@ -325,5 +337,7 @@ def currents(circuit: Circuit, volts: dict[int, float], share: float = 1.0) -> l
     for one in circuit.couplings:
         given = volts[one.feeder.a] - volts[one.feeder.b]
         watts = given * one.feeder.amps(given) / one.efficiency + share * one.standby_W
-        found.append((one.drain.a, one.drain.b, one.drain.current(volts[one.drain.a] - volts[one.drain.b], watts=watts)))
+        found.append(
+            (one.drain.a, one.drain.b, one.drain.current(volts[one.drain.a] - volts[one.drain.b], watts=watts))
+        )
     return found

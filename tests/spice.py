@@ -1,7 +1,9 @@
 """The volts of a plan by another program: a netlist for ngspice, and what it answers.
 
-Loads are raised from zero to full in steps of one sweep, each step starting from the one before: the same way up
-that the solver claims, gone by a program that shares no line with it.
+It goes the way up that the solver claims: a small capacitance stands at every source and load, and in a transient
+the loads rise from zero to full and then stay, until nothing moves. What it settles on is stable, and no better
+solution was passed by. (Its operating point alone would start at full load, where one-way sources that are idle or
+at their limit leave its equations singular.)
 """
 
 import subprocess
@@ -12,28 +14,39 @@ from pathlib import Path
 
 from circuit import Circuit, Drain, Feeder, connected
 
-OPTIONS = "reltol=1e-9 abstol=1e-9 vntol=1e-9 gmin=1e-15 itl1=1000 itl2=1000 itl4=1000 trtol=1e9 method=gear maxord=1"
+STEP_S, REST_S = 0.1, 2.0
+OPTIONS = "reltol=1e-9 abstol=1e-9 vntol=1e-9 gmin=1e-15 itl1=1000 itl4=1000 trtol=1e9 method=gear maxord=1"
+"""First order and steps of their full length: only the end counts, not how accurately it gets there."""
 
 
 @dataclass(frozen=True)
 class Answer:
-    """What ngspice found at each share of the loads: node volts, every part from its own ground."""
+    """What ngspice found: node volts by time, every galvanic part from a ground of its own."""
 
-    shares: list[float]
+    times_s: list[float]
     volts: list[dict[int, float]]
+    rise_s: float
 
     @property
     def complete(self) -> bool:
-        """Whether it reached the full loads."""
-        return bool(self.shares) and abs(self.shares[-1] - 4) < 1e-9
+        """Whether it reached the end; otherwise it failed to converge on the way."""
+        return bool(self.times_s) and abs(self.times_s[-1] - self.rise_s - REST_S) < 1e-9
+
+    def share_held(self, circuit: Circuit) -> float:
+        """The share of the loads at which the first of them falls below its knee; 1 where none does."""
+        demanding = [one for one in circuit.drains if one.watts or one.amps] + [one.drain for one in circuit.couplings]
+        for time_s, volts in zip(self.times_s, self.volts, strict=True):
+            if any(volts[one.a] - volts[one.b] < one.knee for one in demanding):
+                return min(time_s / self.rise_s, 1.0)
+        return 1.0
 
 
-def netlist(circuit: Circuit, steps: int, target: str) -> str:
-    """The circuit as a netlist with a sweep of the loads in `steps`, written to the file `target`."""
+def netlist(circuit: Circuit, target: str, rise_s: float) -> str:
+    """The circuit as a netlist whose volts are written to the file `target`."""
+    end_s = rise_s + REST_S
     number = count(1)
-    lines = ["* loads raised from zero", "Vshare share 0 PWL(0 0 2 1 4 1)"]
-    grounds = {min(part): 0 for part in circuit.parts}
-    lines += [f"Vground{node} n{node} 0 0" for node in grounds]
+    lines = ["* loads raised from zero", f"Vshare share 0 PWL(0 0 {rise_s!r} 1 {end_s!r} 1)"]
+    lines += [f"Vground{min(part)} n{min(part)} 0 0" for part in circuit.parts]
     lines += [f"R{next(number)} n{one.a} n{one.b} {one.ohm!r}" for one in circuit.resistors]
     for feeder in circuit.feeders:
         lines += _feeder(feeder, next(number))
@@ -42,23 +55,48 @@ def netlist(circuit: Circuit, steps: int, target: str) -> str:
     for one in circuit.couplings:
         watts = f"({_u(one.feeder)}*({_amps(one.feeder)})/{one.efficiency!r}+v(share)*{one.standby_W!r})"
         lines.append(_drain(one.drain, watts, next(number)))
-    lines += [f"C{next(number)} n{one.a} n{one.b} 1m" for one in (*circuit.feeders, *circuit.drains, *(x.drain for x in circuit.couplings))]
-    lines += [f".ic v(n{node})={volts!r}" for node, volts in _hints(circuit).items()]
+    ends = [*circuit.feeders, *circuit.drains, *(one.drain for one in circuit.couplings)]
+    lines += [f"C{next(number)} n{one.a} n{one.b} 1m" for one in ends]
+    lines += [f".ic v(n{node})={volts!r}" for node, volts in _no_load(circuit).items()]
     names = " ".join(f"v(n{node})" for node in sorted(circuit.live))
-    control = ["set numdgt=16", "set wr_singlescale", f"tran {1 / steps!r} 4 0 {1 / steps!r} uic", f"wrdata {target} {names}", "quit"]
-    return "\n".join([*lines, f".options {OPTIONS}", ".control", *control, ".endc", ".end"]) + "\n"
+    run = f"tran {STEP_S!r} {end_s!r} 0 {STEP_S!r} uic"
+    control = ["set numdgt=16", "set wr_singlescale", run, f"wrdata {target} {names}"]
+    return "\n".join([*lines, f".options {OPTIONS}", ".control", *control, "quit", ".endc", ".end"]) + "\n"
 
 
-def answer(circuit: Circuit, steps: int = 10) -> Answer:
-    """Run ngspice on a circuit; an answer cut short is the reference's own failure to converge."""
+def answer(circuit: Circuit, rise_s: float = 2.0) -> Answer:
+    """Run ngspice on a circuit; the longer the rise, the nearer it stays to the volts of each share."""
     with tempfile.TemporaryDirectory() as folder:
         deck, target = Path(folder, "deck.cir"), Path(folder, "volts.txt")
-        deck.write_text(netlist(circuit, steps, target.name), encoding="utf-8")
+        deck.write_text(netlist(circuit, target.name, rise_s), encoding="utf-8")
         subprocess.run(["ngspice", "-b", deck.name], cwd=folder, capture_output=True, timeout=60, check=False)
         rows = target.read_text(encoding="utf-8").split("\n") if target.exists() else []
     values = [[float(word) for word in row.split()] for row in rows if row.strip()]
     nodes = sorted(circuit.live)
-    return Answer([row[0] for row in values], [dict(zip(nodes, row[1:], strict=True)) for row in values])
+    return Answer([row[0] for row in values], [dict(zip(nodes, row[1:], strict=True)) for row in values], rise_s)
+
+
+def largest_difference_V(circuit: Circuit, one: dict[int, float], other: dict[int, float]) -> float:
+    """The largest difference between two accounts of the node volts, each part counted from one of its nodes.
+
+    Left out is what nothing flows in, such as an unloaded stretch behind a diode: in a transient it keeps the
+    charge it was given. The volts of `other` say where that is.
+    """
+    worst = 0.0
+    for part in _flowing(circuit, other):
+        ground = min(part)
+        worst = max(worst, *(abs(one[node] - one[ground] - other[node] + other[ground]) for node in part))
+    return worst
+
+
+def _flowing(circuit: Circuit, volts: dict[int, float]) -> list[set[int]]:
+    """Nodes by the conductors and working elements that join them, where a source among these delivers."""
+    giving = [one for one in circuit.feeders if abs(one.amps(volts[one.a] - volts[one.b])) > 1e-6]
+    edges = [(one.a, one.b) for one in (*circuit.resistors, *giving)]
+    part = connected(circuit.live, edges)
+    return [
+        {node for node in part if part[node] == number} for number in {part[one.a] for one in giving if not one.leak_S}
+    ]
 
 
 def _u(one: Feeder | Drain) -> str:
@@ -90,14 +128,13 @@ def _drain(one: Drain, watts: str, number: int) -> str:
     return f"B{number} n{one.a} n{one.b} I=({u} >= {knee!r}) ? ({above}) : ({below})"
 
 
-def _hints(circuit: Circuit) -> dict[int, float]:
-    """Where to start: feeds at the highest voltage of what feeds them, with that source inside its droop."""
+def _no_load(circuit: Circuit) -> dict[int, float]:
+    """Where to start: feeds at the highest voltage of what feeds them, with that source just inside its droop."""
     feeds = {node for (_, pole), node in circuit.pins.items() if pole == "+"} & circuit.live
     diodes = [one for one in circuit.feeders if one.leak_S]
-    joined = [(one.a, one.b) for one in (*circuit.resistors, *diodes) if one.a in feeds and one.b in feeds]
-    part = connected(feeds, joined)
-    hints = dict.fromkeys(circuit.live, 0.0)
+    part = connected(feeds, [(one.a, one.b) for one in (*circuit.resistors, *diodes) if {one.a, one.b} <= feeds])
+    start = dict.fromkeys(circuit.live, 0.0)
     for node in feeds:
         beside = [one for one in circuit.feeders if part.get(one.a) == part[node]]
-        hints[node] = max((one.volts - min(one.high, 1.0) * one.ohm / 2 for one in beside), default=0.0)
-    return hints
+        start[node] = max((one.volts - min(one.high, 1.0) * one.ohm / 2 for one in beside), default=0.0)
+    return start

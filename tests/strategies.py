@@ -102,7 +102,9 @@ def _sources(chance: random.Random, wishes: Wishes, draft: Draft, points: list[s
         sources.append(charger)
     if not charger_only and chance.random() < wishes.solar:
         power, ceiling = _uniform(chance, 20, 400, "W"), _uniform(chance, 14 * scale, 14.6 * scale, "V")
-        sources.append({"name": "roof", "kind": "solar", "at": chance.choice(points), "power": power, "ceiling": ceiling})
+        sources.append(
+            {"name": "roof", "kind": "solar", "at": chance.choice(points), "power": power, "ceiling": ceiling}
+        )
 
 
 def _battery(chance: random.Random, name: str, at: str, scale: float) -> Draft:
@@ -128,7 +130,7 @@ def _tree(chance: random.Random, wishes: Wishes, draft: Draft, points: list[str]
         elif kind < 0.3 * wishes.devices:
             _run(chance, draft, before, f"{point} stud", "same")
             _device(chance, draft, f"{point} stud", point)
-        elif kind > 1 - 0.1 * wishes.diodes:
+        elif kind > 1 - 0.2 * wishes.diodes:
             _diode(chance, draft, before, point)
         elif uses_chassis and kind > 0.6:
             _run(chance, draft, before, point, "chassis")
@@ -140,7 +142,9 @@ def _tree(chance: random.Random, wishes: Wishes, draft: Draft, points: list[str]
             _run(chance, draft, before, point, "same")
 
 
-def _run(chance: random.Random, draft: Draft, start: str, end: str, back: str | None, carries: str | None = None) -> None:
+def _run(
+    chance: random.Random, draft: Draft, start: str, end: str, back: str | None, carries: str | None = None
+) -> None:
     run: Draft = {"name": f"run {len(draft['runs']) + 1}", "from": start, "to": end}
     run["length"] = _uniform(chance, 0.3, 6, "m")
     run["size"], run["strand"] = chance.choice(SIZES), "flexible"
@@ -153,9 +157,14 @@ def _run(chance: random.Random, draft: Draft, start: str, end: str, back: str | 
     elif back == "chassis":
         run["return"] = back
     if chance.random() < 0.15:
-        run["resistance"], run["resistance_temperature"] = _ohm(chance, 2e-3, 60e-3), chance.choice(("20 degC", "50 degC"))
+        run["resistance"], run["resistance_temperature"] = (
+            _ohm(chance, 2e-3, 60e-3),
+            chance.choice(("20 degC", "50 degC")),
+        )
     if chance.random() < 0.3:
-        run["protection"] = [_protection(chance, "return" if end == "chassis" else carries) for _ in range(chance.choice((1, 1, 2)))]
+        run["protection"] = [
+            _protection(chance, "return" if end == "chassis" else carries) for _ in range(chance.choice((1, 1, 2)))
+        ]
     draft["runs"].append(run)
 
 
@@ -202,11 +211,11 @@ def _converter(chance: random.Random, draft: Draft, points: list[str], nominal: 
     """A converter with an island of its own behind it: two points, a run and a load."""
     own = chance.choice((12, 24))
     amps = chance.uniform(2, 10)
-    draft["sources"].append({
-        "name": "converter", "kind": "converter", "from": chance.choice(points), "at": "far bus", "nominal": f"{own} V",
-        "volts": _uniform(chance, own, 1.15 * own, "V"), "amps": f"{amps:.5g} A", "efficiency": _uniform(chance, 80, 97, "%"),
-        "standby": _uniform(chance, 0, 3, "W"), "isolated": chance.random() < 0.5, "return_bond": _ohm(chance, 0.5e-3, 5e-3),
-    })  # fmt: skip
+    converter = {"name": "converter", "kind": "converter", "from": chance.choice(points), "at": "far bus"}
+    converter |= {"nominal": f"{own} V", "volts": _uniform(chance, own, 1.15 * own, "V"), "amps": f"{amps:.5g} A"}
+    converter |= {"efficiency": _uniform(chance, 80, 97, "%"), "standby": _uniform(chance, 0, 3, "W")}
+    converter |= {"isolated": chance.random() < 0.5, "return_bond": _ohm(chance, 0.5e-3, 5e-3)}
+    draft["sources"].append(converter)
     _run(chance, draft, "far bus", "far end", "same")
     watts = own * amps * chance.uniform(0.1, 0.7)
     behaves = chance.choice(("power", "current", "resistance"))
@@ -216,7 +225,9 @@ def _converter(chance: random.Random, draft: Draft, points: list[str], nominal: 
 def _case(chance: random.Random, wishes: Wishes, draft: Draft) -> Draft:
     case: Draft = {"name": "Random case", "sources": {}, "devices": {}}
     if chance.random() < 0.3:
-        case["loads"] = {load["name"]: round(chance.uniform(0, 1.2), 3) for load in draft["loads"] if chance.random() < 0.8}
+        case["loads"] = {
+            load["name"]: round(chance.uniform(0, 1.2), 3) for load in draft["loads"] if chance.random() < 0.8
+        }
     if wishes.limited_sources:
         for source in draft["sources"]:
             state = _source_state(chance, source, draft["sources"])
