@@ -91,7 +91,8 @@ def largest_difference_V(circuit: Circuit, one: dict[int, float], other: dict[in
 
 def _flowing(circuit: Circuit, volts: dict[int, float]) -> list[set[int]]:
     """Nodes by the conductors and working elements that join them, where a source among these delivers."""
-    giving = [one for one in circuit.feeders if abs(one.amps(volts[one.a] - volts[one.b])) > 1e-6]
+    across = {one.name: volts[one.a] - volts[one.b] for one in circuit.feeders}
+    giving = [one for one in circuit.feeders if abs(one.amps(across[one.name]) + one.leak_S * across[one.name]) > 1e-6]
     edges = [(one.a, one.b) for one in (*circuit.resistors, *giving)]
     part = connected(circuit.live, edges)
     return [
