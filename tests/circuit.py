@@ -47,11 +47,13 @@ class Feeder:
     low: float
     high: float
     watts: float = float("inf")
+    floor: float = 1.0
+    """Below this voltage a power is taken as the current it gives here."""
     leak_S: float = 0.0
 
     def amps(self, u: float) -> float:
         """Current delivered at the voltage u."""
-        most = min(self.high, self.watts / max(u, 1.0))
+        most = min(self.high, self.watts / max(u, self.floor))
         return min(max((self.volts - u) / self.ohm, self.low), most) - self.leak_S * u
 
 
@@ -244,7 +246,7 @@ def _feeder(plan: Plan, source: object, case: Case, pins: dict[Pin, int], nomina
         watts = source.power.si * (state.irradiance.si if state is not None and state.irradiance is not None else 1.0)
         # The default output limit of a controller: its power at 40 % of nominal.
         limit, volts = source.power.si / (0.4 * nominal[a]), source.ceiling.si
-        return Feeder(source.name, a, b, volts, 1e-3 * volts / limit, 0.0, limit, watts)
+        return Feeder(source.name, a, b, volts, 1e-3 * volts / limit, 0.0, limit, watts, 0.4 * nominal[a])
     volts, limit = source.volts.si, source.amps.si
     ohm = source.resistance.si if source.resistance is not None else 1e-3 * volts / limit
     return Feeder(source.name, a, b, volts, ohm, 0.0, limit)

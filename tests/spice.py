@@ -111,7 +111,7 @@ def _amps(one: Feeder) -> str:
     if one.high != float("inf"):
         law = f"min({law},{one.high!r})"
     if one.watts != float("inf"):
-        law = f"min({law},{one.watts!r}/max({_u(one)},1))"
+        law = f"min({law},{one.watts!r}/max({_u(one)},{one.floor!r}))"
     return law
 
 

@@ -191,7 +191,7 @@ def _diode(chance: random.Random, draft: Draft, start: str, end: str) -> None:
 def _loads(chance: random.Random, wishes: Wishes, draft: Draft, points: list[str], nominal: int) -> None:
     count = chance.randint(1, min(8, len(points)))
     # An ordinary feed has some 40 milliohm: E²/4R is the most that one load at its end can draw.
-    whole = wishes.load_share * chance.random() * nominal**2 / (4 * 0.04)
+    whole = wishes.load_share * chance.uniform(0.02, 1) * nominal**2 / (4 * 0.04)
     for index in range(count):
         watts, behaves = whole / count * chance.uniform(0.3, 1.5), chance.choice(wishes.behaviours)
         load = {"name": f"load {index + 1}", "at": chance.choice(points[1:])}
