@@ -1,0 +1,7 @@
+"""The page "Plan": the tables to edit, and under them what every load and cable run sees."""
+
+from farvolt_app.pages import editor, heading, results
+
+editor.show()
+heading.faults()
+results.show()

@@ -1,0 +1,69 @@
+"""What a browser session keeps: its draft, and the text its table editors were shown. No other session sees it."""
+
+import os
+from pathlib import Path
+
+import streamlit as st
+
+from farvolt import examples
+from farvolt.errors import FarvoltError
+from farvolt_app import draft as drafts
+from farvolt_app.draft import Draft
+from farvolt_app.server import PLAN_VARIABLE
+
+FIRST_EXAMPLE = "instrument-repair-van"
+
+
+def begin() -> None:
+    """At the start of a session: the draft of the plan that the command named, or of an example."""
+    if "draft" in st.session_state:
+        return
+    named = os.environ.get(PLAN_VARIABLE, "")
+    opened = drafts.begin(examples.text(FIRST_EXAMPLE)) if not named else None
+    try:
+        opened = opened or drafts.open_file(Path(named))
+    except FarvoltError as error:
+        say(str(error))
+        opened = drafts.begin(examples.text(FIRST_EXAMPLE))
+    st.session_state["revision"] = 0
+    put(opened)
+
+
+def draft() -> Draft:
+    """The session's draft."""
+    found: Draft = st.session_state["draft"]
+    return found
+
+
+def put(changed: Draft, *, keep_editors: bool = False) -> None:
+    """Take another draft; the table editors start anew from its text, unless they are what changed it."""
+    st.session_state["draft"] = changed
+    if not keep_editors:
+        show_anew()
+
+
+def show_anew() -> None:
+    """Let the table editors start from the draft's text. Until then the text they were shown must not change:
+    an editor reports all changes since it was first shown, and starts over when its data is another."""
+    st.session_state["shown_text"] = draft().text
+    st.session_state["revision"] += 1
+
+
+def shown_text() -> str:
+    """The text that the table editors were shown."""
+    return str(st.session_state["shown_text"])
+
+
+def editor_key(name: str) -> str:
+    """The key of an editor: another one whenever the editors start anew."""
+    return f"{name}-{st.session_state['revision']}"
+
+
+def say(message: str) -> None:
+    """A message for the next drawing of the page, such as why a file could not be opened."""
+    st.session_state["message"] = message
+
+
+def said() -> str:
+    """The message, once."""
+    return str(st.session_state.pop("message", ""))
