@@ -16,6 +16,9 @@ from farvolt.temperatures import Mode
 Resolve = Callable[[Mapping[str, Size], int, Mode], Solution]
 """Solve one case again with other sizes: (run name to size, index of the case, mode)."""
 
+SolveCase = Callable[[Case, Mode], Solution]
+"""Solve the plan as it is in another case."""
+
 
 @dataclass(frozen=True)
 class CaseStudy:
@@ -42,6 +45,7 @@ class Context:
     together: Mapping[str, int]
     """Current-carrying conductors laid with each run."""
     resolve: Resolve
+    solve_case: SolveCase
     interim: Mapping[str, Size]
     """Sizes taken for the runs that state none; `plan` has them filled in."""
 

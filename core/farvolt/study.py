@@ -59,7 +59,16 @@ def build_context(plan: Plan, rulebook: Rulebook) -> Context:
         )
         condition = operating.operating(net, case, islands)
         cases.append(CaseStudy(case, ampacities, _solutions(net, rulebook, condition, ampacities)))
-    return Context(plan, rulebook, net, tuple(cases), together, partial(_resolve, plan, rulebook), chosen)
+    return Context(
+        plan,
+        rulebook,
+        net,
+        tuple(cases),
+        together,
+        partial(_resolve, plan, rulebook),
+        partial(_solve_case, net, rulebook, islands),
+        chosen,
+    )
 
 
 def _margin(one: CaseStudy) -> float | None:
@@ -102,12 +111,15 @@ def _solutions(
 
 def _resolve(plan: Plan, rulebook: Rulebook, sizes: Mapping[str, Size], case: int, mode: Mode) -> Solution:
     """One case again, with other sizes for some runs."""
-    changed = interim.with_sizes(plan, sizes)
-    net = network.build(changed, rulebook)
-    entry: Case = changed.checked_cases[case]
-    condition = operating.operating(net, entry)
+    net = network.build(interim.with_sizes(plan, sizes), rulebook)
+    return _solve_case(net, rulebook, operating.islands(net), plan.checked_cases[case], mode)
+
+
+def _solve_case(net: Network, rulebook: Rulebook, islands: operating.Islands, case: Case, mode: Mode) -> Solution:
+    """A case on a network as it is."""
+    condition = operating.operating(net, case, islands)
     supply = solve.fed(net, condition)
-    wanted = temperatures.at(changed, rulebook, entry, mode)
+    wanted = temperatures.at(net.plan, rulebook, case, mode)
     return Solution(net, condition, supply, wanted, solve.solve(net, condition, wanted.factor_of_20, supply))
 
 

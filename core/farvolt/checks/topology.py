@@ -119,7 +119,7 @@ _UNUSED: dict[str, tuple[str, ...]] = {
     "sources": ("max_discharge", "max_charge", "array", "self_limiting"),
     "runs": (),
     "devices": ("continuous", "volts"),
-    "loads": ("cut_out", "recovery", "surge", "max_protection", "hours_per_day", "schedule", "duty"),
+    "loads": ("surge", "max_protection", "hours_per_day", "schedule", "duty"),
 }
 
 
