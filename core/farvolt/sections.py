@@ -9,12 +9,12 @@ from collections import deque
 from dataclasses import dataclass, field
 
 from farvolt.network import Network
-from farvolt.plan import CHASSIS, Plan, Protection, Run
+from farvolt.plan import CHASSIS, Converter, Plan, Protection, Run
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, eq=False)
 class Guard:
-    """A protection on a run."""
+    """A protection on a run. There is one for each end of a run that has protection in its feed."""
 
     run: int
     protection: Protection
@@ -41,10 +41,16 @@ class Exposure:
     """Length of this run's conductor before its own first protection; all of it where it has none."""
     before_m: float
     """Length from the source to this end, where nothing protects that way."""
-    ends_protected: bool
-    """The run ends in protection: at its far end, or at the start of everything that leaves from there."""
+    ahead: tuple[Guard, ...]
+    """The protection the run ends in: at its far end, or at the start of everything that leaves from there."""
     direct: bool
     """This end is at the source itself."""
+
+    @property
+    def own(self) -> bool:
+        """Whether the run has protection of its own at this end."""
+        guard = self.guard
+        return guard is not None and guard.run == self.run and guard.protection.end == self.end
 
 
 @dataclass(slots=True)
@@ -56,6 +62,10 @@ class Sections:
     """Return conductors of their own, by run: (source, protection of a circuit that returns through it)."""
 
 
+_Carried = dict[int, dict[Guard | None, None]]
+"""Node to the protections last passed on the ways to it, as an ordered set."""
+
+
 @dataclass(frozen=True, slots=True)
 class _Edge:
     run: int
@@ -64,102 +74,131 @@ class _Edge:
     end: str
 
 
+@dataclass(frozen=True, slots=True)
+class _Feeds:
+    """The feed conductors of a plan as a graph, with what stands on it."""
+
+    plan: Plan
+    edges: dict[int, list[_Edge]]
+    guards: dict[tuple[int, str], Guard]
+    drawn: set[int]
+    """Nodes at which a load or a converter's input stands, without protection in between."""
+
+    def near(self, edge: _Edge) -> Guard | None:
+        return self.guards.get((edge.run, edge.end))
+
+    def far(self, edge: _Edge) -> Guard | None:
+        return self.guards.get((edge.run, "to" if edge.end == "from" else "from"))
+
+    def ahead(self, edge: _Edge) -> tuple[Guard, ...]:
+        """What protects at the far end of an edge: its own, or one on everything that leaves there; else nothing."""
+        far = self.far(edge)
+        if far is not None:
+            return (far,)
+        onward = [other for other in self.edges[edge.other] if other.run != edge.run]
+        if edge.other in self.drawn or any(other.run < 0 or self.near(other) is None for other in onward):
+            return ()
+        return tuple(guard for other in onward if (guard := self.near(other)) is not None)
+
+
 def sections(network: Network) -> Sections:
     """Walk a plan's protection from every source. Runs in proportion to runs times sources."""
     plan = network.plan
-    edges = _feed_edges(network)
-    loaded = {network.feed(load.at) for load in plan.loads}
+    feeds = _feeds(network)
     found = Sections()
     for port, source in enumerate(plan.sources):
         start = network.feed(source.at)
-        carried = _walk(plan, edges, loaded, port, start, found)
+        carried = _walk(feeds, port, start, found)
         _returns(network, port, network.ret(source.at), carried, found)
     return found
 
 
-def _feed_edges(network: Network) -> dict[int, list[_Edge]]:
+def _feeds(network: Network) -> _Feeds:
+    plan = network.plan
     edges: dict[int, list[_Edge]] = {}
-    for index, run in enumerate(network.plan.runs):
+    guards: dict[tuple[int, str], Guard] = {}
+    for index, run in enumerate(plan.runs):
         if run.conducts in ("both", "feed"):
             a, b = network.feed(run.from_point), network.feed(run.to_point)
             edges.setdefault(a, []).append(_Edge(index, b, "from"))
             edges.setdefault(b, []).append(_Edge(index, a, "to"))
-    for device in network.plan.devices:
+            guards |= {(index, guard.protection.end): guard for guard in _lowest(index, run)}
+    for device in plan.devices:
         a, b = network.feed(device.from_point), network.feed(device.to_point)
         if a != b:
             edges.setdefault(a, []).append(_Edge(-1, b, "from"))
             edges.setdefault(b, []).append(_Edge(-1, a, "to"))
-    return edges
+    drawn = {network.feed(load.at) for load in plan.loads}
+    drawn |= {network.feed(source.from_point) for source in plan.sources if isinstance(source, Converter)}
+    return _Feeds(plan, edges, guards, drawn)
 
 
-def _guard(plan: Plan, run: int, end: str) -> Guard | None:
-    found = [one for one in plan.runs[run].protections if one.end == end and one.pole == "feed"]
-    return Guard(run, min(found, key=lambda one: one.rating.si)) if found else None
+def _lowest(index: int, run: Run) -> list[Guard]:
+    """The lowest-rated protection in the feed at each end of a run."""
+    lowest: dict[str, Protection] = {}
+    for one in run.protections:
+        if one.pole == "feed" and (one.end not in lowest or one.rating.si < lowest[one.end].rating.si):
+            lowest[one.end] = one
+    return [Guard(index, one) for one in lowest.values()]
 
 
-def _walk(
-    plan: Plan, edges: dict[int, list[_Edge]], loaded: set[int], port: int, start: int, found: Sections
-) -> dict[int, set[Guard | None]]:
+def _walk(feeds: _Feeds, port: int, start: int, found: Sections) -> _Carried:
     """Fill in the exposures of one source; what protection is carried at each node reached."""
-    carried: dict[int, set[Guard | None]] = {start: {None}}
-    queue: deque[tuple[int, Guard | None, float, int, bool]] = deque([(start, None, 0.0, -2, True)])
-    device_run = -1
+    carried: _Carried = {start: {None: None}}
+    queue: deque[tuple[int, Guard | None, float, int, bool]] = deque([(start, None, 0.0, -1, True)])
     while queue:
         node, guard, length, came, direct = queue.popleft()
-        for edge in edges.get(node, ()):
-            if (edge.run == came and edge.run != device_run) or edge.other == start:
+        for edge in feeds.edges.get(node, ()):
+            if edge.run == came and edge.run >= 0:
                 continue
             passed, reach = guard, length
             if edge.run >= 0:
-                exposure = _exposure(plan, edges, loaded, port, edge, guard, length, direct)
+                exposure = _exposure(feeds, port, edge, guard, length, direct)
                 found.by_run.setdefault(edge.run, []).append(exposure)
-                far = _guard(plan, edge.run, "to" if edge.end == "from" else "from")
-                passed = far or exposure.guard
-                reach = length + plan.runs[edge.run].length.si
-            if passed not in carried.setdefault(edge.other, set()):
-                carried[edge.other].add(passed)
+                passed = feeds.far(edge) or exposure.guard
+                reach = length + feeds.plan.runs[edge.run].length.si
+            # A ring is fed from its last run too, but nothing more protected than the source itself leaves the source.
+            if edge.other != start and passed not in carried.setdefault(edge.other, {}):
+                carried[edge.other][passed] = None
                 queue.append((edge.other, passed, reach, edge.run, direct and edge.run < 0))
     return carried
 
 
 def _exposure(
-    plan: Plan, edges: dict[int, list[_Edge]], loaded: set[int], port: int, edge: _Edge, upstream: Guard | None,
-    length: float, direct: bool,
-) -> Exposure:  # fmt: skip
-    run = plan.runs[edge.run]
-    near = _guard(plan, edge.run, edge.end)
-    far = _guard(plan, edge.run, "to" if edge.end == "from" else "from")
-    bare = run.length.si
+    feeds: _Feeds, port: int, edge: _Edge, upstream: Guard | None, length: float, direct: bool
+) -> Exposure:
+    near, far = feeds.near(edge), feeds.far(edge)
+    bare = feeds.plan.runs[edge.run].length.si
     if near is not None:
         bare = near.protection.distance.si if near.protection.distance else 0.0
     elif far is not None:
         bare -= far.protection.distance.si if far.protection.distance else 0.0
-    onward = [other for other in edges.get(edge.other, ()) if other.run != edge.run]
-    ends = far is not None or (
-        bool(onward)
-        and edge.other not in loaded
-        and all(other.run >= 0 and _guard(plan, other.run, other.end) is not None for other in onward)
-    )
-    return Exposure(edge.run, port, edge.end, near or upstream, upstream, max(bare, 0.0), length, ends, direct)
+    ahead = feeds.ahead(edge)
+    return Exposure(edge.run, port, edge.end, near or upstream, upstream, max(bare, 0.0), length, ahead, direct)
 
 
-def _returns(network: Network, port: int, start: int, carried: dict[int, set[Guard | None]], found: Sections) -> None:
-    """Give every return conductor of its own the protections of the circuits beyond it."""
+def _returns(network: Network, port: int, start: int, carried: _Carried, found: Sections) -> None:
+    """Give every return conductor of its own the highest-rated protection of the circuits beyond it."""
     plan = network.plan
-    points: dict[int, list[str]] = {}
+    highest: dict[int, Guard] = {}
     for name in plan.point_names:
-        points.setdefault(network.ret(name), []).append(name)
+        for guard in carried.get(network.feed(name), ()):
+            _raise(highest, network.ret(name), guard)
     order, parents = _return_tree(network, start)
-    beyond: dict[int, set[Guard]] = {}
     for node in reversed(order):
-        own = beyond.setdefault(node, set())
-        for name in points.get(node, ()):
-            own.update(guard for guard in carried.get(network.feed(name), ()) if guard is not None)
         run, before = parents[node]
-        if run >= 0 and plan.runs[run].conducts == "return" and own:
-            found.returns.setdefault(run, []).append((port, max(own, key=lambda guard: guard.rating_A)))
+        guard = highest.get(node)
+        if guard is not None and run >= 0 and plan.runs[run].conducts == "return":
+            found.returns.setdefault(run, []).append((port, guard))
         if before != node:
-            beyond.setdefault(before, set()).update(own)
+            _raise(highest, before, guard)
+
+
+def _raise(highest: dict[int, Guard], node: int, guard: Guard | None) -> None:
+    """Keep the higher-rated of a node's protection and another."""
+    known = highest.get(node)
+    if guard is not None and (known is None or guard.rating_A > known.rating_A):
+        highest[node] = guard
 
 
 def _return_tree(network: Network, start: int) -> tuple[list[int], dict[int, tuple[int, int]]]:

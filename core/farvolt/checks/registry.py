@@ -4,7 +4,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 from farvolt.context import Context
-from farvolt.results import Finding
+from farvolt.results import Finding, Severity
 
 Function = Callable[[Context], Iterator[Finding]]
 
@@ -31,6 +31,17 @@ def check(*rules: str, title: str, reads: tuple[str, ...] = ()) -> Callable[[Fun
         return function
 
     return register
+
+
+def cannot_be_made(context: Context, rule: str, entry: str, what: str, severity: Severity = "warn") -> Finding:
+    """What a check says, once, where the rulebook lacks the entry it needs: never silence."""
+    book = context.rulebook
+    reason = book.missing.get(entry, "the rulebook gives no reason")
+    return Finding(
+        rule, severity, context.plan.plan.name, "plan", None, None, None, None,
+        f'Not checked: {what}. The rulebook "{book.name}" has no entry "{entry}"', book.title,
+        (f"{entry}: {reason}",), "judge it by hand, or add the entry to a rulebook of your own",
+    )  # fmt: skip
 
 
 def registered() -> tuple[Check, ...]:

@@ -116,7 +116,7 @@ def free_size(context: Context) -> Iterator[Finding]:
 
 _UNUSED: dict[str, tuple[str, ...]] = {
     "points": ("rating", "resistance"),
-    "sources": ("max_discharge", "max_charge", "array", "self_limiting"),
+    "sources": ("max_discharge", "max_charge", "array"),
     "runs": (),
     "devices": ("continuous", "volts"),
     "loads": ("surge", "max_protection", "hours_per_day", "schedule", "duty"),

@@ -1,0 +1,300 @@
+"""The rating of each protection: not above the cables it protects, not below the current it carries."""
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+
+from farvolt.checks.registry import cannot_be_made, check
+from farvolt.checks.ways import PRACTICE, ampacity_A, exempt, failing, limited_A, near_enough, self_limited
+from farvolt.conductors import Size
+from farvolt.context import Context, basis_text, label, larger_sizes
+from farvolt.errors import QuantityError
+from farvolt.network import FEED, RETURN, Floats, return_size
+from farvolt.plan import Protection, Run
+from farvolt.protection_types import protection_type
+from farvolt.results import Finding, Severity
+from farvolt.sections import Exposure, Guard
+from farvolt.temperatures import run_ampacity
+from farvolt.units import number
+
+
+@dataclass(frozen=True, slots=True)
+class Limit:
+    """The highest rating a run's cable allows, the sentence that says why, and where that stands."""
+
+    amps: float
+    why: str
+    basis: str
+    small: bool
+    """It is the rule for small conductors that binds, whatever the ampacity."""
+
+
+def limit_for(context: Context, run: Run, ampacity: float) -> Limit:
+    """The highest rating of a protection for a run of this ampacity, before any allowance."""
+    rules = context.rulebook.protection
+    rule = rules.over_conductor
+    percent = rule.percent if rule else 100.0
+    amps = ampacity * percent / 100
+    why = f"{number(percent)} % of {number(ampacity)} A = {number(amps)} A"
+    found = Limit(amps, why, basis_text(rule.basis) if rule else PRACTICE, small=False)
+    sizes = [size for size in (run.size, return_size(run)) if size is not None]
+    if rules.small_conductors is not None and sizes:
+        entry = rules.small_conductors.limit(min(sizes, key=lambda size: size.area_mm2), run.material)
+        if entry is not None and entry.max_A < amps:
+            why = f"{entry.size.name}: at most {number(entry.max_A)} A"
+            return Limit(entry.max_A, why, basis_text(rules.small_conductors.basis), small=True)
+    return found
+
+
+@check(
+    "protection.over-conductor",
+    title="Rating of each protection against the thinnest cable of its section",
+    reads=("protection", "ampacity"),
+)
+def over_conductor(context: Context) -> Iterator[Finding]:
+    """Cables whose protection is rated above what they may carry, return conductors included."""
+    if context.rulebook.protection.over_conductor is None:
+        what = "how far a rating may exceed the ampacity; above 100 % is shown as a warning"
+        yield cannot_be_made(context, "protection.over-conductor", "over_conductor", what)
+    demands = Demands.of(context)
+    for index, run in enumerate(context.plan.runs):
+        amps = ampacity_A(context, index)
+        if amps is None or exempt(context, run):
+            continue
+        limit = limit_for(context, run, amps)
+        worst = max(_guards(context, index, amps), key=lambda guard: guard.rating_A, default=None)
+        if worst is not None and worst.rating_A > limit.amps * (1 + 1e-9):
+            yield _over(context, index, worst, limit, amps, demands)
+            continue
+        total, parts = _joint(context, index, amps)
+        if len(parts) > 1 and total > amps * (1 + 1e-9):
+            yield _jointly_over(context, index, total, parts, amps)
+
+
+def _ways(context: Context, index: int, ampacity: float) -> list[Exposure]:
+    """The ways a run is fed, without those into an end that nothing protects: protection.missing names that flaw."""
+    unprotected = {one.end for one in failing(context, index, ampacity)}
+    return [one for one in context.sections.by_run.get(index, []) if one.end not in unprotected]
+
+
+def _guards(context: Context, index: int, ampacity: float) -> list[Guard]:
+    """The protections that a run depends on, without those behind which only self-limited sources stand."""
+    run = context.plan.runs[index]
+    behind: dict[Guard, list[Exposure]] = {}
+    for one in _ways(context, index, ampacity):
+        for guard in one.ahead if near_enough(context, run, one) else (one.guard,):
+            if guard is not None:
+                behind.setdefault(guard, []).append(one)
+    guards = [guard for guard, ways in behind.items() if not self_limited(context, ways, ampacity)]
+    guards += [guard for port, guard in context.sections.returns.get(index, []) if limited_A(context, port) is None]
+    return guards
+
+
+def _over(
+    context: Context, index: int, guard: Guard, limit: Limit, amps: float, demands: "Demands"
+) -> Finding:
+    run, rule = context.plan.runs[index], context.rulebook.protection.over_conductor
+    where = label(context.plan.runs[guard.run])
+    which = f"its own {guard.protection.rating}" if guard.run == index else f"the {guard.protection.rating} on {where}"
+    message = f"{label(run)} is protected by {which}, above the {number(limit.amps)} A it may carry"
+    tolerated = not limit.small and _tolerated(context, guard, amps, limit.amps)
+    if tolerated:
+        message += "; within the allowance for the next standard rating"
+    severity: Severity = "warn" if tolerated or (rule is None and not limit.small) else "fail"
+    found = context.lowest_ampacity[index]
+    working = (*(found.working if found else ()), limit.why, f"{number(guard.rating_A)} A > {number(limit.amps)} A")
+    told = (rule.text,) if rule and tolerated else ()
+    return _finding(
+        "protection.over-conductor", severity, run, guard.rating_A, limit.amps, "A", message, limit.basis,
+        (*working, *told), _over_remedy(context, index, guard, limit, demands),
+    )  # fmt: skip
+
+
+def _tolerated(context: Context, guard: Guard, amps: float, limit_A: float) -> bool:
+    """The next standard rating above the ampacity, within the rulebook's allowance for it."""
+    rule = context.rulebook.protection.over_conductor
+    if rule is None:
+        return False
+    next_up = min((one for one in _standard(context, guard.protection.type) if one >= limit_A), default=None)
+    is_next = next_up is not None and guard.rating_A <= next_up
+    if rule.allowance_percent is not None:
+        return is_next and guard.rating_A <= amps * rule.allowance_percent / 100
+    return rule.next_standard_up_to_A is not None and is_next and guard.rating_A <= rule.next_standard_up_to_A
+
+
+def _standard(context: Context, kind: str) -> tuple[float, ...]:
+    """The rulebook's own standard ratings, else those made of a type of protection."""
+    standard = context.rulebook.protection.standard_ratings
+    return standard.amps if standard else _made(kind)
+
+
+def _made(kind: str) -> tuple[float, ...]:
+    try:
+        return protection_type(kind).ratings_A
+    except QuantityError:
+        return ()
+
+
+def _over_remedy(context: Context, index: int, guard: Guard, limit: Limit, demands: "Demands") -> str:
+    """A thicker cable for this rating, and a lower rating where one is made that still carries the load."""
+    run = context.plan.runs[index]
+    size = size_for_rating(context, index, guard.rating_A)
+    thicker = f"{label(run)}: {size.name} may carry {number(guard.rating_A)} A" if size else ""
+    demand, _ = demands.worst(guard.run, FEED)
+    lower = max((one for one in _made(guard.protection.type) if demand <= one <= limit.amps), default=None)
+    on = label(context.plan.runs[guard.run])
+    less = f"{number(lower)} A instead of {guard.protection.rating} on {on}" if lower else ""
+    return "; or ".join(filter(None, (thicker, less))) or "less load on this cable, or its load shared among several"
+
+
+def size_for_rating(context: Context, index: int, rating_A: float) -> Size | None:
+    """The smallest larger size of the same system that a protection of this rating may protect where the run lies."""
+    run, case = context.plan.runs[index], context.cases[_hottest(context, index)].case
+    for size in larger_sizes(run.size) if run.size else []:
+        changed = run.model_copy(update={"size": size})
+        found = run_ampacity(context.plan, context.rulebook, changed, case, context.together[run.name])
+        if found is not None and found.amps is not None and limit_for(context, changed, found.amps).amps >= rating_A:
+            return size
+    return None
+
+
+def _hottest(context: Context, index: int) -> int:
+    """The case in which a run's ampacity is lowest."""
+    amps = [found.amps if (found := one.ampacities[index]) else None for one in context.cases]
+    return min(range(len(amps)), key=lambda case: amps[case] or 0.0)
+
+
+def _joint(context: Context, index: int, ampacity: float) -> tuple[float, list[str]]:
+    """The most that sources joining before an end of a run can feed into it, and through what.
+
+    A battery counts with its protection, any other source with its own limit.
+    """
+    run, worst = context.plan.runs[index], (0.0, list[str]())
+    joining = [one for one in _ways(context, index, ampacity) if not one.own and not near_enough(context, run, one)]
+    for end in ("from", "to"):
+        ways = [one for one in joining if one.end == end]
+        limits = {one.source: limited_A(context, one.source) for one in ways}
+        guards = dict.fromkeys(one.guard for one in ways if one.guard is not None and limits[one.source] is None)
+        behind = {one.source for one in ways if one.guard in guards}
+        limited = {port: amps for port, amps in limits.items() if amps is not None and port not in behind}
+        parts = [f"{guard.protection.rating} on {label(context.plan.runs[guard.run])}" for guard in guards]
+        parts += [f'{number(amps)} A of "{context.plan.sources[port].name}"' for port, amps in limited.items()]
+        total = sum(guard.rating_A for guard in guards) + sum(limited.values())
+        worst = max(worst, (total, parts))
+    return worst
+
+
+def _jointly_over(context: Context, index: int, total: float, parts: list[str], ampacity: float) -> Finding:
+    run = context.plan.runs[index]
+    size = size_for_rating(context, index, total)
+    thicker = f"{label(run)}: {size.name} may carry {number(total)} A; or " if size else ""
+    return _finding(
+        "protection.over-conductor", "warn", run, total, ampacity, "A",
+        f"{label(run)} is within its ampacity of each source, but together they can feed {number(total)} A into it",
+        f"{PRACTICE}: what several sources can feed together counts",
+        (f"{' + '.join(parts)} = {number(total)} A > {number(ampacity)} A",),
+        f"{thicker}a protection of its own, not above {number(ampacity)} A, where they join",
+    )  # fmt: skip
+
+
+@dataclass(frozen=True, slots=True)
+class Demands:
+    """Currents to be carried over (pole, case, run), and their continuous part, with hot conductors."""
+
+    amps: Floats
+    continuous: Floats
+    factor: float
+
+    @classmethod
+    def of(cls, context: Context) -> "Demands":
+        """The demands of every case that holds; none in a case that gives way."""
+        shape = (2, len(context.cases), len(context.plan.runs))
+        amps, continuous = np.zeros(shape), np.zeros(shape)
+        for case, one in enumerate(context.cases):
+            solution = one.solutions["hot"]
+            if not solution.state.solved:
+                continue
+            every, lasting = solution.feed_demand
+            share = np.divide(lasting, every, out=np.zeros_like(every), where=every > 0)
+            for pole in (FEED, RETURN):
+                amps[pole, case] = np.nan_to_num(np.abs(solution.run_amps(pole)))
+                continuous[pole, case] = amps[pole, case] * share
+        rule = context.rulebook.protection.continuous
+        return cls(amps, continuous, rule.factor if rule else 1.0)
+
+    def worst(self, run: int, pole: int) -> tuple[float, int]:
+        """The largest current to be counted for one pole of a run, and its case."""
+        counted = self.amps[pole, :, run] + (self.factor - 1) * self.continuous[pole, :, run]
+        case = int(np.argmax(counted))
+        return float(counted[case]), case
+
+
+@check("protection.under-load", title="Rating of each protection against the load it carries", reads=("protection",))
+def under_load(context: Context) -> Iterator[Finding]:
+    """Protection rated below its current; continuous loads with the rulebook's factor."""
+    if context.rulebook.protection.continuous is None and any(load.continuous for load in context.plan.loads):
+        what = "a factor on continuous loads; they are counted once"
+        yield cannot_be_made(context, "protection.under-load", "continuous", what)
+    demands, behind = Demands.of(context), _behind(context)
+    for index, run in enumerate(context.plan.runs):
+        for one in run.protections:
+            demand, case = demands.worst(index, FEED if one.pole == "feed" else RETURN)
+            if demand > one.rating.si * (1 + 1e-9):
+                remedy = _rating_for(context, behind[id(one)], one, demand)
+                yield _under(context, index, one, (demand, case), demands, remedy)
+
+
+def _under(
+    context: Context, index: int, one: Protection, worst: tuple[float, int], demands: Demands, remedy: str
+) -> Finding:
+    run, pole, (demand, case) = context.plan.runs[index], FEED if one.pole == "feed" else RETURN, worst
+    amps, lasting = float(demands.amps[pole, case, index]), float(demands.continuous[pole, case, index])
+    rule, factor = context.rulebook.protection.continuous, demands.factor
+    counted = demand > amps * (1 + 1e-9)
+    working = f"{number(amps, 4)} A"
+    if counted:
+        working += f", of which {number(lasting, 4)} A continuous: {number(amps - lasting, 4)} + {number(factor)} x "
+        working += f"{number(lasting, 4)} = {number(demand, 4)} A"
+    return _finding(
+        "protection.under-load", "fail", run, demand, one.rating.si, "A",
+        f"{label(run)}: its {one.rating} {one.type} carries {number(amps)} A"
+        + (f", to be counted as {number(demand)} A" if counted else ""),
+        basis_text(rule.basis) if rule and counted else f"{PRACTICE}: a protection carries its load without opening",
+        (f"{working}; conductors {context.cases[case].solutions['hot'].conductors.text}",
+         f"{number(demand, 4)} A > {number(one.rating.si, 4)} A"),
+        remedy, context.cases[case].name,
+    )  # fmt: skip
+
+
+def _rating_for(context: Context, behind: list[int], one: Protection, demand: float) -> str:
+    """A rating that carries the load and that every cable behind it allows; else what stands in the way."""
+    rating = min((made for made in _made(one.type) if made >= demand), default=None)
+    if rating is None:
+        return f"no {one.type} is made for {number(demand)} A: another type of protection, or the load on two circuits"
+    for index in behind:
+        run, amps = context.plan.runs[index], ampacity_A(context, index)
+        if not exempt(context, run) and (amps is None or limit_for(context, run, amps).amps < rating):
+            size = size_for_rating(context, index, rating)
+            cable = f"{label(run)}: {size.name}" if size else f"{label(run)}: a thicker cable"
+            return f"{cable}, which may carry it, and then a rating of {number(rating)} A"
+    return f"a rating of {number(rating)} A, which the cable may carry"
+
+
+def _behind(context: Context) -> dict[int, list[int]]:
+    """By the identity of a protection, the runs it protects: up to the next protection, returns included."""
+    found: dict[int, dict[int, None]] = {}
+    for index, run in enumerate(context.plan.runs):
+        guards = [one.guard for one in context.sections.by_run.get(index, []) if one.guard is not None]
+        guards += [guard for _, guard in context.sections.returns.get(index, [])]
+        for protection in (*run.protections, *(guard.protection for guard in guards)):
+            found.setdefault(id(protection), {})[index] = None
+    return {key: list(runs) for key, runs in found.items()}
+
+
+def _finding(
+    rule: str, severity: Severity, run: Run, value: float | None, limit: float | None, unit: str | None,
+    message: str, basis: str, working: tuple[str, ...], remedy: str | None, case: str | None = None,
+) -> Finding:  # fmt: skip
+    shown = tuple(line for line in working if line)
+    return Finding(rule, severity, run.name, "run", case, value, limit, unit, message, basis, shown, remedy)
