@@ -4,128 +4,47 @@ Each class is one table of format 1. What concerns several entries at once is in
 lines and messages are in `planfile`. Quantities keep the text as written (`units.Quantity`).
 """
 
-import re
 from functools import cached_property
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, WithJsonSchema, field_validator, model_validator
-from pydantic_core import PydanticCustomError
+from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
 
 from farvolt import conductors, units
-from farvolt.errors import QuantityError
-from farvolt.units import Quantity
+from farvolt.plan_types import (
+    AnyResistance,
+    CableSize,
+    Charge,
+    ConductorTemperature,
+    Count,
+    Current,
+    DaySpan,
+    Distance,
+    Efficiency,
+    Factor,
+    Flag,
+    Hours,
+    Length,
+    Multiple,
+    Name,
+    Power,
+    ProtectionTypeName,
+    Rating,
+    Resistance,
+    Seconds,
+    Share,
+    Temperature,
+    Text,
+    Voltage,
+    WholeNumber,
+    near,
+    refusal,
+    shares,
+)
 
 CHASSIS = "chassis"
 """The reserved point of one node: the metal body used as a return."""
 
 FORMAT = 1
-NAME_LIMIT = 200
-_CONTROL = re.compile(r"[\x00-\x1f\x7f-\x9f]")
-
-
-def _custom(error: QuantityError) -> PydanticCustomError:
-    context = {"problem": error.problem, "accepted": error.accepted, "nearest": error.nearest}
-    return PydanticCustomError("quantity", "{problem}", context)
-
-
-def _reader(
-    dimension: str, *, minimum: float | None = None, above: float | None = None, maximum: float | None = None
-) -> Any:
-    """A validator that reads a quantity and holds it to a range in base units."""
-
-    def read(value: Any) -> Quantity:
-        if isinstance(value, Quantity):
-            return value
-        example = units.EXAMPLES[dimension]
-        if not isinstance(value, str):
-            bare = isinstance(value, int | float) and not isinstance(value, bool)
-            first = next(iter(units.DIMENSIONS[dimension]))
-            raise _custom(
-                QuantityError(
-                    "a bare number has no unit" if bare else "is not a text with a number and a unit",
-                    accepted=f"a {dimension} in quotes such as {example}",
-                    nearest=f'"{value} {first}"' if bare else "",
-                )
-            )
-        try:
-            quantity = units.parse(value, dimension)
-        except QuantityError as error:
-            raise _custom(error) from None
-        limit = _broken_limit(quantity.si, minimum, above, maximum)
-        if limit:
-            raise _custom(QuantityError(limit, accepted=f"a {dimension} such as {example}"))
-        return quantity
-
-    return read
-
-
-def _broken_limit(value: float, minimum: float | None, above: float | None, maximum: float | None) -> str:
-    if above is not None and value <= above:
-        return "must be more than zero" if above == 0 else f"must be more than {above:g}"
-    if minimum is not None and value < minimum:
-        return "must not be negative" if minimum == 0 else f"must not be less than {minimum:g}"
-    if maximum is not None and value > maximum:
-        return f"must not be more than {maximum:g} (in base units)"
-    return ""
-
-
-def _schema(dimension: str) -> WithJsonSchema:
-    return WithJsonSchema({"type": "string", "description": f"a {dimension}, such as {units.EXAMPLES[dimension]}"})
-
-
-def _read_size(value: Any) -> conductors.Size | None:
-    if value is None or isinstance(value, conductors.Size):
-        return value
-    if not isinstance(value, str):
-        value = str(value)
-    if value.strip() == "free":
-        return None
-    try:
-        return conductors.parse_size(value)
-    except QuantityError as error:
-        raise _custom(error) from None
-
-
-def _read_name(value: Any) -> Any:
-    if isinstance(value, str):
-        if not value.strip():
-            raise _custom(QuantityError("is empty", accepted="a text"))
-        if len(value) > NAME_LIMIT:
-            raise _custom(QuantityError(f"is longer than {NAME_LIMIT} characters", accepted="a shorter text"))
-        if _CONTROL.search(value):
-            raise _custom(QuantityError("holds a control character", accepted="a text on one line"))
-    return value
-
-
-Length = Annotated[Quantity, BeforeValidator(_reader("length", above=0, maximum=1e5)), _schema("length")]
-Distance = Annotated[Quantity, BeforeValidator(_reader("length", minimum=0, maximum=1e5)), _schema("length")]
-Power = Annotated[Quantity, BeforeValidator(_reader("power", minimum=0, maximum=1e7)), _schema("power")]
-Current = Annotated[Quantity, BeforeValidator(_reader("current", minimum=0, maximum=1e6)), _schema("current")]
-Rating = Annotated[Quantity, BeforeValidator(_reader("current", above=0, maximum=1e6)), _schema("current")]
-Voltage = Annotated[Quantity, BeforeValidator(_reader("voltage", above=0, maximum=1500)), _schema("voltage")]
-Resistance = Annotated[Quantity, BeforeValidator(_reader("resistance", above=0, maximum=1e9)), _schema("resistance")]
-AnyResistance = Annotated[
-    Quantity, BeforeValidator(_reader("resistance", minimum=0, maximum=1e9)), _schema("resistance")
-]
-Charge = Annotated[Quantity, BeforeValidator(_reader("charge", above=0, maximum=1e7)), _schema("charge")]
-Share = Annotated[Quantity, BeforeValidator(_reader("share", minimum=0, maximum=1)), _schema("share")]
-Efficiency = Annotated[Quantity, BeforeValidator(_reader("share", above=0, maximum=1)), _schema("share")]
-Temperature = Annotated[
-    Quantity, BeforeValidator(_reader("temperature", minimum=-100, maximum=300)), _schema("temperature")
-]
-CableSize = Annotated[
-    conductors.Size | None,
-    BeforeValidator(_read_size),
-    WithJsonSchema(
-        {"type": "string", "description": 'a conductor size, such as "6 mm2", "10 AWG", "10 SAE", or "free"'}
-    ),
-]
-Name = Annotated[str, BeforeValidator(_read_name), Field(strict=True)]
-Text = Annotated[str, Field(strict=True, max_length=10_000)]
-Count = Annotated[int, Field(strict=True, ge=1, le=1000)]
-Flag = Annotated[bool, Field(strict=True)]
-Factor = Annotated[float, Field(ge=0, le=1000, allow_inf_nan=False)]
-Hours = Annotated[float, Field(ge=0, le=24, allow_inf_nan=False)]
 
 
 class Entry(BaseModel):
@@ -141,29 +60,10 @@ class PlanInfo(Entry):
     nominal: Voltage
     rulebook: Name = "small-craft-iso"
     reference: Name | None = None
-    conductor_temperature: Annotated[
-        Quantity | Literal["rulebook", "rated", "ambient", "estimated"],
-        BeforeValidator(lambda value: _read_conductor_temperature(value)),
-        WithJsonSchema({"type": "string", "description": 'rulebook | rated | ambient | estimated | such as "60 degC"'}),
-    ] = "rulebook"
+    conductor_temperature: ConductorTemperature = "rulebook"
     ambient: Temperature = units.parse("30 degC", "temperature")
     chassis_bond: Resistance = units.parse("1 mohm", "resistance")
     notes: Text = ""
-
-
-def _read_conductor_temperature(value: Any) -> Any:
-    words = ("rulebook", "rated", "ambient", "estimated")
-    if value in words or isinstance(value, Quantity):
-        return value
-    accepted = f'{", ".join(words)}, or a temperature such as "60 degC"'
-    if not isinstance(value, str) or not value[:1].lstrip("+-").isdigit():
-        import difflib
-
-        close = difflib.get_close_matches(str(value), words, n=1)
-        raise _custom(
-            QuantityError("is not a known choice", accepted=accepted, nearest=f'"{close[0]}"' if close else "")
-        )
-    return _reader("temperature", minimum=-100, maximum=300)(value)
 
 
 class Zone(Entry):
@@ -200,6 +100,13 @@ class LinkCable(Entry):
     length: Length
     size: CableSize
 
+    @field_validator("size", mode="after")
+    @classmethod
+    def _is_stated(cls, size: conductors.Size | None) -> conductors.Size:
+        if size is None:
+            raise refusal("a link cable needs its size", 'a size such as "50 mm2"')
+        return size
+
 
 class Battery(Entry):
     """A source of kind `battery`: EMF behind a resistance, in parallel strings."""
@@ -224,10 +131,10 @@ class Battery(Entry):
     @model_validator(mode="after")
     def _can_be_modelled(self) -> "Battery":
         if self.emf is None and self.chemistry is None:
-            raise _custom(QuantityError('needs "chemistry", or "emf"', accepted="flooded, agm, gel, lfp, nmc"))
+            raise refusal('needs "chemistry", or "emf"', "flooded, agm, gel, lfp, nmc")
         if self.resistance is None and self.short_circuit is None and (self.chemistry is None or self.capacity is None):
             problem = 'needs "resistance", or "short_circuit", or "chemistry" with "capacity" to estimate it from'
-            raise _custom(QuantityError(problem, accepted='such as resistance = "4 mohm"'))
+            raise refusal(problem, 'such as resistance = "4 mohm"')
         return self
 
 
@@ -298,7 +205,7 @@ Source = Annotated[Battery | Charger | Solar | Converter, Field(discriminator="k
 class Protection(Entry):
     """A fuse or breaker on a run, at one of its ends and in one of its poles."""
 
-    type: Name
+    type: ProtectionTypeName
     rating: Rating
     distance: Distance | None = None
     """Along the conductor from that end of the run."""
@@ -337,34 +244,34 @@ class Run(Entry):
     bundled: Count | None = None
     resistance: Resistance | None = None
     resistance_temperature: Temperature = units.parse("20 degC", "temperature")
-    joints: Annotated[int, Field(strict=True, ge=0, le=1000)] = 0
+    joints: WholeNumber = 0
     joint_resistance: AnyResistance = units.parse("0.2 mohm", "resistance")
     purpose: Literal["power", "cranking", "bond"] = "power"
-    protection: Protection | tuple[Protection, ...] | None = None
+    protection: tuple[Protection, ...] = ()
     protection_to: Protection | None = None
     colour: Name | None = None
     notes: Text = ""
 
     @field_validator("return_path", mode="before")
     @classmethod
-    def _return_word(cls, value: Any) -> Any:
-        if isinstance(value, str) and value not in ("same", "chassis"):
-            accepted = '"same", "chassis", or a table such as { size = "10 mm2", length = "3 m" }'
-            raise _custom(QuantityError("is not a known choice", accepted=accepted))
-        return ReturnConductor.model_validate(value) if isinstance(value, dict) else value
+    def _return_shape(cls, value: Any) -> Any:
+        # Validating here, not through the union, keeps an error's place free of the branches that were tried.
+        if isinstance(value, dict):
+            return ReturnConductor.model_validate(value)
+        if value in ("same", "chassis") or isinstance(value, ReturnConductor):
+            return value
+        accepted = '"same", "chassis", or a table such as { size = "10 mm2", length = "3 m" }'
+        raise refusal("is not a known choice", accepted, near(value, "same", "chassis"))
 
     @field_validator("protection", mode="before")
     @classmethod
     def _protection_shape(cls, value: Any) -> Any:
-        # Validating here, not through the union, keeps an error's place free of the branches that were tried.
-        if isinstance(value, dict):
-            return Protection.model_validate(value)
+        if isinstance(value, dict | Protection):
+            return (value,)
         if isinstance(value, list | tuple):
-            return tuple(Protection.model_validate(one) for one in value)
-        if value is None or isinstance(value, Protection):
-            return value
-        accepted = '{ type = "blade", rating = "20 A", distance = "0.15 m" }'
-        raise _custom(QuantityError("is not a table", accepted=accepted))
+            return tuple(value)
+        accepted = '{ type = "blade", rating = "20 A", distance = "0.15 m" }, or a list of such tables'
+        raise refusal("is not a table", accepted)
 
     @cached_property
     def conducts(self) -> str:
@@ -376,9 +283,8 @@ class Run(Entry):
     @cached_property
     def protections(self) -> tuple[Protection, ...]:
         """All protection of the run, whichever way the file writes it."""
-        found = self.protection if isinstance(self.protection, tuple) else (self.protection,)
-        at_to = self.protection_to.model_copy(update={"end": "to"}) if self.protection_to else None
-        return tuple(one for one in (*found, at_to) if one is not None)
+        at_to = (self.protection_to.model_copy(update={"end": "to"}),) if self.protection_to else ()
+        return self.protection + at_to
 
 
 class Device(Entry):
@@ -403,15 +309,13 @@ class Surge(Entry):
 
     current: Rating | None = None
     resistance: Resistance | None = None
-    times: Annotated[float, Field(gt=0, le=1000, allow_inf_nan=False)] | None = None
-    seconds: Annotated[float, Field(gt=0, le=3600, allow_inf_nan=False)] | None = None
+    times: Multiple | None = None
+    seconds: Seconds | None = None
 
     @model_validator(mode="after")
     def _one_measure(self) -> "Surge":
         if sum(value is not None for value in (self.current, self.resistance, self.times)) != 1:
-            raise _custom(
-                QuantityError("needs exactly one of current, resistance, times", accepted='{ current = "18 A" }')
-            )
+            raise refusal("needs exactly one of current, resistance, times", '{ current = "18 A" }')
         return self
 
 
@@ -434,7 +338,7 @@ class Load(Entry):
     max_protection: Rating | None = None
     continuous: Flag = False
     hours_per_day: Hours | None = None
-    schedule: tuple[Annotated[str, Field(pattern=r"^\d{1,2}:\d{2}-\d{1,2}:\d{2}$")], ...] = ()
+    schedule: tuple[DaySpan, ...] = ()
     duty: Share | None = None
     notes: Text = ""
 
@@ -444,11 +348,11 @@ class Load(Entry):
         if len(given) != 1:
             problem = f"has {len(given)} ratings ({', '.join(given)})" if given else "has no rating"
             accepted = 'exactly one of power = "60 W", current = "5 A", resistance = "2.4 ohm"'
-            raise _custom(QuantityError(problem, accepted=accepted))
+            raise refusal(problem, accepted)
         for low, high in (("min_volts", "max_volts"), ("cut_out", "recovery")):
             below, above = getattr(self, low), getattr(self, high)
             if below is not None and above is not None and below.si > above.si:
-                raise _custom(QuantityError(f"{low} is above {high}", accepted=f"{low} not above {high}"))
+                raise refusal(f"{low} is above {high}", f"{low} not above {high}")
         return self
 
     @property
@@ -481,11 +385,12 @@ class Case(Entry):
     @field_validator("loads", mode="before")
     @classmethod
     def _loads_shape(cls, value: Any) -> Any:
-        if isinstance(value, str) and value not in ("all", "none"):
-            raise _custom(
-                QuantityError("is not a known choice", accepted='"all", "none", or { "name of a load" = 1.0 }')
-            )
-        return value
+        if isinstance(value, dict):
+            return shares.validate_python(value)
+        if value in ("all", "none"):
+            return value
+        accepted = '"all", "none", or { "name of a load" = 1.0 }'
+        raise refusal("is not a known choice", accepted, near(value, "all", "none"))
 
     @field_validator("sources", mode="before")
     @classmethod

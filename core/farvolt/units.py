@@ -42,7 +42,17 @@ EXAMPLES: dict[str, str] = {
 
 _SPELLINGS = {"Ω": "ohm", "mΩ": "mohm", "µΩ": "uohm", "μΩ": "uohm", "kΩ": "kohm", "µohm": "uohm", "μohm": "uohm"}
 _SPELLINGS |= {"°C": "degC", "°F": "degF", "℃": "degC", "℉": "degF"}
-_PATTERN = re.compile(r"\s*([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(\S.*?)?\s*")
+_PATTERN = re.compile(r"([+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?) ?(\S.*)?")
+_COMMA = re.compile(r"([+-]?[0-9]+),([0-9]+)(?![0-9,.])")
+
+_MEANT = {
+    "metre": "m", "meter": "m", "foot": "ft", "feet": "ft", "'": "ft", "inch": "in", "inches": "in", '"': "in",
+    "watt": "W", "kilowatt": "kW", "amp": "A", "ampere": "A", "adc": "A", "volt": "V", "vdc": "V", "v dc": "V",
+    "ohm": "ohm", "milliohm": "mohm", "amp hour": "Ah", "ampere hour": "Ah", "amp-hour": "Ah", "percent": "%",
+    "per cent": "%", "sec": "s", "second": "s", "minute": "min", "hour": "h", "hr": "h", "c": "degC", "f": "degF",
+    "celsius": "degC", "fahrenheit": "degF", "deg c": "degC", "deg f": "degF", "kelvin": "K",
+}  # fmt: skip
+"""What people write for a unit, in small letters and without a plural s: offered in a message, never taken."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -64,25 +74,33 @@ def parse(text: str, dimension: str) -> Quantity:
     Raises QuantityError: no number, no unit, a unit of another dimension, or a number that is not finite.
     """
     units = DIMENSIONS[dimension]
+    text = " ".join(text.split())
     match = _PATTERN.fullmatch(text)
     if match is None:
         raise _not_a_number(text, dimension)
     number, written = match.groups()
     if not written:
-        first = next(iter(units))
-        raise QuantityError("has no unit", accepted=_accepted(dimension), nearest=f'"{number} {first}"')
+        raise QuantityError("has no unit", accepted=_accepted(dimension), nearest=with_unit(number, dimension))
     unit = _SPELLINGS.get(written, written)
     if unit not in units:
         raise _wrong_unit(number, written, dimension)
     value = float(number)
     if not math.isfinite(value):
         raise QuantityError("is not a finite number", accepted=_accepted(dimension))
-    return Quantity(_to_base(value, unit, units[unit]), text.strip(), dimension)
+    return Quantity(_to_base(value, unit, units[unit]), text, dimension)
 
 
 def quantity(value: float, unit: str, dimension: str) -> Quantity:
     """A quantity from a bare number, for defaults and computed values."""
     return parse(f"{value:.12g} {unit}", dimension)
+
+
+def with_unit(number: str, dimension: str) -> str:
+    """A bare number as its writer may have meant it, in quotes; nothing for one that is not finite."""
+    value = float(number)
+    if dimension == "share" and 0 < value <= 1:
+        return f'"{100 * value:g} %"'
+    return f'"{number} {next(iter(DIMENSIONS[dimension]))}"' if math.isfinite(value) else ""
 
 
 def number(value: float, digits: int = 3) -> str:
@@ -123,20 +141,40 @@ def _accepted(dimension: str) -> str:
 
 
 def _not_a_number(text: str, dimension: str) -> QuantityError:
-    if not text.strip():
+    if not text:
         return QuantityError("is empty", accepted=_accepted(dimension))
-    decimal_comma = re.sub(r"^(\s*[+-]?\d+),(\d+)", r"\1.\2", text)
-    nearest = f'"{decimal_comma}"' if decimal_comma != text and _PATTERN.fullmatch(decimal_comma) else ""
-    if re.match(r"\s*[+-]?(inf|nan)", text, re.IGNORECASE):
+    if re.match(r"[+-]?(inf|nan)", text, re.IGNORECASE):
         return QuantityError("is not a finite number", accepted=_accepted(dimension))
-    return QuantityError("does not start with a number", accepted=_accepted(dimension), nearest=nearest)
+    return QuantityError("does not start with a number", accepted=_accepted(dimension))
 
 
 def _wrong_unit(value: str, written: str, dimension: str) -> QuantityError:
-    units = DIMENSIONS[dimension]
-    same_letters = [unit for unit in units if unit.lower() == written.lower()]
-    close = same_letters or difflib.get_close_matches(written, units, n=1, cutoff=0.5)
-    others = [name for name, table in DIMENSIONS.items() if written in table and name != dimension]
+    comma = _COMMA.match(f"{value}{written}")
+    if comma:
+        return _comma(comma, f"{value}{written}"[comma.end() :].strip(), dimension)
+    others = [name for name, table in DIMENSIONS.items() if written in table]
     problem = f'"{written}" is a unit of {others[0]}, not of {dimension}' if others else f'unknown unit "{written}"'
-    nearest = f'"{value} {close[0]}"' if close else ""
-    return QuantityError(problem, accepted=_accepted(dimension), nearest=nearest)
+    unit = "" if others else _meant(written, dimension)
+    return QuantityError(problem, accepted=_accepted(dimension), nearest=f'"{value} {unit}"' if unit else "")
+
+
+def _meant(written: str, dimension: str) -> str:
+    """The unit of `dimension` that `written` is a spelling of, or near to; empty where none is."""
+    units = DIMENSIONS[dimension]
+    small = written.lower().rstrip(".")
+    found = [unit for unit in units if unit.lower() == small]
+    found += [_MEANT[word] for word in (small, small.removesuffix("s")) if _MEANT.get(word) in units]
+    # Short units are all near to each other ("Wh" to "Ah"), so that only longer ones are guessed by likeness.
+    guessed = (
+        difflib.get_close_matches(written, units, n=1, cutoff=0.6) if re.fullmatch("[A-Za-z]{3,}", written) else []
+    )
+    return next(iter([*found, *guessed]), "")
+
+
+def _comma(match: re.Match[str], unit: str, dimension: str) -> QuantityError:
+    whole, rest = match.groups()
+    read = [f"{whole}.{rest}"] + ([f"{whole}{rest}"] if len(rest) == 3 else [])
+    known = unit if _SPELLINGS.get(unit, unit) in DIMENSIONS[dimension] else _meant(unit, dimension)
+    offered = [f'"{number} {known}"' if known else "" if unit else with_unit(number, dimension) for number in read]
+    nearest = " or ".join(filter(None, offered))
+    return QuantityError("has a comma; a decimal point is read", accepted=_accepted(dimension), nearest=nearest)
