@@ -22,7 +22,7 @@ MARGIN_LIMIT = 100.0
 
 _FIRST_STEP = 1 / 16
 _LEAST_STEP = 1e-5
-_MARGIN_STEP = 5e-4
+_MARGIN_STEP = 4e-3
 
 
 @dataclass(frozen=True)
@@ -68,7 +68,7 @@ def solve(network: Network, condition: Operating, factor_of_20: Floats, supply: 
 
 
 def margin(network: Network, condition: Operating, factor_of_20: Floats, supply: Fed, state: State) -> float | None:
-    """How many times its loads a solved case holds, to 0.1 %; None where it is more than `MARGIN_LIMIT` times."""
+    """How many times its loads a solved case holds, to 0.5 %; None where it is more than `MARGIN_LIMIT` times."""
     equations = Equations(network, condition, factor_of_20, supply)
     _, share = _climb(equations, np.nan_to_num(state.volts), 1.0, MARGIN_LIMIT, 0.5, _MARGIN_STEP)
     return share if share < MARGIN_LIMIT else None
