@@ -4,33 +4,48 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from farvolt.ampacity import ampacity
-from farvolt.checks.registry import check
+from farvolt.ampacity import Ampacity
+from farvolt.checks.registry import cannot_be_made, check
 from farvolt.conductors import Size
 from farvolt.context import CaseStudy, Context, basis_text, label, larger_sizes
-from farvolt.network import insulation_degC
-from farvolt.plan import Run
+from farvolt.network import Floats, return_size
+from farvolt.plan import CHASSIS, Run
 from farvolt.results import Finding, Severity
 from farvolt.sections import sheathed
-from farvolt.temperatures import run_ambient_degC
+from farvolt.temperatures import run_ampacity
 from farvolt.units import number
 
+_TRIALS = 20
+"""Remedies tried on the network; those beyond are estimated at the current found."""
 
-@check("conductor.ampacity", title="Current in each cable against its ampacity", reads=("ampacity", "ambient", "bundling"))
+_NO_CURRENT_A = 1e-3
+"""A bond that carries less than this serves as no return."""
+
+
+@check(
+    "conductor.ampacity",
+    title="Current in each cable against its ampacity",
+    reads=("ampacity", "ambient", "bundling"),
+)
 def over_ampacity(context: Context) -> Iterator[Finding]:
     """Each run whose current exceeds its ampacity, in the case where it exceeds it most (hot conductors)."""
     currents = np.array([_currents(one) for one in context.cases]).reshape(len(context.cases), -1)
-    for run in range(len(context.plan.runs)):
-        limits = [one.ampacities[run] for one in context.cases]
-        worst = max(range(len(limits)), key=lambda i: _excess(currents[i, run], limits[i]))
-        limit, amps = limits[worst], float(currents[worst, run])
-        if limit is not None and limit.amps is None:
-            yield _missing(context, run, limit.missing, limit.basis, limit.working)
-        elif limit is not None and limit.amps is not None and amps > limit.amps * (1 + 1e-9):
-            yield _over(context, run, worst, amps, limit.amps)
+    trials = _TRIALS if context.remedies_are_exact else 0
+    for index, run in enumerate(context.plan.runs):
+        found = context.lowest_ampacity[index]
+        if found is None:
+            yield _no_size(context, run)
+            continue
+        if found.amps is None:
+            yield _missing(context, run, found)
+        over = [case for case in range(len(context.cases)) if _excess(context, index, case, currents) > 1 + 1e-9]
+        if over:
+            worst = max(over, key=lambda case: _excess(context, index, case, currents))
+            yield _over(context, index, worst, over, currents[:, index], trials > 0)
+            trials -= 1
 
 
-def _currents(one: CaseStudy) -> np.ndarray:
+def _currents(one: CaseStudy) -> Floats:
     """Larger conductor current of every run, with hot conductors: constant-power loads draw most then."""
     solution = one.solutions["hot"]
     if not solution.state.solved:
@@ -38,77 +53,100 @@ def _currents(one: CaseStudy) -> np.ndarray:
     return solution.largest_run_amps
 
 
-def _excess(amps: float, limit: object) -> float:
-    allowed = getattr(limit, "amps", None)
-    if allowed is None:
-        return -1.0
-    return float("inf") if allowed == 0 and amps > 0 else amps / allowed if allowed else 0.0
+def _excess(context: Context, run: int, case: int, currents: Floats) -> float:
+    """Current over ampacity; 0 in a case where the ampacity is not known."""
+    found, amps = context.cases[case].ampacities[run], float(currents[case, run])
+    if found is None or found.amps is None:
+        return 0.0
+    return amps / found.amps if found.amps > 0 else float("inf") if amps > 0 else 0.0
 
 
-def _over(context: Context, run: int, case: int, amps: float, limit: float) -> Finding:
-    entry, one = context.plan.runs[run], context.cases[case]
-    found = one.ampacities[run]
+def _over(context: Context, index: int, worst: int, over: list[int], currents: Floats, exact: bool) -> Finding:
+    entry, one, amps = context.plan.runs[index], context.cases[worst], float(currents[worst])
+    found = one.ampacities[index]
     assert found is not None
+    assert found.amps is not None
+    size = _large_enough(context, index, over, currents, exact)
+    carries = f"{label(entry)}: {size.name} carries this where it lies" if size else ""
     return _finding(
-        context, "conductor.ampacity", "fail", entry, one.name, amps, limit, "A",
-        f"{label(entry)} carries {number(amps)} A; {number(limit)} A is its ampacity where it lies",
-        found.basis, (*found.working, f"{number(amps, 4)} A > {number(limit, 4)} A"),
-        _remedy(context, entry, one, amps),
+        context, "conductor.ampacity", "fail", entry, one.name, amps, found.amps, "A",
+        f"{label(entry)} carries {number(amps)} A; {number(found.amps)} A is its ampacity where it lies",
+        found.basis, (*found.working, f"{number(amps, 4)} A > {number(found.amps, 4)} A"),
+        carries or "several cables in parallel, cables laid apart or in a cooler place, or less load",
     )  # fmt: skip
 
 
-def _remedy(context: Context, run: Run, one: CaseStudy, amps: float) -> str:
-    size = smallest_for(context, run, one, amps)
-    return f"{label(run)}: {size.name} carries {number(amps)} A here" if size else "several cables in parallel, or less load"
+def _large_enough(context: Context, index: int, over: list[int], currents: Floats, exact: bool) -> Size | None:
+    """The smallest larger size of the same system that carries the current of every case that is over.
 
-
-def smallest_for(context: Context, run: Run, one: CaseStudy, amps: float) -> Size | None:
-    """The smallest larger size of the same system whose ampacity where the run lies is at least `amps`."""
-    zone = context.plan.zone_of(run)
+    Tried on the network where that is allowed: a thicker cable may draw more than the thin one did.
+    """
+    run = context.plan.runs[index]
     for size in larger_sizes(run.size) if run.size else []:
-        found = ampacity(
-            context.rulebook,
-            size=size,
-            material=run.material,
-            insulation_degC=insulation_degC(run, context.rulebook),
-            ambient_degC=run_ambient_degC(context.plan, run, one.case),
-            engine_space=zone is not None and context.plan.zones[zone].engine_space,
-            conductors=context.together[run.name],
-            parallel=run.parallel,
-        )
-        if found.amps is not None and found.amps >= amps:
+        limits = [_ampacity_with(context, run, size, case) for case in over]
+        if any(limit < currents[case] for case, limit in zip(over, limits, strict=True)):
+            continue
+        if not exact:
+            return size
+        drawn = [_drawn(context, run, size, index, case) for case in over]
+        if all(amps <= limit * (1 + 1e-9) for amps, limit in zip(drawn, limits, strict=True)):
             return size
     return None
 
 
-def _missing(context: Context, run: int, missing: str, basis: str, working: tuple[str, ...]) -> Finding:
-    entry = context.plan.runs[run]
-    message = f"{label(entry)}: ampacity cannot be checked: {missing}"
-    remedy = "a size, material or insulation that the rulebook lists, or a rulebook of your own with this entry"
+def _ampacity_with(context: Context, run: Run, size: Size, case: int) -> float:
+    changed = run.model_copy(update={"size": size})
+    found = run_ampacity(
+        context.plan, context.rulebook, changed, context.cases[case].case, context.together[run.name]
+    )
+    return (found.amps or 0.0) if found is not None else 0.0
+
+
+def _drawn(context: Context, run: Run, size: Size, index: int, case: int) -> float:
+    solution = context.resolve({run.name: size}, case, "hot")
+    return float(solution.largest_run_amps[index]) if solution.state.solved else float("inf")
+
+
+def _missing(context: Context, run: Run, found: Ampacity) -> Finding:
     return _finding(
-        context, "conductor.ampacity", "warn", entry, None, None, None, None, message,
-        basis or context.rulebook.title, working, remedy,
+        context, "conductor.ampacity", "warn", run, None, None, None, None,
+        f"{label(run)}: neither its ampacity nor its protection can be checked: {found.missing}",
+        found.basis or context.rulebook.title, found.working,
+        "a size, material or insulation that the rulebook lists, or a rulebook of your own with this entry",
+    )  # fmt: skip
+
+
+def _no_size(context: Context, run: Run) -> Finding:
+    return _finding(
+        context, "conductor.ampacity", "warn", run, None, None, None, None,
+        f"{label(run)} states a resistance but no size: its ampacity, its protection and the smallest size allowed "
+        "cannot be checked",
+        context.rulebook.title, (), "state the size of the cable beside its resistance",
     )  # fmt: skip
 
 
 @check("conductor.minimum-size", title="Smallest conductor allowed", reads=("minimum_size",))
 def minimum_size(context: Context) -> Iterator[Finding]:
-    """Runs thinner than the rulebook allows, with its exemptions in the remedy."""
+    """Runs with a conductor thinner than the rulebook allows, with its exemptions in the remedy."""
     rule = context.rulebook.minimum_size
     if rule is None:
+        yield cannot_be_made(context, "conductor.minimum-size", "minimum_size", "the smallest size of a conductor")
         return
     for run in context.plan.runs:
-        if run.size is None or run.purpose == "bond":
+        sizes = [size for size in (run.size, return_size(run)) if size is not None]
+        if not sizes or run.purpose == "bond":
             continue
+        size = min(sizes, key=lambda one: one.area_mm2)
         in_sheath = sheathed(context.plan, run)
-        least = rule.least(run.size.system, in_sheath)
-        if run.size.area_mm2 < least.area_mm2 * (1 - 1e-6):
+        least = rule.least(size.system, in_sheath)
+        if size.area_mm2 < least.area_mm2 * (1 - 1e-6):
             where = "in a sheath" if in_sheath else "laid singly"
+            which = "" if size == run.size else "the return of "
             yield _finding(
-                context, "conductor.minimum-size", "fail", run, None, run.size.area_mm2, least.area_mm2, "mm2",
-                f"{label(run)} is {run.size.name}; {least.name} is the smallest conductor allowed {where}",
-                basis_text(rule.basis), (f"{number(run.size.area_mm2)} mm2 < {number(least.area_mm2)} mm2",),
-                f"{label(run)}: {least.name}" + (f". Exempt: {rule.exemption}" if rule.exemption else ""),
+                context, "conductor.minimum-size", "fail", run, None, size.area_mm2, least.area_mm2, "mm2",
+                f"{which}{label(run)} is {size.name}; {least.name} is the smallest conductor allowed {where}",
+                basis_text(rule.basis), (f"{number(size.area_mm2)} mm2 < {number(least.area_mm2)} mm2",),
+                f"{which}{label(run)}: {least.name}" + (f". Exempt: {rule.exemption}" if rule.exemption else ""),
             )  # fmt: skip
 
 
@@ -117,16 +155,19 @@ def material(context: Context) -> Iterator[Finding]:
     """Runs of a material or strand that the rulebook does not accept."""
     rule = context.rulebook.refused
     if rule is None:
+        # A stated reason here is the answer: there is nothing that such a rulebook refuses.
+        if "refused" not in context.rulebook.missing:
+            yield cannot_be_made(context, "conductor.material", "refused", "which materials and strands are refused")
         return
     for run in context.plan.runs:
         strand = run.strand or context.rulebook.default_strand
-        refused: list[str] = [run.material] if run.material in rule.materials else []
-        refused += [f"{strand} conductors" for word in (strand,) if word in rule.strands]
-        for what in refused:
+        refused = [str(run.material)] * (run.material in rule.materials)
+        refused += [f"{strand} conductors"] * (strand in rule.strands)
+        if refused:
             yield _finding(
                 context, "conductor.material", "fail", run, None, None, None, None,
-                f"{label(run)} is of {what}, which this rulebook does not accept", basis_text(rule.basis), (),
-                "stranded copper, tinned where it is damp",
+                f"{label(run)} is of {' in '.join(refused)}, which this rulebook does not accept",
+                basis_text(rule.basis), (), "stranded copper, tinned where it is damp",
             )  # fmt: skip
 
 
@@ -134,15 +175,24 @@ def material(context: Context) -> Iterator[Finding]:
 def return_path(context: Context) -> Iterator[Finding]:
     """Runs that return through the chassis where that is forbidden."""
     rule = context.rulebook.returns
-    if rule is None or "chassis" not in rule.forbidden:
+    if rule is None:
+        if "returns" not in context.rulebook.missing:
+            yield cannot_be_made(context, "conductor.return", "returns", "which return paths are forbidden")
         return
-    for run in context.plan.runs:
-        if run.return_path == "chassis":
+    for index, run in enumerate(context.plan.runs if "chassis" in rule.forbidden else ()):
+        if run.return_path == "chassis" or _returns_by_chassis(context, index, run):
             yield _finding(
                 context, "conductor.return", "fail", run, None, None, None, None,
                 f"{label(run)} returns through the chassis, which this rulebook forbids", basis_text(rule.basis), (),
                 f'{label(run)}: a return conductor of its own (return = "same")',
             )  # fmt: skip
+
+
+def _returns_by_chassis(context: Context, index: int, run: Run) -> bool:
+    """A run to the chassis that is no bond and carries current in some case."""
+    if CHASSIS not in (run.from_point, run.to_point) or run.purpose == "bond":
+        return False
+    return any(float(_currents(one)[index]) > _NO_CURRENT_A for one in context.cases)
 
 
 def _finding(

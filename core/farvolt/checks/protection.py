@@ -2,7 +2,8 @@
 
 from collections.abc import Iterator
 
-from farvolt.checks.rating import Demands, limit_for
+from farvolt.checks.demand import Demands
+from farvolt.checks.rating import limit_for
 from farvolt.checks.registry import cannot_be_made, check
 from farvolt.checks.ways import (
     PRACTICE,
@@ -26,7 +27,7 @@ from farvolt.units import number
 @check("protection.missing", title="Cables that a source feeds with no protection on the way", reads=("protection",))
 def missing(context: Context) -> Iterator[Finding]:
     """Runs without protection from some end that can feed them; exemptions are named as notes."""
-    demands = Demands.of(context)
+    demands = Demands(context)
     for index, run in enumerate(context.plan.runs):
         ways = bare(context, index)
         if not ways:

@@ -3,17 +3,17 @@
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-import numpy as np
-
+from farvolt.checks.demand import Demands
 from farvolt.checks.registry import cannot_be_made, check
 from farvolt.checks.ways import PRACTICE, ampacity_A, exempt, failing, limited_A, near_enough, self_limited
 from farvolt.conductors import Size
 from farvolt.context import Context, basis_text, label, larger_sizes
 from farvolt.errors import QuantityError
-from farvolt.network import FEED, RETURN, Floats, return_size
+from farvolt.network import FEED, RETURN, return_size
 from farvolt.plan import Protection, Run
 from farvolt.protection_types import protection_type
 from farvolt.results import Finding, Severity
+from farvolt.rulebook import SmallConductor
 from farvolt.sections import Exposure, Guard
 from farvolt.temperatures import run_ampacity
 from farvolt.units import number
@@ -21,30 +21,39 @@ from farvolt.units import number
 
 @dataclass(frozen=True, slots=True)
 class Limit:
-    """The highest rating a run's cable allows, the sentence that says why, and where that stands."""
+    """The highest rating a run's cable allows, by its ampacity or by the rule for small conductors."""
 
     amps: float
-    why: str
-    basis: str
-    small: bool
-    """It is the rule for small conductors that binds, whatever the ampacity."""
+    ampacity_A: float
+    percent: float
+    small: SmallConductor | None
+    """The entry that binds, whatever the ampacity."""
+
+    @property
+    def why(self) -> str:
+        """The limit as a line of working."""
+        if self.small is not None:
+            return f"{self.small.size.name}: at most {number(self.amps)} A"
+        return f"{number(self.percent)} % of {number(self.ampacity_A)} A = {number(self.amps)} A"
+
+    def basis(self, context: Context) -> str:
+        """Where the limit stands."""
+        rules = context.rulebook.protection
+        rule = rules.over_conductor if self.small is None else rules.small_conductors
+        return basis_text(rule.basis) if rule else PRACTICE
 
 
 def limit_for(context: Context, run: Run, ampacity: float) -> Limit:
     """The highest rating of a protection for a run of this ampacity, before any allowance."""
     rules = context.rulebook.protection
-    rule = rules.over_conductor
-    percent = rule.percent if rule else 100.0
+    percent = rules.over_conductor.percent if rules.over_conductor else 100.0
     amps = ampacity * percent / 100
-    why = f"{number(percent)} % of {number(ampacity)} A = {number(amps)} A"
-    found = Limit(amps, why, basis_text(rule.basis) if rule else PRACTICE, small=False)
-    sizes = [size for size in (run.size, return_size(run)) if size is not None]
-    if rules.small_conductors is not None and sizes:
-        entry = rules.small_conductors.limit(min(sizes, key=lambda size: size.area_mm2), run.material)
+    if rules.small_conductors is not None and run.size is not None:
+        thinnest = min((run.size, return_size(run) or run.size), key=lambda size: size.area_mm2)
+        entry = rules.small_conductors.limit(thinnest, run.material)
         if entry is not None and entry.max_A < amps:
-            why = f"{entry.size.name}: at most {number(entry.max_A)} A"
-            return Limit(entry.max_A, why, basis_text(rules.small_conductors.basis), small=True)
-    return found
+            return Limit(entry.max_A, ampacity, percent, entry)
+    return Limit(amps, ampacity, percent, None)
 
 
 @check(
@@ -57,32 +66,32 @@ def over_conductor(context: Context) -> Iterator[Finding]:
     if context.rulebook.protection.over_conductor is None:
         what = "how far a rating may exceed the ampacity; above 100 % is shown as a warning"
         yield cannot_be_made(context, "protection.over-conductor", "over_conductor", what)
-    demands = Demands.of(context)
+    demands = Demands(context)
     for index, run in enumerate(context.plan.runs):
         amps = ampacity_A(context, index)
         if amps is None or exempt(context, run):
             continue
-        limit = limit_for(context, run, amps)
-        worst = max(_guards(context, index, amps), key=lambda guard: guard.rating_A, default=None)
+        ways, limit = _ways(context, index, amps), limit_for(context, run, amps)
+        worst = max(_guards(context, index, ways, amps), key=lambda guard: guard.rating_A, default=None)
         if worst is not None and worst.rating_A > limit.amps * (1 + 1e-9):
             yield _over(context, index, worst, limit, amps, demands)
-            continue
-        total, parts = _joint(context, index, amps)
-        if len(parts) > 1 and total > amps * (1 + 1e-9):
-            yield _jointly_over(context, index, total, parts, amps)
+        elif len(ways) > 1:
+            total, parts = _joint(context, run, ways)
+            if len(parts) > 1 and total > amps * (1 + 1e-9):
+                yield _jointly_over(context, index, total, parts, amps)
 
 
 def _ways(context: Context, index: int, ampacity: float) -> list[Exposure]:
     """The ways a run is fed, without those into an end that nothing protects: protection.missing names that flaw."""
+    ways = context.sections.by_run.get(index, [])
     unprotected = {one.end for one in failing(context, index, ampacity)}
-    return [one for one in context.sections.by_run.get(index, []) if one.end not in unprotected]
+    return [one for one in ways if one.end not in unprotected] if unprotected else ways
 
 
-def _guards(context: Context, index: int, ampacity: float) -> list[Guard]:
+def _guards(context: Context, index: int, ways: list[Exposure], ampacity: float) -> list[Guard]:
     """The protections that a run depends on, without those behind which only self-limited sources stand."""
-    run = context.plan.runs[index]
-    behind: dict[Guard, list[Exposure]] = {}
-    for one in _ways(context, index, ampacity):
+    run, behind = context.plan.runs[index], dict[Guard, list[Exposure]]()
+    for one in ways:
         for guard in one.ahead if near_enough(context, run, one) else (one.guard,):
             if guard is not None:
                 behind.setdefault(guard, []).append(one)
@@ -92,21 +101,21 @@ def _guards(context: Context, index: int, ampacity: float) -> list[Guard]:
 
 
 def _over(
-    context: Context, index: int, guard: Guard, limit: Limit, amps: float, demands: "Demands"
+    context: Context, index: int, guard: Guard, limit: Limit, amps: float, demands: Demands
 ) -> Finding:
     run, rule = context.plan.runs[index], context.rulebook.protection.over_conductor
     where = label(context.plan.runs[guard.run])
     which = f"its own {guard.protection.rating}" if guard.run == index else f"the {guard.protection.rating} on {where}"
     message = f"{label(run)} is protected by {which}, above the {number(limit.amps)} A it may carry"
-    tolerated = not limit.small and _tolerated(context, guard, amps, limit.amps)
+    tolerated = limit.small is None and _tolerated(context, guard, amps, limit.amps)
     if tolerated:
         message += "; within the allowance for the next standard rating"
-    severity: Severity = "warn" if tolerated or (rule is None and not limit.small) else "fail"
+    severity: Severity = "warn" if tolerated or (rule is None and limit.small is None) else "fail"
     found = context.lowest_ampacity[index]
     working = (*(found.working if found else ()), limit.why, f"{number(guard.rating_A)} A > {number(limit.amps)} A")
     told = (rule.text,) if rule and tolerated else ()
     return _finding(
-        "protection.over-conductor", severity, run, guard.rating_A, limit.amps, "A", message, limit.basis,
+        "protection.over-conductor", severity, run, guard.rating_A, limit.amps, "A", message, limit.basis(context),
         (*working, *told), _over_remedy(context, index, guard, limit, demands),
     )  # fmt: skip
 
@@ -136,7 +145,7 @@ def _made(kind: str) -> tuple[float, ...]:
         return ()
 
 
-def _over_remedy(context: Context, index: int, guard: Guard, limit: Limit, demands: "Demands") -> str:
+def _over_remedy(context: Context, index: int, guard: Guard, limit: Limit, demands: Demands) -> str:
     """A thicker cable for this rating, and a lower rating where one is made that still carries the load."""
     run = context.plan.runs[index]
     size = size_for_rating(context, index, guard.rating_A)
@@ -165,13 +174,13 @@ def _hottest(context: Context, index: int) -> int:
     return min(range(len(amps)), key=lambda case: amps[case] or 0.0)
 
 
-def _joint(context: Context, index: int, ampacity: float) -> tuple[float, list[str]]:
+def _joint(context: Context, run: Run, ways: list[Exposure]) -> tuple[float, list[str]]:
     """The most that sources joining before an end of a run can feed into it, and through what.
 
     A battery counts with its protection, any other source with its own limit.
     """
-    run, worst = context.plan.runs[index], (0.0, list[str]())
-    joining = [one for one in _ways(context, index, ampacity) if not one.own and not near_enough(context, run, one)]
+    worst = (0.0, list[str]())
+    joining = [one for one in ways if not one.own and not near_enough(context, run, one)]
     for end in ("from", "to"):
         ways = [one for one in joining if one.end == end]
         limits = {one.source: limited_A(context, one.source) for one in ways}
@@ -198,45 +207,13 @@ def _jointly_over(context: Context, index: int, total: float, parts: list[str], 
     )  # fmt: skip
 
 
-@dataclass(frozen=True, slots=True)
-class Demands:
-    """Currents to be carried over (pole, case, run), and their continuous part, with hot conductors."""
-
-    amps: Floats
-    continuous: Floats
-    factor: float
-
-    @classmethod
-    def of(cls, context: Context) -> "Demands":
-        """The demands of every case that holds; none in a case that gives way."""
-        shape = (2, len(context.cases), len(context.plan.runs))
-        amps, continuous = np.zeros(shape), np.zeros(shape)
-        for case, one in enumerate(context.cases):
-            solution = one.solutions["hot"]
-            if not solution.state.solved:
-                continue
-            every, lasting = solution.feed_demand
-            share = np.divide(lasting, every, out=np.zeros_like(every), where=every > 0)
-            for pole in (FEED, RETURN):
-                amps[pole, case] = np.nan_to_num(np.abs(solution.run_amps(pole)))
-                continuous[pole, case] = amps[pole, case] * share
-        rule = context.rulebook.protection.continuous
-        return cls(amps, continuous, rule.factor if rule else 1.0)
-
-    def worst(self, run: int, pole: int) -> tuple[float, int]:
-        """The largest current to be counted for one pole of a run, and its case."""
-        counted = self.amps[pole, :, run] + (self.factor - 1) * self.continuous[pole, :, run]
-        case = int(np.argmax(counted))
-        return float(counted[case]), case
-
-
 @check("protection.under-load", title="Rating of each protection against the load it carries", reads=("protection",))
 def under_load(context: Context) -> Iterator[Finding]:
     """Protection rated below its current; continuous loads with the rulebook's factor."""
     if context.rulebook.protection.continuous is None and any(load.continuous for load in context.plan.loads):
         what = "a factor on continuous loads; they are counted once"
         yield cannot_be_made(context, "protection.under-load", "continuous", what)
-    demands, behind = Demands.of(context), _behind(context)
+    demands, behind = Demands(context), _behind(context)
     for index, run in enumerate(context.plan.runs):
         for one in run.protections:
             demand, case = demands.worst(index, FEED if one.pole == "feed" else RETURN)

@@ -3,14 +3,18 @@
 import difflib
 from collections.abc import Iterator
 
+import numpy as np
+
 from farvolt.checks.registry import check
 from farvolt.context import Context, label
 from farvolt.network import FEED, RETURN
-from farvolt.plan import CHASSIS, Entry, Run
+from farvolt.plan import CHASSIS, Entry, Run, Solar
 from farvolt.results import Finding, Kind, Severity
 
 _BASIS = "common practice: every load has a way from a source and a way back"
 _SLIP = "common practice: a name used once is often a slip of the pen"
+_LOOKS = 20
+"""Nearest names looked up for one check."""
 
 
 def _finding(
@@ -22,7 +26,9 @@ def _finding(
 
 @check("plan.unfed", "plan.no-return", title="Loads without a source, and loads without a way back")
 def unfed(context: Context) -> Iterator[Finding]:
-    """Each load that is on in a case and not fed there, or whose return does not lead back; said once, in its first case."""
+    """Each load that is on in a case and not fed there, or whose return does not lead back; said in its first case."""
+    reached = {name for ends in context.plan.joins for name in ends}
+    near = _Near(context)
     told: set[tuple[str, str]] = set()
     for one in context.cases:
         supply, condition = one.solutions["plan"].supply, one.solutions["plan"].condition
@@ -35,25 +41,60 @@ def unfed(context: Context) -> Iterator[Finding]:
                 continue
             told.add((rule, load.name))
             if fed:
-                message = f'"{load.name}" at "{load.at}" is fed but its return leads back to no source'
+                message = f'"{load.name}" at "{load.at}" is fed but its return leads back to no source that feeds it'
                 remedy = 'a run that carries the return, or return = "chassis" with the source bonded to it'
             else:
-                message = f'"{load.name}" at "{load.at}" is not fed: {_why_unfed(context, load.at)}'
+                nothing = f"no run reaches that point{near.to(load.at)}" if load.at not in reached else ""
+                why = nothing or "no closed way leads there from a source that is on"
+                message = f'"{load.name}" at "{load.at}" is not fed: {why}'
                 remedy = f'a run to "{load.at}" that carries the feed, or a closed switch, or a working source'
             yield _finding(rule, "fail", load.name, "load", message, _BASIS, remedy, one.name)
 
 
-def _why_unfed(context: Context, point: str) -> str:
-    reaching = [run for run in context.plan.runs if point in (run.from_point, run.to_point)]
-    if not reaching and not any(point in (one.from_point, one.to_point) for one in context.plan.devices):
-        return "no run reaches that point" + _like(context, point)
-    return "no closed way leads there from a source that is on"
+@check("plan.unfed", title="Parts of the plan that nothing feeds in any case")
+def unfed_parts(context: Context) -> Iterator[Finding]:
+    """Feed conductors that no source reaches in any case: nothing of them is checked. Said once for each part."""
+    solutions = [one.solutions["plan"] for one in context.cases]
+    live = np.any([one.supply.live for one in solutions], axis=0)
+    parts: dict[int, list[str]] = {}
+    islands = solutions[0].condition.islands.of_node
+    fed_points = {
+        name for run in context.plan.runs if run.conducts != "return" for name in (run.from_point, run.to_point)
+    }
+    for name in context.plan.point_names:
+        node = context.network.feed(name)
+        if name in fed_points and not live[node]:
+            parts.setdefault(int(islands[node]), []).append(name)
+    told = {load.at for load in context.plan.loads if any(one.case.share(load.name) > 0 for one in context.cases)}
+    arrays = {source.array.at for source in context.plan.sources if isinstance(source, Solar) and source.array}
+    for names in parts.values():
+        if told.isdisjoint(names):
+            yield _unfed_part(names, [name for name in names if name in arrays])
 
 
-def _like(context: Context, point: str) -> str:
-    others = [name for name in context.plan.point_names if name != point]
-    close = difflib.get_close_matches(point, others, n=1, cutoff=0.6)
-    return f'; did you mean "{close[0]}"?' if close else ""
+def _unfed_part(names: list[str], arrays: list[str]) -> Finding:
+    listed = ", ".join(f'"{name}"' for name in names[:6]) + (f" and {len(names) - 6} more" if len(names) > 6 else "")
+    message = f"No source feeds {listed} in any case: the cables there are not checked"
+    remedy = "a run from a source, a case with the switch closed or the source on, or delete what is not meant"
+    if arrays:
+        message += "; the modules of an array are not taken as a source by this version"
+        remedy = "judge the cables of the array by hand"
+    return _finding("plan.unfed", "warn", names[0], "point", message, _BASIS, remedy)
+
+
+class _Near:
+    """Offers the point whose name is nearest; a limited number of times, since each look reads every name."""
+
+    def __init__(self, context: Context) -> None:
+        self._names, self._looks = context.plan.point_names, _LOOKS
+
+    def to(self, point: str) -> str:
+        self._looks -= 1
+        if self._looks < 0:
+            return ""
+        others = [name for name in self._names if name != point]
+        close = difflib.get_close_matches(point, others, n=1, cutoff=0.6)
+        return f'; did you mean "{close[0]}"?' if close else ""
 
 
 @check("plan.two-runs", title="Two runs between the same points")
@@ -91,9 +132,10 @@ def lonely_point(context: Context) -> Iterator[Finding]:
             uses[array.at] = uses.get(array.at, 0) + 1
     for load in context.plan.loads:
         uses[load.at] = uses.get(load.at, 0) + 1
+    near = _Near(context)
     for name, count in uses.items():
         if count == 1 and name != CHASSIS and name not in listed:
-            message = f'"{name}" is named only once{_like(context, name)}'
+            message = f'"{name}" is named only once{near.to(name)}'
             yield _finding(
                 "plan.lonely-point", "warn", name, "point", message, _SLIP,
                 "correct the name, or list the point under [[points]] if it is meant to end there",

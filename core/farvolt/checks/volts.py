@@ -4,10 +4,13 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from farvolt.checks.drop import working
+from farvolt.checks.drop import loads_on, working
+from farvolt.checks.enlarge import Aim, Remedies
 from farvolt.checks.registry import check
 from farvolt.context import CaseStudy, Context
+from farvolt.network import Floats
 from farvolt.results import Finding
+from farvolt.solution import Solution
 from farvolt.units import number
 
 _TOLERATED = "the load's own range, as the plan states it"
@@ -18,43 +21,75 @@ _PHYSICS = "Kirchhoff's laws; the highest power a source can deliver through a r
 def low(context: Context) -> Iterator[Finding]:
     """Loads that see less than their `min_volts` with conductors at their insulation's rating."""
     limits = np.array([load.min_volts.si if load.min_volts else np.nan for load in context.plan.loads])
-    for load, case, volts in _worst(context, "hot", limits, sign=1.0):
-        yield _finding(context, "volts.low", load, case, volts, float(limits[load]))
+    table = np.array([np.where(loads_on(one.solutions["hot"]), one.solutions["hot"].load_volts, np.nan)
+                      for one in context.cases]).reshape(len(context.cases), -1)  # fmt: skip
+    remedies = Remedies(context)
+    for load, cases in _beyond(limits - table):
+        worst = cases[0]
+        volts, limit = float(table[worst, load]), float(limits[load])
+        yield _finding(context, "volts.low", load, worst, volts, limit, _thicker(context, load, cases, limit, remedies))
 
 
 @check("volts.high", title="Highest voltage at each load, with cold conductors")
 def high(context: Context) -> Iterator[Finding]:
-    """Loads that see more than their `max_volts` with conductors at ambient."""
+    """Loads that see more than their `max_volts` with conductors at ambient; one that is off sees its voltage too."""
     limits = np.array([load.max_volts.si if load.max_volts else np.nan for load in context.plan.loads])
-    for load, case, volts in _worst(context, "cold", limits, sign=-1.0):
-        yield _finding(context, "volts.high", load, case, volts, float(limits[load]))
+    solutions = [one.solutions["cold"] for one in context.cases]
+    table = np.array([np.where(one.state.solved, one.load_volts, np.nan) for one in solutions]).reshape(
+        len(context.cases), -1
+    )
+    for load, cases in _beyond(table - limits):
+        worst = cases[0]
+        volts, limit = float(table[worst, load]), float(limits[load])
+        yield _finding(context, "volts.high", load, worst, volts, limit, _lower(solutions[worst], limit))
 
 
-def _worst(context: Context, mode: str, limits: np.ndarray, sign: float) -> Iterator[tuple[int, int, float]]:
-    """For each load beyond its limit, the case where it is farthest beyond. High volts count for loads that are off."""
-    rows = []
-    for one in context.cases:
-        solution = one.solutions[mode]  # type: ignore[index]  # the two callers name modes
-        on = np.array([sign < 0 or one.case.share(load.name) > 0 for load in context.plan.loads], dtype=bool)
-        rows.append(np.where(on & solution.state.solved, solution.load_volts, np.nan))
-    table = np.array(rows).reshape(len(rows), -1)
-    for load in range(table.shape[1]):
-        short = sign * (limits[load] - table[:, load])
-        if np.any(short > 1e-9):
-            case = int(np.nanargmax(short))
-            yield load, case, float(table[case, load])
+def _beyond(excess: Floats) -> Iterator[tuple[int, list[int]]]:
+    """Each load beyond its limit, with the cases where it is, the worst first. `excess` is over (case, load)."""
+    for load in np.flatnonzero(np.any(excess > 1e-9, axis=0)).tolist():
+        cases = np.flatnonzero(excess[:, load] > 1e-9)
+        yield load, cases[np.argsort(-excess[cases, load], kind="stable")].tolist()
 
 
-def _finding(context: Context, rule: str, load: int, case: int, volts: float, limit: float) -> Finding:
+def _thicker(context: Context, load: int, cases: list[int], limit: float, remedies: Remedies) -> str:
+    """The cable that lifts a load to its lowest voltage, or what stands in the way."""
+    solution = context.cases[cases[0]].solutions["hot"]
+    way = solution.way(load)
+    port = solution.references[load]
+    if port is not None:
+        c, volts = solution.condition, solution.state.volts
+        at_source = float(volts[c.source_a[port]] - volts[c.source_b[port]])
+        if at_source < limit:
+            source = context.plan.sources[port].name
+            told = f'"{source}" itself is at {number(at_source, 4)} V here: no cable cures that'
+            return f"{told}; more charge in it, a larger source, or a load that works at less"
+    aim = Aim(
+        load, "hot", cases[0], tuple(cases), way, lambda found: _volts(found, load), limit, 1.0, "V"
+    )
+    return remedies.for_load(aim) or "no thicker cable on its way is enough: shorten it, or a load that works at less"
+
+
+def _volts(solution: Solution, load: int) -> float:
+    """Volts at a load; minus infinity where the case gives way."""
+    return float(solution.load_volts[load]) if solution.state.solved else float("-inf")
+
+
+def _lower(solution: Solution, limit: float) -> str:
+    """What lowers the voltage at a load: the source that stands above the limit, named."""
+    c, volts, sources = solution.condition, solution.state.volts, solution.network.plan.sources
+    at = volts[c.source_a[: len(sources)]] - volts[c.source_b[: len(sources)]]
+    above = [f'"{source.name}"' for port, source in enumerate(sources) if at[port] > limit and solution.working(port)]
+    lower = f"a lower voltage of {' or '.join(above)}" if above else "a lower charging voltage"
+    return f"{lower}, a converter before this load, or a load that stands more; thinner cable is no cure"
+
+
+def _finding(
+    context: Context, rule: str, load: int, case: int, volts: float, limit: float, remedy: str
+) -> Finding:
     entry, one = context.plan.loads[load], context.cases[case]
     low = rule == "volts.low"
     solution = one.solutions["hot" if low else "cold"]
-    bound = "at least" if low else "at most"
-    remedy = (
-        "thicker or shorter cable on its way, or a load that works at less"
-        if low
-        else "a lower charging voltage, a converter before this load, or a load that stands more; thinner cable is no cure"
-    )
+    bound, sign = ("at least", "<") if low else ("at most", ">")
     return Finding(
         rule=rule,
         severity="fail",
@@ -66,7 +101,7 @@ def _finding(context: Context, rule: str, load: int, case: int, volts: float, li
         unit="V",
         message=f'"{entry.name}" sees {number(volts, 4)} V; it needs {bound} {number(limit, 4)} V',
         basis=_TOLERATED,
-        working=tuple(working(one, solution, load)),
+        working=(*working(one, solution, load), f"{number(volts, 4)} V {sign} {number(limit, 4)} V"),
         remedy=remedy,
     )
 
