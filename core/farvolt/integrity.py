@@ -5,23 +5,30 @@ Working on the raw tables lets one reading report every fault of a file, even wh
 
 import difflib
 from collections.abc import Iterator
+from itertools import islice
 from typing import Any
 
 from farvolt.errors import Fault
+from farvolt.plan import CHASSIS
 
 _NAMED = ("points", "sources", "runs", "devices", "loads", "cases")
+_ENDS = {"sources": ("at", "from"), "runs": ("from", "to"), "devices": ("from", "to"), "loads": ("at",)}
 _CASE_SOURCE_FIELDS = {
-    "battery": {"state", "charge", "emf"},
-    "charger": {"state", "volts", "amps"},
-    "solar": {"state", "irradiance", "volts"},
-    "converter": {"state", "volts", "amps"},
+    "battery": ("state", "charge", "emf"),
+    "charger": ("state", "volts", "amps"),
+    "solar": ("state", "irradiance", "volts"),
+    "converter": ("state", "volts", "amps"),
 }
+
+Path = tuple[str | int, ...]
+Found = tuple[Path, Fault]
+"""A fault with its path in the raw tables."""
 
 
 def place(table: str, entry: Any, index: int) -> str:
     """How a message names an entry: its table and name, or its place in order."""
     name = entry.get("name") if isinstance(entry, dict) else None
-    return f'{table} "{shorten(name)}"' if isinstance(name, str) and name else f"{table}[{index + 1}]"
+    return f'{table} "{shorten(name)}"' if isinstance(name, str) and name else f"{table}, entry {index + 1}"
 
 
 def shorten(text: str, limit: int = 60) -> str:
@@ -29,18 +36,34 @@ def shorten(text: str, limit: int = 60) -> str:
     return text if len(text) <= limit else text[: limit - 1] + "…"
 
 
+def plain(text: str) -> str:
+    """`text` on one line, with a mark for what a terminal would obey or not show."""
+    return "".join(one if one.isprintable() else "�" for one in text)
+
+
+def shown(value: Any) -> str:
+    """A value of the file as a message shows it; nothing for a table or a list."""
+    if value is None or isinstance(value, dict | list):
+        return ""
+    if isinstance(value, str):
+        return f'"{shorten(value)}"'
+    if isinstance(value, int) and abs(value) >= 10**20:
+        return "a number of more than 20 digits"
+    return str(value).lower() if isinstance(value, bool) else str(value)
+
+
 def nearest(word: str, known: Any) -> str:
     """The known name nearest to `word`, in quotes, or nothing."""
-    close = difflib.get_close_matches(word, [name for name in known if isinstance(name, str)], n=1, cutoff=0.5)
+    texts = [name for name in known if isinstance(name, str)]
+    close = [name for name in texts if name.casefold() == word.casefold()]
+    close = close or difflib.get_close_matches(word, texts, n=1, cutoff=0.5)
     return f'"{close[0]}"' if close else ""
 
 
-def faults(raw: dict[str, Any]) -> list[tuple[tuple[str | int, ...], Fault]]:
+def faults(raw: dict[str, Any]) -> list[Found]:
     """Every fault between entries, each with its path in the raw tables (for its line)."""
-    found: list[tuple[tuple[str | int, ...], Fault]] = []
-    for check in (_duplicates, _self_runs, _chassis, _references, _case_names, _sources):
-        found.extend(check(raw))
-    return found
+    checks = (_duplicates, _self_joins, _chassis, _one_pole, _guards, _references, _case_names, _case_states, _sources)
+    return [found for check in checks for found in check(raw)]
 
 
 def entries(raw: dict[str, Any], table: str) -> list[tuple[int, dict[str, Any]]]:
@@ -56,17 +79,13 @@ def names(raw: dict[str, Any], table: str) -> list[str]:
     return [row["name"] for _, row in entries(raw, table) if isinstance(row.get("name"), str)]
 
 
-Found = Iterator[tuple[tuple[str | int, ...], Fault]]
-
-
-def _duplicates(raw: dict[str, Any]) -> Found:
+def _duplicates(raw: dict[str, Any]) -> Iterator[Found]:
     for table in _NAMED:
         seen: set[str] = set()
         for index, row in entries(raw, table):
             name = row.get("name")
             if isinstance(name, str) and name in seen:
-                problem = "this name is used twice; each needs its own"
-                yield (table, index, "name"), Fault(place(table, row, index), "name", name, problem)
+                yield _fault(table, index, row, "name", "this name is used twice; each needs its own", "another name")
             elif isinstance(name, str):
                 seen.add(name)
     labels: dict[str, str] = {}
@@ -74,104 +93,155 @@ def _duplicates(raw: dict[str, Any]) -> Found:
         label = row.get("label")
         if isinstance(label, str) and label in labels:
             problem = f'the label of run "{shorten(labels[label])}" too; a label marks one run'
-            yield ("runs", index, "label"), Fault(place("runs", row, index), "label", label, problem)
+            yield _fault("runs", index, row, "label", problem, "another label")
         elif isinstance(label, str):
             labels[label] = str(row.get("name", ""))
 
 
-def _self_runs(raw: dict[str, Any]) -> Found:
+def _self_joins(raw: dict[str, Any]) -> Iterator[Found]:
     for table in ("runs", "devices"):
         for index, row in entries(raw, table):
-            start, end = row.get("from"), row.get("to")
-            if isinstance(start, str) and start == end:
-                problem = "starts and ends at the same point"
-                yield (table, index, "to"), Fault(place(table, row, index), "to", start, problem, "another point")
+            if isinstance(row.get("from"), str) and row["from"] == row.get("to"):
+                yield _fault(table, index, row, "to", "starts and ends at the same point", "another point")
+    for index, row in entries(raw, "sources"):
+        if row.get("kind") == "converter" and isinstance(row.get("from"), str) and row["from"] == row.get("at"):
+            yield _fault("sources", index, row, "at", "draws and delivers at the same point", "another point")
 
 
-def _chassis(raw: dict[str, Any]) -> Found:
-    for index, row in entries(raw, "runs"):
-        if "chassis" not in (row.get("from"), row.get("to")):
-            continue
-        if row.get("carries", "return") != "return":
-            yield (
-                ("runs", index, "carries"),
-                Fault(place("runs", row, index), "carries", str(row["carries"]), "a run to the chassis is a return", '"return"'),
-            )
-        if "return" in row:
-            problem = "a run to the chassis is itself a return"
-            yield ("runs", index, "return"), Fault(place("runs", row, index), "return", str(row["return"]), problem)
-    for table, field in (("sources", "at"), ("sources", "from"), ("loads", "at"), ("devices", "from"), ("devices", "to")):
+def _chassis(raw: dict[str, Any]) -> Iterator[Found]:
+    for table, fields in _ENDS.items():
         for index, row in entries(raw, table):
-            if row.get(field) == "chassis":
-                problem = "the chassis is one node, a return; nothing can stand between its feed and its return"
-                yield (table, index, field), Fault(place(table, row, index), field, "chassis", problem, "another point")
+            for field in fields:
+                given = row.get(field)
+                if given == CHASSIS and table != "runs":
+                    problem = "the chassis is one node, a return; nothing can stand between its feed and its return"
+                    yield _fault(table, index, row, field, problem, "another point")
+                elif isinstance(given, str) and given != CHASSIS and given.lower() == CHASSIS:
+                    yield _fault(table, index, row, field, "the metal body has one spelling", f'"{CHASSIS}"')
 
 
-def _references(raw: dict[str, Any]) -> Found:
-    zones, routes = names(raw, "zones"), names(raw, "routes")
+def _one_pole(raw: dict[str, Any]) -> Iterator[Found]:
+    """Runs of one conductor that speak of the other; a drop where nothing drops."""
+    for index, row in entries(raw, "runs"):
+        to_chassis = CHASSIS in (row.get("from"), row.get("to"))
+        if to_chassis and row.get("carries", "return") != "return":
+            yield _fault("runs", index, row, "carries", "a run to the chassis is a return", '"return"')
+        if to_chassis and "return" in row:
+            yield _fault("runs", index, row, "return", "a run to the chassis is itself a return", "no return field")
+        elif row.get("carries") in ("feed", "return") and row.get("return", "same") != "same":
+            problem = f"a run that carries the {row['carries']} alone has no second conductor"
+            yield _fault("runs", index, row, "return", problem, 'no return field, or carries = "both"')
+    for index, row in entries(raw, "devices"):
+        if "drop" in row and row.get("kind") in ("switch", "selector", "relay", "shunt", "connector"):
+            yield _fault("devices", index, row, "drop", f"a {row['kind']} has a resistance, not a drop", "resistance")
+
+
+def _guards(raw: dict[str, Any]) -> Iterator[Found]:
+    """Protection in a conductor that the run does not have, or at an end other than its field says."""
+    for index, row in entries(raw, "runs"):
+        if CHASSIS in (row.get("from"), row.get("to")):
+            poles = ["return"]
+        elif row.get("carries") in ("feed", "return"):
+            poles = [row["carries"]]
+        else:
+            poles = ["feed"] if row.get("return") == CHASSIS else ["feed", "return"]
+        given = row.get("protection")
+        guards = [("protection", one) for one in (given if isinstance(given, list) else [given])]
+        for field, guard in [*guards, ("protection_to", row.get("protection_to"))]:
+            pole = guard.get("pole", "feed") if isinstance(guard, dict) else poles[0]
+            if pole in ("feed", "return") and pole not in poles:
+                problem = f"protection in the {pole}, of which this run has no conductor"
+                where = place("runs", row, index)
+                yield (
+                    ("runs", index, field),
+                    Fault(where, f"{field}.pole", shown(pole), problem, f'pole = "{poles[0]}"'),
+                )
+            if field == "protection_to" and isinstance(guard, dict) and guard.get("end") == "from":
+                problem = "protection_to is at the other end of the run"
+                where = place("runs", row, index)
+                yield ("runs", index, field), Fault(where, f"{field}.end", '"from"', problem, 'no end, or "to"')
+
+
+class _Names:
+    """The names of one kind that a plan defines, for many look-ups."""
+
+    def __init__(self, what: str, known: list[str]) -> None:
+        self._what = what
+        self._known = dict.fromkeys(known)
+        self._near: dict[str, str] = {}
+
+    def unknown(self, path: Path, where: str, field: str, given: Any) -> Iterator[Found]:
+        """A fault if `given` is a name that is not there."""
+        if not isinstance(given, str) or given in self._known:
+            return
+        if given not in self._near:
+            self._near[given] = nearest(given, self._known)
+        some = [f'"{shorten(name, 30)}"' for name in islice(self._known, 8)]
+        accepted = ", ".join(some) + (", …" if len(self._known) > 8 else "")
+        accepted = accepted or f"the plan defines none; define it, or leave {field} out"
+        yield path, Fault(where, field, shown(given), f"there is no such {self._what}", accepted, self._near[given])
+
+
+def _references(raw: dict[str, Any]) -> Iterator[Found]:
+    zones, routes = _Names("zone", names(raw, "zones")), _Names("route", names(raw, "routes"))
     for table in ("runs", "points"):
         for index, row in entries(raw, table):
-            for field, known in (("zone", zones), ("route", routes)):
-                yield from _unknown((table, index, field), place(table, row, index), row.get(field), known, field)
+            where = place(table, row, index)
+            yield from zones.unknown((table, index, "zone"), where, "zone", row.get("zone"))
+            yield from routes.unknown((table, index, "route"), where, "route", row.get("route"))
     if isinstance(raw.get("routes"), dict):
         for name, row in raw["routes"].items():
             zone = row.get("zone") if isinstance(row, dict) else None
-            yield from _unknown(("routes", name, "zone"), f'routes "{shorten(name)}"', zone, zones, "zone")
+            yield from zones.unknown(("routes", name, "zone"), f'routes "{shorten(name)}"', "zone", zone)
     plan = raw.get("plan")
-    if isinstance(plan, dict):
-        sources = names(raw, "sources")
-        yield from _unknown(("plan", "reference"), "plan", plan.get("reference"), sources, "source", "reference")
+    reference = plan.get("reference") if isinstance(plan, dict) else None
+    sources = _Names("source", names(raw, "sources"))
+    yield from sources.unknown(("plan", "reference"), "plan", "reference", reference)
+    converters = [row.get("name") for _, row in entries(raw, "sources") if row.get("kind") == "converter"]
+    if reference in converters and isinstance(reference, str):
+        problem = "a converter cannot be the reference: it is fed by the plan itself"
+        yield ("plan", "reference"), Fault("plan", "reference", shown(reference), problem, "a battery or charger")
 
 
-def _unknown(
-    path: tuple[str | int, ...], where: str, given: Any, known: list[str], what: str, field: str | None = None
-) -> Found:
-    if isinstance(given, str) and given not in known:
-        listed = ", ".join(f'"{shorten(name, 30)}"' for name in known[:8]) + (", …" if len(known) > 8 else "")
-        accepted = listed or f"none is defined; add one to the plan or leave {what} out"
-        field = what if field is None else field
-        yield path, Fault(where, field, given, f"there is no such {what}", accepted, nearest(given, known))
-
-
-def _case_names(raw: dict[str, Any]) -> Found:
+def _case_names(raw: dict[str, Any]) -> Iterator[Found]:
+    known = [_Names(table[:-1], names(raw, table)) for table in ("loads", "sources", "devices")]
     for index, row in entries(raw, "cases"):
-        where = place("cases", row, index)
-        for field, what in (("loads", "load"), ("sources", "source"), ("devices", "device")):
+        for field, defined in zip(("loads", "sources", "devices"), known, strict=True):
             given = row.get(field)
-            if isinstance(given, dict):
-                for name in given:
-                    yield from _unknown(("cases", index, field), where, name, names(raw, field), what, field)
-        yield from _case_states(raw, index, row, where)
+            for name in given if isinstance(given, dict) else ():
+                yield from defined.unknown(("cases", index, field, name), place("cases", row, index), field, name)
 
 
-def _case_states(raw: dict[str, Any], index: int, row: dict[str, Any], where: str) -> Found:
-    kinds = {source.get("name"): source.get("kind") for _, source in entries(raw, "sources")}
-    states = row.get("sources")
-    for name, state in states.items() if isinstance(states, dict) else ():
-        kind = kinds.get(name)
-        path = ("cases", index, "sources")
-        if kind not in _CASE_SOURCE_FIELDS:
-            continue
-        if (state == "full" or (isinstance(state, dict) and state.get("state") == "full")) and kind != "battery":
-            yield path, Fault(where, "sources", f'"{name}" = "full"', "only a battery can be full", '"on" or "off"')
-        if isinstance(state, dict):
+def _case_states(raw: dict[str, Any]) -> Iterator[Found]:
+    kinds = {row["name"]: row.get("kind") for _, row in entries(raw, "sources") if isinstance(row.get("name"), str)}
+    anywhere = set().union(*_CASE_SOURCE_FIELDS.values())
+    for index, row in entries(raw, "cases"):
+        given, where = row.get("sources"), place("cases", row, index)
+        for name, state in given.items() if isinstance(given, dict) else ():
+            kind, path, field = kinds.get(name), ("cases", index, "sources", name), f"sources.{shorten(name)}"
+            if not isinstance(kind, str) or kind not in _CASE_SOURCE_FIELDS:
+                continue
+            state = state if isinstance(state, dict) else {"state": state}
+            if state.get("state") == "full" and kind != "battery":
+                yield path, Fault(where, field, '"full"', "only a battery can be full", '"on" or "off"')
+            if state.get("state") == "full" and "charge" in state:
+                problem = "a full battery has its charge already"
+                yield path, Fault(where, f"{field}.charge", shown(state["charge"]), problem, "full, or a charge")
             known = _CASE_SOURCE_FIELDS[kind]
-            for field in state.keys() - known:
-                problem = f'"{field}" is not a setting of a {kind}'
-                accepted = ", ".join(sorted(known))
-                yield path, Fault(where, "sources", f'"{name}"', problem, accepted, nearest(field, known))
+            for setting in [one for one in state if one in anywhere and one not in known]:
+                problem = f"is not a setting of a {kind}"
+                yield path, Fault(where, f"{field}.{setting}", shown(state[setting]), problem, ", ".join(known))
 
 
-def _sources(raw: dict[str, Any]) -> Found:
-    if not any(row.get("kind") != "converter" for _, row in entries(raw, "sources")):
+def _sources(raw: dict[str, Any]) -> Iterator[Found]:
+    rows = raw.get("sources", [])
+    if isinstance(rows, list) and all(isinstance(row, dict) and row.get("kind") == "converter" for row in rows):
         problem = "the plan has no source: nothing feeds the loads"
+        if rows:
+            problem = "the plan has converters alone: nothing feeds what they draw"
         yield ("sources",), Fault("sources", "", "", problem, 'at least one source, such as kind = "battery"')
-    for index, row in entries(raw, "sources"):
-        if row.get("kind") == "converter" and row.get("from") is not None and row.get("from") == row.get("at"):
-            where = place("sources", row, index)
-            problem = "draws and delivers at the same point"
-            yield ("sources", index, "at"), Fault(where, "at", str(row["at"]), problem, "another point")
-        if row.get("kind") == "converter" and isinstance(raw.get("plan"), dict):
-            if raw["plan"].get("reference") == row.get("name") and row.get("name") is not None:
-                problem = "a converter cannot be the reference: it is fed by the plan itself"
-                yield ("plan", "reference"), Fault("plan", "reference", str(row["name"]), problem, "a battery or charger")
+
+
+def _fault(table: str, index: int, row: dict[str, Any], field: str, problem: str, accepted: str) -> Found:
+    """A fault of one field of an entry."""
+    return (table, index, field), Fault(place(table, row, index), field, shown(row.get(field)), problem, accepted)

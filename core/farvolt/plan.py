@@ -9,7 +9,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
 
-from farvolt import conductors, units
+from farvolt import units
 from farvolt.plan_types import (
     AnyResistance,
     CableSize,
@@ -32,6 +32,7 @@ from farvolt.plan_types import (
     Resistance,
     Seconds,
     Share,
+    StatedSize,
     Temperature,
     Text,
     Voltage,
@@ -98,14 +99,7 @@ class LinkCable(Entry):
     """The cable between parallel strings of a battery."""
 
     length: Length
-    size: CableSize
-
-    @field_validator("size", mode="after")
-    @classmethod
-    def _is_stated(cls, size: conductors.Size | None) -> conductors.Size:
-        if size is None:
-            raise refusal("a link cable needs its size", 'a size such as "50 mm2"')
-        return size
+    size: StatedSize
 
 
 class Battery(Entry):

@@ -97,6 +97,13 @@ def _read_size(value: Any) -> conductors.Size | None:
         raise _translated(error) from None
 
 
+def _read_stated_size(value: Any) -> conductors.Size:
+    size = _read_size(value)
+    if size is None:
+        raise refusal("must be stated here", 'a size such as "50 mm2" or "1/0 AWG"')
+    return size
+
+
 def _read_name(value: Any) -> Any:
     if isinstance(value, str):
         if not value.strip():
@@ -162,6 +169,11 @@ CableSize = Annotated[
     WithJsonSchema(
         {"type": "string", "description": 'a conductor size, such as "6 mm2", "10 AWG", "10 SAE", or "free"'}
     ),
+]
+StatedSize = Annotated[
+    conductors.Size,
+    BeforeValidator(_read_stated_size),
+    WithJsonSchema({"type": "string", "description": 'a conductor size, such as "50 mm2" or "1/0 AWG"'}),
 ]
 Name = Annotated[str, BeforeValidator(_read_name), Field(strict=True)]
 Text = Annotated[str, Field(strict=True, max_length=10_000)]

@@ -5,19 +5,19 @@ Reading uses tomllib, which is fast; changing a file uses tomlkit (in `edits`), 
 
 import hashlib
 import os
-import re
 import sys
 import tempfile
 import tomllib
+from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
 from pydantic import ValidationError
 
-from farvolt import integrity, lines, plan
-from farvolt.errors import Fault, PlanError, SaveError
-from farvolt.plan import FORMAT, Plan
+from farvolt import integrity, lines, translate
+from farvolt.errors import Fault, PlanError, RulebookError, SaveError
+from farvolt.plan import Plan
 
 SIZE_LIMIT_BYTES = 10_000_000
 """A larger plan file is refused."""
@@ -41,28 +41,31 @@ class PlanFile:
 
 def read(path: str | Path) -> PlanFile:
     """Read and validate a plan file; "-" is standard input. Raises PlanError with every fault."""
-    if str(path) == STDIN:
+    source = integrity.plain(str(path))
+    if source == STDIN:
+        if sys.stdin is None:
+            raise _whole_file("standard input", "is closed", "a plan on standard input, or the path of a file")
         text = _decode(sys.stdin.buffer.read(SIZE_LIMIT_BYTES + 1), "standard input")
         return PlanFile(parse(text, "standard input"), text, None)
     text = read_text(Path(path))
-    return PlanFile(parse(text, str(path)), text, Path(path))
+    return PlanFile(parse(text, source), text, Path(path))
 
 
 def read_text(path: Path) -> str:
     """The text of a plan file. Raises PlanError: missing, a folder, unreadable, too large, not UTF-8 text."""
-    source = str(path)
+    source = integrity.plain(str(path))
     try:
         with path.open("rb") as file:
             data = file.read(SIZE_LIMIT_BYTES + 1)
     except FileNotFoundError:
-        raise _whole_file(source, "there is no such file", nearest=_neighbour(path)) from None
+        raise _whole_file(source, "there is no such file", "the path of a plan file", _neighbour(path)) from None
     except IsADirectoryError:
         raise _whole_file(source, "this is a folder, not a plan file", "the path of a .toml file") from None
     except PermissionError:
-        raise _whole_file(source, "no permission to read this file") from None
+        raise _whole_file(source, "no permission to read this file", "a file that you may read") from None
     except (OSError, ValueError) as error:
         reason = getattr(error, "strerror", None) or str(error)
-        raise _whole_file(source, f"cannot be read ({reason})") from None
+        raise _whole_file(source, f"cannot be read ({reason})", "the path of a plan file") from None
     return _decode(data, source)
 
 
@@ -72,16 +75,39 @@ def parse(text: str, source: str = "") -> Plan:
         raise _whole_file(source, "the file is empty", 'a plan; "farvolt new FILE" writes one to start from')
     try:
         raw = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, RecursionError) as error:
-        raise _syntax(str(error), source) from None
-    _check_format(raw, text, source)
+    except (ValueError, RecursionError) as error:  # a date or a number may be wrong in itself: a bare ValueError
+        raise PlanError([_clean(translate.syntax(error, text))], source) from None
+    wrong_format = translate.wrong_format(raw)
+    if wrong_format:
+        raise PlanError(_in_order([wrong_format], text), source)
     read, found = _validated(raw)
     found += integrity.faults(raw)
     if read is None or found:
-        where = lines.index(text)
-        placed = [replace(fault, line=lines.line_of(where, path)) for path, fault in found]
-        raise PlanError(sorted(placed, key=lambda fault: fault.line or 0), source)
+        raise PlanError(_in_order(found, text), source)
     return read
+
+
+def placed(error: PlanError | RulebookError, text: str, source: str = "") -> PlanError:
+    """What a study found wrong in the plan with this text, with the lines."""
+    faults = error.faults if isinstance(error, PlanError) else [Fault("plan", "rulebook", "", str(error))]
+    raw = tomllib.loads(text)
+    tables = [(table, index, row) for table in raw for index, row in integrity.entries(raw, table)]
+    entries = {integrity.place(table, row, index): (table, index) for table, index, row in tables}
+    found = [((*entries.get(fault.place, (fault.place,)), *fault.field.split(".")), fault) for fault in faults]
+    return PlanError(_in_order(found, text), source)
+
+
+def _in_order(found: Iterable[integrity.Found], text: str) -> list[Fault]:
+    where = lines.index(text)
+    faults = [replace(_clean(fault), line=lines.line_of(where, path)) for path, fault in found]
+    return sorted(faults, key=lambda fault: fault.line or 0)
+
+
+def _clean(fault: Fault) -> Fault:
+    """The fault with all its texts on one line each: a name in quotes may hold line ends and worse."""
+    plain = integrity.plain
+    texts = plain(fault.place), plain(fault.field), plain(fault.given), plain(fault.problem)
+    return Fault(*texts, plain(fault.accepted), plain(fault.nearest), fault.line)
 
 
 def stamp(text: str) -> str:
@@ -93,21 +119,28 @@ def save(path: Path, text: str, *, expected: str | None) -> None:
     """Write a plan file whole or not at all, keeping the previous version as NAME.previous beside it.
 
     `expected` is the stamp of the text that was read (None: the file must not exist yet). Raises SaveError when
-    the file on disk is another one by now, or cannot be written.
+    the file on disk is another one by now, or cannot be written. A link is followed, not replaced.
     """
+    target = Path(os.path.realpath(path))
     try:
-        present = path.read_text(encoding="utf-8") if path.exists() else None
-    except (OSError, UnicodeDecodeError) as error:
-        raise SaveError(f"{path}: cannot be compared with what was read ({error})") from None
-    if (stamp(present) if present is not None else None) != expected:
-        what = "changed on disk since it was read" if expected else "exists already"
-        raise SaveError(f"{path}: the file {what}; nothing was written. Save under another name, or open it again.")
-    try:
+        present = target.read_bytes() if expected is not None else None
+        if expected is None and target.exists():
+            raise SaveError(f"{path}: it exists already; nothing was written. Save under another name.")
+        if present is not None and not _is(present, expected):
+            problem = "the file changed on disk since it was read"
+            raise SaveError(f"{path}: {problem}; nothing was written. Save under another name, or open it again.")
         if present is not None:
-            write_whole(path.with_name(path.name + ".previous"), present.encode())
-        write_whole(path, text.encode())
+            write_whole(target.with_name(target.name + ".previous"), present)
+        write_whole(target, text.encode())
     except OSError as error:
         raise SaveError(f"{path}: cannot be written ({error.strerror}); nothing was changed") from None
+
+
+def _is(data: bytes, expected: str | None) -> bool:
+    try:
+        return stamp(data.decode("utf-8-sig")) == expected
+    except UnicodeDecodeError:
+        return False
 
 
 def write_whole(path: Path, data: bytes) -> None:
@@ -144,7 +177,7 @@ def _decode(data: bytes, source: str) -> str:
 
 
 def _whole_file(source: str, problem: str, accepted: str = "", nearest: str = "", line: int | None = None) -> PlanError:
-    return PlanError([Fault("", "", "", problem, accepted, nearest, line)], source)
+    return PlanError([_clean(Fault("", "", "", problem, accepted, nearest, line))], source)
 
 
 def _neighbour(path: Path) -> str:
@@ -155,134 +188,8 @@ def _neighbour(path: Path) -> str:
     return integrity.nearest(path.name, beside)
 
 
-def _syntax(message: str, source: str) -> PlanError:
-    match = re.search(r"\(at line (\d+), column \d+\)", message)
-    problem = "this is not valid TOML: " + re.sub(r"\s*\(at .*\)$", "", message)
-    return _whole_file(source, problem, line=int(match.group(1)) if match else None)
-
-
-def _check_format(raw: dict[str, Any], text: str, source: str) -> None:
-    version = raw.get("format")
-    if isinstance(version, int) and not isinstance(version, bool) and version == FORMAT:
-        return
-    line = lines.line_of(lines.index(text), ("format",))
-    if version is None:
-        fault = Fault("", "format", "", "the file does not state its format", f"format = {FORMAT} as the first line")
-    elif isinstance(version, int) and version > FORMAT:
-        problem = "this file is of a later format than this version of Farvolt reads"
-        fault = Fault("", "format", str(version), problem, f"format = {FORMAT}, or a newer Farvolt", line=line)
-    else:
-        fault = Fault("", "format", str(version), "is not a format", f"format = {FORMAT}", line=line)
-    raise PlanError([fault], source)
-
-
-def _validated(raw: dict[str, Any]) -> tuple[Plan | None, list[tuple[tuple[str | int, ...], Fault]]]:
+def _validated(raw: dict[str, Any]) -> tuple[Plan | None, list[integrity.Found]]:
     try:
         return Plan.model_validate(raw), []
     except ValidationError as error:
-        return None, [_translate(one, raw) for one in error.errors(include_url=False)]
-
-
-_WORDS = {
-    "missing": "is missing",
-    "string_type": "is not a text",
-    "int_type": "is not a whole number",
-    "bool_type": "is not true or false",
-    "float_type": "is not a number",
-    "model_type": "is not a table",
-    "model_attributes_type": "is not a table",
-    "dict_type": "is not a table",
-    "tuple_type": "is not a list of tables",
-    "extra_forbidden": "there is no such field",
-    "union_tag_invalid": "is not a known choice",
-    "union_tag_not_found": "is missing",
-    "literal_error": "is not a known choice",
-}
-
-
-def _translate(error: Any, raw: dict[str, Any]) -> tuple[tuple[str | int, ...], Fault]:
-    """A pydantic error in our words, with its path in the raw tables."""
-    path = tuple(part for part in error["loc"] if not _is_tag(part, error["loc"]))
-    kind, context = error["type"], error.get("ctx", {})
-    if kind in ("union_tag_invalid", "union_tag_not_found"):
-        path = (*path, "kind")
-    where, field = _where(path, raw)
-    given = "" if kind in ("missing", "union_tag_not_found") else _given(_value_at(raw, path))
-    problem = context.get("problem") or _WORDS.get(kind) or error["msg"][:1].lower() + error["msg"][1:]
-    accepted, near = context.get("accepted", ""), context.get("nearest", "")
-    if kind == "extra_forbidden":
-        known = _known_fields(path, raw)
-        accepted, near, given = ", ".join(known), integrity.nearest(str(path[-1]), known), ""
-    elif kind == "literal_error":
-        accepted = str(context["expected"]).replace("'", '"')
-        near = integrity.nearest(str(error["input"]), re.findall(r'"([^"]*)"', accepted))
-    elif kind in ("union_tag_invalid", "union_tag_not_found"):
-        kinds = ("battery", "charger", "solar", "converter")
-        accepted, near = ", ".join(kinds), integrity.nearest(str(context.get("tag", "")), kinds)
-    return path, Fault(where, field, given, problem, accepted, near)
-
-
-def _is_tag(part: Any, loc: tuple[Any, ...]) -> bool:
-    # The discriminated union of sources puts its tag between index and field.
-    return loc[0] == "sources" and len(loc) > 2 and loc[2] == part and part in ("battery", "charger", "solar", "converter")
-
-
-def _value_at(raw: Any, path: tuple[str | int, ...]) -> Any:
-    for part in path:
-        try:
-            raw = raw[part]
-        except (KeyError, IndexError, TypeError):
-            return None
-    return raw
-
-
-def _given(value: Any) -> str:
-    if value is None or isinstance(value, dict | list):
-        return ""
-    text = f'"{value}"' if isinstance(value, str) else str(value).lower() if isinstance(value, bool) else str(value)
-    return integrity.shorten(text)
-
-
-def _where(path: tuple[str | int, ...], raw: dict[str, Any]) -> tuple[str, str]:
-    if len(path) >= 2 and isinstance(path[1], int):
-        place = integrity.place(str(path[0]), _value_at(raw, path[:2]), path[1])
-        rest = path[2:]
-    elif path and path[0] in ("zones", "routes") and len(path) >= 2:
-        place, rest = f'{path[0]} "{integrity.shorten(str(path[1]))}"', path[2:]
-    else:
-        place, rest = (str(path[0]) if len(path) > 1 else ""), path[1:] if len(path) > 1 else path
-    return place, ".".join(str(part) for part in rest if part != "[key]")
-
-
-_TABLES: dict[str, type[plan.Entry]] = {
-    "plan": plan.PlanInfo, "zones": plan.Zone, "routes": plan.Route, "points": plan.Point, "runs": plan.Run,
-    "devices": plan.Device, "loads": plan.Load, "cases": plan.Case,
-}  # fmt: skip
-_SOURCES: dict[str, type[plan.Entry]] = {
-    "battery": plan.Battery, "charger": plan.Charger, "solar": plan.Solar, "converter": plan.Converter,
-}  # fmt: skip
-_NESTED: dict[str, type[plan.Entry]] = {
-    "protection": plan.Protection, "protection_to": plan.Protection, "return": plan.ReturnConductor,
-    "surge": plan.Surge, "link": plan.LinkCable, "array": plan.SolarArray,
-}  # fmt: skip
-
-
-def fields(model: type[plan.Entry]) -> list[str]:
-    """The names of a table's fields, as written in the file."""
-    return [info.alias or name for name, info in model.model_fields.items()]
-
-
-def _known_fields(path: tuple[str | int, ...], raw: dict[str, Any]) -> list[str]:
-    table = str(path[0])
-    if len(path) == 1:
-        return fields(Plan)
-    inner = next((str(part) for part in reversed(path[1:-1]) if part in _NESTED), None)
-    if inner:
-        return fields(_NESTED[inner])
-    if table == "cases" and "sources" in path:
-        return fields(plan.SourceState)
-    if table == "sources":
-        entry = _value_at(raw, path[:2])
-        kind = entry.get("kind") if isinstance(entry, dict) else None
-        return fields(_SOURCES.get(str(kind), plan.Battery))
-    return fields(_TABLES[table]) if table in _TABLES else []
+        return None, [translate.refused(one, raw) for one in error.errors(include_url=False)]

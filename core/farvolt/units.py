@@ -90,11 +90,6 @@ def parse(text: str, dimension: str) -> Quantity:
     return Quantity(_to_base(value, unit, units[unit]), text, dimension)
 
 
-def quantity(value: float, unit: str, dimension: str) -> Quantity:
-    """A quantity from a bare number, for defaults and computed values."""
-    return parse(f"{value:.12g} {unit}", dimension)
-
-
 def with_unit(number: str, dimension: str) -> str:
     """A bare number as its writer may have meant it, in quotes; nothing for one that is not finite."""
     value = float(number)
@@ -112,19 +107,16 @@ def number(value: float, digits: int = 3) -> str:
     return text.rstrip("0").rstrip(".") if "." in text else text
 
 
-def both_lengths(length_m: float) -> str:
-    """A length in metres with feet beside it, for reading."""
-    return f"{number(length_m)} m ({number(length_m / _FOOT_M)} ft)"
+def both_lengths(length: Quantity) -> str:
+    """A length as written, with the other system's beside it, for reading."""
+    if length.text.endswith(("ft", "in")):
+        return f"{length} ({number(length.si)} m)"
+    return f"{length} ({number(feet(length.si))} ft)"
 
 
 def feet(length_m: float) -> float:
     """Metres to feet."""
     return length_m / _FOOT_M
-
-
-def fahrenheit(temperature_degC: float) -> float:
-    """Degrees Celsius to degrees Fahrenheit."""
-    return temperature_degC * 9 / 5 + 32
 
 
 def _to_base(value: float, unit: str, factor: float) -> float:
