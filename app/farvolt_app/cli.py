@@ -3,34 +3,61 @@
 Heavy libraries are imported by the commands that need them, so that each command answers quickly.
 """
 
+import io
 import json
+import os
 import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from farvolt import __version__
 from farvolt.errors import FarvoltError
 
-FAILS, BAD_INPUT = 1, 2
-"""Exit codes beside 0: a limit is broken; the input cannot be used."""
+if TYPE_CHECKING:
+    from farvolt.results import Study
+
+FAILS, BAD_INPUT, INTERRUPTED = 1, 2, 130
+"""Exit codes beside 0: a limit is broken; the input cannot be used; Ctrl+C, as a shell has it."""
 
 
 class _Commands(click.Group):
     """Turns the library's errors into one message and exit code 2."""
 
     def invoke(self, ctx: click.Context) -> object:
+        for stream in (sys.stdout, sys.stderr):
+            if isinstance(stream, io.TextIOWrapper):
+                # A terminal that lacks a character gets a mark in its place, not an error.
+                stream.reconfigure(errors="replace")
         try:
-            return super().invoke(ctx)
+            result = super().invoke(ctx)
+            sys.stdout.flush()
+            return result
         except FarvoltError as error:
-            click.echo(str(error), err=True)
+            from farvolt.integrity import plain
+
+            for line in str(error).split("\n"):
+                click.echo(plain(line), err=True)
             ctx.exit(BAD_INPUT)
+        except KeyboardInterrupt:
+            click.echo("Ended.", err=True)
+            ctx.exit(INTERRUPTED)
         except BrokenPipeError:
             # The reader of our output has gone (`farvolt check … | head`): that is no fault.
-            sys.stderr.close()
+            _discard_output()
             ctx.exit(0)
+        except OSError as error:
+            click.echo(f"The output cannot be written ({error.strerror})", err=True)
+            _discard_output()
+            ctx.exit(BAD_INPUT)
+
+
+def _discard_output() -> None:
+    """Let what is still buffered go nowhere, so that closing standard output at the end fails no more."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 @click.group(cls=_Commands, invoke_without_command=True, context_settings={"help_option_names": ["-h", "--help"]})
@@ -56,8 +83,8 @@ def main(ctx: click.Context) -> None:
 @main.command("open")
 @click.argument("plan", required=False)
 @click.option("--port", type=click.IntRange(1, 65535), help="Port of the pages; a free one unless given.")
-@click.option("--address", default="127.0.0.1", show_default=True, help="Address to listen on; this machine only unless changed.")
-@click.option("--browser/--no-browser", default=True, help="Open the pages in the browser (default) or only say their address.")
+@click.option("--address", default="127.0.0.1", show_default=True, help="Address to listen on.")
+@click.option("--browser/--no-browser", default=True, help="Open them in the browser, or say their address.")
 def open_pages(plan: str | None, port: int | None = None, address: str = "127.0.0.1", browser: bool = True) -> None:
     """Open the web pages on PLAN, or on an example plan; end with Ctrl+C."""
     from farvolt_app import server
@@ -73,23 +100,22 @@ def open_pages(plan: str | None, port: int | None = None, address: str = "127.0.
 @click.argument("plan")
 @click.option("--json", "as_json", is_flag=True, help="Print one JSON object for machines.")
 @click.option("--case", "case_name", help="Show every number of this case instead of the worst of each.")
-@click.option("--working/--no-working", default=False, help="Show the working of each finding: formula, numbers, result.")
+@click.option(
+    "--working/--no-working", default=False, help="Show the working of each finding: formula, numbers, result."
+)
 def check(plan: str, as_json: bool, case_name: str | None, working: bool) -> None:
     """Solve PLAN in all its cases and check it: voltages, drops, ampacity, protection, slips.
 
     Prints the findings, then the worst voltage of each load and the largest current of each run. The exit code is
     1 when anything fails.
     """
-    from farvolt import planfile
-    from farvolt.study import study
-
-    read = planfile.read(plan)
-    with _progress("Solving and checking"):
-        found = study(read.plan, read.folder)
+    if as_json and (case_name is not None or working):
+        raise click.UsageError("--json prints all cases and all workings; leave out --case and --working")
+    found = _studied(plan)
     if as_json:
         from farvolt.output import as_object
 
-        click.echo(json.dumps(as_object(found), ensure_ascii=False, allow_nan=False))
+        _print_whole(json.dumps(as_object(found), ensure_ascii=False, allow_nan=False) + "\n")
     else:
         from farvolt_app import report_text
 
@@ -107,19 +133,18 @@ def schedule(plan: str, output: str) -> None:
     """
     from farvolt import planfile
     from farvolt.errors import SaveError
-    from farvolt.study import study
 
     suffix = Path(output).suffix.lower()
     if output != planfile.STDIN and suffix not in (".xlsx", ".csv"):
         raise click.BadParameter(f'"{suffix or output}" is not written; accepted: .xlsx, .csv', param_hint="--output")
-    read = planfile.read(plan)
-    with _progress("Solving and checking"):
-        found = study(read.plan, read.folder)
+    if output != planfile.STDIN and Path(output).resolve() == Path(plan).resolve():
+        raise click.BadParameter(f'"{output}" is the plan itself; accepted: another file', param_hint="--output")
+    found = _studied(plan)
     from farvolt_app import schedule as rows
     from farvolt_app import workbook
 
     if output == planfile.STDIN:
-        click.echo(rows.to_csv(found), nl=False)
+        _print_whole(rows.to_csv(found))
         return
     data = workbook.to_bytes(found) if suffix == ".xlsx" else rows.to_csv(found).encode("utf-8-sig")
     try:
@@ -136,7 +161,7 @@ def new(file: str) -> None:
     from farvolt import examples, planfile
 
     if file == planfile.STDIN:
-        click.echo(examples.starter_text(), nl=False)
+        _print_whole(examples.starter_text())
         return
     planfile.save(Path(file), examples.starter_text(), expected=None)
     click.echo(f"Wrote {file}. Next: farvolt check {file}", err=True)
@@ -156,7 +181,7 @@ def list_examples(name: str | None, output: str | None) -> None:
         return
     text = examples.text(name)
     if output == planfile.STDIN:
-        click.echo(text, nl=False)
+        _print_whole(text)
         return
     path = Path(output or f"{name}.toml")
     planfile.save(path, text, expected=None)
@@ -168,7 +193,26 @@ def schema() -> None:
     """Print the JSON Schema of the plan format, for editors that check a file while it is typed."""
     from farvolt.schema import json_schema
 
-    click.echo(json.dumps(json_schema(), indent=2, ensure_ascii=False))
+    _print_whole(json.dumps(json_schema(), indent=2, ensure_ascii=False) + "\n")
+
+
+def _studied(path: str) -> "Study":
+    """The study of a plan file; what it finds wrong in the plan is told with its lines."""
+    from farvolt import planfile
+    from farvolt.errors import PlanError, RulebookError
+    from farvolt.study import study
+
+    read = planfile.read(path)
+    try:
+        with _progress("Solving and checking"):
+            return study(read.plan, read.folder)
+    except (PlanError, RulebookError) as error:
+        raise planfile.placed(error, read.text, path if read.path else "standard input") from None
+
+
+def _print_whole(text: str) -> None:
+    """What is for machines goes out as UTF-8, whatever the terminal's own encoding."""
+    click.echo(text.encode(), nl=False)
 
 
 @contextmanager

@@ -1,5 +1,7 @@
 """A study as readable tables on a terminal. Text from the plan is shown as text, never as markup."""
 
+import os
+import sys
 from collections.abc import Iterable
 
 from rich.console import Console
@@ -14,22 +16,32 @@ from farvolt.units import both_lengths, number
 
 _MARKS = {"fail": "FAIL", "warn": "warn", "note": "note"}
 _STYLES = {"fail": "bold red", "warn": "yellow", "note": "dim"}
-CAUTION = "For planning only: check local codes, have the work inspected, and leave to licensed people what the law reserves to them."
+CAUTION = (
+    "For planning only: check local codes, have the work inspected, and leave to licensed people what the law "
+    "reserves to them."
+)
+PIPED_WIDTH = 150
+"""Columns of the tables where no terminal says how wide it is."""
 
 
 def show(study: Study, case_name: str | None, working: bool) -> None:
-    """Print a study: its findings, then the worst of every case, or all of one case."""
-    console = Console(highlight=False, soft_wrap=False)
+    """Print a study: its findings, then the worst of every case, or all of one case.
+
+    Raises FarvoltError, before anything is printed, for a case that the plan does not have.
+    """
+    case = None if case_name is None else _named(study, case_name)
+    console = Console(highlight=False, width=None if sys.stdout.isatty() or "COLUMNS" in os.environ else PIPED_WIDTH)
     plan = study.plan.plan
     console.print(Text(plan.name, style="bold"))
-    console.print(Text(f"{plan.nominal}, rulebook {study.rulebook.name}: {study.rulebook.title} ({study.rulebook.edition})"))
+    rulebook = study.rulebook
+    console.print(Text(f"{plan.nominal}, rulebook {rulebook.name}: {rulebook.title} ({rulebook.edition})"))
     _findings(console, study.findings, working)
-    if case_name is None:
+    if case is None:
         _cases(console, study.cases)
         _loads(console, study)
         _runs(console, study)
     else:
-        _one_case(console, study, _named(study, case_name))
+        _one_case(console, case)
     if study.assumptions:
         console.print(Text("\nTaken as given", style="bold"))
         for line in study.assumptions:
@@ -43,7 +55,8 @@ def _named(study: Study, name: str) -> CaseResult:
     if name not in known:
         close = nearest(name, known)
         hint = f"; did you mean {close}?" if close else ""
-        raise FarvoltError(f'there is no case "{name}"; accepted: {", ".join(known)}{hint}')
+        accepted = ", ".join(f'"{one}"' for one in known)
+        raise FarvoltError(f'there is no case "{name}"; accepted: {accepted}{hint}')
     return study.cases[known.index(name)]
 
 
@@ -75,17 +88,24 @@ def _findings(console: Console, findings: tuple[Finding, ...], working: bool) ->
 
 
 def _cases(console: Console, cases: tuple[CaseResult, ...]) -> None:
-    columns = (("Case", False), ("Solved", False), ("Sources W", True), ("Loads W", True), ("Lost W", True), ("Imbalance A", True))
+    columns = (
+        ("Case", False), ("Solved", False), ("Sources W", True), ("Loads W", True), ("Lost W", True),
+        ("Imbalance A", True),
+    )  # fmt: skip
     rows = [
         (
             case.name,
             "yes" if case.solved else f"gives way at {number(100 * case.share_held)} % of its loads",
-            *(_value(one if case.solved else None, 4) for one in (case.power_in_W, case.power_loads_W, case.power_lost_W)),
+            *(_value(watts if case.solved else None, 4) for watts in _powers(case)),
             f"{case.imbalance_A:.0e}",
         )
         for case in cases
     ]
     _table(console, "Cases", columns, rows)
+
+
+def _powers(case: CaseResult) -> tuple[float, float, float]:
+    return case.power_in_W, case.power_loads_W, case.power_lost_W
 
 
 def _loads(console: Console, study: Study) -> None:
@@ -97,9 +117,7 @@ def _loads(console: Console, study: Study) -> None:
             rows.append((load.name, load.at, "", "", "", "not on, or not fed, in any case"))
             continue
         name, worst = max(on, key=lambda pair: pair[1].drop_percent or 0.0)
-        rows.append(
-            (load.name, load.at, _value(worst.volts, 4), _value(worst.amps), _value(worst.drop_percent), name)
-        )
+        rows.append((load.name, load.at, _value(worst.volts, 4), _value(worst.amps), _value(worst.drop_percent), name))
     columns = (("Load", False), ("at", False), ("volts", True), ("amps", True), ("drop %", True), ("in case", False))
     _table(console, "Loads, in the case with the largest drop", columns, rows)
 
@@ -111,7 +129,7 @@ def _runs(console: Console, study: Study) -> None:
         currents = [max(abs(one.feed_A or 0.0), abs(one.return_A or 0.0)) for one in results]
         worst = results[currents.index(max(currents))]
         rows.append((
-            run.label or "", run.name, run.from_point, run.to_point, both_lengths(run.length.si), _size(run.size),
+            run.label or "", run.name, run.from_point, run.to_point, both_lengths(run.length), _size(run.size),
             _value(max(currents)), _value(worst.ampacity_A), _value(worst.drop_V),
         ))  # fmt: skip
     columns = (
@@ -127,22 +145,33 @@ def _size(size: object) -> str:
     return f"{size.name} (~{other_system(size).name})" if isinstance(size, Size) else "to be chosen"
 
 
-def _one_case(console: Console, study: Study, case: CaseResult) -> None:
+def _one_case(console: Console, case: CaseResult) -> None:
     _cases(console, (case,))
-    columns = (("Point", False), ("feed V", True), ("return V", True), ("volts", True))
-    _table(console, "Points", columns, [(p.name, _value(p.feed_V, 5), _value(p.return_V, 5), _value(p.volts, 5)) for p in case.points])
-    columns = (("Source", False), ("volts", True), ("amps", True), ("watts", True))
-    _table(console, "Sources", columns, [(s.name, _value(s.volts, 5), _value(s.amps, 4), _value(s.watts, 4)) for s in case.sources])
-    run_columns = (("Run", False), ("feed A", True), ("return A", True), ("drop V", True), ("loss W", True), ("°C", True), ("ampacity A", True))
-    _table(console, "Runs", run_columns, [
-        (r.name, _value(r.feed_A, 4), _value(r.return_A, 4), _value(r.drop_V, 4), _value(r.loss_W), _value(r.conductor_degC), _value(r.ampacity_A))
-        for r in case.runs
+    _numbers(console, "Points", ("feed V", "return V", "volts"), [
+        (one.name, _value(one.feed_V, 5), _value(one.return_V, 5), _value(one.volts, 5)) for one in case.points
     ])  # fmt: skip
-    load_columns = (("Load", False), ("volts", True), ("amps", True), ("watts", True), ("drop V", True), ("drop %", True))
-    _table(console, "Loads", load_columns, [
-        (one.name, _value(one.volts, 5), _value(one.amps, 4), _value(one.watts, 4), _value(one.drop_V, 4), _value(one.drop_percent))
+    _numbers(console, "Sources", ("volts", "amps", "watts"), [
+        (one.name, _value(one.volts, 5), _value(one.amps, 4), _value(one.watts, 4)) for one in case.sources
+    ])  # fmt: skip
+    _numbers(console, "Runs", ("feed A", "return A", "drop V", "loss W", "°C", "ampacity A"), [
+        (
+            one.name, _value(one.feed_A, 4), _value(one.return_A, 4), _value(one.drop_V, 4), _value(one.loss_W),
+            _value(one.conductor_degC), _value(one.ampacity_A),
+        )
+        for one in case.runs
+    ])  # fmt: skip
+    _numbers(console, "Loads", ("volts", "amps", "watts", "drop V", "drop %"), [
+        (
+            one.name, _value(one.volts, 5), _value(one.amps, 4), _value(one.watts, 4), _value(one.drop_V, 4),
+            _value(one.drop_percent),
+        )
         for one in case.loads
     ])  # fmt: skip
+
+
+def _numbers(console: Console, title: str, headings: tuple[str, ...], rows: Iterable[Iterable[str]]) -> None:
+    """A table of a name and numbers."""
+    _table(console, title, (("name", False), *((heading, True) for heading in headings)), rows)
 
 
 def _value(value: float | None, digits: int = 3) -> str:
