@@ -20,7 +20,7 @@ def as_object(study: Study) -> dict[str, Any]:
 
 
 def _case(case: CaseResult) -> dict[str, Any]:
-    whole = asdict(case)
-    # Devices and strings are for the views; they have no place in version 1 of the output.
-    del whole["devices"], whole["strings"]
-    return {name: list(value) if isinstance(value, tuple) else value for name, value in whole.items()}
+    # Devices, strings and ways are for the views; they have no place in version 1 of the output.
+    tables = {name: [asdict(one) for one in getattr(case, name)] for name in ("points", "sources", "runs", "loads")}
+    numbers = ("name", "solved", "share_held", "margin", "imbalance_A", "power_in_W", "power_loads_W", "power_lost_W")
+    return {**{name: getattr(case, name) for name in numbers}, **tables}

@@ -4,9 +4,11 @@ Quantities are SI numbers with full precision, or None where there is no answer 
 way). Rounding is for the views.
 """
 
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
 from typing import Literal
 
+from farvolt.conductors import Size
 from farvolt.plan import Plan
 from farvolt.rulebook import Rulebook
 
@@ -81,6 +83,20 @@ class LoadResult:
 
 
 @dataclass(frozen=True, slots=True)
+class Step:
+    """One conductor or device on the way from a reference source to a load; `drop_V` adds to the load's drop."""
+
+    name: str
+    kind: str
+    """"run", "device", "bond" or "diode"."""
+    pole: str
+    amps: float
+    ohm: float
+    drop_V: float
+    run: int = -1
+
+
+@dataclass(frozen=True, slots=True)
 class CaseResult:
     """One case at the plan's conductor temperature, with its certificate."""
 
@@ -98,6 +114,8 @@ class CaseResult:
     devices: tuple[DeviceResult, ...]
     loads: tuple[LoadResult, ...]
     strings: tuple[StringResult, ...] = ()
+    way: Callable[[int], tuple[Step, ...]] = field(default=lambda load: (), repr=False, compare=False)
+    """The conductors and devices on the way of a load (by its place in the plan); their drops sum to its drop."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -127,6 +145,10 @@ class Study:
     cases: tuple[CaseResult, ...]
     findings: tuple[Finding, ...]
     assumptions: tuple[str, ...]
+    nominal_V: Mapping[str, float] = field(default_factory=dict)
+    """Nominal voltage at each point, of the island it belongs to."""
+    interim: Mapping[str, Size] = field(default_factory=dict)
+    """Sizes taken for the time being for runs that state none."""
 
     @property
     def failing(self) -> bool:

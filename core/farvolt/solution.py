@@ -10,23 +10,18 @@ from farvolt.fed import Fed, first_diode
 from farvolt.network import BOND, FEED, RETURN, Floats, Network
 from farvolt.operating import Operating
 from farvolt.plan import Converter
-from farvolt.results import CaseResult, DeviceResult, LoadResult, PointResult, RunResult, SourceResult, StringResult
+from farvolt.results import (
+    CaseResult,
+    DeviceResult,
+    LoadResult,
+    PointResult,
+    RunResult,
+    SourceResult,
+    Step,
+    StringResult,
+)
 from farvolt.solve import State
 from farvolt.temperatures import Conductors
-
-
-@dataclass(frozen=True)
-class Step:
-    """One conductor or device on the way from a reference source to a load; `drop_V` adds to the load's drop."""
-
-    name: str
-    kind: str
-    """"run", "device", "bond" or "diode"."""
-    pole: str
-    amps: float
-    ohm: float
-    drop_V: float
-    run: int = -1
 
 
 @dataclass(frozen=True)
@@ -232,6 +227,7 @@ class Solution:
             runs=tuple(self._runs(ampacities)),
             devices=tuple(self._devices()),
             strings=tuple(self._strings()),
+            way=self.way,
             loads=tuple(self._loads()),
         )
 

@@ -42,7 +42,14 @@ def study(plan: Plan, folder: Path | None = None) -> Study:
         one.solutions["plan"].result(_margin(one), [found.amps if found else None for found in one.ampacities])
         for one in context.cases
     )
-    return Study(plan, rulebook, results, checks.run_all(context), assumptions(context))
+    return Study(
+        plan, rulebook, results, checks.run_all(context), assumptions(context), _nominals(context), context.interim
+    )
+
+
+def _nominals(context: Context) -> dict[str, float]:
+    islands = operating.islands(context.network)
+    return {name: islands.nominal(context.network.feed(name)) for name in context.plan.point_names}
 
 
 def build_context(plan: Plan, rulebook: Rulebook) -> Context:
