@@ -7,7 +7,7 @@ import numpy as np
 
 from farvolt.checks.drop import RULED_OUT, drop_class, line, loads_on, over_limit
 from farvolt.checks.enlarge import Aim, Remedies
-from farvolt.checks.registry import check
+from farvolt.checks.registry import apart, check
 from farvolt.context import Context
 from farvolt.network import Floats
 from farvolt.plan import Device, Run
@@ -115,9 +115,10 @@ def _finding(context: Context, found: list[tuple[float, int, _Branch]], remedies
     solution = context.cases[case].solutions["basis"]
     rule = drop_class(context, branch.load)
     limit, nominal = rule.branch_limit_percent or 0.0, float(solution.load_nominal_V[branch.load])
+    name = context.plan.loads[branch.load].name
     where = f'the last protection at "{branch.point}"' if branch.protected else "the source, for want of protection,"
     message = (
-        f'"{context.plan.loads[branch.load].name}" loses {number(percent)} % of {number(nominal)} V from {where} on; '
+        f'"{name}" loses {apart(percent, limit)} % of {number(nominal)} V from {where} on; '
         f'{number(limit)} % is the limit of the class "{rule.name}" for the branch'
     )
     aim = Aim(

@@ -5,7 +5,7 @@ from collections.abc import Iterator
 import numpy as np
 
 from farvolt.ampacity import Ampacity
-from farvolt.checks.registry import cannot_be_made, check
+from farvolt.checks.registry import apart, cannot_be_made, check
 from farvolt.conductors import Size
 from farvolt.context import CaseStudy, Context, basis_text, label, larger_sizes
 from farvolt.network import Floats, return_size
@@ -70,8 +70,8 @@ def _over(context: Context, index: int, worst: int, over: list[int], currents: F
     carries = f"{label(entry)}: {size.name} carries this where it lies" if size else ""
     return _finding(
         context, "conductor.ampacity", "fail", entry, one.name, amps, found.amps, "A",
-        f"{label(entry)} carries {number(amps)} A; {number(found.amps)} A is its ampacity where it lies",
-        found.basis, (*found.working, f"{number(amps, 4)} A > {number(found.amps, 4)} A"),
+        f"{label(entry)} carries {apart(amps, found.amps)} A; {number(found.amps)} A is its ampacity where it lies",
+        found.basis, (*found.working, f"{apart(amps, found.amps, 4)} A > {number(found.amps, 4)} A"),
         carries or "several cables in parallel, cables laid apart or in a cooler place, or less load",
     )  # fmt: skip
 

@@ -5,7 +5,7 @@ from collections.abc import Iterator, Sequence
 import numpy as np
 
 from farvolt.checks.enlarge import Aim, Remedies
-from farvolt.checks.registry import check
+from farvolt.checks.registry import apart, check
 from farvolt.context import CaseStudy, Context
 from farvolt.network import Floats
 from farvolt.results import Finding
@@ -60,8 +60,9 @@ def _to_load(context: Context, load: int, worst: int, over: Sequence[int], remed
     rule, one = drop_class(context, load), context.cases[worst]
     solution = one.solutions["basis"]
     value, nominal = percent(solution, load), float(solution.load_nominal_V[load])
+    name = context.plan.loads[load].name
     message = (
-        f'"{context.plan.loads[load].name}" loses {number(value)} % of {number(nominal)} V on the way; '
+        f'"{name}" loses {apart(value, rule.limit_percent)} % of {number(nominal)} V on the way; '
         f'{number(rule.limit_percent)} % is the limit of the class "{rule.name}"'
     )
     way = solution.way(load)

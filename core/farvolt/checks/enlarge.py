@@ -72,11 +72,12 @@ class Remedies:
                 return None
             if not exact:
                 value = way.estimate(chosen)
-                return _told(self.context, chosen, f"about {number(value)}", aim) if aim.met(value, _CAUTION) else None
+                about = f"about {_number(value, aim)}"
+                return _told(self.context, chosen, about, aim) if aim.met(value, _CAUTION) else None
             values = [aim.value(self._resolved(aim, chosen, case)) for case in aim.cases]
             if all(aim.met(value) for value in values):
                 worst = max(values) if aim.per_volt < 0 else min(values)
-                return _told(self.context, chosen, number(worst), aim)
+                return _told(self.context, chosen, _number(worst, aim), aim)
             sizes = {run: _next(size) if run in growing else size for run, size in chosen.items()}
         return None
 
@@ -168,6 +169,11 @@ def _follows(run: Run, pole: str) -> bool:
 
 def _next(size: Size | None) -> Size | None:
     return next(iter(larger_sizes(size)), None) if size is not None else None
+
+
+def _number(value: float, aim: Aim) -> str:
+    """A value for reading; volts need a digit more than percentages to be told from their limit."""
+    return number(value, 3 if aim.unit == "%" else 4)
 
 
 def _told(context: Context, sizes: dict[int, Size], value: str, aim: Aim) -> str:

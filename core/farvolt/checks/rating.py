@@ -4,7 +4,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from farvolt.checks.demand import Demands
-from farvolt.checks.registry import cannot_be_made, check
+from farvolt.checks.registry import apart, cannot_be_made, check
 from farvolt.checks.ways import PRACTICE, ampacity_A, exempt, failing, limited_A, near_enough, self_limited
 from farvolt.conductors import Size
 from farvolt.context import Context, basis_text, label, larger_sizes
@@ -112,7 +112,8 @@ def _over(
         message += "; within the allowance for the next standard rating"
     severity: Severity = "warn" if tolerated or (rule is None and limit.small is None) else "fail"
     found = context.lowest_ampacity[index]
-    working = (*(found.working if found else ()), limit.why, f"{number(guard.rating_A)} A > {number(limit.amps)} A")
+    compared = f"{apart(guard.rating_A, limit.amps)} A > {number(limit.amps)} A"
+    working = (*(found.working if found else ()), limit.why, compared)
     told = (rule.text,) if rule and tolerated else ()
     return _finding(
         "protection.over-conductor", severity, run, guard.rating_A, limit.amps, "A", message, limit.basis(context),
@@ -229,17 +230,18 @@ def _under(
     amps, lasting = float(demands.amps[pole, case, index]), float(demands.continuous[pole, case, index])
     rule, factor = context.rulebook.protection.continuous, demands.factor
     counted = demand > amps * (1 + 1e-9)
+    told = number(amps) if counted else apart(amps, one.rating.si)
     working = f"{number(amps, 4)} A"
     if counted:
         working += f", of which {number(lasting, 4)} A continuous: {number(amps - lasting, 4)} + {number(factor)} x "
         working += f"{number(lasting, 4)} = {number(demand, 4)} A"
     return _finding(
         "protection.under-load", "fail", run, demand, one.rating.si, "A",
-        f"{label(run)}: its {one.rating} {one.type} carries {number(amps)} A"
-        + (f", to be counted as {number(demand)} A" if counted else ""),
+        f"{label(run)}: its {one.rating} {one.type} carries {told} A"
+        + (f", to be counted as {apart(demand, one.rating.si)} A" if counted else ""),
         basis_text(rule.basis) if rule and counted else f"{PRACTICE}: a protection carries its load without opening",
         (f"{working}; conductors {context.cases[case].solutions['hot'].conductors.text}",
-         f"{number(demand, 4)} A > {number(one.rating.si, 4)} A"),
+         f"{apart(demand, one.rating.si, 4)} A > {number(one.rating.si, 4)} A"),
         remedy, context.cases[case].name,
     )  # fmt: skip
 

@@ -5,6 +5,7 @@ from dataclasses import dataclass
 
 from farvolt.context import Context
 from farvolt.results import Finding, Severity
+from farvolt.units import number
 
 Function = Callable[[Context], Iterator[Finding]]
 
@@ -42,6 +43,12 @@ def cannot_be_made(context: Context, rule: str, entry: str, what: str, severity:
         f'Not checked: {what}. The rulebook "{book.name}" has no entry "{entry}"', book.title,
         (f"{entry}: {reason}",), "judge it by hand, or add the entry to a rulebook of your own",
     )  # fmt: skip
+
+
+def apart(value: float, limit: float, digits: int = 3) -> str:
+    """A value rounded for reading, with as many digits as keep it apart from the limit it breaks."""
+    enough = (more for more in range(digits, 12) if number(value, more) != number(limit, more))
+    return number(value, next(enough, digits))
 
 
 def registered() -> tuple[Check, ...]:

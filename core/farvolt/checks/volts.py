@@ -6,7 +6,7 @@ import numpy as np
 
 from farvolt.checks.drop import loads_on, working
 from farvolt.checks.enlarge import Aim, Remedies
-from farvolt.checks.registry import check
+from farvolt.checks.registry import apart, check
 from farvolt.context import CaseStudy, Context
 from farvolt.network import Floats
 from farvolt.results import Finding
@@ -89,6 +89,7 @@ def _finding(
     entry, one = context.plan.loads[load], context.cases[case]
     low = rule == "volts.low"
     solution = one.solutions["hot" if low else "cold"]
+    told = apart(volts, limit, 4)
     bound, sign = ("at least", "<") if low else ("at most", ">")
     return Finding(
         rule=rule,
@@ -99,9 +100,9 @@ def _finding(
         value=volts,
         limit=limit,
         unit="V",
-        message=f'"{entry.name}" sees {number(volts, 4)} V; it needs {bound} {number(limit, 4)} V',
+        message=f'"{entry.name}" sees {told} V; it needs {bound} {number(limit, 4)} V',
         basis=_TOLERATED,
-        working=(*working(one, solution, load), f"{number(volts, 4)} V {sign} {number(limit, 4)} V"),
+        working=(*working(one, solution, load), f"{told} V {sign} {number(limit, 4)} V"),
         remedy=remedy,
     )
 
