@@ -83,7 +83,7 @@ def _cable(study: Study, index: int, run: Run) -> Cable:
         ),
         parallel=run.parallel,
         insulation_degC=network.insulation_degC(run, study.rulebook),
-        protection="; ".join(_protection_text(one) for one in run.protections),
+        protection="; ".join(_protection_text(run, one) for one in run.protections),
         nominal_V=study.nominal_V.get(run.to_point, study.plan.plan.nominal.si),
         drop_V=None if result.drop_V is None else abs(result.drop_V),
         loss_W=result.loss_W,
@@ -104,9 +104,9 @@ def _conductor(
     return Conductor(length_m, size, colour, per_m, fixed, None if amps is None else abs(amps))
 
 
-def _protection_text(one: Protection) -> str:
+def _protection_text(run: Run, one: Protection) -> str:
     pole = "" if one.pole == "feed" else f", {one.pole}"
-    return f"{one.rating} {one.type} at {one.end}{pole}"
+    return f"{one.rating} {one.type} at {run.from_point if one.end == 'from' else run.to_point}{pole}"
 
 
 def _least_ampacity(study: Study, index: int) -> float | None:
@@ -222,8 +222,10 @@ def size_text(cable: Cable, size: Size | None) -> str:
 
 
 def american_text(size: Size | None) -> str:
-    """The nearest size of the other system."""
-    return "" if size is None else other_system(size).name if size.system == "metric" else size.name
+    """The size in American wire gauge: its own, or the nearest."""
+    if size is None or size.system == "AWG":
+        return "" if size is None else size.name
+    return f"~{other_system(size).name}"
 
 
 def rows(study: Study) -> list[dict[str, Any]]:
@@ -239,7 +241,7 @@ def rows(study: Study) -> list[dict[str, Any]]:
             "Conductors in all (m)": cable.total_m,
             "Size": size_text(cable, cable.feed.size or cable.back.size),
             "Area (mm2)": _area(cable.feed.size or cable.back.size),
-            "AWG": american_text(cable.feed.size or cable.back.size),
+            "AWG (~ nearest)": american_text(cable.feed.size or cable.back.size),
             "Parallel": cable.parallel,
             "Material": cable.run.material,
             "Insulation (degC)": cable.insulation_degC,

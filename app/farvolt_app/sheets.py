@@ -1,5 +1,6 @@
 """A worksheet from columns and rows: headings, formats, print set-up, and text that can only ever be text."""
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -12,6 +13,8 @@ from openpyxl.worksheet.worksheet import Worksheet
 
 HEADING_ROW = 4
 """Rows above it: title, what the sheet is, and an empty one; data starts below."""
+
+_LINE_POINTS = 14.0
 
 _TITLE = Font(bold=True, size=14)
 _QUIET = Font(italic=True, color="555555")
@@ -68,6 +71,9 @@ def fill(sheet: Worksheet, title: str, about: str, columns: Sequence[Column], ro
     for number, row in enumerate(rows, start=HEADING_ROW + 1):
         for place, (column, value) in enumerate(zip(columns, row, strict=True), start=1):
             _write(sheet.cell(number, place), column, value)
+        sheet.row_dimensions[number].height = _LINE_POINTS * max(
+            _lines(*pair) for pair in zip(columns, row, strict=True)
+        )
     _print_setup(sheet, title, len(columns), len(rows))
 
 
@@ -75,9 +81,17 @@ def _write(cell: Cell, column: Column, value: Any) -> None:
     put(cell, value)
     cell.number_format = column.format
     cell.border = _LINE
-    cell.alignment = Alignment(wrap_text=isinstance(value, str), vertical="top")
+    text = isinstance(value, str)
+    cell.alignment = Alignment(wrap_text=text, vertical="top", indent=1 if text else 0)
     if column.input and value is not None:
         cell.fill = _INPUT_FILL
+
+
+def _lines(column: Column, value: Any) -> int:
+    """Lines that a text takes in its column; not every program grows a row by itself."""
+    if not isinstance(value, str):
+        return 1
+    return sum(max(1, math.ceil(len(line) / max(column.width - 1, 1))) for line in value.splitlines() or [""])
 
 
 def _print_setup(sheet: Worksheet, title: str, columns: int, rows: int) -> None:

@@ -34,9 +34,9 @@ def to_bytes(study: Study) -> bytes:
     _protection(book.create_sheet("Protection"), name, study)
     _shopping(book.create_sheet("Shopping"), name, study, found)
     _findings(book.create_sheet("Findings"), name, study)
+    _assumptions(book.create_sheet("Assumptions"), name, study)
     _resistances(book.create_sheet("Resistances"), name, study, found)
     _ways(book.create_sheet("Ways"), name, study)
-    _assumptions(book.create_sheet("Assumptions"), name, study)
     out = io.BytesIO()
     book.save(out)
     return out.getvalue()
@@ -46,7 +46,7 @@ CABLES = (
     Column("Label", 7), Column("Run", 19), Column("From", 13), Column("To", 13),
     Column("Length one way (m)", 8, "0.00", input=True), Column("Length one way (ft)", 8, "0.0"),
     Column("All conductors (m)", 10, "0.00"), Column("Size", 11), Column("Area (mm²)", 8, "0.00"),
-    Column("AWG", 9), Column("Parallel", 8, "0", input=True), Column("Feed colour", 8, input=True),
+    Column("AWG (~ nearest)", 10), Column("Parallel", 8, "0", input=True), Column("Feed colour", 8, input=True),
     Column("Return colour", 8, input=True), Column("Insulation (°C)", 9, "0"), Column("Protection", 18),
     Column("Current (A)", 8, "0.00"), Column("Ampacity (A)", 9, "0.0"), Column("Used (%)", 7, "0"),
     Column("Drop (V)", 7, "0.000"), Column("Drop (%)", 7, "0.00"), Column("Loss (W)", 7, "0.00"), Column("Mark", 7),
@@ -277,9 +277,9 @@ def _cable_total(kind: tuple[str, str, str, str], row: int, last: int) -> list[A
 
 
 FINDINGS = (
-    Column("Severity", 9), Column("Rule", 22), Column("Subject", 20), Column("Case", 22), Column("Message", 48),
-    Column("Value", 9, "0.000"), Column("Limit", 9, "0.000"), Column("Unit", 6), Column("Remedy", 36),
-    Column("Basis", 32), Column("Working", 60),
+    Column("Severity", 8), Column("Rule", 20), Column("Subject", 16), Column("Case", 16), Column("Message", 40),
+    Column("Value", 9, "0.000"), Column("Limit", 9, "0.000"), Column("Unit", 6), Column("Remedy", 30),
+    Column("Basis", 26), Column("Working", 46),
 )  # fmt: skip
 
 
