@@ -156,8 +156,7 @@ def _conductors(plan: Plan, devices: list[tuple[Device, bool]]) -> list[tuple[Pi
     for run in plan.runs:
         found += [((run.from_point, pole), (run.to_point, pole), ohm) for pole, ohm in _run_ohm(run).items()]
         if run.return_path == "chassis":
-            bond = plan.plan.chassis_bond.si + _protection_ohm(run, "return")
-            found.append((("chassis", "-"), (run.to_point, "-"), bond))
+            found.append((("chassis", "-"), (run.to_point, "-"), plan.plan.chassis_bond.si))
     for device, _ in devices:
         found += [] if device.kind == "diode" else _device_conductors(device)
     for source in plan.sources:

@@ -43,6 +43,8 @@ class Wishes:
     diodes: float = 0.15
     devices: float = 0.5
     chassis: float = 0.4
+    bonded: float = 0.7
+    """Of plans with a chassis: those that show its way back to the first point."""
     open_devices: float = 0.1
 
 
@@ -120,7 +122,7 @@ def _battery(chance: random.Random, name: str, at: str, scale: float) -> Draft:
 def _tree(chance: random.Random, wishes: Wishes, draft: Draft, points: list[str]) -> None:
     """Join every point to an earlier one: by a run, by two runs of one conductor, through the chassis, by a device."""
     uses_chassis = chance.random() < wishes.chassis
-    if uses_chassis and chance.random() < 0.7:
+    if uses_chassis and chance.random() < wishes.bonded:
         _run(chance, draft, points[0], "chassis", None)
     for index, point in enumerate(points[1:], start=1):
         before = chance.choice(points[:index])
@@ -161,15 +163,14 @@ def _run(
             _ohm(chance, 2e-3, 60e-3),
             chance.choice(("20 degC", "50 degC")),
         )
+    pole = "return" if end == "chassis" else "feed" if back == "chassis" else carries
     if chance.random() < 0.3:
-        run["protection"] = [
-            _protection(chance, "return" if end == "chassis" else carries) for _ in range(chance.choice((1, 1, 2)))
-        ]
+        run["protection"] = [_protection(chance, pole) for _ in range(chance.choice((1, 1, 2)))]
     draft["runs"].append(run)
 
 
-def _protection(chance: random.Random, carries: str | None) -> Draft:
-    pole = carries or chance.choice(("feed", "feed", "return"))
+def _protection(chance: random.Random, only: str | None) -> Draft:
+    pole = only or chance.choice(("feed", "feed", "return"))
     end = chance.choice(("from", "to"))
     return {"type": "blade", "rating": "30 A", "end": end, "pole": pole, "resistance": _ohm(chance, 0.5e-3, 5e-3)}
 

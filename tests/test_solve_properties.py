@@ -3,6 +3,7 @@
 import copy
 import math
 import random
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -16,6 +17,8 @@ from strategies import LINEAR, Draft, Wishes, changed, drafts, plan_of, random_d
 EPSILON = float(np.finfo(float).eps)
 MIXED = Wishes()
 HEAVY = Wishes(load_share=3.0)
+BONDED = Wishes(bonded=1.0)
+"""The first point is bonded to the chassis by the plan itself."""
 quick = settings(deadline=None, max_examples=60)
 
 
@@ -76,7 +79,7 @@ def test_a_solved_plan_draws_what_its_loads_are_rated_for(draft: Draft) -> None:
 
 
 @settings(deadline=None, max_examples=120)
-@given(drafts(Wishes(**{**LINEAR.__dict__, "load_share": 3.0})))
+@given(drafts(replace(LINEAR, load_share=3.0)))
 def test_the_solution_is_the_highest(draft: Draft) -> None:
     """Drawing at each round what the loads want at the volts of the last, from the unloaded network on, comes down
     on the highest solution and cannot pass it, where every load lowers every other's voltage (a monotone map)."""
@@ -99,8 +102,8 @@ def come_down(circuit: Circuit) -> dict[str, float] | None:
     assume(bool(np.all(transfer_ohm > -1e-12)))
     volts = open_V
     for _ in range(200_000):
-        drawn = np.array([drain.current(float(u)) for drain, u in zip(circuit.drains, volts, strict=True)])
-        lower = open_V - transfer_ohm @ drawn
+        demand = [replace(drain, siemens=0.0).current(float(u)) for drain, u in zip(circuit.drains, volts, strict=True)]
+        lower = open_V - transfer_ohm @ np.array(demand)
         demanding = [drain.watts > 0 or drain.amps > 0 for drain in circuit.drains]
         if any(want and u < drain.knee for want, u, drain in zip(demanding, lower, circuit.drains, strict=True)):
             return None
@@ -111,13 +114,13 @@ def come_down(circuit: Circuit) -> dict[str, float] | None:
 
 
 def ports(circuit: Circuit) -> tuple[np.ndarray, np.ndarray]:
-    """Open-circuit volts of the loads and the ohms between them (Thévenin), by elimination of all nodes."""
+    """Volts of the loads without their powers and currents, and the ohms between them (Thévenin)."""
     nodes = {node: row for row, node in enumerate(sorted(circuit.live))}
     matrix, injected = np.zeros((len(nodes), len(nodes))), np.zeros(len(nodes))
-    for one in (*circuit.resistors, *circuit.feeders):
-        a, b = nodes[one.a], nodes[one.b]
-        matrix[[a, b], [a, b]] += 1 / one.ohm
-        matrix[[a, b], [b, a]] -= 1 / one.ohm
+    conducting = [(one.a, one.b, 1 / one.ohm) for one in (*circuit.resistors, *circuit.feeders)]
+    for a, b, siemens in [*conducting, *((one.a, one.b, one.siemens) for one in circuit.drains)]:
+        np.add.at(matrix, ([nodes[a], nodes[b]], [nodes[a], nodes[b]]), siemens)
+        np.add.at(matrix, ([nodes[a], nodes[b]], [nodes[b], nodes[a]]), -siemens)
     for feeder in circuit.feeders:
         injected[nodes[feeder.a]] += feeder.volts / feeder.ohm
         injected[nodes[feeder.b]] -= feeder.volts / feeder.ohm
@@ -132,8 +135,8 @@ def ports(circuit: Circuit) -> tuple[np.ndarray, np.ndarray]:
 
 # Linear networks --------------------------------------------------------------------------------------------------
 
-RESISTIVE = Wishes(**{**LINEAR.__dict__, "behaviours": ("resistance",), "extra_batteries": 0.7})
-CURRENTS = Wishes(**{**LINEAR.__dict__, "behaviours": ("current",), "load_share": 0.2})
+RESISTIVE = replace(LINEAR, behaviours=("resistance",), extra_batteries=0.7)
+CURRENTS = replace(LINEAR, behaviours=("current",), load_share=0.2)
 
 
 def with_stated_resistance(draft: Draft) -> Draft:
@@ -167,7 +170,11 @@ def test_a_current_drawn_here_lowers_there_as_there_here(draft: Draft, chance: r
     volts = {at: solved(plan_of(with_ampere_at(draft, at))) for at in (here, there)}
     before = solved(plan)
     assume(before.state.solved and all(found.state.solved for found in volts.values()))
-    assume(all(math.isfinite(before.volts(point)) for point in (here, there)))
+    pins = before.circuit.pins
+    whole = [
+        part for part in before.circuit.parts if {pins[point, pole] for point in (here, there) for pole in "+-"} <= part
+    ]
+    assume(whole)
     fall_here = before.volts(here) - volts[there].volts(here)
     fall_there = before.volts(there) - volts[here].volts(there)
     assert fall_here == pytest.approx(fall_there, abs=1e-9)
@@ -234,7 +241,7 @@ def test_longer_cables_with_smaller_loads_keep_the_volts(draft: Draft, factor: f
 
 
 @quick
-@given(drafts(MIXED), st.randoms(use_true_random=False))
+@given(drafts(BONDED), st.randoms(use_true_random=False))
 def test_names_and_order_do_not_matter(draft: Draft, chance: random.Random) -> None:
     points = list(plan_of(draft).point_names)
     names = dict(
@@ -265,7 +272,7 @@ def test_a_run_drawn_the_other_way_round_only_turns_its_current(draft: Draft, ch
 
 
 @quick
-@given(drafts(Wishes(**{**MIXED.__dict__, "extra_batteries": 0.0, "chargers": 0.0, "solar": 0.0, "converters": 0.0})))
+@given(drafts(replace(BONDED, extra_batteries=0.0, chargers=0.0, solar=0.0, converters=0.0)))
 def test_twin_branches_see_the_same_volts(draft: Draft) -> None:
     """Everything beyond the source's point is there twice: by symmetry both twins are alike."""
     twins = copy.deepcopy(draft)
