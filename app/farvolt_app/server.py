@@ -10,6 +10,7 @@ import time
 import urllib.error
 import urllib.request
 import webbrowser
+from collections.abc import Iterator
 from pathlib import Path
 from types import FrameType
 
@@ -142,7 +143,7 @@ def _open(where: str) -> bool:
 
 
 @contextlib.contextmanager
-def _ended_by_signals():  # type: ignore[no-untyped-def]
+def _ended_by_signals() -> Iterator[None]:
     """Make a request to end look like Ctrl+C, so that the pages end with the command that started them."""
 
     def interrupt(_number: int, _frame: FrameType | None) -> None:

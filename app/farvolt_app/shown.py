@@ -24,7 +24,7 @@ _MARKDOWN = re.compile(r"([\\`*_{}\[\]()#+\-.!|~$:<>&@^=\"'/])")
 def plain(text: str) -> str:
     """`text` written so that a page that reads Markdown shows it as it is, on one line."""
     printable = "".join(one if one.isprintable() else " " for one in text)
-    return _MARKDOWN.sub(r"\\\1", printable)
+    return _MARKDOWN.sub(r"\\\1", " ".join(printable.split()))
 
 
 def verdict(study: Study) -> str:
@@ -61,11 +61,11 @@ def run_rows(study: Study, case: int | None) -> list[Cells]:
             "Label": run.label or "",
             "Run": run.name,
             "Findings": _about(study, "run", run.name),
-            "Size": f"{run.size.name} (~{other_system(run.size).name})" if run.size else "to be chosen",
             "Current (A)": _amps(chosen, index) if result.feed_A is not None or result.return_A is not None else None,
             "May carry (A)": result.ampacity_A,
             "Drop (V)": result.drop_V,
             "Loss (W)": result.loss_W,
+            "Size": f"{run.size.name} (~{other_system(run.size).name})" if run.size else "to be chosen",
             "Case": chosen.name,
         })  # fmt: skip
     return found

@@ -104,9 +104,11 @@ def _file_name(draft: Draft) -> str:
 
 
 def _whereabouts(draft: Draft) -> str:
+    if draft.path is None and not draft.undo_texts:
+        return "Change any cell: the results below follow at once. To plan your own, open the starter plan or a file."
     if draft.path is None:
-        return "not saved in a file yet"
-    return f"{draft.path}, {'saved' if draft.saved else 'with edits that are not saved'}"
+        return "Not saved in a file yet."
+    return f"{draft.path}: {'saved' if draft.saved else 'with edits that are not saved'}."
 
 
 def _messages(draft: Draft) -> None:

@@ -1,7 +1,6 @@
 """The page "Plan": the tables to edit, and under them what every load and cable run sees."""
 
-from farvolt_app.pages import editor, heading, results
+from farvolt_app.pages import editor, results
 
 editor.show()
-heading.faults()
 results.show()

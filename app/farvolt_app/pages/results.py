@@ -1,10 +1,12 @@
 """What every load and cable run sees, in the worst case or in a chosen one."""
 
+from typing import Any
+
 import streamlit as st
 
 from farvolt.results import Study
 from farvolt_app import shown
-from farvolt_app.pages import state
+from farvolt_app.pages import heading, state
 from farvolt_app.shown import plain
 
 WORST = "Worst of all cases"
@@ -14,10 +16,13 @@ FORMATS = {
     "Current (A)": "%.2f", "May carry (A)": "%.1f", "Loss (W)": "%.2f", "Power (W)": "%.1f", "Sources (W)": "%.1f",
     "Loads (W)": "%.1f", "Lost in the wiring (W)": "%.2f",
 }  # fmt: skip
+WIDTHS = {"Findings": 150, "What": 520, "Case": 220}
+"""Columns of text that would else be cut short or take all the room, in pixels."""
 
 
 def study() -> Study | None:
-    """The results of the draft; where there are none the page says so."""
+    """The results of the draft, below what is wrong with it; where there are none the page says so."""
+    heading.faults()
     found = state.draft().results
     if found is None:
         st.info(EMPTY)
@@ -26,7 +31,8 @@ def study() -> Study | None:
 
 def table(rows: list[shown.Cells], key: str, alt: str) -> None:
     """A table of results, its numbers rounded for reading."""
-    config = {name: st.column_config.NumberColumn(format=form) for name, form in FORMATS.items()}
+    config: dict[str, Any] = {name: st.column_config.NumberColumn(format=form) for name, form in FORMATS.items()}
+    config |= {name: st.column_config.TextColumn(width=width) for name, width in WIDTHS.items()}
     st.dataframe(rows, hide_index=True, key=key, alt=alt, column_config=config, placeholder="")
 
 
