@@ -14,7 +14,7 @@ from farvolt_app.wiring_tree import Key
 
 UNITS = ("metric", "american")
 
-_CHIP = (56.0, 16.0)
+_CHIP = (60.0, 16.0)
 _DEVICE_WIDTH = 50.0
 _ICON = 34.0
 _LOAD_RIGHT = 76.0
