@@ -13,6 +13,7 @@ from farvolt.plan import Plan
 from farvolt.results import Finding
 from farvolt.rulebook import Rulebook, load
 from farvolt.study import build_context
+from farvolt.units import parse
 
 Row = dict[str, Any]
 
@@ -121,15 +122,15 @@ def resized(plan: Plan, sizes: Mapping[str, str]) -> Plan:
 
 def rerated(plan: Plan, run: str, amps: float) -> Plan:
     """The plan with another rating for the single protection of a run."""
-    from farvolt.units import quantity
-
     def changed(one: Any) -> Any:
         if one.name != run:
             return one
-        rating = quantity(amps, "A", "current")
+        rating = parse(f"{amps:g} A", "current")
         (guard,) = one.protections
-        field = "protection" if guard.end == "from" else "protection_to"
-        return one.model_copy(update={field: guard.model_copy(update={"rating": rating})})
+        other = guard.model_copy(update={"rating": rating})
+        copy = one.model_copy(update={"protection": (other,), "protection_to": None})
+        copy.__dict__.pop("protections", None)  # what the original had worked out does not hold for the copy
+        return copy
 
     return plan.model_copy(update={"runs": tuple(changed(one) for one in plan.runs)})
 

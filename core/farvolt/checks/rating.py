@@ -75,10 +75,12 @@ def over_conductor(context: Context) -> Iterator[Finding]:
         worst = max(_guards(context, index, ways, amps), key=lambda guard: guard.rating_A, default=None)
         if worst is not None and worst.rating_A > limit.amps * (1 + 1e-9):
             yield _over(context, index, worst, limit, amps, demands)
-        elif len(ways) > 1:
-            total, parts = _joint(context, run, ways)
-            if len(parts) > 1 and total > amps * (1 + 1e-9):
-                yield _jointly_over(context, index, total, parts, amps)
+            continue
+        total, parts = _joint(context, run, ways)
+        if len(parts) > 1 and total > amps * (1 + 1e-9):
+            yield _jointly_over(context, index, total, parts, amps)
+        if run.parallel > 1 and worst is not None and worst.rating_A > amps / run.parallel:
+            yield _shared(run, worst, amps)
 
 
 def _ways(context: Context, index: int, ampacity: float) -> list[Exposure]:
@@ -181,6 +183,8 @@ def _joint(context: Context, run: Run, ways: list[Exposure]) -> tuple[float, lis
     A battery counts with its protection, any other source with its own limit.
     """
     worst = (0.0, list[str]())
+    if len(ways) < 2:
+        return worst
     joining = [one for one in ways if not one.own and not near_enough(context, run, one)]
     for end in ("from", "to"):
         ways = [one for one in joining if one.end == end]
@@ -205,6 +209,18 @@ def _jointly_over(context: Context, index: int, total: float, parts: list[str], 
         f"{PRACTICE}: what several sources can feed together counts",
         (f"{' + '.join(parts)} = {number(total)} A > {number(ampacity)} A",),
         f"{thicker}a protection of its own, not above {number(ampacity)} A, where they join",
+    )  # fmt: skip
+
+
+def _shared(run: Run, guard: Guard, ampacity: float) -> Finding:
+    each = ampacity / run.parallel
+    return _finding(
+        "protection.over-conductor", "note", run, guard.rating_A, each, "A",
+        f"{label(run)}: one protection of {guard.protection.rating} for {run.parallel} cables in parallel counts on "
+        "equal sharing; where one comes loose, the others carry it all without protection",
+        f"{PRACTICE}, as IEC 60364-4-43 433.4 has it (provisional): cables alike in size, length and path",
+        (f"{number(ampacity)} A / {run.parallel} = {number(each)} A in each cable",),
+        "equal cables and lugs, checked for equal current under load; or a protection in each cable",
     )  # fmt: skip
 
 
