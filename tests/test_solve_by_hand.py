@@ -1,0 +1,322 @@
+"""Whole plans whose answer a person can work out: each names the closed form it is held against."""
+
+import itertools
+import math
+
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from farvolt import network, operating, planfile, rulebook
+from farvolt.network import FEED, RETURN
+from farvolt.solve import solve
+from solving import Solved, solved
+
+
+def plan_text(*tables: str, nominal: str = "12 V") -> str:
+    """A plan of tables, each "kind name key = value; key = value"."""
+    lines = ["format = 1", "[plan]", 'name = "By hand"', f'nominal = "{nominal}"']
+    for table in tables:
+        head, _, fields = table.partition(":")
+        kind, name = head.split(" ", 1)
+        lines += [f"[[{kind}]]", f'name = "{name}"', *(field.strip() for field in fields.split(";"))]
+    return "\n".join(lines) + "\n"
+
+
+def battery(name: str, at: str, emf: str, resistance: str = "1 uohm") -> str:
+    return f'sources {name}: kind = "battery"; at = "{at}"; emf = "{emf}"; resistance = "{resistance}"'
+
+
+def charger(name: str, at: str, volts: str, amps: str, more: str = "") -> str:
+    return f'sources {name}: kind = "charger"; at = "{at}"; volts = "{volts}"; amps = "{amps}"' + (
+        f"; {more}" if more else ""
+    )
+
+
+def wire(name: str, start: str, end: str, ohm: str, carries: str = "both") -> str:
+    """A run of a measured resistance, all its conductors together."""
+    both = "" if carries == "both" else f'; carries = "{carries}"'
+    return f'runs {name}: from = "{start}"; to = "{end}"; length = "1 m"; size = "6 mm2"; resistance = "{ohm}"{both}'
+
+
+def load(name: str, at: str, **rated: str) -> str:
+    return f'loads {name}: at = "{at}"; ' + "; ".join(f'{key} = "{value}"' for key, value in rated.items())
+
+
+def case(sources: str) -> str:
+    return f"cases The case: sources = {{ {sources} }}"
+
+
+# Loads on one feed ------------------------------------------------------------------------------------------------
+
+SIX_SQUARE = 'runs feed: from = "bank"; to = "lamp"; length = "10 m"; size = "6 mm2"; strand = "flexible"'
+
+
+def test_a_constant_power_at_the_end_of_ten_metres() -> None:
+    """IEC 60228 class 5: 3.30 mohm/m, so 66 mohm there and back; u = E/2 + sqrt(E²/4 − P·R) with R = 76 mohm."""
+    found = solved(
+        plan_text(battery("bank", "bank", "12.8 V", "10 mohm"), SIX_SQUARE, load("lamp", "lamp", power="120 W"))
+    )
+    assert found.volts("lamp") == pytest.approx(6.4 + math.sqrt(6.4**2 - 120 * 0.076), abs=1e-9)
+    assert found.volts("lamp") == pytest.approx(12.0427, abs=5e-5)
+    assert found.load_amps["lamp"] == pytest.approx(9.9645, abs=5e-5)
+
+
+def test_feed_and_return_currents_are_apart_and_opposite() -> None:
+    found = solved(
+        plan_text(battery("bank", "bank", "12.8 V", "10 mohm"), SIX_SQUARE, load("lamp", "lamp", current="5 A"))
+    )
+    assert found.run_amps == pytest.approx({("feed", FEED): 5.0, ("feed", RETURN): -5.0})
+    assert found.state.volts[found.network.ret("bank")] == 0.0
+
+
+@pytest.mark.parametrize("watts", [538.9, 539.0, 700.0, 1500.0])
+def test_one_constant_power_gives_way_at_half_the_voltage(watts: float) -> None:
+    """Maximum power transfer: E²/4R = 12.8² / (4 · 76 mohm) = 538.95 W."""
+    found = solved(
+        plan_text(battery("bank", "bank", "12.8 V", "10 mohm"), SIX_SQUARE, load("pump", "lamp", power=f"{watts} W"))
+    )
+    most_W = 12.8**2 / (4 * 0.076)
+    assert found.state.solved == (watts <= most_W)
+    assert found.state.share_held == pytest.approx(min(1.0, most_W / watts), abs=1e-3)
+
+
+SHARED_RETURN = (
+    battery("bank", "bank", "12 V"),
+    wire("feed A", "bank", "A", "20 mohm", "feed"),
+    wire("feed B", "bank", "B", "60 mohm", "feed"),
+    wire("back", "bank", "A", "15 mohm", "return"),
+    wire("B back", "A", "B", "1 uohm", "return"),
+    load("A", "A", current="10 A"),
+)
+
+
+def test_two_loads_on_a_shared_return() -> None:
+    """Each drop is own feed times own current, and shared return times both: 0.2 + 0.225 V and 0.3 + 0.225 V."""
+    both = solved(plan_text(*SHARED_RETURN, load("B", "B", current="5 A")))
+    assert 12 - both.volts("A") == pytest.approx(0.425, abs=2e-5)
+    assert 12 - both.volts("B") == pytest.approx(0.525, abs=3e-5)
+    assert both.run_amps["back", RETURN] == pytest.approx(-15.0)
+    assert 12 - solved(plan_text(*SHARED_RETURN)).volts("A") == pytest.approx(0.35, abs=2e-5)
+
+
+def test_unequal_cables_side_by_side_share_by_conductance() -> None:
+    """Current divider: 20 A over 10 and 30 mohm is 15 and 5 A, and the drop that of 7.5 mohm."""
+    cables = wire("thick", "bank", "bus", "10 mohm"), wire("thin", "bus", "bank", "30 mohm")
+    found = solved(plan_text(battery("bank", "bank", "12 V"), *cables, load("pump", "bus", current="20 A")))
+    assert found.run_amps["thick", FEED] == pytest.approx(15.0)
+    assert found.run_amps["thin", FEED] == pytest.approx(-5.0)
+    assert 12 - found.volts("bus") == pytest.approx(0.15, abs=3e-5)
+
+
+def test_a_return_through_the_chassis_has_a_bond_at_each_end() -> None:
+    """Feed 20 mohm, bond 2 mohm at the lamp, strap 5 mohm at the bank: 27 mohm in series carry 10 A."""
+    strap = 'runs strap: from = "bank"; to = "chassis"; length = "1 m"; size = "35 mm2"; resistance = "5 mohm"'
+    feed = wire("feed", "bank", "lamp", "20 mohm") + '; return = "chassis"'
+    text = plan_text(battery("bank", "bank", "12 V"), strap, feed, load("lamp", "lamp", current="10 A"))
+    found = solved(text.replace("[plan]", '[plan]\nchassis_bond = "2 mohm"'))
+    assert 12 - found.volts("lamp") == pytest.approx(0.27, abs=2e-5)
+
+
+def test_beyond_an_open_switch_nothing_is_fed() -> None:
+    switch = 'devices switch: kind = "switch"; from = "bank"; to = "bus"; state = "open"'
+    tables = battery("bank", "bank", "12 V"), switch, wire("feed", "bus", "lamp", "1 mohm")
+    found = solved(plan_text(*tables, load("lamp", "lamp", power="50 W")))
+    assert found.state.solved
+    assert math.isnan(found.volts("lamp"))
+    assert found.load_amps["lamp"] == 0.0
+    assert found.volts("bank") == pytest.approx(12.0)
+
+
+# Circuits of the textbooks ----------------------------------------------------------------------------------------
+
+
+def test_two_loops() -> None:
+    """A university physics textbook, Fig. 24.18: 10 V behind 6 ohm, 14 V the other way behind 4 ohm, 2 ohm between:
+    -1, 2 and -3 A. No battery of a plan stands the wrong way round: its share comes from two others by linearity."""
+
+    def currents(emf: str) -> np.ndarray:
+        found = solved(
+            plan_text(
+                battery("ten", "A", "10 V"), battery("fourteen", "B", emf),
+                wire("six", "A", "middle", "6 ohm"), wire("four", "B", "middle", "4 ohm"),
+                load("two", "middle", resistance="2 ohm"),
+            )
+        )  # fmt: skip
+        return np.array([found.load_amps["two"], *found.source_amps.values()])
+
+    # With the currents linear in the EMFs, those at −14 V are twice those at 7 V less those at 28 V.
+    assert 2 * currents("7 V") - currents("28 V") == pytest.approx([-1, 2, -3], abs=1e-5)
+
+
+def test_a_bridge_out_of_balance() -> None:
+    """Wheatstone bridge at 24 V: 150 and 50 ohm above, 300 and 250 ohm below, 100 ohm across; Kirchhoff's two
+    equations give 17.655 and 19.310 V, 16.552 mA across and 136.092 mA from the source."""
+    arms = wire("left", "top", "X", "150 ohm", "feed"), wire("right", "top", "Y", "50 ohm", "feed")
+    backs = wire("X back", "X", "top", "1 uohm", "return"), wire("Y back", "Y", "top", "1 uohm", "return")
+    below = load("under X", "X", resistance="300 ohm"), load("under Y", "Y", resistance="250 ohm")
+    across = wire("across", "Y", "X", "100 ohm", "feed")
+    found = solved(plan_text(battery("bank", "top", "24 V"), *arms, *backs, across, *below, nominal="24 V"))
+    left, right = np.linalg.solve(
+        [[1 / 150 + 1 / 300 + 1 / 100, -1 / 100], [-1 / 100, 1 / 50 + 1 / 250 + 1 / 100]], [24 / 150, 24 / 50]
+    )
+    assert [found.volts("X"), found.volts("Y")] == pytest.approx([left, right], abs=1e-6)
+    assert [found.volts("X"), found.volts("Y")] == pytest.approx([17.655, 19.310], abs=5e-4)
+    assert found.run_amps["across", FEED] == pytest.approx(16.552e-3, abs=5e-7)
+    assert found.source_amps["bank"] == pytest.approx(136.092e-3, abs=5e-7)
+
+
+@pytest.mark.parametrize(("stages", "ohm"), [(1, 2.0), (2, 5 / 3), (3, 13 / 8), (30, (1 + math.sqrt(5)) / 2)])
+def test_a_ladder_of_ones(stages: int, ohm: float) -> None:
+    """Ladder of 1 ohm in line and 1 ohm across: ratios of every other Fibonacci number, in the end the golden ratio."""
+    rungs = [wire(f"line {n}", f"p{n}", f"p{n + 1}", "1 ohm") for n in range(stages)]
+    loads = [load(f"rung {n}", f"p{n + 1}", resistance="1 ohm") for n in range(stages)]
+    found = solved(plan_text(battery("bank", "p0", "12 V", "0.1 ohm"), *rungs, *loads))
+    assert found.volts("p0") / found.source_amps["bank"] == pytest.approx(ohm, rel=1e-12)
+
+
+@pytest.mark.parametrize(("corner", "ohm"), [("001", 7 / 12), ("011", 3 / 4), ("111", 5 / 6)])
+def test_a_cube_of_ones(corner: str, ohm: float) -> None:
+    """Cube with 1 ohm along every edge (classical): along an edge, across a face, along the body's diagonal."""
+    corners = ["".join(bits) for bits in itertools.product("01", repeat=3)]
+    pairs = [
+        (a, b) for a, b in itertools.combinations(corners, 2) if sum(x != y for x, y in zip(a, b, strict=True)) == 1
+    ]
+    edges = [wire(f"edge {a} {b}", a, b, "1 ohm", "feed") for a, b in pairs]
+    tables = battery("bank", "000", "12 V"), *edges, wire("back", corner, "000", "1 ohm", "return")
+    found = solved(plan_text(*tables, load("one ampere", corner, current="1 A")))
+    volts, feed = found.state.volts, found.network.feed
+    assert len(edges) == 12
+    assert volts[feed("000")] - volts[feed(corner)] == pytest.approx(ohm, abs=1e-12)
+
+
+# Sources that know one way only ----------------------------------------------------------------------------------
+
+
+def test_a_charger_alone_does_not_sit_at_its_limit() -> None:
+    """14.4 V with 0.48 mohm of droop, 200 W: u = V/2 + sqrt(V²/4 − P·r) = 14.3933 V; 200 W / 30 A = 6.67 V is false."""
+    found = solved(plan_text(charger("charger", "bus", "14.4 V", "30 A"), load("heater", "bus", power="200 W")))
+    assert found.volts("bus") == pytest.approx(7.2 + math.sqrt(7.2**2 - 200 * 0.48e-3), abs=1e-9)
+    assert found.volts("bus") == pytest.approx(14.39, abs=5e-3)
+    assert found.state.solved
+
+
+@given(st.floats(12.5, 15.0), st.floats(2.0, 150.0), st.floats(0.05, 0.995))
+def test_a_charger_alone_never_takes_the_false_solution(volts: float, amps: float, share: float) -> None:
+    """The same closed form, for any load that the charger can carry at its rated voltage less its droop."""
+    watts = share * amps * volts * 0.999
+    found = solved(
+        plan_text(charger("charger", "bus", f"{volts!r} V", f"{amps!r} A"), load("heater", "bus", power=f"{watts!r} W"))
+    )
+    assert found.state.solved
+    assert found.volts("bus") == pytest.approx(
+        volts / 2 + math.sqrt(volts**2 / 4 - watts * 1e-3 * volts / amps), abs=1e-8
+    )
+
+
+FULL = battery("bank", "bus", "12.8 V", "10 mohm"), charger("charger", "bus", "14.4 V", "30 A")
+
+
+def test_a_full_battery_takes_nothing() -> None:
+    found = solved(plan_text(*FULL, load("lamp", "bus", power="200 W"), case('"bank" = "full"')))
+    assert found.source_amps["bank"] == 0.0
+    assert found.volts("bus") == pytest.approx(14.3933, abs=5e-5)
+
+
+def test_a_full_battery_helps_a_charger_at_its_limit() -> None:
+    """30 A + (E − u)/r = P/u: u² − (E + 30 A · r)·u + P·r = 0 with 12.8 V, 10 mohm, 600 W."""
+    found = solved(plan_text(*FULL, load("inverter", "bus", power="600 W"), case('"bank" = "full"')))
+    half = (12.8 + 30 * 0.01) / 2
+    assert found.volts("bus") == pytest.approx(half + math.sqrt(half**2 - 600 * 0.01), abs=1e-9)
+    assert found.source_amps["charger"] == pytest.approx(30.0)
+
+
+def test_a_battery_that_is_not_full_is_charged() -> None:
+    """30 A into 10 mohm from 12.8 V: 13.1 V, under the charger's 14.4 V."""
+    found = solved(plan_text(*FULL))
+    assert found.volts("bus") == pytest.approx(13.1, abs=1e-9)
+    assert found.source_amps == pytest.approx({"bank": -30.0, "charger": 30.0})
+
+
+@pytest.mark.parametrize(("watts", "volts"), [(110, 57.5), (115, 57.5), (120, 53.0)])
+def test_of_two_stable_states_the_one_reached_from_above(watts: float, volts: float) -> None:
+    """A charger of 57.6 V and 2 A carries 115 W, not 120 W; then the full battery of 53 V takes over. At 110 W both
+    57.5 V (charger alone) and 53 V (charger at its limit, battery helping) obey Kirchhoff's laws and are stable."""
+    sources = battery("bank", "bus", "53 V", "10 mohm"), charger("charger", "bus", "57.6 V", "2 A")
+    text = plan_text(*sources, load("lights", "bus", power=f"{watts} W"), case('"bank" = "full"'), nominal="48 V")
+    found = solved(text)
+    assert found.state.solved
+    assert found.volts("bus") == pytest.approx(volts, abs=0.06)
+    assert (found.source_amps["bank"] > 0) == (watts > 115)
+
+
+DIODE = 'devices diode: kind = "diode"; from = "starter"; to = "bus"; drop = "0.4 V"; resistance = "2 mohm"'
+BESIDE_DIODE = DIODE, wire("back", "starter", "bus", "1 uohm", "return"), load("pump", "bus", current="20 A")
+
+
+def test_a_diode_conducts_above_its_drop() -> None:
+    """(12.8 − u)/10 mohm + (13.6 − 0.4 − u)/10 mohm = 20 A: u = 12.9 V, 30 A through the diode, 10 A into the bank."""
+    sources = battery("bank", "bus", "12.8 V", "10 mohm"), battery("starter", "starter", "13.6 V", "8 mohm")
+    found = solved(plan_text(*sources, *BESIDE_DIODE))
+    assert found.volts("bus") == pytest.approx(12.9, abs=1e-4)
+    assert found.source_amps == pytest.approx({"bank": -10.0, "starter": 30.0}, abs=0.01)
+
+
+def test_a_diode_blocks_the_other_way() -> None:
+    """20 A from 12.8 V behind 10 mohm: 12.6 V; the starter battery at 12 V stays as it is."""
+    sources = battery("bank", "bus", "12.8 V", "10 mohm"), battery("starter", "starter", "12 V", "8 mohm")
+    found = solved(plan_text(*sources, *BESIDE_DIODE))
+    assert found.volts("bus") == pytest.approx(12.6, abs=1e-4)
+    assert found.volts("starter") == pytest.approx(12.0, abs=1e-4)
+    assert abs(found.source_amps["starter"]) < 1e-5
+
+
+def test_a_full_battery_behind_a_blocking_diode_is_solved() -> None:
+    """What it hangs on is the diode's leak alone; the charger's 30 A go into the bank: 12.8 V + 30 A · 10 mohm."""
+    sources = battery("bank", "bus", "12.8 V", "10 mohm"), charger("charger", "bus", "14.4 V", "30 A")
+    diode = DIODE.replace('from = "starter"; to = "bus"', 'from = "bus"; to = "starter"')
+    tables = *sources, battery("starter", "starter", "12.5 V", "3 mohm"), diode, BESIDE_DIODE[1]
+    found = solved(plan_text(*tables, case('"starter" = "full"')))
+    assert found.state.solved
+    assert found.volts("bus") == pytest.approx(13.1, abs=1e-6)
+    assert found.volts("starter") == pytest.approx(13.1, abs=5e-3)
+
+
+@pytest.mark.parametrize("isolated", ["true", "false"])
+def test_a_converter_draws_what_it_delivers_over_its_efficiency(isolated: str) -> None:
+    """(13.8 V · 10 A)/90 % + 1 W = 154.33 W from 25.6 V behind 50 mohm: u = E/2 + sqrt(E²/4 − P·R). A bond between
+    the two returns is a single joint and carries nothing."""
+    converter = (
+        'sources converter: kind = "converter"; from = "bus"; at = "radio bus"; nominal = "12 V";'
+        f'volts = "13.8 V"; amps = "20 A"; efficiency = "90 %"; standby = "1 W"; resistance = "1 uohm"; isolated = {isolated}'
+    )
+    found = solved(
+        plan_text(
+            battery("bank", "bank", "25.6 V", "5 mohm"), wire("feed", "bank", "bus", "45 mohm"), converter,
+            wire("out", "radio bus", "radio", "30 mohm"), load("radio", "radio", current="10 A"), nominal="24 V",
+        )
+    )  # fmt: skip
+    power = 13.8 * 10 / 0.9 + 1
+    assert found.volts("bus") == pytest.approx(12.8 + math.sqrt(12.8**2 - power * 0.05), abs=1e-5)
+    assert found.volts("bus") == pytest.approx(25.295, abs=5e-4)
+    assert found.source_amps["bank"] == pytest.approx(6.101, abs=5e-4)
+    assert found.volts("radio") == pytest.approx(13.5, abs=2e-5)
+
+
+def test_a_solar_controller_gives_its_power_up_to_its_ceiling() -> None:
+    """200 W into 12.8 V behind 10 mohm: i = P/u and u = E + r·i, so u = E/2 + sqrt(E²/4 + P·r)."""
+    roof = 'sources roof: kind = "solar"; at = "bus"; power = "200 W"; ceiling = "14.4 V"'
+    found = solved(plan_text(battery("bank", "bus", "12.8 V", "10 mohm"), roof))
+    assert found.volts("bus") == pytest.approx(6.4 + math.sqrt(6.4**2 + 200 * 0.01), abs=1e-9)
+    full = solved(plan_text(battery("bank", "bus", "12.8 V", "10 mohm"), roof, case('"bank" = "full"')))
+    assert full.volts("bus") == pytest.approx(14.4, abs=1e-6)
+
+
+def test_warmer_copper_has_more_resistance() -> None:
+    """IEC 60028: 0.393 % per kelvin, so at 70 °C the 66 mohm are 66 · (1 + 0.00393 · 50); 10 A drop that much more."""
+    plan = planfile.parse(plan_text(battery("bank", "bank", "12 V"), SIX_SQUARE, load("lamp", "lamp", current="10 A")))
+    built = network.build(plan, rulebook.load("small-craft-iso"))
+    state = solve(built, operating.operating(built, plan.checked_cases[0]), np.array([1 + 0.00393 * 50]))
+    found = Solved(plan, built, state)
+    assert 12 - found.volts("lamp") == pytest.approx(0.66 * (1 + 0.00393 * 50), abs=2e-5)
