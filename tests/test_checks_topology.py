@@ -1,0 +1,116 @@
+"""plan.*: what is not fed, what has no way back, what looks like a slip of the pen."""
+
+from typing import Any
+
+import pytest
+
+from farvolt.plan import Plan
+from wiring import bank, cable, fails, findings, fuse, lamp, only, plan_of
+
+FEED = cable("feed", "bank", "pump", "2 m", "4 mm2", protection=fuse("15 A"))
+
+
+def test_a_sound_plan_has_no_slips() -> None:
+    plan = plan_of([FEED], [lamp("pump", "pump")])
+    for rule in ("plan.unfed", "plan.no-return", "plan.two-runs", "plan.lonely-point"):
+        assert findings(plan, rule) == []
+
+
+def test_a_load_that_no_run_reaches_offers_the_nearest_point() -> None:
+    found = only(plan_of([FEED], [lamp("pump", "pmup")]), "plan.unfed", "pump")
+    assert found.severity == "fail"
+    assert 'no run reaches that point; did you mean "pump"?' in found.message
+
+
+def test_a_load_behind_an_open_switch_is_unfed_in_that_case_alone() -> None:
+    runs = [cable("feed", "switched", "pump", "2 m", "4 mm2", protection=fuse("15 A"))]
+    devices = [{"name": "switch", "kind": "switch", "from": "bank", "to": "switched"}]
+    cases = [{"name": "on"}, {"name": "off", "devices": {"switch": "open"}}]
+    found = only(plan_of(runs, [lamp("pump", "pump")], devices=devices, cases=cases), "plan.unfed", "pump")
+    assert found.case == "off"
+    assert "no closed way leads there" in found.message
+    cases[1]["loads"] = "none"
+    assert findings(plan_of(runs, [lamp("pump", "pump")], devices=devices, cases=cases), "plan.unfed") == []
+
+
+def test_an_unfed_load_is_said_once_for_all_its_cases() -> None:
+    cases = [{"name": name, "sources": {"bank": "off"}} for name in ("one", "two", "three")]
+    assert only(plan_of([FEED], [lamp("pump", "pump")], cases=cases), "plan.unfed", "pump").case == "one"
+
+
+def test_a_load_without_a_way_back() -> None:
+    runs = [FEED | {"carries": "feed"}]
+    found = only(plan_of(runs, [lamp("pump", "pump")]), "plan.no-return", "pump")
+    assert found.severity == "fail"
+    assert findings(plan_of(runs, [lamp("pump", "pump")]), "plan.unfed") == []
+
+
+def test_a_part_that_nothing_feeds_is_named_once() -> None:
+    """Two cables in a corner of the plan that no source reaches: nothing there is checked, so it is said."""
+    runs = [FEED, cable("a", "shed", "door"), cable("b", "door", "gate")]
+    found = findings(plan_of(runs, [lamp("pump", "pump")]), "plan.unfed")
+    assert [(one.severity, one.kind) for one in found] == [("warn", "point")]
+    assert '"shed", "door", "gate"' in found[0].message
+
+
+def test_a_part_that_is_fed_in_some_case_is_not_named() -> None:
+    cases = [{"name": "off", "loads": "none", "sources": {"bank": "off"}}, {"name": "on"}]
+    assert findings(plan_of([FEED], [lamp("pump", "pump")], cases=cases), "plan.unfed") == []
+
+
+@pytest.mark.parametrize(
+    ("first", "second", "named"),
+    [
+        ({}, {}, True),
+        ({}, {"from": "pump", "to": "bank"}, True),
+        ({"carries": "feed"}, {"carries": "return"}, False),
+        ({"carries": "feed"}, {}, True),
+    ],
+)
+def test_two_runs_between_the_same_points(first: dict[str, Any], second: dict[str, Any], named: bool) -> None:
+    runs = [FEED | first, cable("again", "bank", "pump", "2 m", "4 mm2") | second]
+    found = findings(plan_of(runs, [lamp("pump", "pump")]), "plan.two-runs")
+    assert [one.subject for one in found] == (["again"] if named else [])
+    if found:
+        assert found[0].severity == "warn"
+
+
+def lonely(**more: Any) -> Plan:
+    return plan_of([FEED, cable("spare", "pump", "pumpp", **more)], [lamp("pump", "pump")])
+
+
+def test_a_point_named_once_may_be_a_slip() -> None:
+    found = only(lonely(), "plan.lonely-point", "pumpp")
+    assert found.severity == "warn"
+    assert 'did you mean "pump"?' in found.message
+
+
+@pytest.mark.parametrize(
+    "rows",
+    [
+        {"points": [{"name": "pumpp"}]},
+        {"loads": [lamp("pump", "pump"), lamp("other", "pumpp")]},
+        {"sources": [bank(), bank("pumpp")]},
+        {"devices": [{"name": "switch", "kind": "switch", "from": "pumpp", "to": "bank"}]},
+    ],
+)
+def test_a_point_that_is_listed_or_used_again_is_none(rows: dict[str, Any]) -> None:
+    loads = rows.pop("loads", [lamp("pump", "pump")])
+    plan = plan_of([FEED, cable("spare", "pump", "pumpp")], loads, **rows)
+    assert findings(plan, "plan.lonely-point") == []
+
+
+def test_many_lonely_points_are_all_named_though_few_are_compared() -> None:
+    runs = [FEED, *(cable(f"run {index}", "pump", f"stray {index}") for index in range(60))]
+    found = findings(plan_of(runs, [lamp("pump", "pump")]), "plan.lonely-point")
+    assert len(found) == 60
+    assert sum("did you mean" in one.message for one in found) <= 20
+
+
+def test_an_interim_size_is_named() -> None:
+    runs = [cable("feed", "bank", "pump", "2 m", None, protection=fuse("15 A"))]
+    plan = plan_of(runs, [lamp("pump", "pump", "10 A")])
+    found = only(plan, "plan.free-size", "feed")
+    assert found.severity == "warn"
+    assert "has no size yet" in found.message
+    assert fails(plan, "conductor.ampacity") == []
