@@ -6,6 +6,7 @@ import signal
 import socket
 import subprocess
 import sys
+import tempfile
 import time
 import urllib.error
 import urllib.request
@@ -15,6 +16,7 @@ from pathlib import Path
 from types import FrameType
 
 from farvolt.errors import FarvoltError
+from farvolt_app.keep import FOLDER_VARIABLE
 
 PLAN_VARIABLE = "FARVOLT_PLAN"
 """Environment variable that carries the path of the plan to the pages."""
@@ -55,8 +57,9 @@ def serve(
     chosen = port or free_port(address)
     if port is not None and not _is_free(port, address):
         raise FarvoltError(f"port {port} on {address} is in use; name another one, or none to have a free one chosen")
-    with _ended_by_signals():
-        process = subprocess.Popen(command(chosen, address), env=_environment(plan_path), stdout=subprocess.DEVNULL)
+    with _ended_by_signals(), tempfile.TemporaryDirectory(prefix="farvolt-") as folder:
+        environment = environment_for(plan_path, folder)
+        process = subprocess.Popen(command(chosen, address), env=environment, stdout=subprocess.DEVNULL)
         try:
             return _run(process, chosen, address, open_browser)
         except KeyboardInterrupt:
@@ -106,8 +109,10 @@ def _socket(address: str) -> socket.socket:
     return socket.socket(socket.AF_INET6 if ":" in address else socket.AF_INET)
 
 
-def _environment(plan_path: Path | None) -> dict[str, str]:
+def environment_for(plan_path: Path | None, folder: str) -> dict[str, str]:
+    """The environment of the pages: the plan to open, and the folder where drafts are kept meanwhile."""
     known = {name: value for name, value in os.environ.items() if name != PLAN_VARIABLE}
+    known[FOLDER_VARIABLE] = folder
     return known | ({PLAN_VARIABLE: str(plan_path.absolute())} if plan_path else {})
 
 

@@ -24,6 +24,7 @@ def run() -> None:
     if st.session_state.get("page") != page.title:
         st.session_state["page"] = page.title
         state.show_anew()
+    state.mark_address()
     heading.show()
     page.run()
 

@@ -105,7 +105,7 @@ def _file_name(draft: Draft) -> str:
 
 def _whereabouts(draft: Draft) -> str:
     if draft.path is None and not draft.undo_texts:
-        return "Change any cell: the results below follow at once. To plan your own, open the starter plan or a file."
+        return "Change any cell under Plan: results, drawing and findings follow. Open has a starter plan for your own."
     if draft.path is None:
         return "Not saved in a file yet."
     return f"{draft.path}: {'saved' if draft.saved else 'with edits that are not saved'}."

@@ -16,6 +16,7 @@ FORMATS = {
     "Current (A)": "%.2f", "May carry (A)": "%.1f", "Loss (W)": "%.2f", "Power (W)": "%.1f", "Sources (W)": "%.1f",
     "Loads (W)": "%.1f", "Lost in the wiring (W)": "%.2f",
 }  # fmt: skip
+TALL_PX = 760
 WIDTHS = {"Findings": 150, "What": 520, "Case": 220}
 """Columns of text that would else be cut short or take all the room, in pixels."""
 
@@ -29,11 +30,15 @@ def study() -> Study | None:
     return found
 
 
-def table(rows: list[shown.Cells], key: str, alt: str) -> None:
+def table(rows: list[shown.Cells], key: str, alt: str, *, tall: bool = False) -> None:
     """A table of results, its numbers rounded for reading."""
-    config: dict[str, Any] = {name: st.column_config.NumberColumn(format=form) for name, form in FORMATS.items()}
+    numbers = {name for row in rows for name, value in row.items() if isinstance(value, float)}
+    config: dict[str, Any] = {
+        name: st.column_config.NumberColumn(format=FORMATS.get(name, "%.4g")) for name in {*numbers, *FORMATS}
+    }
     config |= {name: st.column_config.TextColumn(width=width) for name, width in WIDTHS.items()}
-    st.dataframe(rows, hide_index=True, key=key, alt=alt, column_config=config, placeholder="")
+    height = min(TALL_PX, 40 + 35 * len(rows)) if tall else "auto"
+    st.dataframe(rows, height=height, hide_index=True, key=key, alt=alt, column_config=config, placeholder="")
 
 
 def show() -> None:

@@ -23,7 +23,7 @@ def show(study: Study) -> None:
             "Download CSV", partial(_csv, study), "cables.csv", "text/csv", on_click="ignore", key="download_csv",
             help="The cable list alone, for other programs.",
         )  # fmt: skip
-    results.table(schedule.rows(study), "schedule", "Cable schedule")
+    results.table(schedule.rows(study), "schedule", "Cable schedule", tall=True)
     st.caption(plain(shown.CAUTION))
 
 

@@ -8,15 +8,23 @@ import streamlit as st
 from farvolt import examples
 from farvolt.errors import FarvoltError
 from farvolt_app import draft as drafts
+from farvolt_app import keep
 from farvolt_app.draft import Draft
 from farvolt_app.server import PLAN_VARIABLE
 
 FIRST_EXAMPLE = "instrument-repair-van"
+ADDRESS_FIELD = "draft"
 
 
 def begin() -> None:
     """At the start of a session: the draft of the plan that the command named, or of an example."""
     if "draft" in st.session_state:
+        return
+    st.session_state["revision"] = 0
+    st.session_state["kept_as"] = keep.new_name()
+    before = keep.kept(st.query_params.get(ADDRESS_FIELD, ""))
+    if before is not None:
+        put(before)
         return
     named = os.environ.get(PLAN_VARIABLE, "")
     opened = drafts.begin(examples.text(FIRST_EXAMPLE)) if not named else None
@@ -25,8 +33,13 @@ def begin() -> None:
     except FarvoltError as error:
         say(str(error))
         opened = drafts.begin(examples.text(FIRST_EXAMPLE))
-    st.session_state["revision"] = 0
     put(opened)
+
+
+def mark_address() -> None:
+    """Let the page's address carry the name its draft is kept under, for when it is loaded again."""
+    if os.environ.get(keep.FOLDER_VARIABLE) and st.query_params.get(ADDRESS_FIELD) != st.session_state["kept_as"]:
+        st.query_params[ADDRESS_FIELD] = st.session_state["kept_as"]
 
 
 def draft() -> Draft:
@@ -38,6 +51,7 @@ def draft() -> Draft:
 def put(changed: Draft, *, keep_editors: bool = False) -> None:
     """Take another draft; the table editors start anew from its text, unless they are what changed it."""
     st.session_state["draft"] = changed
+    keep.keep(st.session_state["kept_as"], changed)
     if not keep_editors:
         show_anew()
 
