@@ -289,7 +289,8 @@ def test_a_converter_draws_what_it_delivers_over_its_efficiency(isolated: str) -
     the two returns is a single joint and carries nothing."""
     converter = (
         'sources converter: kind = "converter"; from = "bus"; at = "radio bus"; nominal = "12 V";'
-        f'volts = "13.8 V"; amps = "20 A"; efficiency = "90 %"; standby = "1 W"; resistance = "1 uohm"; isolated = {isolated}'
+        'volts = "13.8 V"; amps = "20 A"; efficiency = "90 %"; standby = "1 W"; resistance = "1 uohm";'
+        f"isolated = {isolated}"
     )
     found = solved(
         plan_text(
