@@ -582,3 +582,14 @@ def test_without_an_allowed_length_bare_cable_fails_all_the_same() -> None:
     found = only(plan, "protection.missing", "feed", book)
     assert (found.severity, found.limit) == ("fail", None)
     assert "the rulebook states no allowed length" in found.working[0]
+
+
+def test_a_length_without_a_limit_is_told_in_words() -> None:
+    """ISO 10133:2012 clause 8: in a sheath the whole way to the protection, any length; here none follows."""
+    runs = [cable("feed", "bank", "pump", "2 m", "4 mm2", sheathed=True)]
+    found = only(plan_of(runs, [lamp("pump", "pump", "0 A")]), "protection.missing", "feed")
+    assert (found.severity, found.limit) == ("fail", None)
+    assert "any length is allowed if protection follows" in found.working[0]
+    assert found.remedy == 'a fuse or breaker in the feed at "bank", rated at no more than the 45 A the cable allows'
+    followed = [runs[0] | {"protection_to": fuse("15 A")}]
+    assert findings(plan_of(followed, [lamp("pump", "pump")]), "protection.missing") == []

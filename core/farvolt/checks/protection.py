@@ -1,5 +1,6 @@
 """Where protection sits: on every way that a source can feed a cable, and near enough to what feeds it."""
 
+import math
 from collections.abc import Iterator
 
 from farvolt.checks.demand import Demands
@@ -72,18 +73,26 @@ def _unprotected(context: Context, index: int, ways: list[Exposure], demands: De
     feeding = ", ".join(dict.fromkeys(f'"{context.plan.sources[one.source].name}"' for one in unlimited))
     places = " and ".join(dict.fromkeys(f'"{_point(run, one)}"' for one in unlimited))
     allowed = allowed_bare_m(context, run, worst)
-    told = f"{number(allowed)} m is allowed" if allowed is not None else "the rulebook states no allowed length"
+    told = _told(allowed)
     ahead = f"; the next protection is {number(worst.bare_m)} m on" if worst.ahead else ""
     if any(one.pole == "return" for one in run.protections):
         ahead += "; protection in the return does not protect the feed"
     sums = f"{number(worst.before_m)} m before + {number(worst.bare_m)} m = {number(reach_m(worst))} m"
     return _finding(
-        "protection.missing", "fail", run, reach_m(worst), allowed, "m",
+        "protection.missing", "fail", run, reach_m(worst), allowed if allowed != math.inf else None, "m",
         f"{label(run)}: nothing protects it where {feeding} feeds it at {places}{ahead}",
         basis_text(rule.basis) if rule else PRACTICE,
         (f"Unprotected from the source: {sums}; {told}", *((rule.text,) if rule else ())),
         f"a fuse or breaker in the feed at {places}, {_rating_range(context, index, demands)}",
     )  # fmt: skip
+
+
+def _told(allowed_m: float | None) -> str:
+    if allowed_m is None:
+        return "the rulebook states no allowed length"
+    if allowed_m == math.inf:
+        return "any length is allowed if protection follows"
+    return f"{number(allowed_m)} m is allowed"
 
 
 def _point(run: Run, way: Exposure) -> str:
@@ -98,6 +107,8 @@ def _rating_range(context: Context, index: int, demands: Demands) -> str:
     limit = limit_for(context, context.plan.runs[index], amps)
     if demand > limit.amps:
         return f"and a thicker cable: its load is {number(demand)} A, and it allows a rating of {number(limit.amps)} A"
+    if demand == 0:
+        return f"rated at no more than the {number(limit.amps)} A the cable allows"
     return f"rated between its load of {number(demand)} A and the {number(limit.amps)} A the cable allows"
 
 
