@@ -97,7 +97,7 @@ def ampacity(
     )  # fmt: skip
 
 
-def conductor_temperature_degC(  # noqa: N802 - the name carries the unit
+def conductor_temperature_degC(
     current_A: float, ampacity_A: float, ambient_degC: float, insulation_degC: float
 ) -> float:
     """Conductor temperature in °C: Ta + (Tc − Ta) · (I / Iz)², the rise going with the square of the current.

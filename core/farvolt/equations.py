@@ -3,7 +3,7 @@
 import numpy as np
 
 from farvolt.fed import Fed, first_diode
-from farvolt.network import Floats, Network
+from farvolt.network import FEED, Floats, Network
 from farvolt.operating import KNEE_SHARE, Operating
 
 IMBALANCE_A = 1e-9
@@ -56,17 +56,16 @@ class Equations:
         return 64 * _EPSILON * largest
 
     def first_guess(self) -> Floats:
-        """All feeds of a galvanic part at its highest source voltage, all returns at zero."""
-        c = self.condition
+        """All feeds of a joined part at its highest source voltage, all returns at zero."""
+        c, part = self.condition, self.supply.part
         volts = np.zeros(self.network.node_count)
-        feeds = {node for (_, pole), node in self.network.nodes.items() if pole == 0}
         high: dict[int, float] = {}
         for port in self.sources:
             if port < first_diode(self.network):
-                island = int(c.islands.of_node[c.source_a[port]])
-                high[island] = max(high.get(island, 0.0), float(c.volts[port]))
-        for node in feeds:
-            volts[node] = high.get(int(c.islands.of_node[node]), 0.0)
+                mine = int(part[c.source_a[port]])
+                high[mine] = max(high.get(mine, 0.0), float(c.volts[port]))
+        for node in {node for (_, pole), node in self.network.nodes.items() if pole == FEED}:
+            volts[node] = high.get(int(part[node]), 0.0)
         return volts
 
     # Element laws -----------------------------------------------------------------------------------------

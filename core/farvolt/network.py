@@ -276,7 +276,7 @@ def _converter_bonds(plan: Plan) -> Iterator[_Branch]:
 
 
 def _chassis_bonds(plan: Plan, branches: list[_Branch], names: _Names, assumptions: list[str]) -> list[_Branch]:
-    """Bonds of the runs that return through the chassis: at `to`; at `from` too where nothing else joins it."""
+    """Bonds of the runs that return through the chassis: at `to`, and at a source where nothing else joins it."""
     users = [run for run in plan.runs if run.return_path == "chassis"]
     if not users:
         return []
@@ -293,15 +293,23 @@ def _chassis_bonds(plan: Plan, branches: list[_Branch], names: _Names, assumptio
     for branch in (*branches, *bonds):
         reach.merge(branch.a, branch.b)
     for run in users:
-        start = (run.from_point, RETURN)
-        if reach.node(start) != reach.node(chassis):
-            bonds.append(_Branch(start, chassis, bond_ohm, pole=BOND))
-            reach.merge(start, chassis)
+        if reach.node((run.from_point, RETURN)) != reach.node(chassis):
+            point = _bonded_point(plan, reach, run.from_point)
+            bonds.append(_Branch((point, RETURN), chassis, bond_ohm, pole=BOND))
+            reach.merge((point, RETURN), chassis)
             assumptions.append(
-                f'A bond of {plan.plan.chassis_bond} from the return of "{run.from_point}" to the chassis: '
+                f'A bond of {plan.plan.chassis_bond} from the return of "{point}" to the chassis: '
                 "runs return through the chassis and the plan shows no other way back from it."
             )
     return bonds
+
+
+def _bonded_point(plan: Plan, reach: _Names, start: str) -> str:
+    """Where a way back from the chassis is assumed: at the reference source, else the first source, that the return
+    of `start` leads to; at `start` itself where it leads to none."""
+    mine = reach.node((start, RETURN))
+    order = sorted(plan.sources, key=lambda source: source.name != plan.reference)
+    return next((source.at for source in order if reach.node((source.at, RETURN)) == mine), start)
 
 
 def _arrays(

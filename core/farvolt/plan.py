@@ -4,8 +4,9 @@ Each class is one table of format 1. What concerns several entries at once is in
 lines and messages are in `planfile`. Quantities keep the text as written (`units.Quantity`).
 """
 
+from collections.abc import Mapping
 from functools import cached_property
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Literal, Self
 
 from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
 
@@ -52,6 +53,13 @@ class Entry(BaseModel):
     """Base of all tables: unknown fields are errors, values never change."""
 
     model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True, arbitrary_types_allowed=True)
+
+    def model_copy(self, *, update: Mapping[str, Any] | None = None, deep: bool = False) -> Self:
+        """A copy with some fields changed; what was worked out from the old ones is forgotten."""
+        copy = super().model_copy(update=update, deep=deep)
+        for name in [name for name in copy.__dict__ if name not in type(self).model_fields]:
+            del copy.__dict__[name]
+        return copy
 
 
 class PlanInfo(Entry):

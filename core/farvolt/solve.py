@@ -182,7 +182,7 @@ def _settle(equations: Equations, volts: Floats, share: float) -> Floats | None:
             return None
         hold = max(hold * (0.7 if worst < 0.02 else 1.3), 1e-6)
         if worst < 1e-4 and (found := _newton(equations, volts, share)) is not None and _near(equations, volts, found):
-            return found
+            return found if equations.above_knees(found) else None
     return None
 
 
@@ -214,10 +214,12 @@ def _state(equations: Equations, volts: Floats, share: float, weakest: int | Non
     power_in = float(source_W[~diodes].sum() - load_W[inputs].sum())
     power_loads = float(load_W[~inputs].sum())
     power_lost = float(np.sum(flow * (volts[network.a] - volts[network.b])) - source_W[diodes].sum())
-    turnover = max(abs(power_in), power_loads + abs(power_lost))
-    certified = bool(np.all(np.abs(out[live]) <= equations.allowed(volts)[live]))
-    # A network that carries no power balances to the rounding of nothing.
-    certified &= abs(power_in - power_loads - power_lost) <= POWER_SHARE * max(turnover, 1.0)
+    turnover = float(np.abs(source_W).sum() + np.abs(load_W).sum()) + abs(power_lost)
+    allowed = equations.allowed(volts)[live]
+    certified = bool(np.all(np.abs(out[live]) <= allowed))
+    # Where hardly any power flows, the balance is no better than the imbalance that the nodes are allowed.
+    least = float(np.sum(allowed * np.abs(volts[live])))
+    certified &= abs(power_in - power_loads - power_lost) <= max(POWER_SHARE * turnover, least)
     return State(
         solved=share >= 1.0 and certified,
         share_held=min(share, 1.0),

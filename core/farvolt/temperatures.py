@@ -82,7 +82,8 @@ def at(plan: Plan, rulebook: Rulebook, case: Case, mode: Mode) -> Conductors:
     if mode == "basis" or mode == "plan":
         return _basis(plan, rulebook)
     if mode == "hot":
-        degC = [insulation_degC(run, rulebook) for run in plan.runs]
+        # A case may state an ambient above the rating: then the cable is at least as hot as that.
+        degC = [max(insulation_degC(run, rulebook), run_ambient_degC(plan, run, case)) for run in plan.runs]
         return _from_temperatures(plan, degC, "hot, at the insulation's rating")
     degC = [run_ambient_degC(plan, run, case) for run in plan.runs]
     return _from_temperatures(plan, degC, "cold, at ambient")
