@@ -122,3 +122,10 @@ def test_without_a_screen_no_browser_takes_over_the_terminal(monkeypatch: pytest
     monkeypatch.setattr(sys, "platform", "linux")
     monkeypatch.setattr("webbrowser.open", lambda _url: pytest.fail("a browser was opened"))
     assert server._open("http://127.0.0.1:1") is False
+
+
+def test_starting_the_pages_waits_for_no_heavy_library() -> None:
+    heavy = "[name for name in ('numpy', 'pydantic', 'streamlit') if name in sys.modules]"
+    code = f"import sys; import farvolt_app.server; print({heavy})"
+    found = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    assert found.stdout.strip() == "[]"

@@ -13,6 +13,7 @@ from farvolt.study import study
 from farvolt_app import case_grid, columns, draft, edits, keep, shown, tables
 from farvolt_app.columns import Sheet
 from farvolt_app.edits import Set
+from farvolt_app.server import FOLDER_VARIABLE
 
 VAN = examples.text("instrument-repair-van")
 TEXTS = {name: examples.text(name) for name in examples.names()} | {"starter": examples.starter_text()}
@@ -266,7 +267,7 @@ def test_plain_text_is_shown_as_it_is_by_a_page_that_reads_markdown(text: str) -
 def test_a_kept_draft_comes_back_with_its_text_faults_file_and_last_results(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    monkeypatch.setenv(keep.FOLDER_VARIABLE, str(tmp_path))
+    monkeypatch.setenv(FOLDER_VARIABLE, str(tmp_path))
     file = tmp_path / "van.toml"
     faulty = edits.apply(VAN, [Set("runs", 7, ("length",), "9")])
     before = draft.begin(VAN).save(file).edit(faulty)
@@ -281,14 +282,14 @@ def test_a_kept_draft_comes_back_with_its_text_faults_file_and_last_results(
 
 @pytest.mark.parametrize("name", ["", "../../etc/passwd", "a" * 31, "A" * 32, "0" * 32])
 def test_no_other_file_can_be_had_by_a_name(name: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setenv(keep.FOLDER_VARIABLE, str(tmp_path))
+    monkeypatch.setenv(FOLDER_VARIABLE, str(tmp_path))
     assert keep.kept(name) is None
     (tmp_path / f"{'0' * 32}.json").write_text("{")
     assert keep.kept("0" * 32) is None
 
 
 def test_without_a_folder_nothing_is_kept(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.delenv(keep.FOLDER_VARIABLE, raising=False)
+    monkeypatch.delenv(FOLDER_VARIABLE, raising=False)
     name = keep.new_name()
     keep.keep(name, draft.begin(VAN))
     assert keep.kept(name) is None

@@ -16,9 +16,7 @@ from farvolt import planfile
 from farvolt.errors import PlanError
 from farvolt_app import draft as drafts
 from farvolt_app.draft import Draft
-
-FOLDER_VARIABLE = "FARVOLT_DRAFTS"
-"""Environment variable with the folder of kept drafts; the command makes it, and removes it at its end."""
+from farvolt_app.server import FOLDER_VARIABLE
 
 _NAME = re.compile(r"[0-9a-f]{32}")
 

@@ -16,10 +16,12 @@ from pathlib import Path
 from types import FrameType
 
 from farvolt.errors import FarvoltError
-from farvolt_app.keep import FOLDER_VARIABLE
 
 PLAN_VARIABLE = "FARVOLT_PLAN"
 """Environment variable that carries the path of the plan to the pages."""
+
+FOLDER_VARIABLE = "FARVOLT_DRAFTS"
+"""Environment variable with the folder where the pages keep drafts until the command ends and removes it."""
 
 ENTRY = Path(__file__).parent / "pages" / "entry.py"
 WAIT_SECONDS = 60

@@ -10,7 +10,7 @@ from farvolt.errors import FarvoltError
 from farvolt_app import draft as drafts
 from farvolt_app import keep
 from farvolt_app.draft import Draft
-from farvolt_app.server import PLAN_VARIABLE
+from farvolt_app.server import FOLDER_VARIABLE, PLAN_VARIABLE
 
 FIRST_EXAMPLE = "instrument-repair-van"
 ADDRESS_FIELD = "draft"
@@ -38,7 +38,7 @@ def begin() -> None:
 
 def mark_address() -> None:
     """Let the page's address carry the name its draft is kept under, for when it is loaded again."""
-    if os.environ.get(keep.FOLDER_VARIABLE) and st.query_params.get(ADDRESS_FIELD) != st.session_state["kept_as"]:
+    if os.environ.get(FOLDER_VARIABLE) and st.query_params.get(ADDRESS_FIELD) != st.session_state["kept_as"]:
         st.query_params[ADDRESS_FIELD] = st.session_state["kept_as"]
 
 
