@@ -1,12 +1,15 @@
 """Protection by section: for every conductor and every source that can feed it, the nearest protection on the way.
 
 The walk starts at each source with all devices closed and goes outward through the feed conductors. What it
-carries along is the last protection passed and the length from the source or tap. A return conductor of its own
+carries along is the last protection passed and the length from the source or tap. In dense meshes it may also follow
+a way that would have to pass a point twice: it names too much there, never too little. A return conductor of its own
 is judged by the protection of the circuits that return through it.
 """
 
+from bisect import bisect
 from collections import deque
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
+from functools import cached_property
 
 from farvolt.network import Network
 from farvolt.plan import CHASSIS, Converter, Plan, Protection, Run
@@ -62,8 +65,8 @@ class Sections:
     """Return conductors of their own, by run: (source, protection of a circuit that returns through it)."""
 
 
-_Carried = dict[int, dict[Guard | None, None]]
-"""Node to the protections last passed on the ways to it, as an ordered set."""
+_Carried = dict[int, dict[tuple[Guard | None, int], None]]
+"""Node to (protection last passed, node it was reached from) on the ways to it, as an ordered set."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -81,6 +84,8 @@ class _Feeds:
     plan: Plan
     edges: dict[int, list[_Edge]]
     guards: dict[tuple[int, str], Guard]
+    bare: dict[int, int]
+    """Node to the number of devices, and of runs without protection there, that leave it."""
     drawn: set[int]
     """Nodes at which a load or a converter's input stands, without protection in between."""
 
@@ -95,10 +100,9 @@ class _Feeds:
         far = self.far(edge)
         if far is not None:
             return (far,)
-        onward = [other for other in self.edges[edge.other] if other.run != edge.run]
-        if edge.other in self.drawn or any(other.run < 0 or self.near(other) is None for other in onward):
+        if edge.other in self.drawn or self.bare[edge.other] > 1:  # this run itself leaves there without protection
             return ()
-        return tuple(guard for other in onward if (guard := self.near(other)) is not None)
+        return tuple(guard for other in self.edges[edge.other] if (guard := self.near(other)) is not None)
 
 
 def sections(network: Network) -> Sections:
@@ -130,7 +134,8 @@ def _feeds(network: Network) -> _Feeds:
             edges.setdefault(b, []).append(_Edge(-1, a, "to"))
     drawn = {network.feed(load.at) for load in plan.loads}
     drawn |= {network.feed(source.from_point) for source in plan.sources if isinstance(source, Converter)}
-    return _Feeds(plan, edges, guards, drawn)
+    bare = {node: sum((edge.run, edge.end) not in guards for edge in leaving) for node, leaving in edges.items()}
+    return _Feeds(plan, edges, guards, bare, drawn)
 
 
 def _lowest(index: int, run: Run) -> list[Guard]:
@@ -142,26 +147,101 @@ def _lowest(index: int, run: Run) -> list[Guard]:
     return [Guard(index, one) for one in lowest.values()]
 
 
+@dataclass(frozen=True, slots=True)
+class _State:
+    """Where a walk stands: behind which protection, over how much cable, by which run it came."""
+
+    node: int
+    guard: Guard | None
+    seat: int
+    """The node from which the protection was reached; the source's own where there is none."""
+    length_m: float
+    came: int
+    direct: bool
+
+
 def _walk(feeds: _Feeds, port: int, start: int, found: Sections) -> _Carried:
     """Fill in the exposures of one source; what protection is carried at each node reached."""
-    carried: _Carried = {start: {None: None}}
-    queue: deque[tuple[int, Guard | None, float, int, bool]] = deque([(start, None, 0.0, -1, True)])
+    carried: _Carried = {start: {(None, start): None}}
+    cuts = _Cuts(feeds, start)
+    queue = deque([_State(start, None, start, 0.0, -1, True)])
     while queue:
-        node, guard, length, came, direct = queue.popleft()
-        for edge in feeds.edges.get(node, ()):
-            if edge.run == came and edge.run >= 0:
+        state = queue.popleft()
+        for edge in feeds.edges.get(state.node, ()):
+            if edge.run >= 0 and edge.run == state.came:
                 continue
-            passed, reach = guard, length
-            if edge.run >= 0:
-                exposure = _exposure(feeds, port, edge, guard, length, direct)
-                found.by_run.setdefault(edge.run, []).append(exposure)
-                passed = feeds.far(edge) or exposure.guard
-                reach = length + feeds.plan.runs[edge.run].length.si
-            # A ring is fed from its last run too, but nothing more protected than the source itself leaves the source.
-            if edge.other != start and passed not in carried.setdefault(edge.other, {}):
-                carried[edge.other][passed] = None
-                queue.append((edge.other, passed, reach, edge.run, direct and edge.run < 0))
+            after = _step(feeds, port, edge, state, found)
+            known = carried.setdefault(edge.other, {})
+            key = (after.guard, after.seat)
+            # Current never comes back to a point that it had to pass: a ring behind it protects nothing there.
+            if key not in known and not (known and cuts.parts(edge.other, after.seat)):
+                known[key] = None
+                queue.append(after)
     return carried
+
+
+def _step(feeds: _Feeds, port: int, edge: _Edge, state: _State, found: Sections) -> _State:
+    """Go over an edge: note how a run on it is fed."""
+    if edge.run < 0:
+        return replace(state, node=edge.other, came=-1)
+    exposure = _exposure(feeds, port, edge, state.guard, state.length_m, state.direct)
+    found.by_run.setdefault(edge.run, []).append(exposure)
+    length = state.length_m + feeds.plan.runs[edge.run].length.si
+    passed = feeds.far(edge) or feeds.near(edge)
+    if passed is not None:
+        return _State(edge.other, passed, state.node, length, edge.run, False)
+    return _State(edge.other, state.guard, state.seat, length, edge.run, False)
+
+
+class _Cuts:
+    """Points that part the network: whether everything from the source to a node has to pass another.
+
+    By depth-first search: what lies below a child of x is parted by x if nothing there leads back above x.
+    Worked out only when a node is reached for a second time, as in a ring.
+    """
+
+    def __init__(self, feeds: _Feeds, start: int) -> None:
+        self._feeds, self._start = feeds, start
+
+    def parts(self, x: int, node: int) -> bool:
+        """Whether every way from the source to `node` passes `x`; so it is where they are the same."""
+        if x in (node, self._start):
+            return True
+        entered, low, children = self._search
+        below = children.get(x, [])
+        place = bisect([entered[child] for child in below], entered[node]) - 1
+        if place < 0 or entered[node] > self._last[below[place]]:
+            return False
+        return low[below[place]] >= entered[x]
+
+    @cached_property
+    def _search(self) -> tuple[dict[int, int], dict[int, int], dict[int, list[int]]]:
+        """Order of entry, lowest entry led back to, and children in the search tree, by node."""
+        entered, low, children = {self._start: 0}, {self._start: 0}, dict[int, list[int]]()
+        stack = [(self._start, self._start, iter(self._feeds.edges.get(self._start, ())))]
+        while stack:
+            node, parent, edges = stack[-1]
+            edge = next(edges, None)
+            if edge is None:
+                stack.pop()
+                low[parent] = min(low[parent], low[node])
+            elif edge.other not in entered:
+                entered[edge.other] = low[edge.other] = len(entered)
+                children.setdefault(node, []).append(edge.other)
+                stack.append((edge.other, node, iter(self._feeds.edges[edge.other])))
+            elif edge.other != parent:
+                low[node] = min(low[node], entered[edge.other])
+        return entered, low, children
+
+    @cached_property
+    def _last(self) -> dict[int, int]:
+        """By node, the last order of entry of all that lies below it."""
+        entered, _, children = self._search
+        last = dict(entered)
+        for node in sorted(entered, key=lambda one: -entered[one]):
+            for child in children.get(node, ()):
+                last[node] = max(last[node], last[child])
+        return last
 
 
 def _exposure(
@@ -182,7 +262,7 @@ def _returns(network: Network, port: int, start: int, carried: _Carried, found: 
     plan = network.plan
     highest: dict[int, Guard] = {}
     for name in plan.point_names:
-        for guard in carried.get(network.feed(name), ()):
+        for guard, _ in carried.get(network.feed(name), ()):
             _raise(highest, network.ret(name), guard)
     order, parents = _return_tree(network, start)
     for node in reversed(order):
