@@ -120,7 +120,7 @@ def _read_name(value: Any) -> Any:
 def _read_conductor_temperature(value: Any) -> Any:
     if value in _TEMPERATURE_WORDS or isinstance(value, Quantity):
         return value
-    if not isinstance(value, str) or not value[:1].lstrip("+-").isdigit():
+    if not isinstance(value, str) or not re.match(r"\s*[+-]?\.?[0-9]", value):
         accepted = f'{", ".join(_TEMPERATURE_WORDS)}, or a temperature such as "60 degC"'
         raise refusal("is not a known choice", accepted, near(value, *_TEMPERATURE_WORDS))
     return _read_temperature(value)

@@ -84,10 +84,10 @@ def parse(text: str, dimension: str) -> Quantity:
     unit = _SPELLINGS.get(written, written)
     if unit not in units:
         raise _wrong_unit(number, written, dimension)
-    value = float(number)
+    value = _to_base(float(number), unit, units[unit])
     if not math.isfinite(value):
         raise QuantityError("is not a finite number", accepted=_accepted(dimension))
-    return Quantity(_to_base(value, unit, units[unit]), text, dimension)
+    return Quantity(value, text, dimension)
 
 
 def with_unit(number: str, dimension: str) -> str:
