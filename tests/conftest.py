@@ -1,6 +1,12 @@
-"""Puts this folder on the path, so that tests can share modules: pytest's importlib mode leaves it off."""
+"""Puts this folder and its `bench` on the path, so that tests can share modules: importlib mode leaves them off."""
 
+import os
 import sys
 from pathlib import Path
 
-sys.path.insert(0, str(Path(__file__).parent))
+HERE = Path(__file__).parent
+
+sys.path[:0] = [str(HERE), str(HERE / "bench")]
+
+# Threads of the linear algebra library gain nothing on small matrices and wait for each other beside other work.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")

@@ -41,12 +41,46 @@ class Answer:
         return 1.0
 
 
-def netlist(circuit: Circuit, target: str, rise_s: float) -> str:
-    """The circuit as a netlist whose volts are written to the file `target`."""
+def answer(circuit: Circuit, rise_s: float = 2.0) -> Answer:
+    """Run ngspice on a circuit; the longer the rise, the nearer it stays to the volts of each share."""
     end_s = rise_s + REST_S
+    ends = [*circuit.feeders, *circuit.drains, *(one.drain for one in circuit.couplings)]
+    start = _no_load(circuit)
+    rows = _run(circuit, [
+        f"Vshare share 0 PWL(0 0 {rise_s!r} 1 {end_s!r} 1)",
+        *(f"Cport{index} n{one.a} n{one.b} 1m" for index, one in enumerate(ends)),
+        *(f".ic v(n{node})={volts!r}" for node, volts in start.items()),
+    ], f"tran {STEP_S!r} {end_s!r} 0 {STEP_S!r} uic")  # fmt: skip
+    return Answer([row[0] for row in rows], [_by_node(circuit, row) for row in rows], rise_s)
+
+
+def operating_point(circuit: Circuit) -> dict[int, float] | None:
+    """Node volts at once at full load, from a hint; None where it fails. Enough where a battery holds every part."""
+    hints = [f".nodeset v(n{node})={volts!r}" for node, volts in _no_load(circuit).items() if volts]
+    rows = _run(circuit, ["Vshare share 0 1", *hints], "op")
+    return _by_node(circuit, rows[-1]) if rows else None
+
+
+def _by_node(circuit: Circuit, row: list[float]) -> dict[int, float]:
+    return dict(zip(sorted(circuit.live), row[1:], strict=True))
+
+
+def _run(circuit: Circuit, lines: list[str], analysis: str) -> list[list[float]]:
+    """Rows of an analysis: time and the volts of all nodes in order."""
+    names = " ".join(f"v(n{node})" for node in sorted(circuit.live))
+    control = ["set numdgt=16", "set wr_singlescale", analysis, f"wrdata volts.txt {names}", "quit"]
+    deck = ["* a plan", *_elements(circuit), *lines, f".options {OPTIONS}", ".control", *control, ".endc", ".end"]
+    with tempfile.TemporaryDirectory() as folder:
+        Path(folder, "deck.cir").write_text("\n".join(deck) + "\n", encoding="utf-8")
+        subprocess.run(["ngspice", "-b", "deck.cir"], cwd=folder, capture_output=True, timeout=300, check=False)
+        target = Path(folder, "volts.txt")
+        rows = target.read_text(encoding="utf-8").split("\n") if target.exists() else []
+    return [[float(word) for word in row.split()] for row in rows if row.strip()]
+
+
+def _elements(circuit: Circuit) -> list[str]:
     number = count(1)
-    lines = ["* loads raised from zero", f"Vshare share 0 PWL(0 0 {rise_s!r} 1 {end_s!r} 1)"]
-    lines += [f"Vground{min(part)} n{min(part)} 0 0" for part in circuit.parts]
+    lines = [f"Vground{min(part)} n{min(part)} 0 0" for part in circuit.parts]
     lines += [f"R{next(number)} n{one.a} n{one.b} {one.ohm!r}" for one in circuit.resistors]
     for feeder in circuit.feeders:
         lines += _feeder(feeder, next(number))
@@ -55,25 +89,7 @@ def netlist(circuit: Circuit, target: str, rise_s: float) -> str:
     for one in circuit.couplings:
         watts = f"({_u(one.feeder)}*({_amps(one.feeder)})/{one.efficiency!r}+v(share)*{one.standby_W!r})"
         lines.append(_drain(one.drain, watts, next(number)))
-    ends = [*circuit.feeders, *circuit.drains, *(one.drain for one in circuit.couplings)]
-    lines += [f"C{next(number)} n{one.a} n{one.b} 1m" for one in ends]
-    lines += [f".ic v(n{node})={volts!r}" for node, volts in _no_load(circuit).items()]
-    names = " ".join(f"v(n{node})" for node in sorted(circuit.live))
-    run = f"tran {STEP_S!r} {end_s!r} 0 {STEP_S!r} uic"
-    control = ["set numdgt=16", "set wr_singlescale", run, f"wrdata {target} {names}"]
-    return "\n".join([*lines, f".options {OPTIONS}", ".control", *control, "quit", ".endc", ".end"]) + "\n"
-
-
-def answer(circuit: Circuit, rise_s: float = 2.0) -> Answer:
-    """Run ngspice on a circuit; the longer the rise, the nearer it stays to the volts of each share."""
-    with tempfile.TemporaryDirectory() as folder:
-        deck, target = Path(folder, "deck.cir"), Path(folder, "volts.txt")
-        deck.write_text(netlist(circuit, target.name, rise_s), encoding="utf-8")
-        subprocess.run(["ngspice", "-b", deck.name], cwd=folder, capture_output=True, timeout=60, check=False)
-        rows = target.read_text(encoding="utf-8").split("\n") if target.exists() else []
-    values = [[float(word) for word in row.split()] for row in rows if row.strip()]
-    nodes = sorted(circuit.live)
-    return Answer([row[0] for row in values], [dict(zip(nodes, row[1:], strict=True)) for row in values], rise_s)
+    return lines
 
 
 def largest_difference_V(circuit: Circuit, one: dict[int, float], other: dict[int, float]) -> float:

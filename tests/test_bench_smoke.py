@@ -1,0 +1,33 @@
+"""The measurements in `bench` still run, at a small size; how long they take is not judged."""
+
+import shutil
+
+import cold_start
+import file_to_findings
+import network_and_solve
+import pytest
+from grid import grid
+
+
+def test_grid_has_the_runs_asked_for() -> None:
+    for runs in (50, 500):
+        assert len(grid(runs)["runs"]) == runs
+
+
+def test_network_and_solve() -> None:
+    row = network_and_solve.measure(50)
+    assert row["runs"] == 50
+    assert row["imbalance_A"] < 1e-9
+    if shutil.which("ngspice"):
+        assert row["difference_V"] < 1e-6
+
+
+def test_file_to_findings() -> None:
+    row = file_to_findings.measure(50)
+    assert row["runs"] == 50
+    assert row["total_s"] >= row["read_s"] > 0
+
+
+def test_cold_start(capsys: pytest.CaptureFixture[str]) -> None:
+    cold_start.main(1)
+    assert "farvolt check" in capsys.readouterr().out
