@@ -593,3 +593,19 @@ def test_a_length_without_a_limit_is_told_in_words() -> None:
     assert found.remedy == 'a fuse or breaker in the feed at "bank", rated at no more than the 45 A the cable allows'
     followed = [runs[0] | {"protection_to": fuse("15 A")}]
     assert findings(plan_of(followed, [lamp("pump", "pump")]), "protection.missing") == []
+
+
+def test_a_rating_that_is_excused_is_named() -> None:
+    """A cranking cable behind 500 A (2/0 AWG: 330 A), and a charger of 20 A behind 100 A on 10 AWG (60 A)."""
+    runs = [
+        cable("starter", "bank", "starter", "1 m", "2/0 AWG", purpose="cranking",
+              protection=fuse("500 A", kind="open-link strip")),
+        cable("charging", "charger", "bank", "1 m", "10 AWG", protection=fuse("100 A", kind="strip"),
+              protection_to=fuse("30 A")),
+    ]  # fmt: skip
+    plan = us(runs, [lamp("starter", "starter", "200 A")], sources=[bank(), charger()])
+    found = {one.subject: one for one in findings(plan, "protection.over-conductor")}
+    assert {name: one.severity for name, one in found.items()} == {"starter": "note", "charging": "note"}
+    assert "a cranking run is exempt" in found["starter"].message
+    assert "only sources that limit themselves stand behind it" in found["charging"].message
+    assert (found["charging"].value, found["charging"].limit) == (100, pytest.approx(60))

@@ -5,7 +5,7 @@ from collections.abc import Iterator
 
 from farvolt.checks.demand import Demands
 from farvolt.checks.rating import limit_for
-from farvolt.checks.registry import cannot_be_made, check
+from farvolt.checks.registry import cannot_be_made, check, run_finding
 from farvolt.checks.ways import (
     PRACTICE,
     allowed_bare_m,
@@ -20,7 +20,7 @@ from farvolt.checks.ways import (
 from farvolt.context import Context, basis_text, label
 from farvolt.network import FEED
 from farvolt.plan import Charger, Run
-from farvolt.results import Finding, Severity
+from farvolt.results import Finding
 from farvolt.sections import Exposure
 from farvolt.units import number
 
@@ -45,7 +45,7 @@ def _exemption(context: Context, run: Run) -> Finding:
     rule = context.rulebook.protection.exempt
     assert rule is not None
     message = f"{label(run)}: a {run.purpose} run is exempt from protection"
-    return _finding(
+    return run_finding(
         "protection.missing", "note", run, None, None, None, message, basis_text(rule.basis), (rule.text,), None
     )
 
@@ -56,7 +56,7 @@ def _limited(context: Context, run: Run, ways: list[Exposure], ampacity: float) 
     total = sum(limited_A(context, port) or 0.0 for port in ports)
     sources = [context.plan.sources[port] for port in ports]
     stated = all(isinstance(source, Charger) and source.self_limiting for source in sources)
-    return _finding(
+    return run_finding(
         "protection.missing", "note", run, total, ampacity, "A",
         f"{label(run)} has no protection against {' and '.join(parts)}: taken as exempt, the source limits itself",
         f"{PRACTICE}; " + ("the plan states that it does" if stated else "the plan does not state that it does"),
@@ -78,7 +78,7 @@ def _unprotected(context: Context, index: int, ways: list[Exposure], demands: De
     if any(one.pole == "return" for one in run.protections):
         ahead += "; protection in the return does not protect the feed"
     sums = f"{number(worst.before_m)} m before + {number(worst.bare_m)} m = {number(reach_m(worst))} m"
-    return _finding(
+    return run_finding(
         "protection.missing", "fail", run, reach_m(worst), allowed if allowed != math.inf else None, "m",
         f"{label(run)}: nothing protects it where {feeding} feeds it at {places}{ahead}",
         basis_text(rule.basis) if rule else PRACTICE,
@@ -151,7 +151,7 @@ def _distance(context: Context, run: Run, way: Exposure) -> Finding:
     assert allowed is not None
     sheathed_m = rule.sheathed_m if rule.sheathed_m is not None else 0.0
     sheath = ", or a sheath or conduit over the whole of that length" if way.bare_m <= sheathed_m else ""
-    return _finding(
+    return run_finding(
         "protection.distance", "fail", run, way.bare_m, allowed, "m",
         f"{label(run)}: its protection sits {number(way.bare_m)} m along the cable; {number(allowed)} m is allowed",
         basis_text(rule.basis),
@@ -166,11 +166,3 @@ def _unstated(context: Context, count: int) -> Finding:
         f"{count} protection{'s state' if count > 1 else ' states'} no distance: taken to sit at the very end",
         "what the plan leaves open", (), "state the distance of each from its end of the cable",
     )  # fmt: skip
-
-
-def _finding(
-    rule: str, severity: Severity, run: Run, value: float | None, limit: float | None, unit: str | None,
-    message: str, basis: str, working: tuple[str, ...], remedy: str | None,
-) -> Finding:  # fmt: skip
-    shown = tuple(line for line in working if line)
-    return Finding(rule, severity, run.name, "run", None, value, limit, unit, message, basis, shown, remedy)

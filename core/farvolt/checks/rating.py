@@ -1,16 +1,16 @@
-"""The rating of each protection: not above the cables it protects, not below the current it carries."""
+"""The rating of each protection against the cables it protects, sources that join and excuses included."""
 
 from collections.abc import Iterator
 from dataclasses import dataclass
 
 from farvolt.checks.demand import Demands
-from farvolt.checks.registry import apart, cannot_be_made, check
+from farvolt.checks.registry import apart, cannot_be_made, check, run_finding
 from farvolt.checks.ways import PRACTICE, ampacity_A, exempt, failing, limited_A, near_enough, self_limited
 from farvolt.conductors import Size
 from farvolt.context import Context, basis_text, label, larger_sizes
 from farvolt.errors import QuantityError
-from farvolt.network import FEED, RETURN, return_size
-from farvolt.plan import Protection, Run
+from farvolt.network import FEED, return_size
+from farvolt.plan import Run
 from farvolt.protection_types import protection_type
 from farvolt.results import Finding, Severity
 from farvolt.rulebook import SmallConductor
@@ -69,11 +69,17 @@ def over_conductor(context: Context) -> Iterator[Finding]:
     demands = Demands(context)
     for index, run in enumerate(context.plan.runs):
         amps = ampacity_A(context, index)
-        if amps is None or exempt(context, run):
+        if amps is None:
             continue
         ways, limit = _ways(context, index, amps), limit_for(context, run, amps)
-        worst = max(_guards(context, index, ways, amps), key=lambda guard: guard.rating_A, default=None)
-        if worst is not None and worst.rating_A > limit.amps * (1 + 1e-9):
+        guards, excused = _guards(context, index, ways, amps)
+        over = [guard for guard in (*guards, *excused) if guard.rating_A > limit.amps * (1 + 1e-9)]
+        worst = max(guards, key=lambda guard: guard.rating_A, default=None)
+        if over and (exempt(context, run) or worst not in over):
+            yield _excused(context, run, max(over, key=lambda guard: guard.rating_A), limit)
+        if exempt(context, run):
+            continue
+        if worst is not None and worst in over:
             yield _over(context, index, worst, limit, amps, demands)
             continue
         total, parts = _joint(context, run, ways)
@@ -90,16 +96,34 @@ def _ways(context: Context, index: int, ampacity: float) -> list[Exposure]:
     return [one for one in ways if one.end not in unprotected] if unprotected else ways
 
 
-def _guards(context: Context, index: int, ways: list[Exposure], ampacity: float) -> list[Guard]:
-    """The protections that a run depends on, without those behind which only self-limited sources stand."""
+def _guards(
+    context: Context, index: int, ways: list[Exposure], ampacity: float
+) -> tuple[list[Guard], list[Guard]]:
+    """The protections that a run depends on, and those behind which only self-limited sources stand."""
     run, behind = context.plan.runs[index], dict[Guard, list[Exposure]]()
     for one in ways:
         for guard in one.ahead if near_enough(context, run, one) else (one.guard,):
             if guard is not None:
                 behind.setdefault(guard, []).append(one)
-    guards = [guard for guard, ways in behind.items() if not self_limited(context, ways, ampacity)]
+    excused = [guard for guard, ways in behind.items() if self_limited(context, ways, ampacity)]
+    guards = [guard for guard in behind if guard not in excused]
     guards += [guard for port, guard in context.sections.returns.get(index, []) if limited_A(context, port) is None]
-    return guards
+    return guards, excused
+
+
+def _excused(context: Context, run: Run, guard: Guard, limit: Limit) -> Finding:
+    """A rating that nothing is made of, and why."""
+    rule = context.rulebook.protection.exempt
+    if rule is not None and exempt(context, run):
+        why, basis = f"a {run.purpose} run is exempt", basis_text(rule.basis)
+    else:
+        why, basis = "only sources that limit themselves stand behind it", PRACTICE
+    return run_finding(
+        "protection.over-conductor", "note", run, guard.rating_A, limit.amps, "A",
+        f"{label(run)}: the {guard.protection.rating} on {label(context.plan.runs[guard.run])} is above the "
+        f"{number(limit.amps)} A it may carry; {why}",
+        basis, (limit.why, f"{apart(guard.rating_A, limit.amps)} A > {number(limit.amps)} A"), None,
+    )  # fmt: skip
 
 
 def _over(
@@ -117,7 +141,7 @@ def _over(
     compared = f"{apart(guard.rating_A, limit.amps)} A > {number(limit.amps)} A"
     working = (*(found.working if found else ()), limit.why, compared)
     told = (rule.text,) if rule and tolerated else ()
-    return _finding(
+    return run_finding(
         "protection.over-conductor", severity, run, guard.rating_A, limit.amps, "A", message, limit.basis(context),
         (*working, *told), _over_remedy(context, index, guard, limit, demands),
     )  # fmt: skip
@@ -138,10 +162,11 @@ def _tolerated(context: Context, guard: Guard, amps: float, limit_A: float) -> b
 def _standard(context: Context, kind: str) -> tuple[float, ...]:
     """The rulebook's own standard ratings, else those made of a type of protection."""
     standard = context.rulebook.protection.standard_ratings
-    return standard.amps if standard else _made(kind)
+    return standard.amps if standard else made(kind)
 
 
-def _made(kind: str) -> tuple[float, ...]:
+def made(kind: str) -> tuple[float, ...]:
+    """Ratings made of a type of protection, in ampere."""
     try:
         return protection_type(kind).ratings_A
     except QuantityError:
@@ -154,7 +179,7 @@ def _over_remedy(context: Context, index: int, guard: Guard, limit: Limit, deman
     size = size_for_rating(context, index, guard.rating_A)
     thicker = f"{label(run)}: {size.name} may carry {number(guard.rating_A)} A" if size else ""
     demand, _ = demands.worst(guard.run, FEED)
-    lower = max((one for one in _made(guard.protection.type) if demand <= one <= limit.amps), default=None)
+    lower = max((one for one in made(guard.protection.type) if demand <= one <= limit.amps), default=None)
     on = label(context.plan.runs[guard.run])
     less = f"{number(lower)} A instead of {guard.protection.rating} on {on}" if lower else ""
     return "; or ".join(filter(None, (thicker, less))) or "less load on this cable, or its load shared among several"
@@ -203,7 +228,7 @@ def _jointly_over(context: Context, index: int, total: float, parts: list[str], 
     run = context.plan.runs[index]
     size = size_for_rating(context, index, total)
     thicker = f"{label(run)}: {size.name} may carry {number(total)} A; or " if size else ""
-    return _finding(
+    return run_finding(
         "protection.over-conductor", "warn", run, total, ampacity, "A",
         f"{label(run)} is within its ampacity of each source, but together they can feed {number(total)} A into it",
         f"{PRACTICE}: what several sources can feed together counts",
@@ -214,7 +239,7 @@ def _jointly_over(context: Context, index: int, total: float, parts: list[str], 
 
 def _shared(run: Run, guard: Guard, ampacity: float) -> Finding:
     each = ampacity / run.parallel
-    return _finding(
+    return run_finding(
         "protection.over-conductor", "note", run, guard.rating_A, each, "A",
         f"{label(run)}: one protection of {guard.protection.rating} for {run.parallel} cables in parallel counts on "
         "equal sharing; where one comes loose, the others carry it all without protection",
@@ -222,74 +247,3 @@ def _shared(run: Run, guard: Guard, ampacity: float) -> Finding:
         (f"{number(ampacity)} A / {run.parallel} = {number(each)} A in each cable",),
         "equal cables and lugs, checked for equal current under load; or a protection in each cable",
     )  # fmt: skip
-
-
-@check("protection.under-load", title="Rating of each protection against the load it carries", reads=("protection",))
-def under_load(context: Context) -> Iterator[Finding]:
-    """Protection rated below its current; continuous loads with the rulebook's factor."""
-    if context.rulebook.protection.continuous is None and any(load.continuous for load in context.plan.loads):
-        what = "a factor on continuous loads; they are counted once"
-        yield cannot_be_made(context, "protection.under-load", "continuous", what)
-    demands, behind = Demands(context), _behind(context)
-    for index, run in enumerate(context.plan.runs):
-        for one in run.protections:
-            demand, case = demands.worst(index, FEED if one.pole == "feed" else RETURN)
-            if demand > one.rating.si * (1 + 1e-9):
-                remedy = _rating_for(context, behind[id(one)], one, demand)
-                yield _under(context, index, one, (demand, case), demands, remedy)
-
-
-def _under(
-    context: Context, index: int, one: Protection, worst: tuple[float, int], demands: Demands, remedy: str
-) -> Finding:
-    run, pole, (demand, case) = context.plan.runs[index], FEED if one.pole == "feed" else RETURN, worst
-    amps, lasting = float(demands.amps[pole, case, index]), float(demands.continuous[pole, case, index])
-    rule, factor = context.rulebook.protection.continuous, demands.factor
-    counted = demand > amps * (1 + 1e-9)
-    told = number(amps) if counted else apart(amps, one.rating.si)
-    working = f"{number(amps, 4)} A"
-    if counted:
-        working += f", of which {number(lasting, 4)} A continuous: {number(amps - lasting, 4)} + {number(factor)} x "
-        working += f"{number(lasting, 4)} = {number(demand, 4)} A"
-    return _finding(
-        "protection.under-load", "fail", run, demand, one.rating.si, "A",
-        f"{label(run)}: its {one.rating} {one.type} carries {told} A"
-        + (f", to be counted as {apart(demand, one.rating.si)} A" if counted else ""),
-        basis_text(rule.basis) if rule and counted else f"{PRACTICE}: a protection carries its load without opening",
-        (f"{working}; conductors {context.cases[case].solutions['hot'].conductors.text}",
-         f"{apart(demand, one.rating.si, 4)} A > {number(one.rating.si, 4)} A"),
-        remedy, context.cases[case].name,
-    )  # fmt: skip
-
-
-def _rating_for(context: Context, behind: list[int], one: Protection, demand: float) -> str:
-    """A rating that carries the load and that every cable behind it allows; else what stands in the way."""
-    rating = min((made for made in _made(one.type) if made >= demand), default=None)
-    if rating is None:
-        return f"no {one.type} is made for {number(demand)} A: another type of protection, or the load on two circuits"
-    for index in behind:
-        run, amps = context.plan.runs[index], ampacity_A(context, index)
-        if not exempt(context, run) and (amps is None or limit_for(context, run, amps).amps < rating):
-            size = size_for_rating(context, index, rating)
-            cable = f"{label(run)}: {size.name}" if size else f"{label(run)}: a thicker cable"
-            return f"{cable}, which may carry it, and then a rating of {number(rating)} A"
-    return f"a rating of {number(rating)} A, which the cable may carry"
-
-
-def _behind(context: Context) -> dict[int, list[int]]:
-    """By the identity of a protection, the runs it protects: up to the next protection, returns included."""
-    found: dict[int, dict[int, None]] = {}
-    for index, run in enumerate(context.plan.runs):
-        guards = [one.guard for one in context.sections.by_run.get(index, []) if one.guard is not None]
-        guards += [guard for _, guard in context.sections.returns.get(index, [])]
-        for protection in (*run.protections, *(guard.protection for guard in guards)):
-            found.setdefault(id(protection), {})[index] = None
-    return {key: list(runs) for key, runs in found.items()}
-
-
-def _finding(
-    rule: str, severity: Severity, run: Run, value: float | None, limit: float | None, unit: str | None,
-    message: str, basis: str, working: tuple[str, ...], remedy: str | None, case: str | None = None,
-) -> Finding:  # fmt: skip
-    shown = tuple(line for line in working if line)
-    return Finding(rule, severity, run.name, "run", case, value, limit, unit, message, basis, shown, remedy)

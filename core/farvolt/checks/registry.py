@@ -4,6 +4,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 from farvolt.context import Context
+from farvolt.plan import Run
 from farvolt.results import Finding, Severity
 from farvolt.units import number
 
@@ -43,6 +44,15 @@ def cannot_be_made(context: Context, rule: str, entry: str, what: str, severity:
         f'Not checked: {what}. The rulebook "{book.name}" has no entry "{entry}"', book.title,
         (f"{entry}: {reason}",), "judge it by hand, or add the entry to a rulebook of your own",
     )  # fmt: skip
+
+
+def run_finding(
+    rule: str, severity: Severity, run: Run, value: float | None, limit: float | None, unit: str | None,
+    message: str, basis: str, working: tuple[str, ...], remedy: str | None, case: str | None = None,
+) -> Finding:  # fmt: skip
+    """A finding on a run."""
+    shown = tuple(line for line in working if line)
+    return Finding(rule, severity, run.name, "run", case, value, limit, unit, message, basis, shown, remedy)
 
 
 def apart(value: float, limit: float, digits: int = 3) -> str:
