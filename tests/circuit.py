@@ -176,13 +176,17 @@ def _device_conductors(device: Device) -> list[tuple[Pin, Pin, float]]:
 
 
 def _bond_starts(plan: Plan, found: list[tuple[Pin, Pin, float]]) -> None:
-    """Where the return of a run's start has no other way to the chassis, it is bonded to it."""
+    """Where the return of a run's start has no other way to the chassis, its source is bonded to it."""
     pins = _numbered(plan)
     for run in plan.runs:
         if run.return_path == "chassis":
             part = connected(pins.values(), ((pins[a], pins[b]) for a, b, _ in found))
-            if part[pins[run.from_point, "-"]] != part[pins["chassis", "-"]]:
-                found.append(((run.from_point, "-"), ("chassis", "-"), plan.plan.chassis_bond.si))
+            start = part[pins[run.from_point, "-"]]
+            if start != part[pins["chassis", "-"]]:
+                reference = [source for source in plan.sources if source.name == plan.reference]
+                sources = [one.at for one in (*reference, *plan.sources) if part[pins[one.at, "-"]] == start]
+                at = (*sources, run.from_point)[0]
+                found.append(((at, "-"), ("chassis", "-"), plan.plan.chassis_bond.si))
 
 
 def _run_ohm(run: Run) -> dict[str, float]:
