@@ -97,7 +97,7 @@ def examine(text: str, path: Path | None) -> tuple[Study | None, tuple[Fault, ..
     """The study of a text, or what keeps it from having one."""
     folder = path.parent if path else None
     try:
-        return study(planfile.parse(text), folder), ()
+        return study(planfile.parse(text), folder, margins=False), ()
     except PlanError as error:
         return None, tuple(error.faults)
     except FarvoltError as error:

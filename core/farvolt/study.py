@@ -27,8 +27,10 @@ MARGIN_RUNS = 400
 """Margins take some thirty solutions each; they are worked out for plans of up to this many runs."""
 
 
-def study(plan: Plan, folder: Path | None = None) -> Study:
+def study(plan: Plan, folder: Path | None = None, *, margins: bool = True) -> Study:
     """Solve and check a plan; `folder` is where a rulebook of the user's own is looked for.
+
+    Without `margins` each case's margin is None, for a view that does not show it: they take longer than all the rest.
 
     Raises RulebookError, and PlanError where the plan names what its rulebook or the tables do not have.
     """
@@ -39,7 +41,7 @@ def study(plan: Plan, folder: Path | None = None) -> Study:
     context = build_context(plan, rulebook)
     # The study keeps the plan as it was written; interim sizes are the context's.
     results = tuple(
-        one.solutions["plan"].result(_margin(one), [found.amps if found else None for found in one.ampacities])
+        one.solutions["plan"].result(_margin(one) if margins else None, [found.amps if found else None for found in one.ampacities])
         for one in context.cases
     )
     return Study(
