@@ -75,7 +75,7 @@ def parse(text: str, source: str = "") -> Plan:
         raise _whole_file(source, "the file is empty", 'a plan; "farvolt new FILE" writes one to start from')
     try:
         raw = tomllib.loads(text)
-    except (ValueError, RecursionError) as error:  # a date or a number may be wrong in itself: a bare ValueError
+    except (ValueError, RecursionError) as error:  # a number too long for Python is a bare ValueError
         raise PlanError([_clean(translate.syntax(error, text))], source) from None
     wrong_format = translate.wrong_format(raw)
     if wrong_format:

@@ -27,12 +27,12 @@ def syntax(error: Exception, text: str) -> Fault:
     if match is None:
         too_long = re.search(r"[0-9_]{4000}", text)
         line = text.count("\n", 0, too_long.start()) + 1 if too_long else None
-        return Fault("", "", "", "a number or a date cannot be read", _ACCEPTED_VALUES, line=line)
+        return Fault("", "", "", "a number is too long to be read", _ACCEPTED_VALUES, line=line)
     reason = re.sub(r"\('(.*)',?\)", r'"\1"', match.group(1)).replace("', '", ".")
     rows = text.split("\n")
     number = int(match.group(2)) if match.group(2) else len(text.rstrip().split("\n"))
     row = rows[number - 1].strip()
-    nearest = _quoted(row) if reason in _TOML_WORDS else ""
+    nearest = _quoted(row)
     accepted = _ACCEPTED_VALUES if nearest or reason == "Invalid value" else ""
     problem = f"this is not valid TOML: {_TOML_WORDS.get(reason, reason)}"
     return Fault("", "", integrity.shorten(row), problem, accepted, nearest, number)
