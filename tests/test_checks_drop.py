@@ -69,7 +69,25 @@ def test_no_cable_is_offered_where_the_resistance_was_measured() -> None:
     plan = plan_of(runs, [lamp("nav light", "nav", "10 A", **{"class": "critical"})])
     remedy = only(plan, "drop.load", "nav light").remedy
     assert remedy is not None
-    assert remedy.startswith("no cable on the way brings this within the limit")
+    assert remedy.startswith("no thicker cable on the way is enough: none states a size of its own")
+
+
+def test_what_no_cable_cures_is_told() -> None:
+    """A switch of 40 mohm: 10 A x 40 mohm = 0.4 V = 3.33 % by itself, whatever the cable."""
+    devices = [{"name": "switch", "kind": "switch", "from": "bank", "to": "stud", "resistance": "40 mohm"}]
+    runs = [cable("feed", "stud", "nav", "1 m", "4 mm2", protection=fuse("15 A"))]
+    plan = plan_of(runs, [lamp("nav light", "nav", "10 A", **{"class": "critical"})], devices=devices)
+    remedy = only(plan, "drop.load", "nav light").remedy
+    assert remedy is not None
+    assert "protection, joints, devices and other cables alone make it 3.33 %" in remedy
+
+
+def test_sizes_that_are_made_may_not_be_enough() -> None:
+    runs = [cable("feed", "bank", "nav", "150 m", "120 mm2", protection=fuse("30 A"))]
+    plan = plan_of(runs, [lamp("nav light", "nav", "20 A", **{"class": "critical"})])
+    remedy = only(plan, "drop.load", "nav light").remedy
+    assert remedy is not None
+    assert "sizes that are made still leave too much" in remedy
 
 
 def test_published_two_wire_drop() -> None:
@@ -174,6 +192,16 @@ def test_a_return_of_its_own_size_does_not_grow_with_the_run() -> None:
     assert found.value == pytest.approx(100 * 10 * 5 * (4.95 + 13.3) / 1000 / 12)
     assert found.remedy is not None
     assert named_sizes(found.remedy) == {}
+
+
+def test_in_a_large_plan_remedies_are_estimates_and_say_so() -> None:
+    """More than 300 runs: the size is estimated at the currents found, with something to spare, and still holds."""
+    runs = [cable("feed", "bank", "galley", "5 m", "4 mm2", protection=fuse("15 A"))]
+    runs += [cable(f"spare {index}", "bank", f"end {index}", protection=fuse("15 A")) for index in range(300)]
+    plan = plan_of(runs, [lamp("fridge", "galley", "10 A", **{"class": "critical"})])
+    remedy = only(plan, "drop.load", "fridge").remedy
+    assert remedy == '"feed": 6 mm2 brings this to about 2.75 %'
+    assert findings(resized(plan, named_sizes(remedy)), "drop.load") == []
 
 
 TREES = Wishes(limited_sources=False, converters=0.0, load_share=0.25)

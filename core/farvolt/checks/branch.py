@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from farvolt.checks.drop import RULED_OUT, drop_class, line, loads_on, over_limit
+from farvolt.checks.drop import drop_class, line, loads_on, over_limit
 from farvolt.checks.enlarge import Aim, Remedies
 from farvolt.checks.registry import apart, check
 from farvolt.context import Context
@@ -125,8 +125,8 @@ def _finding(context: Context, found: list[tuple[float, int, _Branch]], remedies
         branch.load, "basis", case, tuple(one for _, one, _ in found), (*branch.feed, *branch.back(solution)),
         branch.percent, limit, -100 / nominal, "%",
     )  # fmt: skip
-    remedy = remedies.for_load(aim) or RULED_OUT
-    return over_limit(context, "drop.branch", aim, percent, message, tuple(_working(solution, branch)), remedy)
+    shown = tuple(_working(solution, branch))
+    return over_limit(context, "drop.branch", aim, percent, message, shown, remedies.for_load(aim))
 
 
 def _working(solution: Solution, branch: _Branch) -> Iterator[str]:

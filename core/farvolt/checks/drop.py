@@ -13,8 +13,6 @@ from farvolt.rulebook import DropClass
 from farvolt.solution import Solution, Step
 from farvolt.units import number
 
-RULED_OUT = "no cable on the way brings this within the limit: shorten the way, draw less, or raise the system voltage"
-
 
 def drop_class(context: Context, load: int) -> DropClass:
     """The rulebook's class of a load."""
@@ -65,19 +63,12 @@ def _to_load(context: Context, load: int, worst: int, over: Sequence[int], remed
         f'"{name}" loses {apart(value, rule.limit_percent)} % of {number(nominal)} V on the way; '
         f'{number(rule.limit_percent)} % is the limit of the class "{rule.name}"'
     )
-    way = solution.way(load)
     aim = Aim(
-        load, "basis", worst, tuple(over), way, lambda found: percent(found, load), rule.limit_percent,
+        load, "basis", worst, tuple(over), solution.way(load), lambda found: percent(found, load), rule.limit_percent,
         -100 / nominal, "%",
     )  # fmt: skip
-    remedy = remedies.for_load(aim) or f"{RULED_OUT}; {_rest(way, nominal)}"
-    return over_limit(context, "drop.load", aim, value, message, tuple(working(one, solution, load)), remedy)
-
-
-def _rest(way: Sequence[Step], nominal: float) -> str:
-    """What of a drop no thicker cable takes away."""
-    rest = sum(step.drop_V for step in way if step.kind != "run")
-    return f"devices and bonds on it take {number(100 * rest / nominal)} %, protection and joints some more"
+    shown = tuple(working(one, solution, load))
+    return over_limit(context, "drop.load", aim, value, message, shown, remedies.for_load(aim))
 
 
 def over_limit(

@@ -16,8 +16,10 @@ _TRIES = 4
 
 _MOST_STEPS = 60
 
-_CAUTION = 0.97
-"""An estimate that is not tried on the network must stay this far within the limit."""
+_OTHERWISE = "shorten the way, draw less, or raise the system voltage"
+
+_CAUTION = 0.1
+"""An estimate that is not tried on the network must better the value by this much more than is needed."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -37,10 +39,9 @@ class Aim:
     """Change of the value with each volt saved on the way: negative where less is better."""
     unit: str
 
-    def met(self, value: float, caution: float = 1.0) -> bool:
-        """Whether a value is within the limit; caution below 1 asks for a little more."""
-        gap = (self.limit - value) * (1 if self.per_volt < 0 else -1)
-        return gap >= (1 - caution) * abs(self.limit) - 1e-9
+    def met(self, value: float, spare: float = 0.0) -> bool:
+        """Whether a value is within the limit with something to spare."""
+        return (self.limit - value) * (1 if self.per_volt < 0 else -1) >= spare - 1e-9
 
 
 @dataclass(slots=True)
@@ -48,37 +49,49 @@ class Remedies:
     """Finds remedies for one check; so many of them are tried on the network, the rest estimated."""
 
     context: Context
-    trials: int = field(default=20)
+    trials: int = field(default=12)
 
-    def for_load(self, aim: Aim) -> str | None:
-        """The cheapest single cable, else the fewest steps of several, that bring the value within its limit."""
+    def for_load(self, aim: Aim) -> str:
+        """The cheapest single cable, else the fewest steps of several, that bring the value within its limit; where
+        no cable does, what stands in the way."""
+        return self._found(aim) or self._ruled_out(aim)
+
+    def _ruled_out(self, aim: Aim) -> str:
+        way = _Way(self.context, aim)
+        bare = way.start + aim.per_volt * sum(way.cable_V.values())
+        why = f"sizes that are made still leave too much; {_OTHERWISE}"
+        if not way.cable_V:
+            why = f"none states a size of its own; {_OTHERWISE}"
+        elif not aim.met(bare):
+            rest = f"protection, joints, devices and other cables alone make it {_number(bare, aim)} {aim.unit}"
+            why = f"{rest}; fewer or better ones of these, or less load"
+        return f"no thicker cable on the way is enough: {why}"
+
+    def _found(self, aim: Aim) -> str | None:
         exact = self.context.remedies_are_exact and self.trials > 0
         self.trials -= 1
         way = _Way(self.context, aim)
         for run in way.by_copper():
-            found = self._settle(aim, way, {run: way.enough(run)}, (run,), exact)
+            found = self._settle(aim, way, {run: way.enough(run)}, exact)
             if found is not None:
                 return found
         several = way.several()
-        return self._settle(aim, way, several, tuple(several), exact) if several else None
+        return self._settle(aim, way, several, exact) if several else None
 
-    def _settle(
-        self, aim: Aim, way: "_Way", sizes: dict[int, Size | None], growing: tuple[int, ...], exact: bool
-    ) -> str | None:
+    def _settle(self, aim: Aim, way: "_Way", sizes: dict[int, Size | None], exact: bool) -> str | None:
         """Sizes that hold on the network, from estimated ones upward; None where none do."""
         for _ in range(_TRIES):
             chosen = {run: size for run, size in sizes.items() if size is not None}
             if len(chosen) < len(sizes):
                 return None
-            if not exact:
-                value = way.estimate(chosen)
-                about = f"about {_number(value, aim)}"
-                return _told(self.context, chosen, about, aim) if aim.met(value, _CAUTION) else None
-            values = [aim.value(self._resolved(aim, chosen, case)) for case in aim.cases]
-            if all(aim.met(value) for value in values):
-                worst = max(values) if aim.per_volt < 0 else min(values)
-                return _told(self.context, chosen, _number(worst, aim), aim)
-            sizes = {run: _next(size) if run in growing else size for run, size in chosen.items()}
+            if exact:
+                values = [aim.value(self._resolved(aim, chosen, case)) for case in aim.cases]
+                worst, spare = max(values) if aim.per_volt < 0 else min(values), 0.0
+            else:
+                worst, spare = way.estimate(chosen), _CAUTION * abs(way.start - aim.limit)
+            if aim.met(worst, spare):
+                return _told(self.context, chosen, ("" if exact else "about ") + _number(worst, aim), aim)
+            sizes = {run: _next(size) for run, size in chosen.items()}
         return None
 
     def _resolved(self, aim: Aim, sizes: dict[int, Size], case: int) -> Solution:
