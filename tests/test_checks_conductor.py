@@ -26,9 +26,7 @@ from wiring import (
 )
 
 
-def loaded(
-    amps: str, size: str = "10 AWG", book: str = "small-craft-us", length: str = "2 m", **more: Any
-) -> Plan:
+def loaded(amps: str, size: str = "10 AWG", book: str = "small-craft-us", length: str = "2 m", **more: Any) -> Plan:
     """One fused cable with a constant current."""
     runs = [cable("feed", "bank", "pump", length, size, protection=fuse("200 A", kind="strip"), **more)]
     tables = {

@@ -185,9 +185,7 @@ def test_several_cables_where_no_single_one_is_enough() -> None:
 
 def test_a_return_of_its_own_size_does_not_grow_with_the_run() -> None:
     """Feed 5 m x 4.95, return 5 m x 13.3 mohm/m: the return alone drops 0.665 V = 5.5 %; no feed size cures it."""
-    runs = [
-        cable("feed", "bank", "lamp", "5 m", "4 mm2", protection=fuse("10 A"), **{"return": {"size": "1.5 mm2"}})
-    ]
+    runs = [cable("feed", "bank", "lamp", "5 m", "4 mm2", protection=fuse("10 A"), **{"return": {"size": "1.5 mm2"}})]
     found = only(plan_of(runs, [lamp("lamp", "lamp", "10 A", **{"class": "critical"})]), "drop.load", "lamp")
     assert found.value == pytest.approx(100 * 10 * 5 * (4.95 + 13.3) / 1000 / 12)
     assert found.remedy is not None

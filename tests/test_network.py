@@ -155,9 +155,7 @@ def test_a_converter_joins_the_returns_unless_it_is_isolated(isolated: bool) -> 
     assert network.pole.tolist() == ([] if isolated else [BOND])
 
 
-@pytest.mark.parametrize(
-    ("take_off", "count"), [("ends", 4), ("same end", 4), ("bar", 6)]
-)
+@pytest.mark.parametrize(("take_off", "count"), [("ends", 4), ("same end", 4), ("bar", 6)])
 def test_strings_stand_apart_where_their_link_cables_are_stated(take_off: str, count: int) -> None:
     """Three strings: two links in each pole between neighbours, or three cables in each pole to a bar."""
     link = {"length": "0.3 m", "size": "10 mm2"}

@@ -32,9 +32,7 @@ def factor(degC: float) -> float:
     return 1 + COPPER_PER_K * (degC - 20)
 
 
-@pytest.mark.parametrize(
-    ("rulebook", "degC"), [("small-craft-us", 29), ("small-craft-iso", 20), ("cabin-nec", 75)]
-)
+@pytest.mark.parametrize(("rulebook", "degC"), [("small-craft-us", 29), ("small-craft-iso", 20), ("cabin-nec", 75)])
 def test_basis_is_the_rulebooks_temperature(rulebook: str, degC: float) -> None:
     """E-11: K = 10.75 ohm cmil/ft is copper at 29 degC; NEC: K = 12.9 is copper at 75 degC."""
     found = at(plan(rulebook), "basis")

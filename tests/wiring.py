@@ -122,6 +122,7 @@ def resized(plan: Plan, sizes: Mapping[str, str]) -> Plan:
 
 def rerated(plan: Plan, run: str, amps: float) -> Plan:
     """The plan with another rating for the single protection of a run."""
+
     def changed(one: Any) -> Any:
         if one.name != run:
             return one

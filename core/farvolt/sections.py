@@ -244,9 +244,7 @@ class _Cuts:
         return last
 
 
-def _exposure(
-    feeds: _Feeds, port: int, edge: _Edge, upstream: Guard | None, length: float, direct: bool
-) -> Exposure:
+def _exposure(feeds: _Feeds, port: int, edge: _Edge, upstream: Guard | None, length: float, direct: bool) -> Exposure:
     near, far = feeds.near(edge), feeds.far(edge)
     bare = feeds.plan.runs[edge.run].length.si
     if near is not None:

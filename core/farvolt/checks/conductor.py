@@ -96,9 +96,7 @@ def _large_enough(context: Context, index: int, over: list[int], currents: Float
 
 def _ampacity_with(context: Context, run: Run, size: Size, case: int) -> float:
     changed = run.model_copy(update={"size": size})
-    found = run_ampacity(
-        context.plan, context.rulebook, changed, context.cases[case].case, context.together[run.name]
-    )
+    found = run_ampacity(context.plan, context.rulebook, changed, context.cases[case].case, context.together[run.name])
     return (found.amps or 0.0) if found is not None else 0.0
 
 

@@ -96,9 +96,7 @@ def _ways(context: Context, index: int, ampacity: float) -> list[Exposure]:
     return [one for one in ways if one.end not in unprotected] if unprotected else ways
 
 
-def _guards(
-    context: Context, index: int, ways: list[Exposure], ampacity: float
-) -> tuple[list[Guard], list[Guard]]:
+def _guards(context: Context, index: int, ways: list[Exposure], ampacity: float) -> tuple[list[Guard], list[Guard]]:
     """The protections that a run depends on, and those behind which only self-limited sources stand."""
     run, behind = context.plan.runs[index], dict[Guard, list[Exposure]]()
     for one in ways:
@@ -126,9 +124,7 @@ def _excused(context: Context, run: Run, guard: Guard, limit: Limit) -> Finding:
     )  # fmt: skip
 
 
-def _over(
-    context: Context, index: int, guard: Guard, limit: Limit, amps: float, demands: Demands
-) -> Finding:
+def _over(context: Context, index: int, guard: Guard, limit: Limit, amps: float, demands: Demands) -> Finding:
     run, rule = context.plan.runs[index], context.rulebook.protection.over_conductor
     where = label(context.plan.runs[guard.run])
     which = f"its own {guard.protection.rating}" if guard.run == index else f"the {guard.protection.rating} on {where}"

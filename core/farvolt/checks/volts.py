@@ -63,9 +63,7 @@ def _thicker(context: Context, load: int, cases: list[int], limit: float, remedi
             source = context.plan.sources[port].name
             told = f'"{source}" itself is at {number(at_source, 4)} V here: no cable cures that'
             return f"{told}; more charge in it, a larger source, or a load that works at less"
-    aim = Aim(
-        load, "hot", cases[0], tuple(cases), way, lambda found: _volts(found, load), limit, 1.0, "V"
-    )
+    aim = Aim(load, "hot", cases[0], tuple(cases), way, lambda found: _volts(found, load), limit, 1.0, "V")
     return remedies.for_load(aim)
 
 
@@ -83,9 +81,7 @@ def _lower(solution: Solution, limit: float) -> str:
     return f"{lower}, a converter before this load, or a load that stands more; thinner cable is no cure"
 
 
-def _finding(
-    context: Context, rule: str, load: int, case: int, volts: float, limit: float, remedy: str
-) -> Finding:
+def _finding(context: Context, rule: str, load: int, case: int, volts: float, limit: float, remedy: str) -> Finding:
     entry, one = context.plan.loads[load], context.cases[case]
     low = rule == "volts.low"
     solution = one.solutions["hot" if low else "cold"]
