@@ -1,11 +1,13 @@
 """The cable schedule as rows: a study's cables, loads, protection and purchases, for a table, a CSV or a workbook.
 
 Full precision; text as in the plan. What a run is bought as (lengths, sizes, colours) stands beside what it is
-solved as (resistances, currents of the case where its drop is largest).
+solved as (resistances, currents of the case where its drop is largest). In the CSV, text that a spreadsheet would
+take for a formula has an apostrophe before it.
 """
 
 import csv
 import io
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -13,18 +15,23 @@ from typing import Any
 from farvolt import conductors, network
 from farvolt.conductors import Size, other_system
 from farvolt.plan import Protection, Run
-from farvolt.results import CaseResult, RunResult, Study
+from farvolt.results import CaseResult, RunResult, Step, Study
 from farvolt.units import feet
+from farvolt_app.textsafe import csv_text
 
 COLOURS = {"feed": "red", "return": "black"}
-"""Colour by polarity where the plan states none (common practice; local codes may ask for others)."""
+"""Colour by polarity where the plan states none (common practice; yellow for the return is common in small craft)."""
 
 NO_NUMBER = "no answer: the case gives way, or it is not fed"
+OFF = "off in every case"
 
 
 @dataclass(frozen=True, slots=True)
 class Conductor:
-    """One pole of a run: `length_m` of one conductor, and its resistance in a part per metre and a fixed part."""
+    """One pole of a run: `length_m` of one conductor, and its resistance in a part per metre and a fixed part.
+
+    `amps` is positive where it adds to the run's drop: in a mesh, feed and return may flow the same way.
+    """
 
     length_m: float
     size: Size | None
@@ -46,8 +53,13 @@ class Cable:
     protection: str
     nominal_V: float
     drop_V: float | None
+    """In the case where it is largest, without sign; the currents of both poles are of that case."""
     loss_W: float | None
+    largest_A: float | None
+    """The largest current in either pole, over all cases."""
     ampacity_A: float | None
+    """The least, over all cases."""
+    conductor_degC: float
     case: str
     interim: bool
     """The size is taken for the time being; the plan states none."""
@@ -58,10 +70,10 @@ class Cable:
         return self.parallel * (self.feed.length_m + self.back.length_m)
 
     @property
-    def amps(self) -> float | None:
-        """The larger of feed and return current."""
-        found = [one.amps for one in (self.feed, self.back) if one.amps is not None]
-        return max(found, default=None)
+    def sizes(self) -> tuple[Size, ...]:
+        """Size of the feed and, where it is another, of the return; none for a cable whose size is not stated."""
+        found = [one.size for one in (self.feed, self.back) if one.length_m and one.size is not None]
+        return tuple(dict.fromkeys(found))
 
 
 def cables(study: Study) -> list[Cable]:
@@ -74,20 +86,26 @@ def _cable(study: Study, index: int, run: Run) -> Cable:
     result = case.runs[index]
     sized = run if run.size is not None else run.model_copy(update={"size": study.interim.get(run.name)})
     feed_m, back_m = network.conductor_lengths_m(run)
-    colour = run.colour or COLOURS["feed"]
+    # A run's drop is I·R of the feed less I·R of the return, both currents counted from `from` to `to`.
+    sign = -1.0 if (result.drop_V or 0.0) < 0 else 1.0
+    feed_A = None if result.feed_A is None else sign * result.feed_A
+    back_A = None if result.return_A is None else -sign * result.return_A
+    # A colour that the plan states is that of the feed, unless the run is a return alone.
+    stated = (None, run.colour) if run.conducts == "return" else (run.colour, None)
+    colours = stated[0] or COLOURS["feed"], stated[1] or COLOURS["return"]
     return Cable(
         run=run,
-        feed=_conductor(sized, "feed", feed_m, sized.size, colour, result.feed_ohm, result.feed_A),
-        back=_conductor(
-            sized, "return", back_m, network.return_size(sized), COLOURS["return"], result.return_ohm, result.return_A
-        ),
+        feed=_conductor(sized, "feed", feed_m, sized.size, colours[0], result.feed_ohm, feed_A),
+        back=_conductor(sized, "return", back_m, network.return_size(sized), colours[1], result.return_ohm, back_A),
         parallel=run.parallel,
         insulation_degC=network.insulation_degC(run, study.rulebook),
         protection="; ".join(_protection_text(run, one) for one in run.protections),
         nominal_V=study.nominal_V.get(run.to_point, study.plan.plan.nominal.si),
         drop_V=None if result.drop_V is None else abs(result.drop_V),
         loss_W=result.loss_W,
+        largest_A=_most(_largest(study, index, "feed"), _largest(study, index, "return")),
         ampacity_A=_least_ampacity(study, index),
+        conductor_degC=result.conductor_degC,
         case=case.name if result.drop_V is not None else NO_NUMBER,
         interim=run.size is None and run.resistance is None,
     )
@@ -97,11 +115,12 @@ def _conductor(
     run: Run, pole: str, length_m: float, size: Size | None, colour: str, ohm: float | None, amps: float | None
 ) -> Conductor:
     """Split a pole's resistance so that `ohm_per_m · length / parallel + fixed` gives it back."""
-    fixed = 0.0
-    if run.resistance is None and ohm is not None:
-        fixed = network.joints_ohm(run) + network.protection_ohm(run, pole) if length_m else ohm
-    per_m = (ohm - fixed) * run.parallel / length_m if ohm is not None and length_m else 0.0
-    return Conductor(length_m, size, colour, per_m, fixed, None if amps is None else abs(amps))
+    if not length_m:  # through the chassis: the bond, or no such conductor at all
+        return Conductor(0.0, size, colour, 0.0, ohm or 0.0, amps)
+    # A measured resistance covers joints and protection too.
+    fixed = network.joints_ohm(run) + network.protection_ohm(run, pole) if run.resistance is None else 0.0
+    per_m = (ohm - fixed) * run.parallel / length_m if ohm is not None else 0.0
+    return Conductor(length_m, size, colour, per_m, fixed, amps)
 
 
 def _protection_text(run: Run, one: Protection) -> str:
@@ -126,6 +145,8 @@ class WayPart:
     ohm: float
     drop_V: float
     run: int
+    warmth: float
+    """Resistance of the cable part over that of the cables' list, whose case may have another temperature."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -147,33 +168,48 @@ class LoadLine:
     way: tuple[WayPart, ...]
 
 
-def loads(study: Study) -> list[LoadLine]:
-    """Every load with the way its drop is made of."""
-    return [_load(study, index) for index in range(len(study.plan.loads))]
+def loads(study: Study, found: Sequence[Cable]) -> list[LoadLine]:
+    """Every load with the way its drop is made of; `found` are the study's cables."""
+    return [_load(study, found, index) for index in range(len(study.plan.loads))]
 
 
-def _load(study: Study, index: int) -> LoadLine:
+def _load(study: Study, found: Sequence[Cable], index: int) -> LoadLine:
     load = study.plan.loads[index]
-    case = max(study.cases, key=lambda one: _drop_if_on(one, index))
-    result = case.loads[index]
     rule = study.rulebook.classes[load.drop_class or study.rulebook.default_class]
     rating = load.power or load.current or load.resistance
-    way = tuple(
-        WayPart(load.name, step.name, step.kind, step.pole, step.amps, step.ohm, step.drop_V, step.run)
-        for step in (case.way(index) if result.drop_V is not None else ())
-    )
+    case, note = _worst(study, index)
+    result = case.loads[index] if case else None
     return LoadLine(
         load.name, load.at, str(rating), rule.name, rule.limit_percent,
-        study.nominal_V.get(load.at, study.plan.plan.nominal.si),
-        case.name if result.volts is not None else NO_NUMBER,
-        result.volts, result.amps, result.drop_V,
-        load.min_volts.si if load.min_volts else None, load.max_volts.si if load.max_volts else None, way,
+        study.nominal_V.get(load.at, study.plan.plan.nominal.si), note,
+        result.volts if result else None, result.amps if result else None, result.drop_V if result else None,
+        load.min_volts.si if load.min_volts else None, load.max_volts.si if load.max_volts else None,
+        tuple(_way_part(load.name, found, step) for step in case.way(index)) if case else (),
     )  # fmt: skip
 
 
-def _drop_if_on(case: CaseResult, index: int) -> float:
-    result = case.loads[index]
-    return result.drop_V if result.drop_V is not None and result.amps else -1e9
+def _worst(study: Study, index: int) -> tuple[CaseResult | None, str]:
+    """The case in which a load is on and its drop is largest, and its name; or none, and why."""
+    name = study.plan.loads[index].name
+    pairs = zip(study.plan.checked_cases, study.cases, strict=True)
+    on = [result for case, result in pairs if case.share(name) > 0]
+    held = [(drop, one) for one in on if (drop := one.loads[index].drop_V) is not None]
+    if not held:
+        return None, NO_NUMBER if on else OFF
+    case = max(held, key=lambda pair: pair[0])[1]
+    return case, case.name
+
+
+def _way_part(load: str, found: Sequence[Cable], step: Step) -> WayPart:
+    one = None if step.run < 0 else found[step.run].feed if step.pole == "feed" else found[step.run].back
+    listed = one.ohm_per_m * one.length_m / found[step.run].parallel if one else 0.0
+    warmth = (step.ohm - one.fixed_ohm) / listed if one and listed else 1.0
+    return WayPart(load, step.name, step.kind, step.pole, step.amps, step.ohm, step.drop_V, step.run, warmth)
+
+
+def not_held(study: Study) -> list[str]:
+    """Names of the cases that give way: they have no numbers, so that none of theirs is in the schedule."""
+    return [case.name for case in study.cases if not case.solved]
 
 
 @dataclass(frozen=True, slots=True)
@@ -203,83 +239,86 @@ def _largest(study: Study, index: int, pole: str) -> float | None:
     return max(found, default=None)
 
 
-def purchases(found: Sequence[Cable]) -> list[tuple[str, str, str, str]]:
-    """What the cables are bought as: each (size, material, insulation, colour) that occurs, thinnest first."""
-    kinds: dict[tuple[str, str, str, str], float] = {}
+def _most(*values: float | None) -> float | None:
+    return max((value for value in values if value is not None), default=None)
+
+
+@dataclass(frozen=True, slots=True)
+class Purchase:
+    """One kind of cable to buy; `size` is empty where the plan states a measured resistance alone."""
+
+    size: str
+    material: str
+    insulation_degC: float
+    colour: str
+    kg_per_m: float | None
+
+
+def purchases(found: Sequence[Cable]) -> list[Purchase]:
+    """What the cables are bought as: each kind that occurs, thinnest first. Capitals make no other colour."""
+    kinds: dict[tuple[Any, ...], Purchase] = {}
     for cable in found:
         for one in (cable.feed, cable.back):
-            if one.length_m and one.size is not None:
-                key = (one.size.name, cable.run.material, f"{cable.insulation_degC:g} degC", one.colour)
-                kinds[key] = one.size.area_mm2
-    return sorted(kinds, key=lambda key: (kinds[key], key))
+            if one.length_m:
+                area, name = (one.size.area_mm2, one.size.name) if one.size else (0.0, "")
+                key = (area, name, cable.run.material, cable.insulation_degC, one.colour.casefold())
+                mass = conductors.mass_kg_per_m(one.size, cable.run.material) if one.size else None
+                bought = Purchase(name, cable.run.material, cable.insulation_degC, one.colour, mass)
+                kinds.setdefault(key, bought)
+    return [kinds[key] for key in sorted(kinds)]
 
 
-def size_text(cable: Cable, size: Size | None) -> str:
-    """A size as it is bought; one that is taken for the time being says so."""
-    if size is None:
+def size_text(cable: Cable) -> str:
+    """A cable's size as it is bought, the return's too where it is another; what is not settled says so."""
+    if not cable.sizes:
         return "measured" if cable.run.resistance is not None else "to be chosen"
-    return f"{size.name}, to be chosen" if cable.interim else size.name
+    text = cable.sizes[0].name + "".join(f", return {size.name}" for size in cable.sizes[1:])
+    return f"{text}, to be chosen" if cable.interim else text
 
 
-def american_text(size: Size | None) -> str:
-    """The size in American wire gauge: its own, or the nearest."""
-    if size is None or size.system == "AWG":
-        return "" if size is None else size.name
-    return f"~{other_system(size).name}"
+def american_text(cable: Cable) -> str:
+    """A cable's size in American wire gauge: its own, or (with ~) the nearest, which may be thinner."""
+    return ", return ".join(map(_gauge, cable.sizes))
+
+
+def _gauge(size: Size) -> str:
+    if size.system == "AWG":
+        return size.name
+    if size.system == "metric":
+        return f"~{other_system(size).name}"
+    made = conductors.made_sizes("AWG")
+    return f"~{min(made, key=lambda one: abs(math.log(one.area_mm2 / size.area_mm2))).name}"
 
 
 def rows(study: Study) -> list[dict[str, Any]]:
     """The cable list as plain rows, metric and American side by side."""
-    return [
-        {
-            "Label": cable.run.label or "",
-            "Run": cable.run.name,
-            "From": cable.run.from_point,
-            "To": cable.run.to_point,
-            "Length one way (m)": cable.run.length.si,
-            "Length one way (ft)": feet(cable.run.length.si),
-            "Conductors in all (m)": cable.total_m,
-            "Size": size_text(cable, cable.feed.size or cable.back.size),
-            "Area (mm2)": _area(cable.feed.size or cable.back.size),
-            "AWG (~ nearest)": american_text(cable.feed.size or cable.back.size),
-            "Parallel": cable.parallel,
-            "Material": cable.run.material,
-            "Insulation (degC)": cable.insulation_degC,
-            "Feed colour": cable.feed.colour if cable.feed.length_m else "",
-            "Return colour": cable.back.colour if cable.back.length_m else "",
-            "Protection": cable.protection,
-            "Design current (A)": cable.amps,
-            "Ampacity (A)": cable.ampacity_A,
-            "Drop (V)": cable.drop_V,
-            "Drop (%)": None if cable.drop_V is None else 100 * cable.drop_V / cable.nominal_V,
-            "Loss (W)": cable.loss_W,
-            "Case": cable.case,
-        }
-        for cable in cables(study)
-    ]
+    return [dict(zip(HEADINGS, _row(cable), strict=True)) for cable in cables(study)]
 
 
-def _area(size: Size | None) -> float | None:
-    return None if size is None else size.area_mm2
+HEADINGS = (
+    "Label", "Run", "From", "To", "Length one way (m)", "Length one way (ft)", "Conductors in all (m)",
+    "Conductors in all (ft)", "Size", "Area (mm2)", "AWG (~ nearest)", "Parallel", "Material", "Insulation (degC)",
+    "Feed colour", "Return colour", "Protection", "Design current (A)", "Ampacity (A)", "Drop (V)", "Drop (%)",
+    "Loss (W)", "Case",
+)  # fmt: skip
+
+
+def _row(cable: Cable) -> tuple[Any, ...]:
+    run, feed, back = cable.run, cable.feed, cable.back
+    return (
+        run.label or "", run.name, run.from_point, run.to_point, run.length.si, feet(run.length.si), cable.total_m,
+        feet(cable.total_m), size_text(cable), cable.sizes[0].area_mm2 if cable.sizes else None, american_text(cable),
+        cable.parallel, run.material, cable.insulation_degC, feed.colour if feed.length_m else "",
+        back.colour if back.length_m else "", cable.protection, cable.largest_A, cable.ampacity_A, cable.drop_V,
+        None if cable.drop_V is None else 100 * cable.drop_V / cable.nominal_V, cable.loss_W, cable.case,
+    )  # fmt: skip
 
 
 def to_csv(study: Study) -> str:
-    """The cable list as CSV. Text that a spreadsheet would take for a formula gets an apostrophe before it."""
-    found = rows(study)
+    """The cable list as CSV: numbers stay numbers, what has no answer is empty, text stays text."""
     out = io.StringIO()
     writer = csv.writer(out, lineterminator="\n")
-    writer.writerow(found[0] if found else ["Label", "Run"])
-    for row in found:
-        writer.writerow([_inert(value) for value in row.values()])
+    writer.writerow(HEADINGS)
+    for cable in cables(study):
+        writer.writerow([csv_text(value) if isinstance(value, str) else value for value in _row(cable)])
     return out.getvalue()
-
-
-def _inert(value: Any) -> Any:
-    if isinstance(value, str) and value.lstrip()[:1] in ("=", "+", "-", "@"):
-        return f"'{value}"
-    return "" if value is None else value
-
-
-def mass_kg_per_m(name: str, material: str) -> float:
-    """Mass of a conductor's metal per metre, for a size's name."""
-    return conductors.mass_kg_per_m(conductors.parse_size(name), material)

@@ -5,306 +5,268 @@ Currents are held while lengths are edited, which is right for small changes; th
 """
 
 import io
-from collections.abc import Callable
-from typing import Any
+from collections.abc import Sequence
+from pathlib import Path
+from typing import Any, BinaryIO
 
 from openpyxl import Workbook
 from openpyxl.worksheet.worksheet import Worksheet
 
+from farvolt.planfile import write_whole
 from farvolt.results import Study
-from farvolt_app import schedule
-from farvolt_app.schedule import Cable
-from farvolt_app.sheets import HEADING_ROW, Column, Formula, fill, letters, mark_where, put
-from farvolt_app.shown import CAUTION
+from farvolt_app import schedule, sheet_cables
+from farvolt_app.schedule import Cable, LoadLine, ProtectionLine, Purchase
+from farvolt_app.sheet_cables import FOOT_M, HELD, OVER, live, of_number, pretty, size_key
+from farvolt_app.sheets import FIRST, Column, Formula, Header, fill, letters, mark_where, setting
+from farvolt_app.shown import CAUTION, SEVERITIES
+from farvolt_app.textsafe import cell_text
 
-_FIRST = HEADING_ROW + 1
-_FEET = 0.3048
-_HELD = "Currents are those of the case named and are held while you edit; run the check again for exact figures."
-_OVER = "OVER"
+
+def write(study: Study, path: Path | BinaryIO) -> None:
+    """Write the workbook to a file, whole or not at all, or to a stream. Raises OSError."""
+    data = to_bytes(study)
+    if isinstance(path, Path):
+        write_whole(path, data)
+    else:
+        path.write(data)
 
 
 def to_bytes(study: Study) -> bytes:
     """The whole workbook as a file's content."""
     book = Workbook()
     book.remove(book.active)
+    plan = study.plan.plan.name
+    book.properties.creator, book.properties.title = "Farvolt", cell_text(plan)
     found = schedule.cables(study)
-    name = study.plan.plan.name
-    _cables(book.create_sheet("Cables"), name, found)
-    _loads(book.create_sheet("Loads"), name, study)
-    _protection(book.create_sheet("Protection"), name, study)
-    _shopping(book.create_sheet("Shopping"), name, study, found)
-    _findings(book.create_sheet("Findings"), name, study)
-    _assumptions(book.create_sheet("Assumptions"), name, study)
-    _resistances(book.create_sheet("Resistances"), name, study, found)
-    _ways(book.create_sheet("Ways"), name, study)
+    lines, guards = schedule.loads(study, found), schedule.protections(study)
+    note = _not_held(study)
+    sheet_cables.write(book.create_sheet(sheet_cables.TITLE), plan, found, note)
+    _loads(book.create_sheet("Loads"), plan, lines, note)
+    _protection(book.create_sheet("Protection"), plan, guards, note)
+    _shopping(book.create_sheet("Shopping"), plan, found, guards)
+    _findings(book.create_sheet("Findings"), plan, study)
+    _assumptions(book.create_sheet("Assumptions"), plan, study)
+    _ways(book.create_sheet("Ways"), plan, lines, len(found))
     out = io.BytesIO()
     book.save(out)
     return out.getvalue()
 
 
-CABLES = (
-    Column("Label", 7), Column("Run", 19), Column("From", 13), Column("To", 13),
-    Column("Length one way (m)", 8, "0.00", input=True), Column("Length one way (ft)", 8, "0.0"),
-    Column("All conductors (m)", 10, "0.00"), Column("Size", 11), Column("Area (mm²)", 8, "0.00"),
-    Column("AWG (~ nearest)", 10), Column("Parallel", 8, "0", input=True), Column("Feed colour", 8, input=True),
-    Column("Return colour", 8, input=True), Column("Insulation (°C)", 9, "0"), Column("Protection", 18),
-    Column("Current (A)", 8, "0.00"), Column("Ampacity (A)", 9, "0.0"), Column("Used (%)", 7, "0"),
-    Column("Drop (V)", 7, "0.000"), Column("Drop (%)", 7, "0.00"), Column("Loss (W)", 7, "0.00"), Column("Mark", 7),
-)  # fmt: skip
-_C = letters(CABLES)
-
-RESISTANCES = (
-    Column("Label", 7), Column("Run", 22), Column("Material", 12), Column("Case", 30),
-    Column("Feed current (A)", 9, "0.00", input=True), Column("Return current (A)", 9, "0.00", input=True),
-    Column("Nominal (V)", 9, "0.0"), Column("Feed cable (mΩ/m)", 10, "0.0000"),
-    Column("Feed joints, protection (mΩ)", 12, "0.000"), Column("Feed in all (mΩ)", 10, "0.000"),
-    Column("Return size", 10), Column("Return length (m)", 9, "0.00"), Column("Return cable (mΩ/m)", 10, "0.0000"),
-    Column("Return joints, protection, bond (mΩ)", 13, "0.000"), Column("Return in all (mΩ)", 10, "0.000"),
-)  # fmt: skip
-_R = letters(RESISTANCES)
-
-
-def _refs(row: int) -> tuple[Callable[[str], str], Callable[[str], str]]:
-    """Cell references in one row of the cables sheet and of the resistances sheet, by heading."""
-    return lambda heading: f"Cables!{_C[heading]}{row}", lambda heading: f"Resistances!{_R[heading]}{row}"
-
-
-def _cables(sheet: Worksheet, name: str, found: list[Cable]) -> None:
-    about = f"{_HELD} Yellow cells are meant to be changed."
-    fill(sheet, name, about, CABLES, [_cable_row(cable, _FIRST + place) for place, cable in enumerate(found)])
-    mark_where(sheet, len(CABLES), len(found), f'${_C["Mark"]}{_FIRST}="{_OVER}"')
-
-
-def _cable_row(cable: Cable, row: int) -> list[Any]:
-    c, r = _refs(row)
-    run, solved = cable.run, cable.drop_V is not None
-    size = cable.feed.size or cable.back.size
-    feed_length = c("Length one way (m)") if cable.feed.length_m else "0"
-    volts = "+".join(f"{r(f'{pole} current (A)')}*{r(f'{pole} in all (mΩ)')}/1000" for pole in ("Feed", "Return"))
-    watts = "+".join(f"{r(f'{pole} current (A)')}^2*{r(f'{pole} in all (mΩ)')}/1000" for pole in ("Feed", "Return"))
-    rated = solved and cable.ampacity_A
-    return [
-        run.label or "", run.name, run.from_point, run.to_point, run.length.si,
-        Formula(f"={c('Length one way (m)')}/{_FEET}"),
-        Formula(f"={c('Parallel')}*({feed_length}+{r('Return length (m)')})"),
-        schedule.size_text(cable, size), size.area_mm2 if size else None, schedule.american_text(size),
-        cable.parallel, cable.feed.colour if cable.feed.length_m else "",
-        cable.back.colour if cable.back.length_m else "", cable.insulation_degC, cable.protection,
-        Formula(f"=MAX({r('Feed current (A)')},{r('Return current (A)')})") if solved else None, cable.ampacity_A,
-        Formula(f"=100*{c('Current (A)')}/{c('Ampacity (A)')}") if rated else None,
-        Formula(f"={volts}") if solved else None,
-        Formula(f"=100*{c('Drop (V)')}/{r('Nominal (V)')}") if solved else None,
-        Formula(f"={watts}") if solved else None,
-        Formula(f'=IF({c("Used (%)")}>100,"{_OVER}","")') if rated else "",
-    ]  # fmt: skip
-
-
-def _resistances(sheet: Worksheet, name: str, study: Study, found: list[Cable]) -> None:
-    about = f"What each cable is solved as. Conductor temperature: {study.plan.plan.conductor_temperature}. {_HELD}"
-    rows = [_resistance_row(cable, _FIRST + place) for place, cable in enumerate(found)]
-    fill(sheet, name, about, RESISTANCES, rows)
-
-
-def _resistance_row(cable: Cable, row: int) -> list[Any]:
-    c, r = _refs(row)
-    back_m = cable.back.length_m
-    same = back_m == cable.run.length.si
-    length, parallel = c("Length one way (m)"), c("Parallel")
-    feed = f"={r('Feed cable (mΩ/m)')}*{length}/{parallel}+{r('Feed joints, protection (mΩ)')}"
-    back = (
-        f"={r('Return cable (mΩ/m)')}*{r('Return length (m)')}/{parallel}+{r('Return joints, protection, bond (mΩ)')}"
-    )
-    return [
-        cable.run.label or "", cable.run.name, cable.run.material, cable.case, cable.feed.amps, cable.back.amps,
-        cable.nominal_V, 1000 * cable.feed.ohm_per_m, 1000 * cable.feed.fixed_ohm, Formula(feed),
-        schedule.size_text(cable, cable.back.size) if back_m else "",
-        Formula(f"={length}") if same else back_m,
-        1000 * cable.back.ohm_per_m, 1000 * cable.back.fixed_ohm, Formula(back),
-    ]  # fmt: skip
-
-
-WAYS = (
-    Column("Load", 22), Column("Conductor or device", 24), Column("Kind", 9), Column("Pole", 8),
-    Column("Current (A)", 10, "0.000"), Column("Resistance (mΩ)", 11, "0.000"), Column("Drop (V)", 10, "0.0000"),
-)  # fmt: skip
-
-
-def _ways(sheet: Worksheet, name: str, study: Study) -> None:
-    about = f"What each load's drop is made of, in its worst case, at the plan's conductor temperature. {_HELD}"
-    rows: list[list[Any]] = []
-    for line in schedule.loads(study):
-        for part in line.way:
-            row = _FIRST + len(rows)
-            cell = _R["Feed in all (mΩ)" if part.pole == "feed" else "Return in all (mΩ)"]
-            ohm: Any = Formula(f"=Resistances!{cell}{_FIRST + part.run}") if part.kind == "run" else 1000 * part.ohm
-            drop: Any = part.drop_V if part.kind == "diode" else Formula(f"=E{row}*F{row}/1000")
-            rows.append([part.load, part.name, part.kind, part.pole, part.amps, ohm, drop])
-    fill(sheet, name, about, WAYS, rows)
+def _not_held(study: Study) -> str:
+    names = schedule.not_held(study)
+    cases = ", ".join(f'"{name}"' for name in names)
+    return f"Cases that give way have no numbers here, see the findings: {cases}." if names else ""
 
 
 LOADS = (
-    Column("Load", 22), Column("At", 16), Column("Rating", 10), Column("Class", 10), Column("Case", 26),
-    Column("Current (A)", 9, "0.00"), Column("Source (V)", 9, "0.000"), Column("Drop (V)", 9, "0.000"),
-    Column("Load (V)", 9, "0.000"), Column("Nominal (V)", 9, "0.0"), Column("Drop (%)", 8, "0.00"),
-    Column("Limit (%)", 8, "0.0", input=True), Column("Mark", 8), Column("Least (V)", 8, "0.00"),
-    Column("Most (V)", 8, "0.00"),
+    Column("No.", 5, "0"), Column("Load", 22), Column("At", 18), Column("Rating", 10), Column("Class", 11),
+    Column("Case", 30), Column("Current (A)", 9, "0.00"), Column("Source (V)", 9, "0.000"),
+    Column("Drop (V)", 9, "0.000"), Column("Load (V)", 9, "0.000"), Column("Nominal (V)", 9, "0.0"),
+    Column("Drop (%)", 8, "0.00"), Column("Limit (%)", 8, "0.0", input=True), Column("Least (V)", 8, "0.00"),
+    Column("Most (V)", 8, "0.00"), Column("Mark", 14),
 )  # fmt: skip
 _L = letters(LOADS)
 
 
-def _loads(sheet: Worksheet, name: str, study: Study) -> None:
+def _loads(sheet: Worksheet, plan: str, lines: Sequence[LoadLine], note: str) -> None:
     about = (
-        "Drop at the plan's conductor temperature, summed over the sheet Ways; the findings hold limits at the "
-        "rulebook's own temperature."
+        "Drop at the plan's conductor temperature in the case where it is largest, summed over the sheet Ways; the "
+        "findings hold limits at the rulebook's own temperature."
     )
-    lines = schedule.loads(study)
-    count = sum(len(line.way) for line in lines)
-    rows = [_load_row(line, _FIRST + place, count) for place, line in enumerate(lines)]
-    fill(sheet, name, about, LOADS, rows)
-    mark_where(sheet, len(LOADS), len(rows), f'${_L["Mark"]}{_FIRST}="{_OVER}"')
+    ways = sum(len(line.way) for line in lines)
+    rows = [_load_row(line, number, ways) for number, line in enumerate(lines, start=1)]
+    fill(sheet, Header(plan, "loads", about, note), LOADS, rows)
+    mark_where(sheet, len(LOADS), len(rows), f'LEFT(${_L["Mark"]}{FIRST},1)="!"')
 
 
-def _load_row(line: schedule.LoadLine, row: int, ways: int) -> list[Any]:
+def _load_row(line: LoadLine, number: int, ways: int) -> list[Any]:
     solved = line.drop_V is not None and line.volts is not None
-    last = _FIRST + max(ways, 1) - 1
-    # The sum runs over the rows whose load is exactly this one; SUMPRODUCT compares text without wildcards.
-    total = f"=SUMPRODUCT((Ways!$A${_FIRST}:$A${last}=A{row})*Ways!$G${_FIRST}:$G${last})"
-    source = line.volts + line.drop_V if line.volts is not None and line.drop_V is not None else None
+    row, last = FIRST + number - 1, FIRST + max(ways, 1) - 1
+    keys, drops = (f"Ways!${_W[heading]}${FIRST}:${_W[heading]}${last}" for heading in ("Load no.", "Drop (V)"))
+
+    def of(formula: str) -> Formula | None:
+        return live(_L, row, formula) if solved else None
+
+    low = '&IF([Load (V)]<[Least (V)],"! LOW","")' if line.min_volts is not None else ""
+    high = '&IF([Load (V)]>[Most (V)],"! HIGH","")' if line.max_volts is not None else ""
     return [
-        line.name, line.at, line.rating, line.drop_class, line.case, line.amps, source,
-        Formula(total) if solved else None,
-        Formula(f"={_L['Source (V)']}{row}-{_L['Drop (V)']}{row}") if solved else None,
-        line.nominal_V,
-        Formula(f"=100*{_L['Drop (V)']}{row}/{_L['Nominal (V)']}{row}") if solved else None,
-        line.limit_percent,
-        Formula(f'=IF({_L["Drop (%)"]}{row}>{_L["Limit (%)"]}{row},"{_OVER}","")') if solved else "",
-        line.min_volts, line.max_volts,
+        number, line.name, line.at, line.rating, line.drop_class, line.case, line.amps,
+        line.volts + line.drop_V if line.volts is not None and line.drop_V is not None else None,
+        of(f"=SUMIFS({drops},{keys},[No.])"), of("=[Source (V)]-[Drop (V)]"), line.nominal_V,
+        of("=100*[Drop (V)]/[Nominal (V)]"), line.limit_percent, line.min_volts, line.max_volts,
+        of(f'=IF([Drop (%)]>[Limit (%)]+0.000001,"{OVER} ","")' + low + high)
+        or ("off" if line.case == schedule.OFF else "no answer"),
     ]  # fmt: skip
 
 
+WAYS = (
+    Column("Load no.", 7, "0"), Column("Load", 24), Column("Conductor or device", 26), Column("Cable no.", 8, "0"),
+    Column("Kind", 10), Column("Pole", 9), Column("Current (A)", 11, "0.000"),
+    Column("Resistance over that on Cables", 13, "0.0000"), Column("Resistance (mΩ)", 12, "0.000"),
+    Column("Drop (V)", 11, "0.0000"),
+)  # fmt: skip
+_W = letters(WAYS)
+
+
+def _ways(sheet: Worksheet, plan: str, lines: Sequence[LoadLine], cables: int) -> None:
+    about = "What each load's drop is made of, in its worst case, at the plan's conductor temperature."
+    rows: list[list[Any]] = []
+    for number, line in enumerate(lines, start=1):
+        for part in line.way:
+            row = FIRST + len(rows)
+            ohm: Any = _run_ohm(part.pole, row, cables) if part.run >= 0 else 1000 * part.ohm
+            drop: Any = live(_W, row, "=[Current (A)]*[Resistance (mΩ)]/1000")
+            rows.append([
+                number, part.load, part.name, part.run + 1 or None, part.kind, part.pole, part.amps,
+                part.warmth if part.run >= 0 else None, None if part.kind == "diode" else ohm,
+                part.drop_V if part.kind == "diode" else drop,
+            ])  # fmt: skip
+    fill(sheet, Header(plan, "ways", about, HELD), WAYS, rows)
+
+
+def _run_ohm(pole: str, row: int, cables: int) -> Formula:
+    """A run's resistance from the sheet Cables, its cable part at the temperature of the load's own case."""
+    word, bond = ("Feed", "") if pole == "feed" else ("Return", ", bond")
+    headings = f"{word} in all (mΩ)", f"{word} joints, protection{bond} (mΩ)"
+    whole, fixed = (of_number("[Cable no.]", heading, cables) for heading in headings)
+    return live(_W, row, f"=[Resistance over that on Cables]*({whole}-{fixed})+{fixed}")
+
+
 PROTECTION = (
-    Column("Label", 8), Column("Run", 22), Column("At", 16), Column("End", 7), Column("Pole", 8), Column("Type", 18),
-    Column("Rating (A)", 9, "0.0", input=True), Column("From the end (m)", 9, "0.00"),
-    Column("Largest current (A)", 10, "0.00"), Column("Used (%)", 8, "0"), Column("Ampacity (A)", 10, "0.0"),
-    Column("Rating over ampacity (%)", 11, "0"),
+    Column("No.", 5, "0"), Column("Label", 8), Column("Run", 24), Column("At", 18), Column("End", 7), Column("Pole", 8),
+    Column("Type", 20), Column("Rating (A)", 9, "0.0", input=True), Column("From the end (m)", 9, "0.00"),
+    Column("From the end (ft)", 9, "0.0"), Column("Largest current (A)", 10, "0.00"), Column("Used (%)", 8, "0"),
+    Column("Ampacity of the cable (A)", 11, "0.0"), Column("Rating over ampacity (%)", 11, "0"), Column("Mark", 17),
 )  # fmt: skip
 _P = letters(PROTECTION)
 
 
-def _protection(sheet: Worksheet, name: str, study: Study) -> None:
-    lines = schedule.protections(study)
-    about = "Every fuse and breaker, with the largest current through it. The findings judge whole sections of cable."
-    rows = [_protection_row(line, _FIRST + place) for place, line in enumerate(lines)]
-    fill(sheet, name, about, PROTECTION, rows)
+def _protection(sheet: Worksheet, plan: str, guards: Sequence[ProtectionLine], note: str) -> None:
+    about = (
+        "Every fuse and breaker, with the largest current through it and the least ampacity of its cable over all "
+        "cases. The findings judge whole sections of cable by the rulebook."
+    )
+    rows = [_protection_row(line, number) for number, line in enumerate(guards, start=1)]
+    fill(sheet, Header(plan, "protection", about, note), PROTECTION, rows)
+    mark_where(sheet, len(PROTECTION), len(rows), f'LEFT(${_P["Mark"]}{FIRST},1)="!"')
 
 
-def _protection_row(line: schedule.ProtectionLine, row: int) -> list[Any]:
+def _protection_row(line: ProtectionLine, number: int) -> list[Any]:
     run, one = line.run, line.protection
+
+    def of(formula: str, wanted: bool) -> Formula | None:
+        return live(_P, FIRST + number - 1, formula) if wanted else None
+
+    carries, rated = line.amps is not None, bool(line.ampacity_A)
+    marks = [f'IF([Largest current (A)]>[Rating (A)],"{OVER} ","")'] if carries else []
+    marks += ['IF([Rating (A)]>[Ampacity of the cable (A)],"! above cable","")'] if line.ampacity_A is not None else []
     return [
-        run.label or "", run.name, run.from_point if one.end == "from" else run.to_point, one.end, one.pole, one.type,
-        one.rating.si, one.distance.si if one.distance else None, line.amps,
-        Formula(f"=100*{_P['Largest current (A)']}{row}/{_P['Rating (A)']}{row}") if line.amps is not None else None,
-        line.ampacity_A,
-        Formula(f"=100*{_P['Rating (A)']}{row}/{_P['Ampacity (A)']}{row}") if line.ampacity_A else None,
+        number, run.label or "", run.name, run.from_point if one.end == "from" else run.to_point, one.end, one.pole,
+        one.type, one.rating.si, one.distance.si if one.distance else None,
+        of(f"=[From the end (m)]/{FOOT_M}", one.distance is not None), line.amps,
+        of("=100*[Largest current (A)]/[Rating (A)]", carries), line.ampacity_A,
+        of("=100*[Rating (A)]/[Ampacity of the cable (A)]", rated),
+        of("=" + "&".join(marks), bool(marks)) or "no answer",
     ]  # fmt: skip
 
 
 SHOPPING = (
-    Column("Item", 26), Column("Size or rating", 14), Column("Material or type", 20), Column("Insulation", 12),
-    Column("Colour", 10), Column("Needed", 10, "0.00"), Column("With spare", 10, "0.0"), Column("Unit", 7),
-    Column("With spare (ft)", 10, "0"), Column("Metal (kg)", 10, "0.000"),
+    Column("Item", 31), Column("Size or rating", 15), Column("Material or type", 22),
+    Column("Insulation (°C)", 11, "0"), Column("Colour", 12), Column("Needed", 11, "0.00"),
+    Column("With spare", 11, "0.00"), Column("Unit", 8), Column("With spare (ft)", 11, "0.0"),
+    Column("Metal (kg)", 11, "0.000"),
 )  # fmt: skip
+_S = letters(SHOPPING)
+_SPARE = "$F$2"
 
 
-def _shopping(sheet: Worksheet, name: str, study: Study, found: list[Cable]) -> None:
-    kinds = schedule.purchases(found)
-    last = _FIRST + max(len(found), 1) - 1
-    rows = [_cable_total(kind, _FIRST + place, last) for place, kind in enumerate(kinds)]
-    lines = schedule.protections(study)
-    devices = sorted({(one.protection.type, one.protection.rating.si) for one in lines})
-    count = _FIRST + max(len(lines), 1) - 1
-    for kind, rating in devices:
-        row = _FIRST + len(rows)
-        total = (
-            f"=SUMPRODUCT((Protection!${_P['Type']}${_FIRST}:${_P['Type']}${count}=C{row})"
-            f"*(Protection!${_P['Rating (A)']}${_FIRST}:${_P['Rating (A)']}${count}={rating:.12g}))"
-        )
-        rows.append(
-            [
-                "fuse or breaker, with holder",
-                f"{rating:g} A",
-                kind,
-                "",
-                "",
-                Formula(total),
-                Formula(f"=F{row}"),
-                "pieces",
-                None,
-                None,
-            ]
-        )
-    about = "Totals of the cables sheet. Spare for cable:"
-    fill(sheet, name, about, SHOPPING, rows)
-    put(sheet["F2"], 0.1)
-    sheet["F2"].number_format = "0 %"
+def _shopping(sheet: Worksheet, plan: str, found: Sequence[Cable], guards: Sequence[ProtectionLine]) -> None:
+    rows = [_cable_total(kind, FIRST + place, len(found)) for place, kind in enumerate(schedule.purchases(found))]
+    pieces = sorted({(line.protection.type, line.protection.rating.si) for line in guards})
+    rows += [_piece_total(one, FIRST + len(rows) + place, len(guards)) for place, one in enumerate(pieces)]
+    fill(sheet, Header(plan, "shopping", "Totals of the sheets Cables and Protection. No prices."), SHOPPING, rows)
+    for row in range(FIRST + len(rows) - len(pieces), FIRST + len(rows)):
+        for heading in ("Needed", "With spare"):
+            sheet[f"{_S[heading]}{row}"].number_format = "0"
+    setting(sheet, "E2", "Spare on cable:", "F2", 0.1, "0 %")
+    last = FIRST + max(len(rows), 1) - 1
+    all_m = sheet_cables.column("All conductors (m)", len(found))
+    counted = f'SUMIFS($F${FIRST}:$F${last},$H${FIRST}:$H${last},"m")'
+    missing = Formula(f"=ROUND(SUM({all_m})-{counted},6)")
+    setting(sheet, "E3", "Cable in no row below, after a change of colour (m):", "F3", missing, "0.00")
 
 
-def _cable_total(kind: tuple[str, str, str, str], row: int, last: int) -> list[Any]:
+def _cable_total(kind: Purchase, row: int, cables: int) -> list[Any]:
     """Length of one kind of cable: the feed conductors of that size and colour, and the return conductors."""
-    size, material, insulation, colour = kind
 
-    def column(sheet: str, letter: str) -> str:
-        return f"{sheet}!${letter}${_FIRST}:${letter}${last}"
+    def cells(heading: str) -> str:
+        return sheet_cables.column(heading, cables)
 
-    def sized(cells: str) -> str:
-        # Sizes taken for the time being read "6 mm2, to be chosen"; they are bought as 6 mm2.
-        return f'(({cells}=B{row})+({cells}=B{row}&", to be chosen"))'
-
-    length, parallel = column("Cables", _C["Length one way (m)"]), column("Cables", _C["Parallel"])
-    same = (
-        f'({column("Resistances", _R["Material"])}=C{row})*({column("Cables", _C["Insulation (°C)"])}&" degC"=D{row})'
+    # SUMPRODUCT compares text as it is; SUMIFS would read * and > in a colour as its own signs.
+    kinds = f"({cells('Material')}=[Material or type])*({cells('Insulation (°C)')}=[Insulation (°C)])"
+    poles = "+".join(
+        f"({cells(f'{pole} size')}=[Size or rating])*({cells(f'{pole} colour')}=[Colour])*{cells(f'{pole} length (m)')}"
+        for pole in ("Feed", "Return")
     )
-    feed = f"{sized(column('Cables', _C['Size']))}*({column('Cables', _C['Feed colour'])}=E{row})*{length}"
-    back = (
-        f"{sized(column('Resistances', _R['Return size']))}*({column('Cables', _C['Return colour'])}=E{row})"
-        f"*{column('Resistances', _R['Return length (m)'])}"
-    )
-    total = f"=SUMPRODUCT({same}*{parallel}*({feed}+{back}))"
+    mass = f"=[With spare]*{kind.kg_per_m:.9g}" if kind.kg_per_m is not None else None
     return [
-        "cable", size, material, insulation, colour, Formula(total), Formula(f"=F{row}*(1+$F$2)"), "m",
-        Formula(f"=G{row}/{_FEET}"), Formula(f"=G{row}*{schedule.mass_kg_per_m(size, material):.9g}"),
+        "cable", size_key(kind.size), kind.material, kind.insulation_degC, kind.colour,
+        live(_S, row, f"=SUMPRODUCT({kinds}*{cells('Parallel')}*({poles}))"),
+        live(_S, row, f"=[Needed]*(1+{_SPARE})"), "m", live(_S, row, f"=[With spare]/{FOOT_M}"),
+        live(_S, row, mass) if mass else None,
+    ]  # fmt: skip
+
+
+def _piece_total(piece: tuple[str, float], row: int, guards: int) -> list[Any]:
+    kind, rating = piece
+    types, ratings = (
+        f"Protection!${_P[heading]}${FIRST}:${_P[heading]}${FIRST + guards - 1}" for heading in ("Type", "Rating (A)")
+    )
+    total = f"=SUMPRODUCT(({types}=[Material or type])*({ratings}={rating:.12g}))"
+    return [
+        "fuse or breaker, with holder", f"{rating:g} A", kind, None, "", live(_S, row, total),
+        live(_S, row, "=[Needed]"), "pieces", None, None,
     ]  # fmt: skip
 
 
 FINDINGS = (
-    Column("Severity", 8), Column("Rule", 20), Column("Subject", 16), Column("Case", 16), Column("Message", 40),
-    Column("Value", 9, "0.000"), Column("Limit", 9, "0.000"), Column("Unit", 6), Column("Remedy", 30),
-    Column("Basis", 26), Column("Working", 46),
+    Column("Severity", 11), Column("Rule", 22), Column("Subject", 20), Column("Case", 22), Column("Message", 46),
+    Column("Value", 9, "0.000"), Column("Limit", 9, "0.000"), Column("Unit", 7), Column("Remedy", 36),
+    Column("Basis", 34), Column("Working", 62),
 )  # fmt: skip
 
 
-def _findings(sheet: Worksheet, name: str, study: Study) -> None:
+def _findings(sheet: Worksheet, plan: str, study: Study) -> None:
     about = "What the checks found, worst first. A plan without findings is not a proof that it is safe."
     rows = [
         [
-            "FAIL" if one.severity == "fail" else one.severity, one.rule, one.subject, one.case or "", one.message,
-            one.value, one.limit, one.unit or "", one.remedy or "", one.basis, "\n".join(one.working),
+            SEVERITIES[one.severity], one.rule, one.subject, one.case or "", one.message, one.value, one.limit,
+            pretty(one.unit or ""), one.remedy or "", one.basis, "\n".join(one.working),
         ]
         for one in study.findings
     ]  # fmt: skip
-    fill(sheet, name, about, FINDINGS, rows)
+    fill(sheet, Header(plan, "findings", about), FINDINGS, rows)
+    mark_where(sheet, len(FINDINGS), len(rows), f'$A{FIRST}="{SEVERITIES["fail"]}"')
 
 
-def _assumptions(sheet: Worksheet, name: str, study: Study) -> None:
-    book, plan = study.rulebook, study.plan.plan
+def _assumptions(sheet: Worksheet, plan: str, study: Study) -> None:
+    book, info = study.rulebook, study.plan.plan
+    not_held = _not_held(study)
     rows = [
         ["Caution", CAUTION],
         ["Caution", "Fuse every cable at its source, work with the bank disconnected, and cover its terminals."],
-        ["Caution", "Colours are a default from common practice; change them to what your code asks for."],
-        ["Plan", f"{plan.name}; nominal {plan.nominal}"],
+        ["Caution", "Colours are a default from common practice (red feed, black return; in small craft yellow is "
+                    "common for the return). Change them to what your code asks for."],
+        ["Caution", "~ marks the nearest gauge, which may be thinner. In its place take the next thicker one, or "
+                    "change the size in the plan and check again."],
+        *([["Caution", not_held]] if not_held else []),
+        ["While you edit", f"{HELD} Sizes are not live: their resistances come from the plan."],
+        ["While you edit", "The cable part of a resistance follows the length; joints, protection and bonds stay."],
+        ["Plan", f"{info.name}; nominal {info.nominal}; conductor temperature: {info.conductor_temperature}"],
         ["Rulebook", f"{book.name}: {book.title}, {book.edition}"],
         ["Rulebook", " ".join(book.text.split())],
         *(["Taken as given", line] for line in study.assumptions),
-        *(["Notes of the plan", line] for line in plan.notes.splitlines() if line.strip()),
-    ]
-    fill(sheet, name, "What the numbers rest on.", (Column("About", 18), Column("Text", 120)), rows)
+        *(["Notes of the plan", line] for line in info.notes.splitlines() if line.strip()),
+    ]  # fmt: skip
+    fill(sheet, Header(plan, "assumptions and cautions", "What the numbers rest on."),
+         (Column("About", 20), Column("Text", 120)), rows)  # fmt: skip
