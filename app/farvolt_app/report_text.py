@@ -5,6 +5,7 @@ import sys
 from collections.abc import Iterable
 
 from rich.console import Console
+from rich.padding import Padding
 from rich.table import Table
 from rich.text import Text
 
@@ -13,13 +14,13 @@ from farvolt.errors import FarvoltError
 from farvolt.integrity import nearest
 from farvolt.results import CaseResult, Finding, Study
 from farvolt.units import both_lengths, number
+from farvolt_app.shown import CAUTION
 
 _MARKS = {"fail": "FAIL", "warn": "warn", "note": "note"}
 _STYLES = {"fail": "bold red", "warn": "yellow", "note": "dim"}
-CAUTION = (
-    "For planning only: check local codes, have the work inspected, and leave to licensed people what the law "
-    "reserves to them."
-)
+_WHOLE = ("Label", "length", "size")
+"""Columns that are not folded."""
+
 PIPED_WIDTH = 150
 """Columns of the tables where no terminal says how wide it is."""
 
@@ -63,7 +64,9 @@ def _named(study: Study, name: str) -> CaseResult:
 def _table(console: Console, title: str, columns: Iterable[tuple[str, bool]], rows: Iterable[Iterable[str]]) -> None:
     table = Table(title=Text(title, style="bold"), title_justify="left", box=None, pad_edge=False, padding=(0, 2, 0, 0))
     for name, right in columns:
-        table.add_column(Text(name), justify="right" if right else "left", overflow="fold")
+        table.add_column(
+            Text(name), justify="right" if right else "left", overflow="fold", no_wrap=right or name in _WHOLE
+        )
     for row in rows:
         table.add_row(*(Text(cell) for cell in row))
     console.print()
@@ -78,25 +81,34 @@ def _findings(console: Console, findings: tuple[Finding, ...], working: bool) ->
         head = Text(f"{_MARKS[one.severity]:5}", style=_STYLES[one.severity])
         head.append(f"{one.rule}  ", style="bold")
         head.append(one.message + (f'  [case "{one.case}"]' if one.case else ""), style="default not bold")
-        console.print(head)
+        _hanging(console, head)
         for line in one.working if working else ():
-            console.print(Text(f"       {line}"))
+            _hanging(console, Text(line), indent=5)
         if one.remedy:
-            console.print(Text(f"       Remedy: {one.remedy}"))
+            _hanging(console, Text(f"Remedy: {one.remedy}"), indent=5)
         if working or one.severity == "fail":
-            console.print(Text(f"       Basis: {one.basis}", style="dim"))
+            _hanging(console, Text(f"Basis: {one.basis}", style="dim"), indent=5)
+
+
+def _hanging(console: Console, text: Text, indent: int = 0) -> None:
+    """Print a text, the lines after its first set in."""
+    first, *rest = text.wrap(console, max(console.width - indent - 5, 20)) or [text]
+    console.print(Padding(first, (0, 0, 0, indent), expand=False))
+    for line in rest:
+        console.print(Padding(line, (0, 0, 0, indent + 5), expand=False))
 
 
 def _cases(console: Console, cases: tuple[CaseResult, ...]) -> None:
     columns = (
         ("Case", False), ("Solved", False), ("Sources W", True), ("Loads W", True), ("Lost W", True),
-        ("Imbalance A", True),
+        ("Holds up to", True), ("Imbalance A", True),
     )  # fmt: skip
     rows = [
         (
             case.name,
             "yes" if case.solved else f"gives way at {number(100 * case.share_held)} % of its loads",
             *(_value(watts if case.solved else None, 4) for watts in _powers(case)),
+            "-" if case.margin is None else f"{number(case.margin)} x its loads",
             f"{case.imbalance_A:.0e}",
         )
         for case in cases
@@ -129,11 +141,11 @@ def _runs(console: Console, study: Study) -> None:
         currents = [max(abs(one.feed_A or 0.0), abs(one.return_A or 0.0)) for one in results]
         worst = results[currents.index(max(currents))]
         rows.append((
-            run.label or "", run.name, run.from_point, run.to_point, both_lengths(run.length), _size(run.size),
+            run.label or "", run.name, f"{run.from_point} → {run.to_point}", both_lengths(run.length), _size(run.size),
             _value(max(currents)), _value(worst.ampacity_A), _value(worst.drop_V),
         ))  # fmt: skip
     columns = (
-        ("Label", False), ("Run", False), ("from", False), ("to", False), ("length", False), ("size", False),
+        ("Label", False), ("Run", False), ("from → to", False), ("length", False), ("size", False),
         ("amps", True), ("ampacity", True), ("drop V", True),
     )  # fmt: skip
     _table(console, "Runs, with their largest current", columns, rows)
