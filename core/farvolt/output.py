@@ -1,5 +1,6 @@
 """The machine-readable output of a study: one object, names as in the file, SI numbers or null."""
 
+import math
 from dataclasses import asdict
 from typing import Any
 
@@ -8,19 +9,33 @@ from farvolt.results import CaseResult, Study
 OUTPUT = 1
 """Version of the output's shape."""
 
+_OWN = ("name", "solved", "share_held", "margin", "imbalance_A", "power_in_W", "power_loads_W", "power_lost_W")
+_TABLES = ("points", "sources", "runs", "loads")
+
 
 def as_object(study: Study) -> dict[str, Any]:
     """The object that `farvolt check PLAN --json` prints."""
-    return {
-        "output": OUTPUT,
-        "plan": study.plan.plan.name,
-        "cases": [_case(case) for case in study.cases],
-        "findings": [{**asdict(finding), "working": list(finding.working)} for finding in study.findings],
-    }
+    whole: dict[str, Any] = _plain(
+        {
+            "output": OUTPUT,
+            "plan": study.plan.plan.name,
+            "cases": [_case(case) for case in study.cases],
+            "findings": [asdict(finding) for finding in study.findings],
+        }
+    )
+    return whole
 
 
 def _case(case: CaseResult) -> dict[str, Any]:
-    # Devices, strings and ways are for the views; they have no place in version 1 of the output.
-    tables = {name: [asdict(one) for one in getattr(case, name)] for name in ("points", "sources", "runs", "loads")}
-    numbers = ("name", "solved", "share_held", "margin", "imbalance_A", "power_in_W", "power_loads_W", "power_lost_W")
-    return {**{name: getattr(case, name) for name in numbers}, **tables}
+    # What else a case carries is for the views and has no place in version 1 of the output.
+    own = {name: getattr(case, name) for name in _OWN}
+    return own | {name: [asdict(one) for one in getattr(case, name)] for name in _TABLES}
+
+
+def _plain(node: Any) -> Any:
+    """Lists for tuples, and null for a number that JSON does not have."""
+    if isinstance(node, dict):
+        return {key: _plain(one) for key, one in node.items()}
+    if isinstance(node, list | tuple):
+        return [_plain(one) for one in node]
+    return None if isinstance(node, float) and not math.isfinite(node) else node
