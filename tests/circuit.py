@@ -298,16 +298,19 @@ def _coupling(
 def _at_work(whole: Circuit) -> Circuit:
     """Leave out what is not fed: parts without a source that works, and loads between two parts."""
     fed_by_converter = {coupling.feeder.name: coupling for coupling in whole.couplings}
-    working = [one for one in whole.feeders if one.name not in fed_by_converter]
+    # A converter works where its input is fed, a diode where its upstream end is.
+    working = [one for one in whole.feeders if one.name not in fed_by_converter and not one.leak_S]
+    diodes = [one for one in whole.feeders if one.leak_S]
     nodes = set(whole.pins.values())
     while True:
         edges = [(one.a, one.b) for one in (*whole.resistors, *working)]
         part = connected(nodes, edges)
-        fed = {part[one.a] for one in working if one.leak_S == 0}
+        fed = {part[one.a] for one in working if not one.leak_S}
         joined = [
             one.feeder for one in whole.couplings
             if one.feeder not in working and part[one.drain.a] in fed and part[one.drain.a] == part[one.drain.b]
         ]  # fmt: skip
+        joined += [one for one in diodes if one not in working and part[one.b] in fed]
         if not joined:
             break
         working += joined

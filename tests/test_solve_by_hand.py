@@ -321,3 +321,45 @@ def test_warmer_copper_has_more_resistance() -> None:
     state = solve(built, operating.operating(built, plan.checked_cases[0]), np.array([1 + 0.00393 * 50]))
     found = Solved(plan, built, state)
     assert 12 - found.volts("lamp") == pytest.approx(0.66 * (1 + 0.00393 * 50), abs=2e-5)
+
+
+def test_a_diode_the_wrong_way_round_feeds_nothing() -> None:
+    wrong = DIODE.replace('from = "starter"; to = "bus"', 'from = "bus"; to = "starter"')
+    found = solved(plan_text(battery("starter", "starter", "12.8 V", "8 mohm"), wrong, *BESIDE_DIODE[1:]))
+    assert found.state.solved
+    assert found.load_amps["pump"] == 0.0
+    assert math.isnan(found.state.volts[found.network.feed("bus")])
+
+
+def test_a_full_battery_alone_stands_at_its_emf() -> None:
+    """Behind an open switch, whatever a charger beyond it would hold."""
+    switch = 'devices switch: kind = "switch"; from = "bank"; to = "bus"; state = "open"'
+    sources = battery("bank", "bank", "12.8 V", "10 mohm"), charger("charger", "bus", "14.4 V", "30 A")
+    found = solved(plan_text(*sources, switch, case('"bank" = "full"')))
+    assert found.volts("bank") == pytest.approx(12.8, abs=1e-6)
+    assert found.volts("bus") == pytest.approx(14.4, abs=1e-6)
+
+
+@pytest.mark.parametrize("watts", ["0.1 W", "2.3 W", "17 W"])
+def test_a_bank_of_little_resistance_with_a_small_load_is_solved(watts: str) -> None:
+    """48 V and 1 µohm: the current of a small load is all but lost in the rounding of the bank's own voltage."""
+    feed = wire("feed", "bank", "lamp", "20 mohm")
+    found = solved(
+        plan_text(battery("bank", "bank", "51.237 V"), feed, load("lamp", "lamp", power=watts), nominal="48 V")
+    )
+    assert found.state.solved
+
+
+def test_where_it_gives_way_no_load_is_below_its_knee() -> None:
+    """A controller at 1 % of its light holds 0.2 W at 40 % of 12 V: 4.8 V times the share's current."""
+    tables = [
+        battery("bank", "bank", "13 V", "2 mohm"),
+        'sources roof: kind = "solar"; at = "bus"; power = "20 W"; ceiling = "14 V"',
+        wire("back", "bank", "bus", "10 mohm", "return"),
+        'devices switch: kind = "switch"; from = "bank"; to = "bus"; state = "open"',
+        load("pump", "bus", current="8.75 A"),
+        case('"bank" = "full", "roof" = { irradiance = "1 %" }'),
+    ]
+    found = solved(plan_text(*tables))
+    assert found.volts("bus") >= 4.8
+    assert found.state.share_held == pytest.approx(0.2 / 4.8 / 8.75, abs=1e-3)

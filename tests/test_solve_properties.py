@@ -17,8 +17,6 @@ from strategies import LINEAR, Draft, Wishes, changed, drafts, plan_of, random_d
 EPSILON = float(np.finfo(float).eps)
 MIXED = Wishes()
 HEAVY = Wishes(load_share=3.0)
-BONDED = Wishes(bonded=1.0)
-"""The first point is bonded to the chassis by the plan itself."""
 quick = settings(deadline=None, max_examples=60)
 
 
@@ -241,7 +239,7 @@ def test_longer_cables_with_smaller_loads_keep_the_volts(draft: Draft, factor: f
 
 
 @quick
-@given(drafts(BONDED), st.randoms(use_true_random=False))
+@given(drafts(MIXED), st.randoms(use_true_random=False))
 def test_names_and_order_do_not_matter(draft: Draft, chance: random.Random) -> None:
     points = list(plan_of(draft).point_names)
     names = dict(
@@ -251,6 +249,8 @@ def test_names_and_order_do_not_matter(draft: Draft, chance: random.Random) -> N
     other = changed(draft, lambda table, key, value: names.get(value, value) if key in places else value)
     for table in ("sources", "runs", "devices", "loads"):
         chance.shuffle(other[table])
+    for one in (draft, other):
+        one["plan"]["reference"] = draft["sources"][0]["name"]
     assert same(solved(plan_of(other)), solved(plan_of(draft)))
 
 
@@ -272,7 +272,7 @@ def test_a_run_drawn_the_other_way_round_only_turns_its_current(draft: Draft, ch
 
 
 @quick
-@given(drafts(replace(BONDED, extra_batteries=0.0, chargers=0.0, solar=0.0, converters=0.0)))
+@given(drafts(replace(MIXED, extra_batteries=0.0, chargers=0.0, solar=0.0, converters=0.0)))
 def test_twin_branches_see_the_same_volts(draft: Draft) -> None:
     """Everything beyond the source's point is there twice: by symmetry both twins are alike."""
     twins = copy.deepcopy(draft)
