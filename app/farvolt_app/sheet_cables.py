@@ -21,14 +21,14 @@ OVER = "! OVER"
 NOT_STATED = "not stated"
 
 COLUMNS = (
-    Column("No.", 5, "0"), Column("Label", 8), Column("Run", 20), Column("From", 15), Column("To", 15),
+    Column("No.", 5, "0"), Column("Label", 8), Column("Run", 20), Column("From", 17), Column("To", 17),
     Column("Length one way (m)", 8.5, "0.00", input=True), Column("Length one way (ft)", 8.5, "0.0"),
     Column("All conductors (m)", 11, "0.00"), Column("All conductors (ft)", 11, "0.0"), Column("Size", 12),
     Column("Area (mm²)", 8, "0.00"), Column("AWG (~ nearest)", 10.5), Column("Parallel", 9, "0", input=True),
     Column("Material", 9.5), Column("Insulation (°C)", 10, "0"), Column("Feed colour", 9, input=True),
-    Column("Return colour", 9, input=True), Column("Protection", 25), Column("Design current (A)", 9, "0.00"),
+    Column("Return colour", 9, input=True), Column("Protection", 27), Column("Design current (A)", 9, "0.00"),
     Column("Ampacity (A)", 9.5, "0.0"), Column("Used (%)", 7.5, "0"), Column("Drop (V)", 8, "0.000"),
-    Column("Drop (%)", 7.5, "0.00"), Column("Loss (W)", 7.5, "0.00"), Column("Mark", 12),
+    Column("Drop (%)", 7.5, "0.00"), Column("Loss (W)", 7.5, "0.00"), Column("Mark", 11),
     Column("Case of the drop", 30, printed=False), Column("Nominal (V)", 9, "0.0", printed=False),
     Column("Conductor (°C)", 10, "0.0", printed=False), Column("Current in other cases (A)", 11, "0.00", printed=False),
     Column("Feed size", 11, printed=False), Column("Feed length (m)", 9, "0.00", printed=False),

@@ -1,5 +1,6 @@
 """A worksheet from columns and rows: headings, formats, print set-up, and text that can only ever be text."""
 
+import copy
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -70,7 +71,8 @@ def put(cell: Cell, value: Any) -> None:
     elif isinstance(value, str):
         cell.value = cell_text(value)
         cell.data_type = "s"
-        cell.quotePrefix = begins_like_formula(value)
+        if begins_like_formula(value):
+            cell.quotePrefix = True
     else:
         cell.value = value
 
@@ -82,9 +84,10 @@ def fill(sheet: Worksheet, header: Header, columns: Sequence[Column], rows: Sequ
         put(sheet.cell(place, 1), text or None)
         sheet.cell(place, 1).font = font
     _headings(sheet, columns)
+    styles: dict[Any, Any] = {}
     for number, row in enumerate(rows, start=FIRST):
         for place, (column, value) in enumerate(zip(columns, row, strict=True), start=1):
-            _write(sheet.cell(number, place), column, value)
+            _write(sheet.cell(number, place), column, value, styles)
         sheet.row_dimensions[number].height = _LINE_POINTS * max(map(_lines, columns, row))
     _print_setup(sheet, header, columns, len(rows))
 
@@ -100,8 +103,13 @@ def _headings(sheet: Worksheet, columns: Sequence[Column]) -> None:
     sheet.row_dimensions[HEADING_ROW].height = 44
 
 
-def _write(cell: Cell, column: Column, value: Any) -> None:
+def _write(cell: Cell, column: Column, value: Any, styles: dict[Any, Any]) -> None:
     put(cell, value)
+    kind = column, value is None, bool(cell.quotePrefix)
+    if kind in styles:
+        # Each setting of a style compares it with all others; a sheet of 90 000 cells took most of its time there.
+        cell._style = copy.copy(styles[kind])
+        return
     cell.number_format = column.format
     cell.font, cell.border = _PLAIN, _LINE
     if column.format == "General":
@@ -110,13 +118,14 @@ def _write(cell: Cell, column: Column, value: Any) -> None:
         cell.alignment = Alignment(vertical="top", horizontal="right")
     if column.input and value is not None:
         cell.fill = _INPUT_FILL
+    styles[kind] = cell._style
 
 
 def _lines(column: Column, value: Any) -> int:
     """Lines that a text takes in its column; not every program grows a row by itself."""
     if not isinstance(value, str) or not column.printed:
         return 1
-    return sum(max(1, math.ceil(len(line) / max(column.width - 2, 1))) for line in value.splitlines() or [""])
+    return sum(max(1, math.ceil(len(line) / max(column.width - 1.5, 1))) for line in value.splitlines() or [""])
 
 
 def setting(sheet: Worksheet, label: str, text: str, cell: str, value: Any, number_format: str) -> None:
