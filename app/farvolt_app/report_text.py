@@ -109,7 +109,7 @@ def _cases(console: Console, cases: tuple[CaseResult, ...]) -> None:
             "yes" if case.solved else f"gives way at {number(100 * case.share_held)} % of its loads",
             *(_value(watts if case.solved else None, 4) for watts in _powers(case)),
             "-" if case.margin is None else f"{number(case.margin)} x its loads",
-            f"{case.imbalance_A:.0e}",
+            "< 1e-9" if case.imbalance_A < 1e-9 else f"{case.imbalance_A:.0e}",
         )
         for case in cases
     ]
