@@ -60,3 +60,12 @@ def test_the_job_comes_first_and_then_two_commands() -> None:
     assert len(commands) == 2
     assert commands[0].endswith(".venv/bin/farvolt")
     assert "pytest" in commands[1]
+
+
+def test_contributors_find_every_module_in_its_page() -> None:
+    """DEVELOPERS.md names each module of the core and of the app, so that it cannot fall behind the code."""
+    root = Path(__file__).parent.parent
+    page = (root / "DEVELOPERS.md").read_text(encoding="utf-8")
+    modules = [*(root / "core" / "farvolt").glob("*.py"), *(root / "app" / "farvolt_app").glob("*.py")]
+    unnamed = [module.stem for module in modules if module.stem != "__init__" and f"`{module.stem}`" not in page]
+    assert unnamed == []
