@@ -18,6 +18,7 @@ from farvolt import __version__
 from farvolt.errors import FarvoltError
 
 if TYPE_CHECKING:
+    from farvolt.planfile import PlanFile
     from farvolt.results import Study
 
 FAILS, BAD_INPUT, INTERRUPTED = 1, 2, 130
@@ -125,6 +126,25 @@ def check(plan: str, as_json: bool, case_name: str | None, working: bool) -> Non
 
 @main.command()
 @click.argument("plan")
+@click.option("--load", required=True, help="Name of the load.")
+@click.option("--case", "case_name", help="Name of the case; the one with the largest drop unless given.")
+def drop(plan: str, load: str, case_name: str | None) -> None:
+    """Show what the voltage drop of a load of PLAN is made of, and what the next size of each run would gain.
+
+    The parts are the conductors and devices on its way, at the rulebook's conductor temperature; they sum to the drop.
+    """
+    from farvolt_app import drop_text
+
+    read = _read(plan)
+    with _placed(read, plan), _progress("Solving"):
+        from farvolt.study import prepared
+
+        context = prepared(read.plan, read.folder)
+    drop_text.show(context, load, case_name)
+
+
+@main.command()
+@click.argument("plan")
 @click.option("--output", "-o", required=True, help="File to write: .xlsx or .csv; - writes CSV to standard output.")
 def schedule(plan: str, output: str) -> None:
     """Write the cable schedule of PLAN: cables, loads, protection, shopping totals, findings.
@@ -197,15 +217,28 @@ def schema() -> None:
 
 
 def _studied(path: str) -> "Study":
-    """The study of a plan file; what it finds wrong in the plan is told with its lines."""
-    from farvolt import planfile
-    from farvolt.errors import PlanError, RulebookError
+    """The study of a plan file."""
     from farvolt.study import study
 
-    read = planfile.read(path)
+    read = _read(path)
+    with _placed(read, path), _progress("Solving and checking"):
+        return study(read.plan, read.folder)
+
+
+def _read(path: str) -> "PlanFile":
+    from farvolt import planfile
+
+    return planfile.read(path)
+
+
+@contextmanager
+def _placed(read: "PlanFile", path: str) -> Iterator[None]:
+    """What a study finds wrong in a plan is told with its lines."""
+    from farvolt import planfile
+    from farvolt.errors import PlanError, RulebookError
+
     try:
-        with _progress("Solving and checking"):
-            return study(read.plan, read.folder)
+        yield
     except (PlanError, RulebookError) as error:
         raise planfile.placed(error, read.text, path if read.path else "standard input") from None
 

@@ -30,8 +30,8 @@ def show(study: Study, case_name: str | None, working: bool) -> None:
 
     Raises FarvoltError, before anything is printed, for a case that the plan does not have.
     """
-    case = None if case_name is None else _named(study, case_name)
-    console = Console(highlight=False, width=None if sys.stdout.isatty() or "COLUMNS" in os.environ else PIPED_WIDTH)
+    case = None if case_name is None else study.cases[place(case_name, [one.name for one in study.cases], "case")]
+    console = open_console()
     plan = study.plan.plan
     console.print(Text(plan.name, style="bold"))
     rulebook = study.rulebook
@@ -51,26 +51,32 @@ def show(study: Study, case_name: str | None, working: bool) -> None:
     console.print(Text(f"\n{counts['fail']} failing, {counts['warn']} doubtful, {counts['note']} noted. {CAUTION}"))
 
 
-def _named(study: Study, name: str) -> CaseResult:
-    known = [case.name for case in study.cases]
+def open_console() -> Console:
+    """Standard output, as wide as the terminal says it is."""
+    return Console(highlight=False, width=None if sys.stdout.isatty() or "COLUMNS" in os.environ else PIPED_WIDTH)
+
+
+def place(name: str, known: list[str], what: str) -> int:
+    """Where a name stands among the known ones. Raises FarvoltError with what is accepted."""
     if name not in known:
         close = nearest(name, known)
         hint = f"; did you mean {close}?" if close else ""
         accepted = ", ".join(f'"{one}"' for one in known)
-        raise FarvoltError(f'there is no case "{name}"; accepted: {accepted}{hint}')
-    return study.cases[known.index(name)]
+        raise FarvoltError(f'there is no {what} "{name}"; accepted: {accepted}{hint}')
+    return known.index(name)
 
 
-def _table(console: Console, title: str, columns: Iterable[tuple[str, bool]], rows: Iterable[Iterable[str]]) -> None:
-    table = Table(title=Text(title, style="bold"), title_justify="left", box=None, pad_edge=False, padding=(0, 2, 0, 0))
+def table(out: Console, title: str, columns: Iterable[tuple[str, bool]], rows: Iterable[Iterable[str]]) -> None:
+    """Print a table under a title; each column has a heading, and says whether it holds numbers."""
+    found = Table(title=Text(title, style="bold"), title_justify="left", box=None, pad_edge=False, padding=(0, 2, 0, 0))
     for name, right in columns:
-        table.add_column(
+        found.add_column(
             Text(name), justify="right" if right else "left", overflow="fold", no_wrap=right or name in _WHOLE
         )
     for row in rows:
-        table.add_row(*(Text(cell) for cell in row))
-    console.print()
-    console.print(table)
+        found.add_row(*(Text(cell) for cell in row))
+    out.print()
+    out.print(found)
 
 
 def _findings(console: Console, findings: tuple[Finding, ...], working: bool) -> None:
@@ -113,7 +119,7 @@ def _cases(console: Console, cases: tuple[CaseResult, ...]) -> None:
         )
         for case in cases
     ]
-    _table(console, "Cases", columns, rows)
+    table(console, "Cases", columns, rows)
 
 
 def _powers(case: CaseResult) -> tuple[float, float, float]:
@@ -131,7 +137,7 @@ def _loads(console: Console, study: Study) -> None:
         name, worst = max(on, key=lambda pair: pair[1].drop_percent or 0.0)
         rows.append((load.name, load.at, _value(worst.volts, 4), _value(worst.amps), _value(worst.drop_percent), name))
     columns = (("Load", False), ("at", False), ("volts", True), ("amps", True), ("drop %", True), ("in case", False))
-    _table(console, "Loads, in the case with the largest drop", columns, rows)
+    table(console, "Loads, in the case with the largest drop", columns, rows)
 
 
 def _runs(console: Console, study: Study) -> None:
@@ -148,7 +154,7 @@ def _runs(console: Console, study: Study) -> None:
         ("Label", False), ("Run", False), ("from → to", False), ("length", False), ("size", False),
         ("amps", True), ("ampacity", True), ("drop V", True),
     )  # fmt: skip
-    _table(console, "Runs, with their largest current", columns, rows)
+    table(console, "Runs, with their largest current", columns, rows)
 
 
 def _size(size: object) -> str:
@@ -183,7 +189,7 @@ def _one_case(console: Console, case: CaseResult) -> None:
 
 def _numbers(console: Console, title: str, headings: tuple[str, ...], rows: Iterable[Iterable[str]]) -> None:
     """A table of a name and numbers."""
-    _table(console, title, (("name", False), *((heading, True) for heading in headings)), rows)
+    table(console, title, (("name", False), *((heading, True) for heading in headings)), rows)
 
 
 def _value(value: float | None, digits: int = 3) -> str:

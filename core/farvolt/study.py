@@ -34,19 +34,25 @@ def study(plan: Plan, folder: Path | None = None, *, margins: bool = True) -> St
 
     Raises RulebookError, and PlanError where the plan names what its rulebook or the tables do not have.
     """
+    context = prepared(plan, folder)
+    results = tuple(
+        one.solutions["plan"].result(
+            _margin(one) if margins else None, [found.amps if found else None for found in one.ampacities]
+        )
+        for one in context.cases
+    )
+    findings, taken = checks.run_all(context), assumptions(context)
+    # The study keeps the plan as it was written; interim sizes are the context's.
+    return Study(plan, context.rulebook, results, findings, taken, _nominals(context), context.interim)
+
+
+def prepared(plan: Plan, folder: Path | None = None) -> Context:
+    """All cases of a plan solved, under its rulebook. Raises as `study` does."""
     rulebook = load(plan.plan.rulebook, folder)
     faults = [*_class_faults(plan, rulebook), *_protection_faults(plan)]
     if faults:
         raise PlanError(faults)
-    context = build_context(plan, rulebook)
-    # The study keeps the plan as it was written; interim sizes are the context's.
-    results = tuple(
-        one.solutions["plan"].result(_margin(one) if margins else None, [found.amps if found else None for found in one.ampacities])
-        for one in context.cases
-    )
-    return Study(
-        plan, rulebook, results, checks.run_all(context), assumptions(context), _nominals(context), context.interim
-    )
+    return build_context(plan, rulebook)
 
 
 def _nominals(context: Context) -> dict[str, float]:
