@@ -17,6 +17,7 @@ from farvolt.output import as_object
 from farvolt.plan import Solar
 from farvolt.results import Study
 from farvolt.study import study
+from odd import odd_texts
 from strategies import Draft, drafts, plan_of
 
 EVERY_FIELD = Path(__file__).parent / "plans" / "every_field.toml"
@@ -139,6 +140,17 @@ def test_shape(which: str) -> None:
 def test_shape_of_any_plan(draft: Draft) -> None:
     result = study(plan_of(draft))
     jsonschema.validate(as_json(result), OUTPUT)
+
+
+@settings(max_examples=60, deadline=None)
+@given(odd_texts)
+def test_odd_plans_are_studied_and_what_gives_way_says_so(text: str) -> None:
+    found = as_json(study(planfile.parse(text)))
+    jsonschema.validate(found, OUTPUT)
+    for case in found["cases"]:
+        assert case["solved"] == (case["share_held"] == 1)
+        collapses = [one for one in found["findings"] if (one["rule"], one["case"]) == ("volts.collapse", case["name"])]
+        assert len(collapses) == (0 if case["solved"] else 1)
 
 
 @pytest.mark.parametrize("which", TEXTS)

@@ -39,7 +39,10 @@ def _translated(error: QuantityError) -> PydanticCustomError:
 def _reader(
     dimension: str, *, minimum: float | None = None, above: float | None = None, maximum: float | None = None
 ) -> Any:
-    """A validator that reads a quantity and holds it to a range in base units."""
+    """A validator that reads a quantity and holds it to a range in base units.
+
+    The ranges are wide of anything that is built: what lies outside is a slip, such as a wrong unit.
+    """
 
     def read(value: Any) -> Quantity:
         if isinstance(value, Quantity):
@@ -144,19 +147,25 @@ def _day_span(span: str) -> str:
 
 _read_temperature = _reader("temperature", minimum=-100, maximum=300)
 
-Length = Annotated[Quantity, BeforeValidator(_reader("length", above=0, maximum=1e5)), _schema("length")]
+Length = Annotated[Quantity, BeforeValidator(_reader("length", above=0, minimum=1e-3, maximum=1e5)), _schema("length")]
 Distance = Annotated[Quantity, BeforeValidator(_reader("length", minimum=0, maximum=1e5)), _schema("length")]
 Power = Annotated[Quantity, BeforeValidator(_reader("power", minimum=0, maximum=1e7)), _schema("power")]
 Current = Annotated[Quantity, BeforeValidator(_reader("current", minimum=0, maximum=1e6)), _schema("current")]
-Rating = Annotated[Quantity, BeforeValidator(_reader("current", above=0, maximum=1e6)), _schema("current")]
-Voltage = Annotated[Quantity, BeforeValidator(_reader("voltage", above=0, maximum=1500)), _schema("voltage")]
-Resistance = Annotated[Quantity, BeforeValidator(_reader("resistance", above=0, maximum=1e9)), _schema("resistance")]
-AnyResistance = Annotated[
-    Quantity, BeforeValidator(_reader("resistance", minimum=0, maximum=1e9)), _schema("resistance")
+Rating = Annotated[
+    Quantity, BeforeValidator(_reader("current", above=0, minimum=1e-3, maximum=1e6)), _schema("current")
 ]
-Charge = Annotated[Quantity, BeforeValidator(_reader("charge", above=0, maximum=1e7)), _schema("charge")]
+Voltage = Annotated[
+    Quantity, BeforeValidator(_reader("voltage", above=0, minimum=1e-3, maximum=1500)), _schema("voltage")
+]
+Resistance = Annotated[
+    Quantity, BeforeValidator(_reader("resistance", above=0, minimum=1e-9, maximum=1e6)), _schema("resistance")
+]
+AnyResistance = Annotated[
+    Quantity, BeforeValidator(_reader("resistance", minimum=0, maximum=1e6)), _schema("resistance")
+]
+Charge = Annotated[Quantity, BeforeValidator(_reader("charge", above=0, minimum=1e-3, maximum=1e7)), _schema("charge")]
 Share = Annotated[Quantity, BeforeValidator(_reader("share", minimum=0, maximum=1)), _schema("share")]
-Efficiency = Annotated[Quantity, BeforeValidator(_reader("share", above=0, maximum=1)), _schema("share")]
+Efficiency = Annotated[Quantity, BeforeValidator(_reader("share", above=0, minimum=0.01, maximum=1)), _schema("share")]
 Temperature = Annotated[Quantity, BeforeValidator(_read_temperature), _schema("temperature")]
 ConductorTemperature = Annotated[
     Quantity | Literal["rulebook", "rated", "ambient", "estimated"],
