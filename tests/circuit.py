@@ -50,6 +50,8 @@ class Feeder:
     floor: float = 1.0
     """Below this voltage a power is taken as the current it gives here."""
     leak_S: float = 0.0
+    upstream: int = -1
+    """The end at which a diode has to be fed to work; -1 for a source."""
 
     def amps(self, u: float) -> float:
         """Current delivered at the voltage u."""
@@ -260,7 +262,9 @@ def _diode(device: Device, pins: dict[Pin, int]) -> Feeder:
     assert device.resistance is not None
     pole = "-" if device.pole == "return" else "+"
     a, b = pins[device.to_point, pole], pins[device.from_point, pole]
-    return Feeder(device.name, a, b, -device.drop.si, device.resistance.si, 0.0, float("inf"), leak_S=BLOCKED_S)
+    upstream = a if device.pole == "return" else b
+    drop, ohm = -device.drop.si, device.resistance.si
+    return Feeder(device.name, a, b, drop, ohm, 0.0, float("inf"), leak_S=BLOCKED_S, upstream=upstream)
 
 
 def _drain(load: Load, share: float, pins: dict[Pin, int], nominal: dict[int, float]) -> Drain:
@@ -310,7 +314,7 @@ def _at_work(whole: Circuit) -> Circuit:
             one.feeder for one in whole.couplings
             if one.feeder not in working and part[one.drain.a] in fed and part[one.drain.a] == part[one.drain.b]
         ]  # fmt: skip
-        joined += [one for one in diodes if one not in working and part[one.b] in fed]
+        joined += [one for one in diodes if one not in working and part[one.upstream] in fed]
         if not joined:
             break
         working += joined

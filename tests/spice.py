@@ -14,7 +14,7 @@ from pathlib import Path
 
 from circuit import Circuit, Drain, Feeder, connected
 
-STEP_S, REST_S = 0.1, 2.0
+STEP_S = 0.1
 OPTIONS = "reltol=1e-9 abstol=1e-9 vntol=1e-9 gmin=1e-15 itl1=1000 itl4=1000 trtol=1e9 method=gear maxord=1"
 """First order and steps of their full length: only the end counts, not how accurately it gets there."""
 
@@ -30,20 +30,30 @@ class Answer:
     @property
     def complete(self) -> bool:
         """Whether it reached the end; otherwise it failed to converge on the way."""
-        return bool(self.times_s) and abs(self.times_s[-1] - self.rise_s - REST_S) < 1e-9
+        return bool(self.times_s) and abs(self.times_s[-1] - 2 * self.rise_s) < 1e-9
 
     def share_held(self, circuit: Circuit) -> float:
-        """The share of the loads at which the first of them falls below its knee; 1 where none does."""
-        demanding = [one for one in circuit.drains if one.watts or one.amps] + [one.drain for one in circuit.couplings]
-        for time_s, volts in zip(self.times_s, self.volts, strict=True):
-            if any(volts[one.a] - volts[one.b] < one.knee for one in demanding):
-                return min(time_s / self.rise_s, 1.0)
-        return 1.0
+        """The share of the loads at which the first of them falls below its knee; 1 where none does so early."""
+        times_s = (time_s for time_s, volts in zip(self.times_s, self.volts, strict=True) if _falls(circuit, volts))
+        return min(next(times_s, self.rise_s) / self.rise_s, 1.0)
+
+    def holds(self, circuit: Circuit) -> bool:
+        """Whether all loads are above their knees in the end."""
+        return self.complete and not _falls(circuit, self.volts[-1])
+
+
+def _falls(circuit: Circuit, volts: dict[int, float]) -> bool:
+    """Whether a load that needs its voltage is below its knee."""
+    demanding = [one for one in circuit.drains if one.watts or one.amps] + [one.drain for one in circuit.couplings]
+    return any(volts[one.a] - volts[one.b] < one.knee for one in demanding)
 
 
 def answer(circuit: Circuit, rise_s: float = 2.0) -> Answer:
-    """Run ngspice on a circuit; the longer the rise, the nearer it stays to the volts of each share."""
-    end_s = rise_s + REST_S
+    """Run ngspice on a circuit; the longer the rise, the nearer it stays to the volts of each share.
+
+    The loads then stay on for as long again.
+    """
+    end_s = 2 * rise_s
     ends = [*circuit.feeders, *circuit.drains, *(one.drain for one in circuit.couplings)]
     start = _no_load(circuit)
     rows = _run(circuit, [

@@ -184,7 +184,11 @@ def _device(chance: random.Random, draft: Draft, start: str, end: str) -> None:
 
 
 def _diode(chance: random.Random, draft: Draft, start: str, end: str) -> None:
-    device = {"name": f"device {len(draft['devices']) + 1}", "from": start, "to": end, "kind": "diode"}
+    device = {"name": f"device {len(draft['devices']) + 1}", "kind": "diode"}
+    if chance.random() < 0.25:
+        device |= {"from": end, "to": start, "pole": "return"}
+    else:
+        device |= {"from": start, "to": end}
     device |= {"drop": _uniform(chance, 0.2, 0.7, "V"), "resistance": _ohm(chance, 1e-3, 5e-3)}
     draft["devices"].append(device)
 

@@ -263,6 +263,16 @@ def test_a_diode_conducts_above_its_drop() -> None:
     assert found.source_amps == pytest.approx({"bank": -10.0, "starter": 30.0}, abs=0.01)
 
 
+@pytest.mark.parametrize(("start", "end", "pole"), [("bus", "lamp", "feed"), ("lamp", "bus", "return")])
+def test_a_diode_ahead_of_a_constant_power(start: str, end: str, pole: str) -> None:
+    """E − drop behind r = 12 mohm in all, in either pole: u = E'/2 + sqrt(E'²/4 − P·r) with E' = 12.4 V, 120 W."""
+    diode = f'devices diode: kind = "diode"; from = "{start}"; to = "{end}"; pole = "{pole}"; drop = "0.4 V"'
+    tables = battery("bank", "bus", "12.8 V", "10 mohm"), diode + '; resistance = "2 mohm"'
+    found = solved(plan_text(*tables, load("lamp", "lamp", power="120 W")))
+    assert found.state.solved
+    assert found.volts("lamp") == pytest.approx(6.2 + math.sqrt(6.2**2 - 120 * 0.012), abs=1e-5)
+
+
 def test_a_diode_blocks_the_other_way() -> None:
     """20 A from 12.8 V behind 10 mohm: 12.6 V; the starter battery at 12 V stays as it is."""
     sources = battery("bank", "bus", "12.8 V", "10 mohm"), battery("starter", "starter", "12 V", "8 mohm")

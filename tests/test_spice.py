@@ -96,7 +96,7 @@ def test_node_volts_agree_with_ngspice(kind: str, record_property: Callable[[str
     record_property("summary", summary)
     print(summary)
     assert {one.seed: one.difference_V for one in answered if not one.difference_V <= AGREE_V} == {}
-    assert [one.seed for one in falling if one.reference.share_held(one.circuit) == 1] == []
+    assert [one.seed for one in falling if one.reference.holds(one.circuit)] == []
     assert len(solved) - len(answered) + len(again) <= REFERENCE_MAY_FAIL * len(found)
     assert len(answered) >= 0.75 * KINDS[kind][1]
 
@@ -130,7 +130,7 @@ def test_what_holds_holds_in_ngspice_too() -> None:
     found = [
         one for one in (compare(seed, wishes) for seed in range(200, 260)) if one.circuit.live and one.state.solved
     ]
-    assert [one.seed for one in found if one.reference.share_held(one.circuit) < 1] == []
+    assert [one.seed for one in found if not one.reference.holds(one.circuit)] == []
     assert len(found) >= 20
 
 
