@@ -74,7 +74,7 @@ def test_longest_runs_of_the_aviation_circular(feet: float, printed_V: float) ->
 
 
 def test_sixteen_gauge_in_a_building() -> None:
-    """Electricians' course text with NEC chapter 9 Table 8: 16 AWG of 4.99 ohm/kFT, 100 ft one way, 4 A at 24 V:
+    """NEC chapter 9 Table 8, as US trade texts work it: 16 AWG of 4.99 ohm/kFT, 100 ft one way, 4 A at 24 V:
     4.0 V. The table's strand lies a little longer than the 2 % counted here."""
     found = drop_V('size = "16 AWG"\nstrand = "stranded"', one_way_ft(100), 4, degC=75, nominal=24)
     assert found == pytest.approx(3.992, rel=5e-3)
@@ -82,7 +82,7 @@ def test_sixteen_gauge_in_a_building() -> None:
 
 
 def test_twelve_gauge_in_a_building() -> None:
-    """Trade maths study guide with NEC chapter 9 Table 8: 12 AWG of 1.98 ohm/kFT, 100 ft one way, 20 A: 7.92 V."""
+    """NEC chapter 9 Table 8, as a US trade maths guide works it: 12 AWG of 1.98 ohm/kFT, 100 ft one way, 20 A: 7.92 V."""
     found = drop_V('size = "12 AWG"\nstrand = "stranded"', one_way_ft(100), 20, degC=75)
     assert found == pytest.approx(7.92, rel=7e-3)
 
@@ -96,7 +96,7 @@ def test_circular_mils_at_75_degrees() -> None:
 
 @pytest.mark.parametrize(("size", "feet", "ohm"), [("12 AWG", 2500, 4.05), ("7 AWG", 6000, 3.048)])
 def test_resistance_of_a_length_of_wire(size: str, feet: float, ohm: float) -> None:
-    """Navy NEETS module 4, question 1-12: solid No. 12 (1.62 ohm/kFT) and No. 7 (0.508 ohm/kFT) at 25 °C.
+    """NEETS (US Navy), module 4, question 1-12: solid No. 12 (1.62 ohm/kFT) and No. 7 (0.508 ohm/kFT) at 25 °C.
     The run has two wires, so half the length each; 1 A drops as many volts as it has ohms."""
     found = drop_V(f'size = "{size}"\nstrand = "solid"', one_way_ft(feet / 2), 1, degC=25)
     assert found == pytest.approx(ohm, rel=1e-3)
