@@ -82,7 +82,7 @@ def test_sixteen_gauge_in_a_building() -> None:
 
 
 def test_twelve_gauge_in_a_building() -> None:
-    """NEC chapter 9 Table 8, as a US trade maths guide works it: 12 AWG of 1.98 ohm/kFT, 100 ft one way, 20 A: 7.92 V."""
+    """NEC chapter 9 Table 8, in a US trade guide: 12 AWG of 1.98 ohm/kFT, 100 ft one way, 20 A: 7.92 V."""
     found = drop_V('size = "12 AWG"\nstrand = "stranded"', one_way_ft(100), 20, degC=75)
     assert found == pytest.approx(7.92, rel=7e-3)
 
