@@ -25,6 +25,10 @@ FAILS, BAD_INPUT, INTERRUPTED = 1, 2, 130
 """Exit codes beside 0: a limit is broken; the input cannot be used; Ctrl+C, as a shell has it."""
 
 
+# A plan's matrices are small: threads would only wait for each other. Set before numpy is first imported.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+
+
 class _Commands(click.Group):
     """Turns the library's errors into one message and exit code 2."""
 
@@ -74,8 +78,9 @@ def main(ctx: click.Context) -> None:
       farvolt check my-van.toml        solve it and hold it against its rulebook
       farvolt schedule my-van.toml -o cables.xlsx
 
-    A plan is one text file; PLAN may be - for standard input. Exit codes: 0 nothing fails, 1 something fails a
-    check, 2 the input cannot be used. Figures are for planning: check local codes and have the work inspected.
+    A plan is one text file; check and schedule read it from standard input where PLAN is -. Exit codes: 0 nothing
+    fails, 1 something fails a check, 2 the input cannot be used. Figures are for planning: check local codes and
+    have the work inspected.
     """
     if ctx.invoked_subcommand is None:
         ctx.invoke(open_pages, plan=None)
@@ -189,7 +194,7 @@ def new(file: str) -> None:
 
 @main.command("examples")
 @click.argument("name", required=False)
-@click.option("--output", "-o", help="File to copy the example to; NAME.toml in this folder unless given.")
+@click.option("--output", "-o", help="File to copy it to; NAME.toml here unless given, - for output.")
 def list_examples(name: str | None, output: str | None) -> None:
     """List the example plans, or copy the one called NAME. All are invented."""
     from farvolt import examples, planfile

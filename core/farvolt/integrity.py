@@ -20,6 +20,9 @@ _CASE_SOURCE_FIELDS = {
     "converter": ("state", "volts", "amps"),
 }
 
+COMPARISONS = 200_000
+"""Nearest names are looked for until about so many pairs were compared: a file may hold thousands of both."""
+
 Path = tuple[str | int, ...]
 Found = tuple[Path, Fault]
 """A fault with its path in the raw tables."""
@@ -169,13 +172,15 @@ class _Names:
         self._what = what
         self._known = dict.fromkeys(known)
         self._near: dict[str, str] = {}
+        self._comparisons_left = COMPARISONS
 
     def unknown(self, path: Path, where: str, field: str, given: Any) -> Iterator[Found]:
         """A fault if `given` is a name that is not there."""
         if not isinstance(given, str) or given in self._known:
             return
         if given not in self._near:
-            self._near[given] = nearest(given, self._known)
+            self._near[given] = nearest(given, self._known) if self._comparisons_left > 0 else ""
+            self._comparisons_left -= len(self._known)
         some = [f'"{shorten(name, 30)}"' for name in islice(self._known, 8)]
         accepted = ", ".join(some) + (", …" if len(self._known) > 8 else "")
         accepted = accepted or f"the plan defines none; define it, or leave {field} out"
