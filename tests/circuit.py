@@ -207,7 +207,7 @@ def _run_ohm(run: Run) -> dict[str, float]:
     if run.resistance is not None:
         whole = run.resistance.si / (1 + COPPER_PER_K * (run.resistance_temperature.si - 20))
         return {pole: whole * ohm / sum(cable.values()) for pole, ohm in cable.items()}
-    joints = run.joints * run.joint_resistance.si
+    joints = run.joints * run.joint_resistance.si / run.parallel
     words = {"+": "feed", "-": "return"}
     return {pole: ohm + joints + _protection_ohm(run, words[pole]) for pole, ohm in cable.items()}
 

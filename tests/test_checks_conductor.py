@@ -152,8 +152,12 @@ ONE_WAY = Wishes(
 @settings(max_examples=25, deadline=None)
 @given(st.integers(0, 10**6), st.data())
 def test_enlarging_a_cable_of_a_tree_overloads_none(seed: int, data: st.DataObject) -> None:
-    """One battery, no loops, no heaters: less resistance lets every load draw no more than before."""
+    """One battery, no loops, no heaters: less resistance lets every load draw no more than before.
+
+    A case that gives way has no currents to compare with: its thicker cable may make it hold, and then be overloaded.
+    """
     plan = drafted(random_draft(random.Random(seed), ONE_WAY))
+    assume(not fails(plan, "volts.collapse"))
     sized = [run for run in plan.runs if run.size is not None]
     assume(sized)
     run = data.draw(st.sampled_from(sized))

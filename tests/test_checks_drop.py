@@ -91,7 +91,7 @@ def test_sizes_that_are_made_may_not_be_enough() -> None:
 
 
 def test_published_two_wire_drop() -> None:
-    """US electrician course text, NEC chapter 9 Table 8: 16 AWG, 4.99 ohm/1000 ft at 75 degC, 100 ft one way, 4 A.
+    """NEC chapter 9 Table 8: 16 AWG, 4.99 ohm/1000 ft at 75 degC, 100 ft one way, 4 A.
 
     2 x 4 A x 100 ft x 4.99 / 1000 = 3.992 V; / 24 V = 16.63 %.
     """

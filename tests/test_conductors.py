@@ -195,7 +195,7 @@ def test_awg_resistances_at_75_degc_agree_with_the_nec(row: dict[str, str]) -> N
 
 
 @pytest.mark.parametrize(("name", "ohm_per_1000_ft"), [("12 AWG", 1.62), ("7 AWG", 0.508)])
-def test_solid_wire_at_25_degc_agrees_with_the_navy_course_table(name: str, ohm_per_1000_ft: float) -> None:
+def test_solid_wire_at_25_degc_agrees_with_neets_module_4(name: str, ohm_per_1000_ft: float) -> None:
     # US Navy NEETS Module 4, standard annealed solid copper at 25 degC.
     ohm = resistance_ohm_per_m(parse_size(name), "copper", "solid", 25) * FEET_1000_M
     assert ohm == pytest.approx(ohm_per_1000_ft, rel=0.002)

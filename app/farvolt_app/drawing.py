@@ -127,9 +127,7 @@ class _Drawing:
     def _group(self, caption: Caption, parts: Iterable[str]) -> str:
         kind, name = caption.key
         title = f"<title>{escaped(caption.whole)}</title>"
-        return (
-            f'<g data-kind="{kind}" data-name={attribute(name)} tabindex="0">{title}{"".join(parts)}</g>'
-        )
+        return f'<g data-kind="{kind}" data-name={attribute(name)} tabindex="0">{title}{"".join(parts)}</g>'
 
     def _way(self, way: PlacedWay) -> str:
         kind, name = way.key
@@ -312,6 +310,7 @@ class _Drawing:
         return symbols.rectangle(x, y, width, height, self.theme.ink, colour, ' rx="3"') + element(
             text, x + width / 2, y + 12, legible_on(colour), "middle"
         )
+
 
 def _beside(device: Device) -> float:
     """How far the details stand to the right of a symbol that reaches below the line."""

@@ -313,9 +313,7 @@ class _Placing:
         label = self._box(x + PAD if left else x - PAD - name, name, branch.row, _NAME)
         figure = self._box(x + PAD if left else x - PAD - volts, volts, branch.row, _VOLTS)
         joints = tuple(self.y[row] for row in taken)
-        return PlacedPoint(
-            branch.point, x, self.y[branch.row], joints[0], joints[-1], joints, label, figure, not left
-        )
+        return PlacedPoint(branch.point, x, self.y[branch.row], joints[0], joints[-1], joints, label, figure, not left)
 
     def _tree_way(self, branch: Branch) -> PlacedWay:
         assert branch.way is not None

@@ -19,12 +19,8 @@ class Theme:
     most: tuple[float, float]
 
 
-LIGHT = Theme(
-    "#ffffff", "#16202b", "#4a5866", "#b9c3cd", "#f5f7f9", "#a3151f", "#7a4b00", (0.42, 0.11), (0.95, 0.03)
-)
-DARK = Theme(
-    "#12181f", "#eef2f5", "#a9b6c2", "#4b5864", "#1b232c", "#ff8f86", "#f3bd5e", (0.93, 0.05), (0.34, 0.07)
-)
+LIGHT = Theme("#ffffff", "#16202b", "#4a5866", "#b9c3cd", "#f5f7f9", "#a3151f", "#7a4b00", (0.42, 0.11), (0.95, 0.03))
+DARK = Theme("#12181f", "#eef2f5", "#a9b6c2", "#4b5864", "#1b232c", "#ff8f86", "#f3bd5e", (0.93, 0.05), (0.34, 0.07))
 """What has lost most stands out most from the paper: dark on white, light on black."""
 
 _HUE = 245.0

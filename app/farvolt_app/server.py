@@ -115,6 +115,7 @@ def environment_for(plan_path: Path | None, folder: str) -> dict[str, str]:
     """The environment of the pages: the plan to open, and the folder where drafts are kept meanwhile."""
     known = {name: value for name, value in os.environ.items() if name != PLAN_VARIABLE}
     known[FOLDER_VARIABLE] = folder
+    known.setdefault("OPENBLAS_NUM_THREADS", "1")  # a plan's matrices are small: threads only wait for each other
     return known | ({PLAN_VARIABLE: str(plan_path.absolute())} if plan_path else {})
 
 

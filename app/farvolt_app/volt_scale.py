@@ -2,7 +2,7 @@
 
 import math
 
-from farvolt.plan import CHASSIS, Battery, Device, Plan, Run
+from farvolt.plan import Plan
 from farvolt.results import CaseResult
 from farvolt_app.palette import Theme, ramp
 
@@ -15,7 +15,7 @@ class Scale:
 
     def __init__(self, plan: Plan, case: CaseResult | None, theme: Theme) -> None:
         self.theme = theme
-        self._nominal = nominals(plan)
+        self._nominal = dict.fromkeys(plan.point_names, plan.plan.nominal.si) | dict(case.nominal_V if case else {})
         volts = {one.name: one.volts for one in case.points if one.volts is not None} if case else {}
         percents = [100 * value / self._nominal[name] for name, value in volts.items()]
         self.most = float(math.ceil(max(percents))) if percents else 0.0
@@ -27,33 +27,3 @@ class Scale:
             return self.theme.paper
         percent = 100 * volts / self._nominal[point]
         return ramp(self.theme, (percent - self.least) / (self.most - self.least))
-
-
-def nominals(plan: Plan) -> dict[str, float]:
-    """Nominal voltage in volt of the island that each point lies in, by the rule the solver goes by.
-
-    A source that is not a battery may state the nominal of its island; the reference source has the plan's.
-    """
-    joined: dict[str, list[str]] = {point: [] for point in plan.point_names}
-    between: list[Run | Device] = [*(run for run in plan.runs if run.conducts != "return"), *plan.devices]
-    for one in between:
-        if CHASSIS not in (one.from_point, one.to_point):
-            joined[one.from_point].append(one.to_point)
-            joined[one.to_point].append(one.from_point)
-    found = dict.fromkeys(joined, plan.plan.nominal.si)
-    for source in sorted(plan.sources, key=lambda one: one.name == plan.reference):
-        stated = None if isinstance(source, Battery) else source.nominal
-        if source.name == plan.reference:
-            stated = plan.plan.nominal
-        if stated is not None:
-            found.update(dict.fromkeys(_reached(source.at, joined), stated.si))
-    return found
-
-
-def _reached(start: str, joined: dict[str, list[str]]) -> set[str]:
-    waiting, seen = [start], {start}
-    while waiting:
-        fresh = [one for one in joined[waiting.pop()] if one not in seen]
-        seen.update(fresh)
-        waiting += fresh
-    return seen

@@ -48,6 +48,11 @@ class _Steps:
     bases: list[str] = field(default_factory=list)
     provisional: bool = False
 
+    @property
+    def basis(self) -> str:
+        """All sources used, marked where any of their figures is from memory."""
+        return "; ".join(self.bases) + (" (provisional)" if self.provisional else "")
+
     def say(self, line: str) -> None:
         self.working.append(line)
 
@@ -88,11 +93,11 @@ def ampacity(
         bundle = _bundle(steps, rulebook.bundling, max(conductors, parallel))
     except _MissingError as missing:
         steps.say(str(missing))
-        return Ampacity(None, tuple(steps.working), "; ".join(steps.bases), steps.provisional, str(missing))
+        return Ampacity(None, tuple(steps.working), steps.basis, steps.provisional, str(missing))
     amps = cell.value * engine * ambient * bundle * parallel
     steps.say(_product(cell.value, (engine, ambient, bundle), parallel, amps))
     return Ampacity(
-        amps, tuple(steps.working), "; ".join(steps.bases), steps.provisional, "",
+        amps, tuple(steps.working), steps.basis, steps.provisional, "",
         cell.value, listed, column, engine, ambient, bundle, parallel,
     )  # fmt: skip
 
@@ -216,9 +221,7 @@ def _published(steps: _Steps, rule: AmbientCorrection, column_degC: float, ambie
     return cell.value
 
 
-def _formula(
-    steps: _Steps, basis: Basis, column_degC: float, ambient_degC: float, reference_degC: float
-) -> float:
+def _formula(steps: _Steps, basis: Basis, column_degC: float, ambient_degC: float, reference_degC: float) -> float:
     """sqrt((Tc − Ta) / (Tc − reference)): heat is shed with the difference, and made with I²."""
     factor = math.sqrt((column_degC - ambient_degC) / (column_degC - reference_degC))
     hot, cool, column = number(ambient_degC), number(reference_degC), number(column_degC)

@@ -3,12 +3,12 @@
 Tables: data `batteries/`, each row with its source. Ranges are taken at their middle and said to be typical.
 """
 
-import csv
 from dataclasses import dataclass
 from functools import lru_cache
 from itertools import pairwise
 
 from farvolt.plan import Battery
+from farvolt.tables import read
 from farvolt_data import ROOT
 
 ESTIMATED = "estimated from a table of typical values"
@@ -32,26 +32,32 @@ class BatteryModel:
 @lru_cache
 def _rest_rows() -> dict[str, tuple[float, list[tuple[float, float]]]]:
     table: dict[str, tuple[float, list[tuple[float, float]]]] = {}
-    with (ROOT / "batteries" / "rest_voltage.csv").open(newline="", encoding="utf-8") as file:
-        for row in csv.DictReader(file):
-            middle = (float(row["low_V_per_cell"]) + float(row["high_V_per_cell"])) / 2
-            _, points = table.setdefault(row["chemistry"], (float(row["cell_nominal_V"]), []))
-            points.append((float(row["charge_percent"]) / 100, middle))
+    for row in read(ROOT / "batteries" / "rest_voltage.csv"):
+        middle = (float(row["low_V_per_cell"]) + float(row["high_V_per_cell"])) / 2
+        _, points = table.setdefault(row["chemistry"], (float(row["cell_nominal_V"]), []))
+        points.append((float(row["charge_percent"]) / 100, middle))
     return {name: (nominal, sorted(points)) for name, (nominal, points) in table.items()}
 
 
 @lru_cache
 def _resistance_rows() -> dict[str, float]:
-    with (ROOT / "batteries" / "resistance.csv").open(newline="", encoding="utf-8") as file:
-        return {
-            row["chemistry"]: (float(row["low_mohm_100Ah_12V"]) + float(row["high_mohm_100Ah_12V"])) / 2e3
-            for row in csv.DictReader(file)
-        }
+    return {
+        row["chemistry"]: (float(row["low_mohm_100Ah_12V"]) + float(row["high_mohm_100Ah_12V"])) / 2e3
+        for row in read(ROOT / "batteries" / "resistance.csv")
+    }
 
 
 def cells(chemistry: str, nominal_V: float) -> int:
-    """Cells in series for a nominal voltage: 12 V lead-acid has 6, 12.8 V LFP has 4."""
-    return max(1, round(nominal_V / _rest_rows()[chemistry][0]))
+    """Cells in series for a nominal voltage: 12 V lead-acid has 6, LFP has 4 for each 12 V of a system.
+
+    A system's 12, 24, 36 or 48 V are filled with whole 12 V blocks where the chemistry makes one; any other voltage
+    is taken as the battery's own, at the nominal voltage of a cell.
+    """
+    cell_V = _rest_rows()[chemistry][0]
+    block = round(12 / cell_V)
+    if block * cell_V >= 12 and nominal_V % 12 == 0:
+        return int(block * nominal_V // 12)
+    return max(1, round(nominal_V / cell_V))
 
 
 def rest_voltage_V(chemistry: str, charge: float, nominal_V: float) -> float:

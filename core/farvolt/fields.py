@@ -68,9 +68,7 @@ class Fields:
         """One of the accepted texts."""
         return self._one_of(key, self.text(key, default), accepted)
 
-    def choices(
-        self, key: str, accepted: Sequence[str], default: Sequence[str] | None = None
-    ) -> tuple[str, ...]:
+    def choices(self, key: str, accepted: Sequence[str], default: Sequence[str] | None = None) -> tuple[str, ...]:
         """A list of accepted texts."""
         return tuple(self._one_of(key, value, accepted) for value in self.texts(key, default))
 

@@ -15,6 +15,8 @@ from numpy.typing import NDArray
 from farvolt import conductors, protection_types
 from farvolt.plan import CHASSIS, Battery, Converter, Device, Plan, ReturnConductor, Run
 from farvolt.rulebook import Rulebook
+from farvolt.tables import read
+from farvolt_data import ROOT
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -22,18 +24,13 @@ Ints = NDArray[np.int64]
 FEED, RETURN, BOND = 0, 1, 2
 """Poles of a branch; a bond ties a return to the chassis or the returns of a converter together."""
 
-CONTACT_OHM = {
-    "switch": 0.3e-3,
-    "selector": 0.3e-3,
-    "relay": 0.3e-3,
-    "shunt": 0.1e-3,
-    "connector": 0.5e-3,
-    "diode": 2e-3,
-}
-"""Resistance of a device that states none. From memory of typical data sheets: provisional."""
+_CONTACTS = read(ROOT / "devices" / "contact.csv")
 
-DIODE_DROP_V = 0.5
-"""Forward drop of a diode that states none (Schottky type, from memory: provisional)."""
+CONTACT_OHM = {row["kind"]: float(row["resistance_mohm"]) / 1000 for row in _CONTACTS}
+"""Resistance of a device that states none, by kind. From memory: provisional."""
+
+DIODE_DROP_V = next(float(row["forward_drop_V"]) for row in _CONTACTS if row["forward_drop_V"])
+"""Forward drop of a diode that states none. From memory: provisional."""
 
 LEAST_OHM = 1e-6
 """No contact is better than this; a stated zero is taken as it."""
@@ -168,8 +165,8 @@ def return_size(run: Run) -> conductors.Size | None:
 
 
 def joints_ohm(run: Run) -> float:
-    """Resistance of the joints in one conductor of a run (each conductor has them)."""
-    return run.joints * run.joint_resistance.si
+    """Resistance of the joints in one pole of a run: every conductor has them, and parallel ones share the current."""
+    return run.joints * run.joint_resistance.si / run.parallel
 
 
 def protection_ohm(run: Run, pole: str) -> float:

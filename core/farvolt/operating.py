@@ -83,6 +83,16 @@ def components(count: int, a: Ints, b: Ints) -> Ints:
     return np.array([root(node) for node in range(count)], dtype=np.int64)
 
 
+SYSTEMS_V = (6.0, 12.0, 24.0, 32.0, 36.0, 48.0)
+"""Usual nominal voltages of systems (common practice)."""
+
+
+def system_nominal_V(battery_V: float) -> float:
+    """Nominal voltage of the system that a battery's own nominal stands for: 12.8 V and 11.1 V mean 12 V."""
+    near = min(SYSTEMS_V, key=lambda volts: abs(battery_V / volts - 1))
+    return near if abs(battery_V / near - 1) <= 0.1 else battery_V
+
+
 def islands(network: Network) -> Islands:
     """The islands of a plan and the nominal voltage of each."""
     plan = network.plan
@@ -93,9 +103,12 @@ def islands(network: Network) -> Islands:
         b.append(np.array([end]))
     part = components(network.node_count, np.concatenate(a), np.concatenate(b))
     nominal = {int(number): plan.plan.nominal.si for number in np.unique(part)}
-    for source in sorted(plan.sources, key=lambda one: one.name != plan.reference, reverse=True):
-        if source.nominal is not None and not isinstance(source, Battery):
-            nominal[int(part[network.feed(source.at)])] = source.nominal.si
+    # Batteries first, so that a charger or converter, which states its system's nominal, has the last word.
+    for source in sorted(plan.sources, key=lambda one: not isinstance(one, Battery)):
+        if source.nominal is not None:
+            stated = source.nominal.si
+            volts = system_nominal_V(stated) if isinstance(source, Battery) else stated
+            nominal[int(part[network.feed(source.at)])] = volts
     reference = next((source for source in plan.sources if source.name == plan.reference), None)
     if reference is not None:
         nominal[int(part[network.feed(reference.at)])] = plan.plan.nominal.si

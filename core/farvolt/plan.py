@@ -282,6 +282,14 @@ class Run(Entry):
             return self.carries
         return "return" if CHASSIS in (self.from_point, self.to_point) else "both"
 
+    @model_validator(mode="after")
+    def _protection_within(self) -> "Run":
+        for one in self.protections:
+            if one.distance is not None and one.distance.si > self.length.si:
+                problem = f"protection {one.distance} along a run that is {self.length} long"
+                raise refusal(problem, f"a distance of at most {self.length}")
+        return self
+
     @cached_property
     def protections(self) -> tuple[Protection, ...]:
         """All protection of the run, whichever way the file writes it."""

@@ -114,6 +114,8 @@ class CaseResult:
     devices: tuple[DeviceResult, ...]
     loads: tuple[LoadResult, ...]
     strings: tuple[StringResult, ...] = ()
+    nominal_V: Mapping[str, float] = field(default_factory=dict)
+    """Nominal voltage at each point, of the island it belongs to."""
     way: Callable[[int], tuple[Step, ...]] = field(default=lambda load: (), repr=False, compare=False)
     """The conductors and devices on the way of a load (by its place in the plan); their drops sum to its drop."""
 
@@ -145,10 +147,13 @@ class Study:
     cases: tuple[CaseResult, ...]
     findings: tuple[Finding, ...]
     assumptions: tuple[str, ...]
-    nominal_V: Mapping[str, float] = field(default_factory=dict)
-    """Nominal voltage at each point, of the island it belongs to."""
     interim: Mapping[str, Size] = field(default_factory=dict)
     """Sizes taken for the time being for runs that state none."""
+
+    @property
+    def nominal_V(self) -> Mapping[str, float]:
+        """Nominal voltage at each point, of the island it belongs to: the same in every case."""
+        return self.cases[0].nominal_V
 
     @property
     def failing(self) -> bool:

@@ -227,9 +227,14 @@ class Solution:
             runs=tuple(self._runs(ampacities)),
             devices=tuple(self._devices()),
             strings=tuple(self._strings()),
+            nominal_V=self._nominals(),
             way=self.way,
             loads=tuple(self._loads()),
         )
+
+    def _nominals(self) -> dict[str, float]:
+        islands, network = self.condition.islands, self.network
+        return {name: islands.nominal(network.feed(name)) for name in network.plan.point_names}
 
     def _number(self, value: float) -> float | None:
         return float(value) if self.state.solved and np.isfinite(value) else None

@@ -157,13 +157,12 @@ def _settle(equations: Equations, volts: Floats, share: float) -> Floats | None:
         return None
     volts = volts.copy()
     unknown = equations.position >= 0
-    own = np.unique(equations.position[equations.condition.load_a[equations.loads]])
-    own = own[own >= 0]
+    rows_held, columns_held, signs = _across_loads(equations)
     hold = 100.0
     for _ in range(2000):
         out = equations.residual(volts, share)
         rows, columns, values = equations.jacobian(volts, share)
-        entries = np.append(rows, own), np.append(columns, own), np.append(values, np.full(len(own), hold))
+        entries = np.append(rows, rows_held), np.append(columns, columns_held), np.append(values, hold * signs)
         try:
             held = factor(equations.size, *entries, symmetric=not equations.converters)
         except SingularError:
@@ -184,6 +183,15 @@ def _settle(equations: Equations, volts: Floats, share: float) -> Floats | None:
         if worst < 1e-4 and (found := _newton(equations, volts, share)) is not None and _near(equations, volts, found):
             return found if equations.above_knees(found) else None
     return None
+
+
+def _across_loads(equations: Equations) -> tuple[np.ndarray, np.ndarray, Floats]:
+    """Rows, columns and signs of a unit conductance across every load, in the unknowns."""
+    c, on = equations.condition, equations.loads
+    a, b = equations.position[c.load_a[on]], equations.position[c.load_b[on]]
+    rows, columns = np.concatenate([a, b, a, b]), np.concatenate([a, b, b, a])
+    known = (rows >= 0) & (columns >= 0)
+    return rows[known], columns[known], np.repeat([1.0, -1.0], 2 * len(on))[known]
 
 
 def _weakest(equations: Equations, volts: Floats, share: float) -> int | None:

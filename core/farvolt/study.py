@@ -43,7 +43,7 @@ def study(plan: Plan, folder: Path | None = None, *, margins: bool = True) -> St
     )
     findings, taken = checks.run_all(context), assumptions(context)
     # The study keeps the plan as it was written; interim sizes are the context's.
-    return Study(plan, context.rulebook, results, findings, taken, _nominals(context), context.interim)
+    return Study(plan, context.rulebook, results, findings, taken, context.interim)
 
 
 def prepared(plan: Plan, folder: Path | None = None) -> Context:
@@ -53,11 +53,6 @@ def prepared(plan: Plan, folder: Path | None = None) -> Context:
     if faults:
         raise PlanError(faults)
     return build_context(plan, rulebook)
-
-
-def _nominals(context: Context) -> dict[str, float]:
-    islands = operating.islands(context.network)
-    return {name: islands.nominal(context.network.feed(name)) for name in context.plan.point_names}
 
 
 def build_context(plan: Plan, rulebook: Rulebook) -> Context:

@@ -56,8 +56,10 @@ def _limited(context: Context, run: Run, ways: list[Exposure], ampacity: float) 
     total = sum(limited_A(context, port) or 0.0 for port in ports)
     sources = [context.plan.sources[port] for port in ports]
     stated = all(isinstance(source, Charger) and source.self_limiting for source in sources)
+    # An alternator that does not limit itself is the dangerous case; a controller or converter is electronic.
+    unsaid = any(isinstance(source, Charger) and not source.self_limiting for source in sources)
     return run_finding(
-        "protection.missing", "note", run, total, ampacity, "A",
+        "protection.missing", "warn" if unsaid else "note", run, total, ampacity, "A",
         f"{label(run)} has no protection against {' and '.join(parts)}: taken as exempt, the source limits itself",
         f"{PRACTICE}; " + ("the plan states that it does" if stated else "the plan does not state that it does"),
         (f"{' + '.join(parts)} = {number(total)} A, not above the cable's ampacity of {number(ampacity)} A",),

@@ -8,7 +8,7 @@ import numpy as np
 from farvolt.checks.registry import check
 from farvolt.context import Context, label
 from farvolt.network import FEED, RETURN
-from farvolt.plan import CHASSIS, Entry, Run, Solar
+from farvolt.plan import CHASSIS, Converter, Run, Solar
 from farvolt.results import Finding, Kind, Severity
 
 _BASIS = "common practice: every load has a way from a source and a way back"
@@ -125,7 +125,7 @@ def lonely_point(context: Context) -> Iterator[Finding]:
             uses[name] = uses.get(name, 0) + 1
     listed = {point.name for point in context.plan.points}
     for source in context.plan.sources:
-        for name in (source.at, getattr(source, "from_point", source.at)):
+        for name in (source.at, *((source.from_point,) if isinstance(source, Converter) else ())):
             uses[name] = uses.get(name, 0) + 1
         array = getattr(source, "array", None)
         if array is not None:
@@ -154,36 +154,3 @@ def free_size(context: Context) -> Iterator[Finding]:
                 "common practice: each cable alone, at its share of the allowed drop by length, and its ampacity",
                 f'size = "{size.name}", or any other that you choose',
             )  # fmt: skip
-
-
-_UNUSED: dict[str, tuple[str, ...]] = {
-    "points": ("rating", "resistance"),
-    "sources": ("max_discharge", "max_charge", "array"),
-    "runs": (),
-    "devices": ("continuous", "volts"),
-    "loads": ("surge", "max_protection", "hours_per_day", "schedule", "duty"),
-}
-
-
-@check("plan.not-used-yet", title="Fields that are read and kept, but that nothing uses yet")
-def not_used(context: Context) -> Iterator[Finding]:
-    """One note naming the fields of the plan that no calculation of this version uses."""
-    counts: dict[str, int] = {}
-    for table, names in _UNUSED.items():
-        entries: tuple[Entry, ...] = getattr(context.plan, table)
-        for entry in entries:
-            for name in entry.model_fields_set.intersection(names):
-                counts[f"{table}.{name}"] = counts.get(f"{table}.{name}", 0) + 1
-        if table == "runs":
-            guards = [one for run in context.plan.runs for one in run.protections]
-            for name in ("volts", "interrupting"):
-                found = sum(getattr(one, name) is not None for one in guards)
-                if found:
-                    counts[f"runs.protection.{name}"] = found
-    if counts:
-        listed = ", ".join(f"{name} ({count})" for name, count in sorted(counts.items()))
-        yield _finding(
-            "plan.not-used-yet", "note", context.plan.plan.name, "plan",
-            f"Kept in the file, but used by no check of this version: {listed}", "what this version does",
-            "judge these by hand",
-        )  # fmt: skip

@@ -7,7 +7,7 @@ import numpy as np
 from farvolt.checks.drop import loads_on, working
 from farvolt.checks.enlarge import Aim, Remedies
 from farvolt.checks.registry import apart, check
-from farvolt.context import CaseStudy, Context
+from farvolt.context import CaseStudy, Context, label
 from farvolt.network import Floats
 from farvolt.results import Finding
 from farvolt.solution import Solution
@@ -117,7 +117,7 @@ def _collapse(context: Context, one: CaseStudy, mode: str) -> Finding:
     solution = one.solutions[mode]  # type: ignore[index]  # a mode of this very mapping
     state = solution.state
     weakest = context.plan.loads[state.weakest].name if state.weakest is not None else None
-    named = f'; "{weakest}" falls first' if weakest else ""
+    named = f'; "{weakest}" falls first{_narrowest(solution)}' if weakest else ""
     when = f" with conductors {solution.conductors.text}" if mode != "plan" else ""
     return Finding(
         rule="volts.collapse",
@@ -136,6 +136,18 @@ def _collapse(context: Context, one: CaseStudy, mode: str) -> Finding:
         ),
         remedy="fewer loads at once, thicker cable to the load named, more source capacity, or a higher system voltage",
     )
+
+
+def _narrowest(solution: Solution) -> str:
+    """The run that takes most of the weakest load's voltage where the case gives way."""
+    steps = [step for step in solution.way(solution.state.weakest or 0) if step.run >= 0]
+    if not steps:
+        return ""
+    drops: dict[int, float] = {}
+    for step in steps:
+        drops[step.run] = drops.get(step.run, 0.0) + step.drop_V
+    run = solution.network.plan.runs[max(drops, key=lambda index: drops[index])]
+    return f", most of its drop in {label(run)}"
 
 
 @check("volts.range-unstated", title="Loads whose tolerated range is not stated")

@@ -1,0 +1,76 @@
+"""What this version does not do: fields of a plan that nothing uses, and checks that are not made."""
+
+from collections.abc import Iterator
+
+from farvolt.checks.registry import check
+from farvolt.context import Context
+from farvolt.plan import Battery, Entry, Plan
+from farvolt.results import Finding
+
+_UNUSED: dict[str, tuple[str, ...]] = {
+    "points": ("rating", "resistance", "zone", "stud"),
+    "sources": ("max_discharge", "max_charge", "array"),
+    "devices": ("continuous", "volts"),
+    "loads": ("surge", "max_protection", "hours_per_day", "schedule", "duty"),
+}
+
+_NOT_CHECKED = (
+    "interrupting rating and far-end fault of protection, let-through, selectivity",
+    "ratings of switches, shunts and busbars",
+    "the bank's rates of charge and discharge, its days of autonomy, charging when cold",
+    "what stays live behind an open switch, returns shared by circuits",
+)
+
+
+@check("plan.not-used-yet", title="Fields that are read and kept, but that nothing uses yet")
+def not_used(context: Context) -> Iterator[Finding]:
+    """One note naming the fields of the plan that no calculation of this version uses."""
+    counts: dict[str, int] = {}
+    for table, names in _UNUSED.items():
+        entries: tuple[Entry, ...] = getattr(context.plan, table)
+        for entry in entries:
+            for name in entry.model_fields_set.intersection(names):
+                counts[f"{table}.{name}"] = counts.get(f"{table}.{name}", 0) + 1
+    for name, count in _conditional(context.plan).items():
+        if count:
+            counts[name] = count
+    if counts:
+        listed = ", ".join(f"{name} ({count})" for name, count in sorted(counts.items()))
+        yield _note(
+            context, "plan.not-used-yet", f"Kept in the file, but used by nothing in this version: {listed}",
+            "judge these by hand",
+        )  # fmt: skip
+
+
+def _conditional(plan: Plan) -> dict[str, int]:
+    """Fields that mean nothing beside what else their entry states, and how often that is so."""
+    batteries = [source for source in plan.sources if isinstance(source, Battery)]
+    fixed = {battery.name for battery in batteries if battery.emf is not None}
+    states = [(name, state) for case in plan.cases for name, state in case.sources.items()]
+    guards = [one for run in plan.runs for one in run.protections]
+    return {
+        "charge of batteries that state emf": sum(
+            battery.name in fixed and "charge" in battery.model_fields_set for battery in batteries
+        ) + sum(name in fixed and state.charge is not None for name, state in states),
+        "take_off without link": sum("take_off" in one.model_fields_set and one.link is None for one in batteries),
+        "recovery without cut_out": sum(one.recovery is not None and one.cut_out is None for one in plan.loads),
+        "rated_volts of loads that draw as they are rated": sum(
+            one.rated_volts is not None and (one.behaves or one.rated_as) == one.rated_as for one in plan.loads
+        ),
+        "runs.protection.interrupting": sum(one.interrupting is not None for one in guards),
+    }  # fmt: skip
+
+
+@check("plan.not-checked-yet", title="What this version does not check")
+def not_checked(context: Context) -> Iterator[Finding]:
+    """A standing note, so that a plan without other findings is not taken for a safe one."""
+    linked = any(isinstance(one, Battery) and one.link is not None for one in context.plan.sources)
+    listed = (*_NOT_CHECKED, *(("ampacity and protection of the links between battery strings",) if linked else ()))
+    yield _note(
+        context, "plan.not-checked-yet", f"Not checked by this version: {'; '.join(listed)}", "judge these by hand"
+    )
+
+
+def _note(context: Context, rule: str, message: str, remedy: str) -> Finding:
+    name = context.plan.plan.name
+    return Finding(rule, "note", name, "plan", None, None, None, None, message, "what this version does", (), remedy)
