@@ -132,7 +132,9 @@ def _loads(console: Console, study: Study) -> None:
         found = [(case.name, case.loads[index]) for case in study.cases if case.loads[index].volts is not None]
         on = [(name, one) for name, one in found if one.amps]
         if not on:
-            rows.append((load.name, load.at, "", "", "", "not on, or not fed, in any case"))
+            held = any(case.solved for case in study.cases)
+            why = "not on, or not fed, in any case that holds" if held else "no answer: no case holds"
+            rows.append((load.name, load.at, "", "", "", why))
             continue
         name, worst = max(on, key=lambda pair: pair[1].drop_percent or 0.0)
         rows.append((load.name, load.at, _value(worst.volts, 4), _value(worst.amps), _value(worst.drop_percent), name))
@@ -148,7 +150,8 @@ def _runs(console: Console, study: Study) -> None:
         worst = results[currents.index(max(currents))]
         rows.append((
             run.label or "", run.name, f"{run.from_point} → {run.to_point}", both_lengths(run.length), _size(run.size),
-            _value(max(currents)), _value(worst.ampacity_A), _value(worst.drop_V),
+            _value(max(currents) if any(case.solved for case in study.cases) else None), _value(worst.ampacity_A),
+            _value(None if worst.drop_V is None else abs(worst.drop_V)),
         ))  # fmt: skip
     columns = (
         ("Label", False), ("Run", False), ("from → to", False), ("length", False), ("size", False),
@@ -171,7 +174,7 @@ def _one_case(console: Console, case: CaseResult) -> None:
     _numbers(console, "Sources", ("volts", "amps", "watts"), [
         (one.name, _value(one.volts, 5), _value(one.amps, 4), _value(one.watts, 4)) for one in case.sources
     ])  # fmt: skip
-    _numbers(console, "Runs", ("feed A", "return A", "drop V", "loss W", "°C", "ampacity A"), [
+    _numbers(console, "Runs", ("feed A", "return A", "drop V", "loss W", "ohm taken at °C", "ampacity A"), [
         (
             one.name, _value(one.feed_A, 4), _value(one.return_A, 4), _value(one.drop_V, 4), _value(one.loss_W),
             _value(one.conductor_degC), _value(one.ampacity_A),

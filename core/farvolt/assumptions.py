@@ -18,6 +18,7 @@ def assumptions(context: Context) -> tuple[str, ...]:
         *context.network.assumptions,
         *_parts(plan),
         *_cables(plan, rulebook),
+        *_cases(plan, rulebook),
         *_basis(rulebook),
     )
 
@@ -65,8 +66,20 @@ def _cables(plan: Plan, rulebook: Rulebook) -> Iterator[str]:
         yield f"Cables that state no insulation are taken at {rating}, the rulebook's default."
     if any(plan.zone_of(run) is None for run in plan.runs):
         yield f"Cables in no zone are taken at an ambient of {plan.plan.ambient}."
+
+
+def _cases(plan: Plan, rulebook: Rulebook) -> Iterator[str]:
     if not plan.cases:
         yield 'The plan states no cases: one case, "Everything on", is checked.'
+    for case in plan.checked_cases:
+        silent = [f'"{source.name}"' for source in plan.sources if source.name not in case.sources]
+        if silent:
+            yield f'Case "{case.name}" does not name {", ".join(silent)}: taken as on, as the plan states them.'
+    unclassed = sum(load.drop_class is None for load in plan.loads)
+    if unclassed:
+        rule = rulebook.classes[rulebook.default_class]
+        limit = f"{rule.limit_percent:g} % of drop"
+        yield f'{unclassed} of {len(plan.loads)} loads state no class: taken as "{rule.name}", with {limit} allowed.'
 
 
 def _recalled(plan: Plan) -> Iterator[str]:

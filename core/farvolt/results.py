@@ -94,6 +94,8 @@ class Step:
     ohm: float
     drop_V: float
     run: int = -1
+    fixed_ohm: float = 0.0
+    """The part of a run's resistance that is no cable: joints, protection, a bond."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -200,7 +200,8 @@ class Solution:
         ohm = float(self.ohm[branch])
         run, device_index = int(network.run[branch]), int(network.device[branch])
         if run >= 0:
-            return Step(plan.runs[run].name, "run", pole, amps, ohm, drop_V, run)
+            fixed = float(network.fixed_ohm[branch])
+            return Step(plan.runs[run].name, "run", pole, amps, ohm, drop_V, run, fixed)
         if device_index >= 0:
             return Step(plan.devices[device_index].name, "device", pole, amps, ohm, drop_V)
         return Step("bond", "bond", pole, amps, ohm, drop_V)

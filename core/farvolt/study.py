@@ -11,11 +11,10 @@ from farvolt.ampacity import Ampacity
 from farvolt.assumptions import assumptions
 from farvolt.conductors import Size
 from farvolt.context import CaseStudy, Context
-from farvolt.errors import Fault, PlanError, QuantityError
+from farvolt.errors import Fault, PlanError
 from farvolt.integrity import nearest
 from farvolt.network import Floats, Network
 from farvolt.plan import Case, Plan
-from farvolt.protection_types import protection_type
 from farvolt.results import Study
 from farvolt.rulebook import Rulebook, load
 from farvolt.solution import Solution
@@ -49,7 +48,7 @@ def study(plan: Plan, folder: Path | None = None, *, margins: bool = True) -> St
 def prepared(plan: Plan, folder: Path | None = None) -> Context:
     """All cases of a plan solved, under its rulebook. Raises as `study` does."""
     rulebook = load(plan.plan.rulebook, folder)
-    faults = [*_class_faults(plan, rulebook), *_protection_faults(plan)]
+    faults = _class_faults(plan, rulebook)
     if faults:
         raise PlanError(faults)
     return build_context(plan, rulebook)
@@ -142,17 +141,3 @@ def _class_faults(plan: Plan, rulebook: Rulebook) -> list[Fault]:
         for one in plan.loads
         if one.drop_class is not None and one.drop_class not in rulebook.classes
     ]
-
-
-def _protection_faults(plan: Plan) -> list[Fault]:
-    faults = []
-    for run in plan.runs:
-        for one in run.protections:
-            try:
-                protection_type(one.type)
-            except QuantityError as error:
-                fault = Fault(
-                    f'runs "{run.name}"', "protection.type", one.type, error.problem, error.accepted, error.nearest
-                )
-                faults.append(fault)
-    return faults

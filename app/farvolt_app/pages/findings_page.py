@@ -38,7 +38,11 @@ def show(study: Study) -> None:
 
 
 def _legend(severity: str) -> str:
-    meanings = {"fail": "FAIL: breaks a limit", "warn": "doubtful: lawful, or not shown", "note": "note: to know"}
+    meanings = {
+        "fail": "FAIL: breaks a limit",
+        "warn": "doubtful: beyond a recommendation, or not shown to hold",
+        "note": "note: to know",
+    }
     return meanings[severity]
 
 

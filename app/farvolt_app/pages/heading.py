@@ -127,7 +127,7 @@ def faults() -> None:
     if not draft.faults:
         return
     number = "One thing" if len(draft.faults) == 1 else f"{len(draft.faults)} things"
-    kept = "The results shown are those of the last plan without faults." if draft.results else ""
+    kept = "Results, drawing and downloads are those of the last plan without faults." if draft.results else ""
     st.error(f"**{number} in the plan cannot be used yet.** Your text is kept. {kept}")
     st.dataframe(shown.fault_rows(draft.faults[:50]), hide_index=True, key="faults", alt="What is wrong with the plan")
 

@@ -112,4 +112,8 @@ def line(step: Step) -> str:
     name = f"{step.name} ({step.pole})"
     if step.kind == "diode":
         return f"{name}: {number(step.drop_V, 4)} V"
-    return f"{name}: {number(step.amps, 4)} A x {number(1000 * step.ohm, 4)} mohm = {number(step.drop_V, 4)} V"
+    ohm = f"{number(1000 * step.ohm, 4)} mohm"
+    if step.fixed_ohm and step.fixed_ohm != step.ohm:
+        cable, fixed = number(1000 * (step.ohm - step.fixed_ohm), 4), number(1000 * step.fixed_ohm, 4)
+        ohm = f"({cable} cable + {fixed} joints and protection) mohm"
+    return f"{name}: {number(step.amps, 4)} A x {ohm} = {number(step.drop_V, 4)} V"

@@ -21,7 +21,7 @@ def mismatch(context: Context) -> Iterator[Finding]:
     for source in context.plan.sources:
         nominal = islands.nominal(context.network.feed(source.at))
         volts = _own_V(source)
-        if volts is None or LOWEST * nominal <= volts <= HIGHEST * nominal:
+        if volts is None or LOWEST * nominal * (1 - 1e-9) <= volts <= HIGHEST * nominal * (1 + 1e-9):
             continue
         yield Finding(
             rule="plan.volts-mismatch",
