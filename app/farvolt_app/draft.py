@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from farvolt import planfile
-from farvolt.errors import FarvoltError, Fault, PlanError, SaveError
+from farvolt.errors import Fault, PlanError, RulebookError
 from farvolt.plan import Plan
 from farvolt.results import Study
 from farvolt.study import study
@@ -97,8 +97,10 @@ def examine(text: str, path: Path | None) -> tuple[Study | None, tuple[Fault, ..
     """The study of a text, or what keeps it from having one."""
     folder = path.parent if path else None
     try:
-        return study(planfile.parse(text), folder, margins=False), ()
+        plan = planfile.parse(text)
     except PlanError as error:
         return None, tuple(error.faults)
-    except FarvoltError as error:
-        return None, (Fault("plan", "rulebook", "", str(error)),)
+    try:
+        return study(plan, folder, margins=False), ()
+    except (PlanError, RulebookError) as error:
+        return None, tuple(planfile.placed(error, text).faults)

@@ -12,7 +12,7 @@ from farvolt.assumptions import assumptions
 from farvolt.conductors import Size
 from farvolt.context import CaseStudy, Context
 from farvolt.errors import Fault, PlanError
-from farvolt.integrity import nearest
+from farvolt.integrity import nearest, shown
 from farvolt.network import Floats, Network
 from farvolt.plan import Case, Plan
 from farvolt.results import Study
@@ -137,7 +137,7 @@ def _class_faults(plan: Plan, rulebook: Rulebook) -> list[Fault]:
     accepted = ", ".join(f'"{name}"' for name in known)
     problem = f'the rulebook "{rulebook.name}" has no such class'
     return [
-        Fault(f'loads "{one.name}"', "class", one.drop_class, problem, accepted, nearest(one.drop_class, known))
+        Fault(f'loads "{one.name}"', "class", shown(one.drop_class), problem, accepted, nearest(one.drop_class, known))
         for one in plan.loads
         if one.drop_class is not None and one.drop_class not in rulebook.classes
     ]
