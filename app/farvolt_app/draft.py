@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from farvolt import planfile
-from farvolt.errors import Fault, PlanError, RulebookError
+from farvolt.errors import Fault, PlanError, RulebookError, SaveError
 from farvolt.plan import Plan
 from farvolt.results import Study
 from farvolt.study import study
