@@ -19,6 +19,7 @@ from farvolt import examples, planfile
 from farvolt.schema import json_schema
 from farvolt_app import server
 from farvolt_app.cli import main
+from farvolt_app.shown import CAUTION
 
 VAN = "instrument-repair-van"
 
@@ -355,7 +356,7 @@ def test_schema_is_printed_and_takes_the_starter() -> None:
 def test_schedule_is_written_whole_beside_nothing_else(plan: Path, suffix: str) -> None:
     target = plan.with_name(f"cables{suffix}")
     result = run("schedule", plan, "--output", target)
-    assert (result.exit_code, result.stdout, result.stderr) == (0, "", f"Wrote {target}\n")
+    assert (result.exit_code, result.stdout, result.stderr) == (0, "", f"Wrote {target}. {CAUTION}\n")
     assert target.read_bytes().startswith(b"PK" if suffix == ".xlsx" else codecs.BOM_UTF8)
     assert sorted(one.name for one in plan.parent.iterdir()) == sorted([plan.name, target.name])
 
@@ -428,3 +429,15 @@ def test_a_slip_in_a_command_or_option_is_told_with_the_nearest(plan: Path) -> N
     assert "--json" in refused(run("check", plan, "--jsn"))[-1]
     assert "Missing argument 'PLAN'" in refused(run("check"))[-1]
     assert run("--version").stdout.startswith("farvolt, version ")
+
+
+def test_a_schedule_that_is_there_already_is_kept(tmp_path: Path) -> None:
+    """A workbook may hold somebody's changes: the one before stays beside the new one."""
+    plan = examples.path("instrument-repair-van")
+    target = tmp_path / "cables.csv"
+    target.write_text("mine", encoding="utf-8")
+    result = CliRunner().invoke(main, ["schedule", str(plan), "-o", str(target)])
+    assert result.exit_code == 0
+    assert "check local codes" in result.stderr
+    assert (tmp_path / "cables.csv.previous").read_text(encoding="utf-8") == "mine"
+    assert "bank gauge lead" in target.read_text(encoding="utf-8-sig")

@@ -154,7 +154,8 @@ def drop(plan: str, load: str, case_name: str | None) -> None:
 def schedule(plan: str, output: str) -> None:
     """Write the cable schedule of PLAN: cables, loads, protection, shopping totals, findings.
 
-    The workbook is live: change a length in it and the drop changes.
+    The workbook is live: change a length in it and the drop changes. A file of that name that is there already is
+    kept beside it as NAME.previous.
     """
     from farvolt import planfile
     from farvolt.errors import SaveError
@@ -167,16 +168,20 @@ def schedule(plan: str, output: str) -> None:
     found = _studied(plan)
     from farvolt_app import schedule as rows
     from farvolt_app import workbook
+    from farvolt_app.shown import CAUTION
 
     if output == planfile.STDIN:
         _print_whole(rows.to_csv(found))
         return
     data = workbook.to_bytes(found) if suffix == ".xlsx" else rows.to_csv(found).encode("utf-8-sig")
+    path = Path(output)
     try:
-        planfile.write_whole(Path(output), data)
+        if path.is_file():
+            planfile.write_whole(path.with_name(f"{path.name}.previous"), path.read_bytes())
+        planfile.write_whole(path, data)
     except OSError as error:
         raise SaveError(f"{output}: cannot be written ({error.strerror})") from None
-    click.echo(f"Wrote {output}", err=True)
+    click.echo(f"Wrote {output}. {CAUTION}", err=True)
 
 
 @main.command()
