@@ -117,7 +117,7 @@ def check(plan: str, as_json: bool, case_name: str | None, working: bool) -> Non
     """
     if as_json and (case_name is not None or working):
         raise click.UsageError("--json prints all cases and all workings; leave out --case and --working")
-    found = _studied(plan)
+    found = _studied(plan, margins=as_json or case_name is not None)
     if as_json:
         from farvolt.output import as_object
 
@@ -165,7 +165,7 @@ def schedule(plan: str, output: str) -> None:
         raise click.BadParameter(f'"{suffix or output}" is not written; accepted: .xlsx, .csv', param_hint="--output")
     if output != planfile.STDIN and Path(output).resolve() == Path(plan).resolve():
         raise click.BadParameter(f'"{output}" is the plan itself; accepted: another file', param_hint="--output")
-    found = _studied(plan)
+    found = _studied(plan, margins=False)
     from farvolt_app import schedule as rows
     from farvolt_app import workbook
     from farvolt_app.shown import CAUTION
@@ -226,13 +226,13 @@ def schema() -> None:
     _print_whole(json.dumps(json_schema(), indent=2, ensure_ascii=False) + "\n")
 
 
-def _studied(path: str) -> "Study":
-    """The study of a plan file."""
+def _studied(path: str, *, margins: bool) -> "Study":
+    """The study of a plan file, with each case's margin where it is shown: margins take longest."""
     from farvolt.study import study
 
     read = _read(path)
     with _placed(read, path), _progress("Solving and checking"):
-        return study(read.plan, read.folder)
+        return study(read.plan, read.folder, margins=margins)
 
 
 def _read(path: str) -> "PlanFile":

@@ -21,6 +21,9 @@ _STYLES = {"fail": "bold red", "warn": "yellow", "note": "dim"}
 _WHOLE = ("Label", "length", "size")
 """Columns that are not folded."""
 
+ROWS_SHOWN = 300
+"""Rows of a table; what is longer is not read on a terminal."""
+
 PIPED_WIDTH = 150
 """Columns of the tables where no terminal says how wide it is."""
 
@@ -73,10 +76,13 @@ def table(out: Console, title: str, columns: Iterable[tuple[str, bool]], rows: I
         found.add_column(
             Text(name), justify="right" if right else "left", overflow="fold", no_wrap=right or name in _WHOLE
         )
-    for row in rows:
+    every = list(rows)
+    for row in every[:ROWS_SHOWN]:
         found.add_row(*(Text(cell) for cell in row))
     out.print()
     out.print(found)
+    if len(every) > ROWS_SHOWN:
+        out.print(Text(f"… and {len(every) - ROWS_SHOWN} more; --json and the cable schedule have them all"))
 
 
 def _findings(console: Console, findings: tuple[Finding, ...], working: bool) -> None:
@@ -107,19 +113,24 @@ def _hanging(console: Console, text: Text, indent: int = 0) -> None:
 def _cases(console: Console, cases: tuple[CaseResult, ...]) -> None:
     columns = (
         ("Case", False), ("Solved", False), ("Sources W", True), ("Loads W", True), ("Lost W", True),
-        ("Holds up to", True), ("Imbalance A", True),
+        ("Imbalance A", True),
     )  # fmt: skip
     rows = [
         (
             case.name,
             "yes" if case.solved else f"gives way at {number(100 * case.share_held)} % of its loads",
             *(_value(watts if case.solved else None, 4) for watts in _powers(case)),
-            "-" if case.margin is None else f"{number(case.margin)} x its loads",
             "< 1e-9" if case.imbalance_A < 1e-9 else f"{case.imbalance_A:.0e}",
         )
         for case in cases
     ]
     table(console, "Cases", columns, rows)
+
+
+def _margin(console: Console, case: CaseResult) -> None:
+    """How much more of its loads a case would hold."""
+    if case.margin is not None:
+        console.print(Text(f"It holds up to {number(case.margin)} times its loads, all raised together."))
 
 
 def _powers(case: CaseResult) -> tuple[float, float, float]:
@@ -168,6 +179,7 @@ def _size(size: object) -> str:
 
 def _one_case(console: Console, case: CaseResult) -> None:
     _cases(console, (case,))
+    _margin(console, case)
     _numbers(console, "Points", ("feed V", "return V", "volts"), [
         (one.name, _value(one.feed_V, 5), _value(one.return_V, 5), _value(one.volts, 5)) for one in case.points
     ])  # fmt: skip

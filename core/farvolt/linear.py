@@ -17,7 +17,7 @@ class SingularError(Exception):
 
 @dataclass(frozen=True)
 class Factor:
-    """A factorised matrix: `solve(b)`, and whether it is positive definite."""
+    """A matrix ready to solve with: `solve(b)`, which may raise SingularError, and whether it is positive definite."""
 
     solve: Callable[[Floats], Floats]
     positive: bool
@@ -43,13 +43,14 @@ def _dense(size: int, rows: np.ndarray, columns: np.ndarray, values: Floats, sym
         else:
             sign, _ = np.linalg.slogdet(matrix)
             positive = bool(sign > 0) and _has_cholesky((matrix + matrix.T) / 2 + _skew_allowance(matrix))
-        inverse = np.linalg.inv(matrix)
     except np.linalg.LinAlgError:
         raise SingularError from None
 
     def solve(right: Floats) -> Floats:
-        first = inverse @ right
-        return first + inverse @ (right - matrix @ first)
+        try:
+            return np.asarray(np.linalg.solve(matrix, right))
+        except np.linalg.LinAlgError:
+            raise SingularError from None
 
     return Factor(solve, positive)
 

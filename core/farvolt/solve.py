@@ -90,12 +90,12 @@ def _newton(equations: Equations, volts: Floats, share: float, *, falling: bool 
         previous = np.abs(out[unknown]).max(initial=0.0) if done else np.inf
         try:
             solution = factor(equations.size, *equations.jacobian(volts, share), symmetric=not equations.converters)
+            if not solution.positive:
+                return None
+            step = np.zeros_like(volts)
+            step[unknown] = -solution.solve(out[unknown])
         except SingularError:
             return volts if done else None
-        if not solution.positive:
-            return None
-        step = np.zeros_like(volts)
-        step[unknown] = -solution.solve(out[unknown])
         step *= _step_length(equations, volts, step)
         if falling and np.any(equations.load_volts(step) > 1e-6 + 1e-9 * np.abs(equations.load_volts(volts))):
             return None
@@ -165,6 +165,8 @@ def _settle(equations: Equations, volts: Floats, share: float) -> Floats | None:
         entries = np.append(rows, rows_held), np.append(columns, columns_held), np.append(values, hold * signs)
         try:
             held = factor(equations.size, *entries, symmetric=not equations.converters)
+            step = np.zeros_like(volts)
+            step[unknown] = -held.solve(out[unknown]) if held.positive else 0.0
         except SingularError:
             return None
         if not held.positive:
@@ -172,8 +174,6 @@ def _settle(equations: Equations, volts: Floats, share: float) -> Floats | None:
             if hold > 1e9:
                 return None
             continue
-        step = np.zeros_like(volts)
-        step[unknown] = -held.solve(out[unknown])
         relative = np.abs(equations.load_volts(step)) / np.maximum(np.abs(equations.load_volts(volts)), 1e-3)
         worst = float(relative.max(initial=0.0))
         volts += step * min(1.0, 0.02 / worst if worst > 0 else 1.0)
@@ -199,11 +199,11 @@ def _weakest(equations: Equations, volts: Floats, share: float) -> int | None:
     unknown = equations.position >= 0
     try:
         solution = factor(equations.size, *equations.jacobian(volts, share), symmetric=False)
+        rate = np.zeros_like(volts)
+        ahead = equations.residual(volts, share + 1e-6) - equations.residual(volts, share)
+        rate[unknown] = -solution.solve(ahead[unknown])
     except SingularError:
         return None
-    rate = np.zeros_like(volts)
-    ahead = equations.residual(volts, share + 1e-6) - equations.residual(volts, share)
-    rate[unknown] = -solution.solve(ahead[unknown])
     fall = -equations.load_volts(rate) / equations.condition.knee[equations.loads]
     named = equations.loads < len(equations.network.plan.loads)
     return int(equations.loads[named][np.argmax(fall[named])]) if named.any() else None
