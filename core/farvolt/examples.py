@@ -32,6 +32,7 @@ def text(name: str) -> str:
     return path(name).read_text(encoding="utf-8")
 
 
+@lru_cache(maxsize=16)
 def title(name: str) -> str:
     """The name that an example's plan gives itself. Raises FarvoltError for an unknown name."""
     return str(tomllib.loads(text(name))["plan"]["name"])
