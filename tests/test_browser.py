@@ -89,6 +89,8 @@ class Page:
     def type_into(self, heading: str, row: int, text: str) -> None:
         """Type into a cell of the editor that is shown, as from the keyboard, and commit it."""
         editor = self.tab.locator("[data-testid=stDataFrame]").first
+        # The editor is drawn after the results are there, on a busy machine well after.
+        editor.locator("th", has_text=re.compile(f"^{heading}$")).first.wait_for(state="attached")
         headings = editor.locator("th").all_text_contents()
         box = editor.locator("canvas").first.bounding_box()
         # Two clicks on two rows: one on the cell that is selected already would open it.
