@@ -11,6 +11,7 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
+import openpyxl
 import pytest
 
 from farvolt import examples, planfile
@@ -175,7 +176,6 @@ def test_a_new_row_becomes_an_entry(browser: Any, address: str) -> None:
 
 
 def test_the_workbook_holds_the_plan_as_it_was_edited(browser: Any, address: str) -> None:
-    openpyxl = pytest.importorskip("openpyxl")
     page = Page(browser, address)
     before = page.fridge_volts()
     page.type_into("Length", FRIDGE_FEED, "9.75 m")

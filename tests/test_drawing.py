@@ -6,6 +6,7 @@ import re
 import xml.etree.ElementTree as ElementTree
 from dataclasses import replace
 from functools import lru_cache
+from typing import Any
 
 import pytest
 from hypothesis import HealthCheck, given, settings
@@ -17,9 +18,11 @@ from farvolt.results import (
     CaseResult,
     DeviceResult,
     Finding,
+    Kind,
     LoadResult,
     PointResult,
     RunResult,
+    Severity,
     SourceResult,
     Study,
 )  # fmt: skip
@@ -111,10 +114,10 @@ def unfed(case: CaseResult) -> CaseResult:
     )  # fmt: skip
 
 
-def finding(severity: str, kind: str, subject: str, case: str | None = None) -> Finding:
+def finding(severity: Severity, kind: Kind, subject: str, case: str | None = None) -> Finding:
     return Finding(
         "rule.name", severity, subject, kind, case, None, None, None, "What is wrong.", "common practice", ()
-    )  # type: ignore[arg-type]
+    )
 
 
 @lru_cache
@@ -143,10 +146,8 @@ def shown(group: ElementTree.Element) -> list[str]:
     return ["".join(one.itertext()) for one in group.iter(f"{SVG}text")]
 
 
-def drawn(
-    text: str = SMALL, case: CaseResult | None = None, **more: object
-) -> dict[tuple[str, str], ElementTree.Element]:
-    return groups(drawing.svg(planfile.parse(text), case, **more))  # type: ignore[arg-type]
+def drawn(text: str = SMALL, case: CaseResult | None = None, **more: Any) -> dict[tuple[str, str], ElementTree.Element]:
+    return groups(drawing.svg(planfile.parse(text), case, **more))
 
 
 def some_sizes(plan: Plan, chance: random.Random) -> Sizes:

@@ -1,67 +1,19 @@
-"""Plan files: every field is read, every fault is told with its place, and saving keeps what was there."""
+"""Plan files: every field is read, and every fault is told with its place."""
 
 import codecs
 import io
-import os
 import re
 import subprocess
 import sys
-import tomllib
 from pathlib import Path
 from typing import Any
 
 import pytest
-from hypothesis import HealthCheck, given, settings
-from hypothesis import strategies as st
 
-from farvolt import examples, lines, plan, planfile
-from farvolt.errors import Fault, PlanError, SaveError
-from farvolt.plan import Plan
+from farvolt import lines, plan, planfile
+from farvolt.errors import Fault, PlanError
 from farvolt.study import study
-
-EVERY_FIELD = Path(__file__).parent / "plans" / "every_field.toml"
-
-BASE = """\
-format = 1
-
-[plan]
-name = "Test"
-nominal = "12 V"
-
-[zones.cabin]
-ambient = "30 degC"
-
-[routes.loom]
-zone = "cabin"
-
-[[sources]]
-name = "bank"
-kind = "battery"
-at = "bank"
-emf = "13 V"
-resistance = "5 mohm"
-
-[[runs]]
-name = "feed"
-from = "bank"
-to = "galley"
-length = "4 m"
-size = "6 mm2"
-
-[[devices]]
-name = "switch"
-kind = "switch"
-from = "galley"
-to = "far"
-
-[[loads]]
-name = "pump"
-at = "far"
-power = "60 W"
-
-[[cases]]
-name = "All on"
-"""
+from plan_text import BASE, EVERY_FIELD
 
 
 def faults_of(text: str) -> list[Fault]:
@@ -83,13 +35,6 @@ def with_line(old: str, new: str) -> str:
 
 def line_number(text: str, start: str) -> int:
     return next(number for number, line in enumerate(text.split("\n"), start=1) if line.startswith(start))
-
-
-def outcome(text: str) -> Plan | PlanError:
-    try:
-        return planfile.parse(text, "plan.toml")
-    except PlanError as error:
-        return error
 
 
 # What is read ----------------------------------------------------------------------------------------------------
@@ -589,177 +534,3 @@ def test_a_study_s_fault_is_placed_in_the_file() -> None:
         study(planfile.parse(text))
     fault = planfile.placed(caught.value, text, "plan.toml").faults[0]
     assert (fault.place, fault.field, fault.line) == (LOAD, "class", line_number(text, "class"))
-
-
-# Saving ----------------------------------------------------------------------------------------------------------
-
-
-def test_saving_writes_what_was_given_and_keeps_the_previous_version(tmp_path: Path) -> None:
-    path = tmp_path / "plan.toml"
-    planfile.save(path, BASE, expected=None)
-    changed = BASE + "# a remark\n"
-    planfile.save(path, changed, expected=planfile.stamp(BASE))
-    assert path.read_text() == changed
-    assert (tmp_path / "plan.toml.previous").read_text() == BASE
-    assert sorted(one.name for one in tmp_path.iterdir()) == ["plan.toml", "plan.toml.previous"]
-
-
-def test_saving_never_overwrites_what_it_has_not_read(tmp_path: Path) -> None:
-    path = tmp_path / "plan.toml"
-    path.write_text("not ours")
-    with pytest.raises(SaveError, match="exists already"):
-        planfile.save(path, BASE, expected=None)
-    with pytest.raises(SaveError, match="changed on disk"):
-        planfile.save(path, BASE, expected=planfile.stamp(BASE))
-    path.write_bytes(b"\xff\x00")
-    with pytest.raises(SaveError, match="changed on disk"):
-        planfile.save(path, BASE, expected=planfile.stamp(BASE))
-    assert path.read_bytes() == b"\xff\x00"
-    assert [one.name for one in tmp_path.iterdir()] == ["plan.toml"]
-
-
-@pytest.mark.parametrize("data", [BASE.replace("\n", "\r\n").encode(), codecs.BOM_UTF8 + BASE.encode()])
-def test_a_file_from_another_system_is_not_taken_for_a_changed_one(tmp_path: Path, data: bytes) -> None:
-    path = tmp_path / "plan.toml"
-    path.write_bytes(data)
-    text = planfile.read(path).text
-    planfile.save(path, text + "# more\n", expected=planfile.stamp(text))
-    assert path.read_bytes().endswith(b"# more\n")
-    assert (tmp_path / "plan.toml.previous").read_bytes() == data
-
-
-def test_saving_follows_a_link(tmp_path: Path) -> None:
-    (tmp_path / "real.toml").write_text(BASE)
-    (tmp_path / "link.toml").symlink_to("real.toml")
-    planfile.save(tmp_path / "link.toml", BASE + "#\n", expected=planfile.stamp(BASE))
-    assert (tmp_path / "link.toml").is_symlink()
-    assert (tmp_path / "real.toml").read_text() == BASE + "#\n"
-
-
-def test_a_file_that_cannot_be_written_is_left_alone(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    path = tmp_path / "plan.toml"
-    path.write_text(BASE)
-
-    def full(descriptor: int) -> None:
-        raise OSError(28, "No space left on device")
-
-    monkeypatch.setattr(os, "fsync", full)
-    with pytest.raises(SaveError, match="No space left on device"):
-        planfile.save(path, BASE + "#\n", expected=planfile.stamp(BASE))
-    assert path.read_text() == BASE
-    assert [one.name for one in tmp_path.iterdir()] == ["plan.toml"]
-    with pytest.raises(SaveError, match="cannot be written"):
-        planfile.save(tmp_path / "none" / "plan.toml", BASE, expected=None)
-
-
-@pytest.mark.skipif(sys.platform == "win32", reason="file modes of POSIX")
-def test_saving_keeps_the_file_s_mode(tmp_path: Path) -> None:
-    path = tmp_path / "plan.toml"
-    path.write_text(BASE)
-    path.chmod(0o640)
-    planfile.save(path, BASE + "#\n", expected=planfile.stamp(BASE))
-    assert path.stat().st_mode & 0o777 == 0o640
-
-
-# Anything at all -------------------------------------------------------------------------------------------------
-
-FORGIVING = settings(max_examples=150, deadline=None, suppress_health_check=[HealthCheck.too_slow])
-
-SEEDS = (BASE, EVERY_FIELD.read_text(), examples.starter_text())
-
-
-def holds(result: Plan | PlanError) -> bool:
-    """A plan, or faults of one line each, in order, all of which say where and what."""
-    if isinstance(result, Plan):
-        return True
-    told = str(result).split("\n")
-    placed = [one for one in result.faults if one.line]
-    return (
-        len(told) == len(result.faults) > 0
-        and all(one.isprintable() for one in told)
-        and all(one.problem and (one.place or one.field or one.line or one.accepted) for one in result.faults)
-        and [one.line for one in placed] == sorted(one.line or 0 for one in placed)
-    )
-
-
-@FORGIVING
-@given(st.text())
-def test_any_text_is_a_plan_or_refused(text: str) -> None:
-    assert holds(outcome(text))
-    assert holds(outcome("format = 1\n" + text))
-
-
-@FORGIVING
-@given(st.binary())
-def test_any_bytes_are_a_plan_or_refused(tmp_path_factory: pytest.TempPathFactory, data: bytes) -> None:
-    path = tmp_path_factory.getbasetemp() / "any.toml"
-    path.write_bytes(data)
-    try:
-        result: Plan | PlanError = planfile.read(path).plan
-    except PlanError as error:
-        result = error
-    assert holds(result)
-
-
-@FORGIVING
-@given(st.sampled_from(SEEDS), st.data())
-def test_a_plan_with_a_piece_cut_out_or_put_in_is_a_plan_or_refused(text: str, data: st.DataObject) -> None:
-    start = data.draw(st.integers(0, len(text)))
-    end = data.draw(st.integers(start, min(len(text), start + 60)))
-    piece = data.draw(st.text(max_size=8) | st.sampled_from(['"', "\n[[", "]", "{", "= 5\n", "'''", '"""', "#", "\\u"]))
-    assert holds(outcome(text[:start] + piece + text[end:]))
-
-
-values = st.recursive(
-    st.booleans()
-    | st.integers()
-    | st.floats()
-    | st.text(max_size=5)
-    | st.dates()
-    | st.times()
-    | st.datetimes()
-    | st.sampled_from(["4 m", "12 V", "60 W", "30 A", "off", "bank", "chassis", "all", 1, 2**70, -(2**70)]),
-    lambda inner: st.lists(inner, max_size=3) | st.dictionaries(st.text(max_size=5), inner, max_size=3),
-    max_leaves=5,
-)
-
-
-def toml(value: Any) -> str:
-    """A value as TOML, tables inline."""
-    if isinstance(value, bool):
-        return str(value).lower()
-    if isinstance(value, str):
-        return '"' + "".join(one if one.isalnum() or one == " " else f"\\U{ord(one):08x}" for one in value) + '"'
-    if isinstance(value, list):
-        return "[" + ", ".join(map(toml, value)) + "]"
-    if isinstance(value, dict):
-        return "{ " + ", ".join(f"{toml(key)} = {toml(one)}" for key, one in value.items()) + " }"
-    if isinstance(value, float | int):
-        return repr(value)
-    return str(value.isoformat())
-
-
-def places(node: Any, path: tuple[str | int, ...] = ()) -> list[tuple[str | int, ...]]:
-    """The path of everything within a table or a list."""
-    pairs = node.items() if isinstance(node, dict) else enumerate(node) if isinstance(node, list) else ()
-    return [one for key, value in pairs for one in ((*path, key), *places(value, (*path, key)))]
-
-
-@settings(FORGIVING, max_examples=300)
-@given(st.sampled_from(SEEDS), st.data())
-def test_a_plan_with_any_value_anywhere_is_a_plan_or_refused(text: str, data: st.DataObject) -> None:
-    """Values of every kind of TOML in every place, written with inline tables throughout."""
-    raw = tomllib.loads(text)
-    for _ in range(data.draw(st.integers(1, 3))):
-        *within, last = data.draw(st.sampled_from(places(raw)))
-        node = raw
-        for part in within:
-            node = node[part]  # type: ignore[index]
-        value = data.draw(st.none() | values)
-        if value is None:
-            del node[last]  # type: ignore[arg-type]
-        else:
-            node[last] = value  # type: ignore[index]
-        if not raw:
-            break
-    assert holds(outcome("".join(f"{toml(key)} = {toml(value)}\n" for key, value in raw.items())))

@@ -138,9 +138,9 @@ def test_choices_follow_the_plan() -> None:
 def test_tables_of_the_wrong_shape_are_shown_without_failing(text: str) -> None:
     raw = edits.read(text)
     for sheet in columns.SHEETS:
-        tables.columns(raw, sheet, everything=True)
-        tables.rows(raw, sheet)
-    case_grid.rows(raw)
+        assert tables.columns(raw, sheet, everything=True)
+        assert all(isinstance(row, dict) for row in tables.rows(raw, sheet))
+    assert all(isinstance(row, dict) for row in case_grid.rows(raw))
 
 
 # Cases -------------------------------------------------------------------------------------------------------

@@ -5,12 +5,12 @@ from collections.abc import Iterator
 import numpy as np
 
 from farvolt.ampacity import Ampacity
-from farvolt.checks.registry import apart, cannot_be_made, check
+from farvolt.checks.registry import apart, cannot_be_made, check, run_finding
 from farvolt.conductors import Size
 from farvolt.context import CaseStudy, Context, basis_text, label, larger_sizes
 from farvolt.network import Floats, return_size
 from farvolt.plan import CHASSIS, Run
-from farvolt.results import Finding, Severity
+from farvolt.results import Finding
 from farvolt.sections import sheathed
 from farvolt.temperatures import run_ampacity
 from farvolt.units import number
@@ -68,11 +68,11 @@ def _over(context: Context, index: int, worst: int, over: list[int], currents: F
     assert found.amps is not None
     size = _large_enough(context, index, over, currents, exact)
     carries = f"{label(entry)}: {size.name} carries this where it lies" if size else ""
-    return _finding(
-        context, "conductor.ampacity", "fail", entry, one.name, amps, found.amps, "A",
+    return run_finding(
+        "conductor.ampacity", "fail", entry, amps, found.amps, "A",
         f"{label(entry)} carries {apart(amps, found.amps)} A; {number(found.amps)} A is its ampacity where it lies",
         found.basis, (*found.working, f"{apart(amps, found.amps, 4)} A > {number(found.amps, 4)} A"),
-        carries or "several cables in parallel, cables laid apart or in a cooler place, or less load",
+        carries or "several cables in parallel, cables laid apart or in a cooler place, or less load", one.name,
     )  # fmt: skip
 
 
@@ -106,8 +106,8 @@ def _drawn(context: Context, run: Run, size: Size, index: int, case: int) -> flo
 
 
 def _missing(context: Context, run: Run, found: Ampacity) -> Finding:
-    return _finding(
-        context, "conductor.ampacity", "warn", run, None, None, None, None,
+    return run_finding(
+        "conductor.ampacity", "warn", run, None, None, None,
         f"{label(run)}: neither its ampacity nor its protection can be checked: {found.missing}",
         found.basis or context.rulebook.title, found.working,
         "a size, material or insulation that the rulebook lists, or a rulebook of your own with this entry",
@@ -115,8 +115,8 @@ def _missing(context: Context, run: Run, found: Ampacity) -> Finding:
 
 
 def _no_size(context: Context, run: Run) -> Finding:
-    return _finding(
-        context, "conductor.ampacity", "warn", run, None, None, None, None,
+    return run_finding(
+        "conductor.ampacity", "warn", run, None, None, None,
         f"{label(run)} states a resistance but no size: its ampacity, its protection and the smallest size allowed "
         "cannot be checked",
         context.rulebook.title, (), "state the size of the cable beside its resistance",
@@ -140,8 +140,8 @@ def minimum_size(context: Context) -> Iterator[Finding]:
         if size.area_mm2 < least.area_mm2 * (1 - 1e-6):
             where = "in a sheath" if in_sheath else "laid singly"
             which = "" if size == run.size else "the return of "
-            yield _finding(
-                context, "conductor.minimum-size", "fail", run, None, size.area_mm2, least.area_mm2, "mm2",
+            yield run_finding(
+                "conductor.minimum-size", "fail", run, size.area_mm2, least.area_mm2, "mm2",
                 f"{which}{label(run)} is {size.name}; {least.name} is the smallest conductor allowed {where}",
                 basis_text(rule.basis), (f"{number(size.area_mm2)} mm2 < {number(least.area_mm2)} mm2",),
                 f"{which}{label(run)}: {least.name}" + (f". Exempt: {rule.exemption}" if rule.exemption else ""),
@@ -162,8 +162,8 @@ def material(context: Context) -> Iterator[Finding]:
         refused = [str(run.material)] * (run.material in rule.materials)
         refused += [f"{strand} conductors"] * (strand in rule.strands)
         if refused:
-            yield _finding(
-                context, "conductor.material", "fail", run, None, None, None, None,
+            yield run_finding(
+                "conductor.material", "fail", run, None, None, None,
                 f"{label(run)} is of {' in '.join(refused)}, which this rulebook does not accept",
                 basis_text(rule.basis), (), "stranded copper, tinned where it is damp",
             )  # fmt: skip
@@ -179,8 +179,8 @@ def return_path(context: Context) -> Iterator[Finding]:
         return
     for index, run in enumerate(context.plan.runs if "chassis" in rule.forbidden else ()):
         if run.return_path == "chassis" or _returns_by_chassis(context, index, run):
-            yield _finding(
-                context, "conductor.return", "fail", run, None, None, None, None,
+            yield run_finding(
+                "conductor.return", "fail", run, None, None, None,
                 f"{label(run)} returns through the chassis, which this rulebook forbids", basis_text(rule.basis), (),
                 f'{label(run)}: a return conductor of its own (return = "same")',
             )  # fmt: skip
@@ -191,10 +191,3 @@ def _returns_by_chassis(context: Context, index: int, run: Run) -> bool:
     if CHASSIS not in (run.from_point, run.to_point) or run.purpose == "bond":
         return False
     return any(float(_currents(one)[index]) > _NO_CURRENT_A for one in context.cases)
-
-
-def _finding(
-    context: Context, rule: str, severity: Severity, run: Run, case: str | None, value: float | None,
-    limit: float | None, unit: str | None, message: str, basis: str, working: tuple[str, ...], remedy: str,
-) -> Finding:  # fmt: skip
-    return Finding(rule, severity, run.name, "run", case, value, limit, unit, message, basis, working, remedy)

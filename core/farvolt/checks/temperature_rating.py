@@ -2,7 +2,7 @@
 
 from collections.abc import Iterator
 
-from farvolt.checks.registry import check
+from farvolt.checks.registry import check, run_finding
 from farvolt.context import Context, label
 from farvolt.network import insulation_degC
 from farvolt.results import Finding
@@ -21,17 +21,9 @@ def temperature_rating(context: Context) -> Iterator[Finding]:
         if ambient < rating:
             continue
         stated = f"{number(rating)} degC" + ("" if run.insulation else ", the rulebook's default")
-        yield Finding(
-            rule="conductor.temperature-rating",
-            severity="fail",
-            subject=run.name,
-            kind="run",
-            case=hottest.name,
-            value=ambient,
-            limit=rating,
-            unit="degC",
-            message=f"{label(run)} lies at {number(ambient)} degC; its insulation is rated {stated}",
-            basis=_BASIS,
-            working=(f"{number(ambient)} degC is not below {number(rating)} degC: no current is left to carry",),
-            remedy="insulation of a higher rating, or another way for this cable",
-        )
+        yield run_finding(
+            "conductor.temperature-rating", "fail", run, ambient, rating, "degC",
+            f"{label(run)} lies at {number(ambient)} degC; its insulation is rated {stated}", _BASIS,
+            (f"{number(ambient)} degC is not below {number(rating)} degC: no current is left to carry",),
+            "insulation of a higher rating, or another way for this cable", hottest.name,
+        )  # fmt: skip
