@@ -111,6 +111,12 @@ def test_what_is_taken_as_given_is_listed() -> None:
     assert any('1 of 1 loads state no class: taken as "other", with 5 % of drop allowed' in line for line in lines)
 
 
+def test_a_short_circuit_current_beside_a_resistance_is_said_to_be_unused() -> None:
+    """Both state the same thing; the resistance is the one that counts."""
+    (one,) = told("plan.not-used-yet", battery='12.8 V"\nshort_circuit = "900 A')
+    assert "short_circuit of batteries that state resistance (1)" in one.message
+
+
 def test_what_is_not_checked_is_always_said() -> None:
     """A plan that states none of these fields is told all the same."""
     (one,) = told("plan.not-checked-yet")
@@ -126,6 +132,10 @@ def test_what_is_not_checked_is_always_said() -> None:
             "charge of batteries that state emf (1)",
         ),
         ('[[points]]\nname = "bank"\nstud = "M8"\n', "points.stud (1)"),
+        (
+            '[[runs]]\nname = "m"\nfrom = "bank"\nto = "x"\nlength = "1 m"\nresistance = "9 mohm"\njoints = 2\n',
+            "joints and protection resistance of runs that state a measured resistance (1)",
+        ),
         ('[[loads]]\nname = "x"\nat = "bank"\npower = "1 W"\nrecovery = "12 V"\n', "recovery without cut_out (1)"),
     ],
 )

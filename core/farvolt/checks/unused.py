@@ -52,6 +52,13 @@ def _conditional(plan: Plan) -> dict[str, int]:
         "charge of batteries that state emf": sum(
             battery.name in fixed and "charge" in battery.model_fields_set for battery in batteries
         ) + sum(name in fixed and state.charge is not None for name, state in states),
+        "short_circuit of batteries that state resistance": sum(
+            one.short_circuit is not None and one.resistance is not None for one in batteries
+        ),
+        "joints and protection resistance of runs that state a measured resistance": sum(
+            run.resistance is not None and (run.joints > 0 or any(one.resistance is not None for one in run.protections))
+            for run in plan.runs
+        ),
         "take_off without link": sum("take_off" in one.model_fields_set and one.link is None for one in batteries),
         "recovery without cut_out": sum(one.recovery is not None and one.cut_out is None for one in plan.loads),
         "rated_volts of loads that draw as they are rated": sum(
