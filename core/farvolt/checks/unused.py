@@ -56,8 +56,9 @@ def _conditional(plan: Plan) -> dict[str, int]:
             one.short_circuit is not None and one.resistance is not None for one in batteries
         ),
         "joints and protection resistance of runs that state a measured resistance": sum(
-            run.resistance is not None and (run.joints > 0 or any(one.resistance is not None for one in run.protections))
+            run.joints > 0 or any(one.resistance is not None for one in run.protections)
             for run in plan.runs
+            if run.resistance is not None
         ),
         "take_off without link": sum("take_off" in one.model_fields_set and one.link is None for one in batteries),
         "recovery without cut_out": sum(one.recovery is not None and one.cut_out is None for one in plan.loads),
