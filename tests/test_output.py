@@ -150,7 +150,9 @@ def test_odd_plans_are_studied_and_what_gives_way_says_so(text: str) -> None:
     for case in found["cases"]:
         assert case["solved"] == (case["share_held"] == 1)
         collapses = [one for one in found["findings"] if (one["rule"], one["case"]) == ("volts.collapse", case["name"])]
-        assert len(collapses) == (0 if case["solved"] else 1)
+        # A case that holds at the plan's own temperature may still give way with hot conductors, and says with which.
+        assert len(collapses) <= 1 if case["solved"] else len(collapses) == 1
+        assert all(("with conductors" in one["message"]) == case["solved"] for one in collapses)
 
 
 @pytest.mark.parametrize("which", TEXTS)
