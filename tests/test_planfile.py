@@ -75,7 +75,7 @@ def test_short_forms_mean_their_long_forms() -> None:
     galley = next(run for run in read.runs if run.name == "galley feed")
     assert [(one.end, one.rating.si) for one in galley.protections] == [("from", 20), ("to", 20)]
     assert read.cases[0].sources["alternator charger"].state == "off"
-    assert [read.cases[1].share(load.name) for load in read.loads] == [1.0, 0.0, 0.0, 0.5]
+    assert [read.cases[1].share(load.name) for load in read.loads] == [1.0, 0.0, 0.0, 0.5, 0.0]
 
 
 def test_runs_to_the_chassis_are_returns() -> None:

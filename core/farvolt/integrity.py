@@ -14,7 +14,7 @@ from farvolt.plan import CHASSIS
 _NAMED = ("points", "sources", "runs", "devices", "loads", "cases")
 _ENDS = {"sources": ("at", "from"), "runs": ("from", "to"), "devices": ("from", "to"), "loads": ("at",)}
 _CASE_SOURCE_FIELDS = {
-    "battery": ("state", "charge", "emf"),
+    "battery": ("state", "charge", "emf", "aged"),
     "charger": ("state", "volts", "amps"),
     "solar": ("state", "irradiance", "volts"),
     "converter": ("state", "volts", "amps"),
@@ -198,6 +198,7 @@ def _references(raw: dict[str, Any]) -> Iterator[Found]:
         for name, row in raw["routes"].items():
             zone = row.get("zone") if isinstance(row, dict) else None
             yield from zones.unknown(("routes", name, "zone"), f'routes "{shorten(name)}"', "zone", zone)
+    yield from _inverters(raw)
     plan = raw.get("plan")
     reference = plan.get("reference") if isinstance(plan, dict) else None
     sources = _Names("source", names(raw, "sources"))
@@ -208,6 +209,14 @@ def _references(raw: dict[str, Any]) -> Iterator[Found]:
         yield ("plan", "reference"), Fault("plan", "reference", shown(reference), problem, "a battery or charger")
 
 
+def _inverters(raw: dict[str, Any]) -> Iterator[Found]:
+    kinds = [row.get("name") for _, row in entries(raw, "sources") if row.get("kind") == "charger"]
+    chargers = _Names("charger", [name for name in kinds if isinstance(name, str)])
+    for index, row in entries(raw, "loads"):
+        path = ("loads", index, "inverter_of")
+        yield from chargers.unknown(path, place("loads", row, index), "inverter_of", row.get("inverter_of"))
+
+
 def _case_names(raw: dict[str, Any]) -> Iterator[Found]:
     known = [_Names(table[:-1], names(raw, table)) for table in ("loads", "sources", "devices")]
     for index, row in entries(raw, "cases"):
@@ -215,6 +224,17 @@ def _case_names(raw: dict[str, Any]) -> Iterator[Found]:
             given = row.get(field)
             for name in given if isinstance(given, dict) else ():
                 yield from defined.unknown(("cases", index, field, name), place("cases", row, index), field, name)
+        given = row.get("surge")
+        for name in given if isinstance(given, list) else ():
+            yield from known[0].unknown(("cases", index, "surge"), place("cases", row, index), "surge", name)
+            yield from _no_surge(raw, index, row, name)
+
+
+def _no_surge(raw: dict[str, Any], index: int, row: dict[str, Any], name: Any) -> Iterator[Found]:
+    """A case that asks for the surge of a load which states none."""
+    if any(load.get("name") == name and "surge" not in load for _, load in entries(raw, "loads")):
+        fault = Fault(place("cases", row, index), "surge", shown(name), "this load states no surge", "a load with one")
+        yield ("cases", index, "surge"), fault
 
 
 def _case_states(raw: dict[str, Any]) -> Iterator[Found]:

@@ -71,6 +71,8 @@ class PlanInfo(Entry):
     reference: Name | None = None
     conductor_temperature: ConductorTemperature = "rulebook"
     ambient: Temperature = units.parse("30 degC", "temperature")
+    coldest: Temperature | None = None
+    """Lowest ambient to be expected where solar modules stand: their open-circuit voltage is highest then."""
     chassis_bond: Resistance = units.parse("1 mohm", "resistance")
     notes: Text = ""
 
@@ -100,6 +102,9 @@ class Point(Entry):
     rating: Rating | None = None
     stud: Name | None = None
     resistance: AnyResistance | None = None
+    """Of the bar itself, from end to end, in each pole."""
+    largest_size: CableSize = None
+    """Largest conductor that its terminals take."""
     notes: Text = ""
 
 
@@ -125,6 +130,8 @@ class Battery(Entry):
     charge: Share = units.parse("100 %", "share")
     emf: Voltage | None = None
     resistance: Resistance | None = None
+    aged_times: Multiple | None = None
+    """Resistance at the end of its life over that stated; typical of the chemistry unless stated."""
     short_circuit: Rating | None = None
     max_discharge: Rating | None = None
     max_charge: Rating | None = None
@@ -165,6 +172,10 @@ class SolarArray(Entry):
     isc: Rating
     vmp: Voltage
     imp: Rating
+    voc_rise: Share | None = None
+    """Rise of the open-circuit voltage for each kelvin below 25 °C, from the data sheet."""
+    max_fuse: Rating | None = None
+    """Largest series fuse that the maker of the modules allows."""
 
 
 class Solar(Entry):
@@ -172,14 +183,35 @@ class Solar(Entry):
 
     name: Name
     kind: Literal["solar"]
+    from_point: Name | None = Field(default=None, alias="from")
+    """Where the controller takes in what its array gives; at the array itself unless stated."""
     at: Name
     nominal: Voltage | None = None
     power: Power
     ceiling: Voltage
     amps: Rating | None = None
     """Output limit of the controller; power over 40 % of nominal unless stated."""
+    efficiency: Efficiency = units.parse("100 %", "share")
+    """Of the controller, on what its array gives; `power` without an array is what it delivers."""
+    max_input: Voltage | None = None
+    """Highest voltage that the controller's input stands."""
     array: SolarArray | None = None
     notes: Text = ""
+
+    @model_validator(mode="after")
+    def _array_fits(self) -> "Solar":
+        if self.from_point is not None and self.array is None:
+            raise refusal('"from" is where an array arrives, and there is none', "an array, or no from")
+        if self.array is not None and self.array.modules % self.array.series:
+            problem = f"{self.array.modules} modules do not make strings of {self.array.series}"
+            raise refusal(problem, "a number of modules that is a multiple of series")
+        return self
+
+    @property
+    def input_point(self) -> str:
+        """Where the controller takes in what its array gives."""
+        assert self.array is not None
+        return self.from_point or self.array.at
 
 
 class Converter(Entry):
@@ -339,6 +371,11 @@ class Load(Entry):
     resistance: Resistance | None = None
     rated_volts: Voltage | None = None
     behaves: Literal["power", "current", "resistance"] | None = None
+    efficiency: Efficiency | None = None
+    """Of an inverter: `power` is then what it delivers, and it draws power / efficiency + standby."""
+    standby: Power | None = None
+    inverter_of: Name | None = None
+    """The charger that is one apparatus with this inverter: while that is on, this draws nothing."""
     drop_class: Name | None = Field(default=None, alias="class")
     min_volts: Voltage | None = None
     max_volts: Voltage | None = None
@@ -359,6 +396,8 @@ class Load(Entry):
             problem = f"has {len(given)} ratings ({', '.join(given)})" if given else "has no rating"
             accepted = 'exactly one of power = "60 W", current = "5 A", resistance = "2.4 ohm"'
             raise refusal(problem, accepted)
+        if self.power is None and (self.efficiency or self.standby):
+            raise refusal("an inverter is rated by what it delivers", 'power = "1000 W" with efficiency and standby')
         for low, high in (("min_volts", "max_volts"), ("cut_out", "recovery")):
             below, above = getattr(self, low), getattr(self, high)
             if below is not None and above is not None and below.si > above.si:
@@ -380,6 +419,8 @@ class SourceState(Entry):
     volts: Voltage | None = None
     amps: Rating | None = None
     irradiance: Share | None = None
+    aged: Flag = False
+    """A battery at the end of its life: its resistance is `aged_times` as high."""
 
 
 class Case(Entry):
@@ -390,6 +431,8 @@ class Case(Entry):
     loads: Literal["all", "none"] | dict[str, Factor] = "all"
     sources: dict[str, SourceState] = Field(default_factory=dict)
     devices: dict[str, Literal["closed", "open"]] = Field(default_factory=dict)
+    surge: tuple[Name, ...] = ()
+    """Loads that draw their surge in this case, instead of what they are rated at."""
     notes: Text = ""
 
     @field_validator("loads", mode="before")
@@ -416,6 +459,20 @@ class Case(Entry):
         return 1.0 if self.loads == "all" else 0.0
 
 
+class Tolerances(Entry):
+    """Table `tolerances`: how far what is built may differ from the plan, each way unless said otherwise."""
+
+    length: Share = units.parse("10 %", "share")
+    joints: Multiple = 5.0
+    """Up to how many times its resistance a joint may come to have; the least is as planned."""
+    source_volts: Share = units.parse("1 %", "share")
+    loads: Share = units.parse("10 %", "share")
+    coldest: Temperature | None = None
+    """Least conductor temperature; the case's ambient unless stated."""
+    hottest: Temperature | None = None
+    """Greatest conductor temperature; each cable's insulation rating unless stated."""
+
+
 class Plan(Entry):
     """The document: everything in one file."""
 
@@ -429,6 +486,7 @@ class Plan(Entry):
     devices: tuple[Device, ...] = ()
     loads: tuple[Load, ...] = ()
     cases: tuple[Case, ...] = ()
+    tolerances: Tolerances = Field(default_factory=Tolerances)
 
     @cached_property
     def checked_cases(self) -> tuple[Case, ...]:
@@ -449,6 +507,8 @@ class Plan(Entry):
             if isinstance(source, Converter):
                 seen[source.from_point] = None
             seen[source.at] = None
+            if isinstance(source, Solar) and source.array is not None:
+                seen[source.array.at] = seen[source.input_point] = None
         for start, end in self.joins:
             seen[start] = seen[end] = None
         for load in self.loads:

@@ -8,10 +8,10 @@ from farvolt.plan import Battery, Entry, Plan
 from farvolt.results import Finding
 
 _UNUSED: dict[str, tuple[str, ...]] = {
-    "points": ("rating", "resistance", "zone", "stud"),
-    "sources": ("max_discharge", "max_charge", "array"),
+    "points": ("rating", "resistance", "zone", "stud", "largest_size"),
+    "sources": ("max_discharge", "max_charge", "array", "aged_times", "max_input"),
     "devices": ("continuous", "volts"),
-    "loads": ("surge", "max_protection", "hours_per_day", "schedule", "duty"),
+    "loads": ("surge", "max_protection", "hours_per_day", "schedule", "duty", "efficiency", "standby", "inverter_of"),
 }
 
 _NOT_CHECKED = (
