@@ -11,7 +11,7 @@ _UNUSED: dict[str, tuple[str, ...]] = {
     "points": ("rating", "resistance", "zone", "stud", "largest_size"),
     "sources": ("max_discharge", "max_charge", "array", "aged_times", "max_input"),
     "devices": ("continuous", "volts"),
-    "loads": ("surge", "max_protection", "hours_per_day", "schedule", "duty", "efficiency", "standby", "inverter_of"),
+    "loads": ("surge", "hours_per_day", "schedule", "duty", "efficiency", "standby", "inverter_of"),
 }
 
 _NOT_CHECKED = (
