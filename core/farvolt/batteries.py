@@ -1,4 +1,4 @@
-"""Batteries by chemistry: rest voltage against state of charge, and a typical internal resistance.
+"""Batteries by chemistry: rest voltage against state of charge, internal resistance against temperature and age.
 
 Tables: data `batteries/`, each row with its source. Ranges are taken at their middle and said to be typical.
 """
@@ -13,6 +13,9 @@ from farvolt_data import ROOT
 
 ESTIMATED = "estimated from a table of typical values"
 
+REFERENCE_DEGC = 25.0
+"""What a stated internal resistance is meant for."""
+
 
 @dataclass(frozen=True, slots=True)
 class BatteryModel:
@@ -22,6 +25,8 @@ class BatteryModel:
     resistance_ohm: float
     emf_source: str
     resistance_source: str
+    times: float = 1.0
+    """What cold and age have multiplied the resistance with."""
 
     @property
     def resistance_is_estimated(self) -> bool:
@@ -76,18 +81,74 @@ def typical_resistance_ohm(chemistry: str, capacity_Ah: float, nominal_V: float)
     return _resistance_rows()[chemistry] * (nominal_V / 12) * (100 / capacity_Ah)
 
 
-def model(battery: Battery, charge: float, nominal_V: float, emf_V: float | None = None) -> BatteryModel:
-    """One string of the battery at a state of charge 0..1; `emf_V` overrides its curve."""
+@lru_cache
+def _temperature_rows() -> dict[str, list[tuple[float, float]]]:
+    rows: dict[str, list[tuple[float, float]]] = {}
+    for row in read(ROOT / "batteries" / "temperature.csv"):
+        rows.setdefault(row["chemistry"], []).append((float(row["degC"]), float(row["resistance_times"])))
+    return {name: sorted(points) for name, points in rows.items()}
+
+
+@lru_cache
+def _chemistry_rows() -> dict[str, dict[str, float]]:
+    words = ("chemistry", "status", "source")
+    rows = read(ROOT / "batteries" / "chemistry.csv")
+    return {row["chemistry"]: {name: float(row[name]) for name in row if name not in words} for row in rows}
+
+
+def cold_times(chemistry: str | None, degC: float) -> float:
+    """Internal resistance at a temperature over that at 25 °C, never below 1; 1 where the chemistry is not stated."""
+    if chemistry is None:
+        return 1.0
+    points = _temperature_rows()[chemistry]
+    degC = min(max(degC, points[0][0]), points[-1][0])
+    for (low, low_times), (high, high_times) in pairwise(points):
+        if degC <= high:
+            share: float = (degC - low) / (high - low)
+            return float(low_times ** (1 - share) * high_times**share)
+    return points[-1][1]
+
+
+def aged_times(battery: Battery) -> float:
+    """Internal resistance at the end of its life over that of new: as stated, else typical of the chemistry."""
+    if battery.aged_times is not None:
+        return battery.aged_times
+    return _chemistry_rows()[battery.chemistry]["aged_resistance_times"] if battery.chemistry else AGED_TIMES
+
+
+AGED_TIMES = 2.0
+"""Of a battery that states neither `aged_times` nor a chemistry: the highest of the table."""
+
+
+def model(
+    battery: Battery,
+    charge: float,
+    nominal_V: float,
+    emf_V: float | None = None,
+    *,
+    degC: float = REFERENCE_DEGC,
+    aged: bool = False,
+) -> BatteryModel:
+    """One string of the battery at a state of charge 0..1 and a temperature; `emf_V` overrides its curve.
+
+    A stated resistance is that of a new battery at 25 °C, as in data sheets; a stated EMF is taken as it stands.
+    """
     nominal_V = battery.nominal.si if battery.nominal else nominal_V
     stated = emf_V if emf_V is not None else battery.emf.si if battery.emf else None
     if stated is not None:
         emf, emf_source = stated, "stated in the plan"
     else:
         chemistry = battery.chemistry or ""
-        emf = rest_voltage_V(chemistry, charge, nominal_V)
+        emf = rest_voltage_V(chemistry, charge, nominal_V) + _emf_change_V(chemistry, nominal_V, degC)
         emf_source = f"rest voltage of {chemistry} at {charge:.0%} of charge, typical"
     resistance, source = _string_resistance(battery, nominal_V, emf)
-    return BatteryModel(emf, resistance, emf_source, source)
+    times = cold_times(battery.chemistry, degC) * (aged_times(battery) if aged else 1.0)
+    return BatteryModel(emf, resistance * times, emf_source, source, times)
+
+
+def _emf_change_V(chemistry: str, nominal_V: float, degC: float) -> float:
+    row = _chemistry_rows()[chemistry]
+    return row["emf_mV_per_K_cell"] / 1000 * (degC - row["emf_reference_degC"]) * cells(chemistry, nominal_V)
 
 
 def _string_resistance(battery: Battery, nominal_V: float, emf_V: float) -> tuple[float, str]:

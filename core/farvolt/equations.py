@@ -3,8 +3,9 @@
 import numpy as np
 
 from farvolt.fed import Fed, first_diode
+from farvolt.linear import factor
 from farvolt.network import FEED, Floats, Network
-from farvolt.operating import KNEE_SHARE, Operating
+from farvolt.operating import KNEE_SHARE, Operating, components
 
 IMBALANCE_A = 1e-9
 """No node may be out of balance by more than this, or by the rounding of its own currents."""
@@ -42,6 +43,18 @@ class Equations:
         self.position = np.where(unknown, np.cumsum(unknown) - 1, -1)
         self.size = int(unknown.sum())
         self.scale = self._rounding()
+        self.power = self._power(ohm) if condition.arrays else condition.power
+
+    def _power(self, ohm: Floats) -> Floats:
+        """What each source may deliver, W: a controller with an array no more than the array gives at its input."""
+        c, network, power = self.condition, self.network, self.condition.power.copy()
+        for port, array, load, amps in c.arrays:
+            if self.supply.source_on[port]:
+                start, end = (c.source_a[array], c.source_b[array]), (c.load_a[load], c.load_b[load])
+                at_input_V = c.volts[array] - amps * (c.ohm[array] + _loop_ohm(network, c, ohm, start, end))
+                efficiency = next(share for source, _, share, _ in c.converters if source == port)
+                power[port] = min(power[port], max(efficiency * at_input_V * amps, 0.0))
+        return power
 
     def _rounding(self) -> Floats:
         """Over nodes: 64 ε times the largest conductance that meets there (times volts: the rounding of a sum)."""
@@ -74,7 +87,7 @@ class Equations:
         """Port voltage, current delivered and its slope −di/du (≥ 0) of the working source ports."""
         c, on = self.condition, self.sources
         u = self.source_volts(volts)
-        ohm, low, power = c.ohm[on], c.low[on], c.power[on]
+        ohm, low, power = c.ohm[on], c.low[on], self.power[on]
         amps = (c.volts[on] - u) / ohm
         slope = 1 / ohm
         floor = KNEE_SHARE * c.nominal[on]
@@ -203,3 +216,29 @@ class Equations:
         u = self.load_volts(volts)
         demands = (self._watts(volts, 1.0)[on] > 0) | (c.load_A[on] > 0)
         return not bool(np.any(demands & (u < c.knee[on])))
+
+
+def _loop_ohm(
+    network: Network, condition: Operating, ohm: Floats, one: tuple[int, int], other: tuple[int, int]
+) -> float:
+    """Resistance of the conductors between two ports, there and back: the drop of an ampere that enters at the feed
+    of `one`, leaves at that of `other` and comes back in the returns."""
+    on = condition.branch_on
+    a, b, siemens = network.a[on], network.b[on], 1 / ohm[on]
+    part = components(network.node_count, a, b)
+    nodes = np.flatnonzero(np.isin(part, part[[*one, *other]]))
+    place = np.full(network.node_count, -1)
+    place[nodes] = np.arange(len(nodes))
+    for root in np.unique(part[nodes]):
+        place[nodes[np.argmax(part[nodes] == root)]] = -1  # the ground of each part
+    known = np.flatnonzero(place >= 0)
+    place[known] = np.arange(len(known))
+    rows, columns = place[np.concatenate([a, b, a, b])], place[np.concatenate([a, b, b, a])]
+    keep = (rows >= 0) & (columns >= 0)
+    values = np.concatenate([siemens, siemens, -siemens, -siemens])[keep]
+    amps = np.zeros(network.node_count)
+    for node, sign in zip((*one, *other), (1.0, -1.0, -1.0, 1.0), strict=True):
+        amps[node] += sign
+    volts = np.zeros(network.node_count)
+    volts[known] = factor(len(known), rows[keep], columns[keep], values, symmetric=True).solve(amps[known])
+    return float(volts[one[0]] - volts[one[1]] - volts[other[0]] + volts[other[1]])

@@ -24,7 +24,7 @@ class Fed:
 
 def first_diode(network: Network) -> int:
     """Where the diodes begin among the source ports."""
-    return len(network.plan.sources) + len(network.strings)
+    return len(network.plan.sources) + len(network.strings) + len(network.arrays)
 
 
 def fed(network: Network, condition: Operating) -> Fed:
@@ -91,6 +91,9 @@ def _grounds(
     )
     for port in order:
         node = network.ret(sources[port].at)
+        if live[node]:
+            grounds.setdefault(int(group[node]), node)
+    for _, _, node in network.arrays:
         if live[node]:
             grounds.setdefault(int(group[node]), node)
     return tuple(grounds.values())

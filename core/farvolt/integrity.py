@@ -109,6 +109,11 @@ def _self_joins(raw: dict[str, Any]) -> Iterator[Found]:
     for index, row in entries(raw, "sources"):
         if row.get("kind") == "converter" and isinstance(row.get("from"), str) and row["from"] == row.get("at"):
             yield _fault("sources", index, row, "at", "draws and delivers at the same point", "another point")
+        array = row.get("array")
+        inlets = (array.get("at"), row.get("from")) if isinstance(array, dict) else ()
+        if isinstance(row.get("at"), str) and row["at"] in inlets:
+            problem = "the controller delivers where its array stands"
+            yield _fault("sources", index, row, "at", problem, "two points: the array's side and the other")
 
 
 def _chassis(raw: dict[str, Any]) -> Iterator[Found]:

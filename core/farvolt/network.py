@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from farvolt import conductors, protection_types
-from farvolt.plan import CHASSIS, Battery, Converter, Device, Plan, ReturnConductor, Run
+from farvolt.plan import CHASSIS, Battery, Converter, Device, Plan, ReturnConductor, Run, Solar
 from farvolt.rulebook import Rulebook
 from farvolt.tables import read
 from farvolt_data import ROOT
@@ -34,6 +34,9 @@ DIODE_DROP_V = next(float(row["forward_drop_V"]) for row in _CONTACTS if row["fo
 
 LEAST_OHM = 1e-6
 """No contact is better than this; a stated zero is taken as it."""
+
+CONTROLLER_BOND_OHM = 1e-3
+"""Joins the returns of a solar controller's input and output, which are common (common practice)."""
 
 
 @dataclass(frozen=True)
@@ -59,6 +62,8 @@ class Network:
     """(device index, node at `from`, node at `to`) of each diode."""
     strings: tuple[tuple[int, int, int], ...]
     """(source index, feed node, return node) of each battery string with link cables of its own."""
+    arrays: tuple[tuple[int, int, int], ...]
+    """(source index, feed node, return node) of each solar array that the plan places."""
     assumptions: tuple[str, ...] = field(default=())
 
     def feed(self, point: str) -> int:
@@ -85,7 +90,8 @@ def build(plan: Plan, rulebook: Rulebook) -> Network:
     """The network of a plan; runs whose size is still free are left out (a finding names them)."""
     assumptions: list[str] = []
     names = _Names()
-    branches = list(_run_branches(plan, rulebook))
+    bars = bar_ends_ohm(plan)
+    branches = list(_run_branches(plan, rulebook, bars))
     strings: list[tuple[int, tuple[str, int], tuple[str, int]]] = []
     for index, source in enumerate(plan.sources):
         if isinstance(source, Battery) and linked(source):
@@ -93,12 +99,12 @@ def build(plan: Plan, rulebook: Rulebook) -> Network:
             branches.extend(_link_branches(source, rulebook))
     diodes: list[tuple[int, tuple[str, int], tuple[str, int]]] = []
     for index, device in enumerate(plan.devices):
-        branches.extend(_device_branches(index, device))
+        branches.extend(_device_branches(index, device, bars))
         if device.kind == "diode":
             pole = FEED if device.pole != "return" else RETURN
             diodes.append((index, (device.from_point, pole), (device.to_point, pole)))
         _join_passing_pole(names, device)
-    branches.extend(_converter_bonds(plan))
+    branches.extend(_source_bonds(plan))
     branches.extend(_chassis_bonds(plan, branches, names, assumptions))
     for point in plan.point_names:
         for pole in (FEED, RETURN):
@@ -178,7 +184,15 @@ def protection_ohm(run: Run, pole: str) -> float:
     )
 
 
-def _run_branches(plan: Plan, rulebook: Rulebook) -> Iterator[_Branch]:
+def bar_ends_ohm(plan: Plan) -> dict[str, float]:
+    """Half the resistance of each busbar that states one: in series with whatever is joined to it, in each pole.
+
+    Any two of its studs are then as far apart as its two ends: the most that the bar can add.
+    """
+    return {point.name: point.resistance.si / 2 for point in plan.points if point.resistance is not None}
+
+
+def _run_branches(plan: Plan, rulebook: Rulebook, bars: dict[str, float]) -> Iterator[_Branch]:
     for index, run in enumerate(plan.runs):
         if run.size is None and run.resistance is None:
             continue
@@ -187,9 +201,10 @@ def _run_branches(plan: Plan, rulebook: Rulebook) -> Iterator[_Branch]:
             FEED: ((run.from_point, FEED), (run.to_point, FEED)),
             RETURN: ((run.from_point, RETURN), (run.to_point, RETURN)),
         }
+        at_bars = bars.get(run.from_point, 0.0) + bars.get(run.to_point, 0.0)
         for pole, (cable, fixed) in parts.items():
             a, b = ends[pole]
-            yield _Branch(a, b, fixed, cable, run=index, pole=pole)
+            yield _Branch(a, b, fixed + at_bars, cable, run=index, pole=pole)
 
 
 def _run_ohm_20(run: Run, rulebook: Rulebook) -> dict[int, tuple[float, float]]:
@@ -216,8 +231,8 @@ def _measured(run: Run, computed: dict[int, tuple[float, float]]) -> dict[int, t
     return {pole: (at_20 * cable / total, 0.0) for pole, (cable, _) in computed.items()}
 
 
-def _device_branches(index: int, device: Device) -> Iterator[_Branch]:
-    ohm = max(device_ohm(device), LEAST_OHM)
+def _device_branches(index: int, device: Device, bars: dict[str, float]) -> Iterator[_Branch]:
+    ohm = device_ohm(device) + bars.get(device.from_point, 0.0) + bars.get(device.to_point, 0.0)
     for pole, word in ((FEED, "feed"), (RETURN, "return")):
         if device.pole in (word, "both") and not (
             device.kind == "diode" and pole == (FEED if device.pole != "return" else RETURN)
@@ -227,7 +242,7 @@ def _device_branches(index: int, device: Device) -> Iterator[_Branch]:
 
 def device_ohm(device: Device) -> float:
     """Resistance of a device: as stated, else typical of its kind."""
-    return device.resistance.si if device.resistance is not None else CONTACT_OHM[device.kind]
+    return max(device.resistance.si if device.resistance is not None else CONTACT_OHM[device.kind], LEAST_OHM)
 
 
 def linked(battery: Battery) -> bool:
@@ -266,10 +281,13 @@ def _link_branches(battery: Battery, rulebook: Rulebook) -> Iterator[_Branch]:
             yield from (_Branch(one[pole], after[pole], ohm, pole=pole) for one, after in pairwise(ends))
 
 
-def _converter_bonds(plan: Plan) -> Iterator[_Branch]:
+def _source_bonds(plan: Plan) -> Iterator[_Branch]:
+    """What joins the returns on both sides of a converter that is not isolated, or of a solar controller."""
     for source in plan.sources:
         if isinstance(source, Converter) and not source.isolated:
             yield _Branch((source.from_point, RETURN), (source.at, RETURN), source.return_bond.si, pole=BOND)
+        if isinstance(source, Solar) and source.array is not None:
+            yield _Branch((source.input_point, RETURN), (source.at, RETURN), CONTROLLER_BOND_OHM, pole=BOND)
 
 
 def _chassis_bonds(plan: Plan, branches: list[_Branch], names: _Names, assumptions: list[str]) -> list[_Branch]:
@@ -334,5 +352,10 @@ def _arrays(
         pole=np.array([one.pole for one in branches], dtype=np.int64),
         diodes=tuple((index, numbers[a], numbers[b]) for index, a, b in diodes),
         strings=tuple((index, numbers[a], numbers[b]) for index, a, b in strings),
+        arrays=tuple(
+            (index, numbers[one.array.at, FEED], numbers[one.array.at, RETURN])
+            for index, one in enumerate(plan.sources)
+            if isinstance(one, Solar) and one.array is not None
+        ),
         assumptions=assumptions,
     )

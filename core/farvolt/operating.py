@@ -10,7 +10,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from farvolt import batteries
-from farvolt.network import DIODE_DROP_V, Floats, Ints, Network, device_ohm, linked
+from farvolt.network import DIODE_DROP_V, Floats, Ints, Network, bar_ends_ohm, device_ohm, linked
 from farvolt.plan import Battery, Case, Charger, Converter, Load, Plan, Solar, Source, SourceState
 
 KNEE_SHARE = 0.4
@@ -28,7 +28,8 @@ class Operating:
     """One case on a network. Arrays are over ports unless said otherwise.
 
     Source ports: one for each source of the plan, then battery strings that stand apart (their battery's own port is
-    idle), then diodes. Load ports: the loads, then the inputs of converters."""
+    idle), then solar arrays that the plan places, then diodes. Load ports: the loads, then the inputs of converters
+    and of the controllers of such arrays."""
 
     case: Case
     branch_on: np.ndarray
@@ -49,7 +50,9 @@ class Operating:
     load_S: Floats
     knee: Floats
     converters: tuple[tuple[int, int, float, float], ...]
-    """(source port, load port, efficiency, standby W) of each converter."""
+    """(source port, load port, efficiency, standby W) of each converter, and of each controller with an array."""
+    arrays: tuple[tuple[int, int, int, float], ...]
+    """(controller's source port, array's source port, controller's load port, array's full current A)."""
     nominal: Floats
     """Nominal voltage of each source port's island."""
     islands: "Islands" = field(repr=False)
@@ -103,6 +106,8 @@ def islands(network: Network) -> Islands:
         b.append(np.array([end]))
     part = components(network.node_count, np.concatenate(a), np.concatenate(b))
     nominal = {int(number): plan.plan.nominal.si for number in np.unique(part)}
+    for index, node, _ in network.arrays:
+        nominal[int(part[node])] = array_V(plan.sources[index])
     # Batteries first, so that a charger or converter, which states its system's nominal, has the last word.
     for source in sorted(plan.sources, key=lambda one: not isinstance(one, Battery)):
         if source.nominal is not None:
@@ -121,24 +126,34 @@ def operating(network: Network, case: Case, found: Islands | None = None) -> Ope
     plan = network.plan
     laws = [_source_law(plan, source, case, found.nominal(network.feed(source.at))) for source in plan.sources]
     laws += [_string_law(plan, index, case, found.nominal(a)) for index, a, _ in network.strings]
-    laws += [_diode_law(plan, index) for index, _, _ in network.diodes]
+    laws += [_array_law(plan.sources[index], case) for index, _, _ in network.arrays]
+    bars = bar_ends_ohm(plan)
+    laws += [_diode_law(plan, index, bars) for index, _, _ in network.diodes]
+    inner = (*network.strings, *network.arrays)
     at = [network.feed(source.at) for source in plan.sources]
-    at += [a for _, a, _ in network.strings] + [end for _, _, end in network.diodes]
+    at += [a for _, a, _ in inner] + [end for _, _, end in network.diodes]
     back = [network.ret(source.at) for source in plan.sources]
-    back += [b for _, _, b in network.strings] + [start for _, start, _ in network.diodes]
-    draws = [_load_law(load, case, found.nominal(network.feed(load.at))) for load in plan.loads]
+    back += [b for _, _, b in inner] + [start for _, start, _ in network.diodes]
+    draws = [_load_law(plan, load, case, found.nominal(network.feed(load.at))) for load in plan.loads]
     load_a = [network.feed(load.at) for load in plan.loads]
     load_b = [network.ret(load.at) for load in plan.loads]
     knee = [KNEE_SHARE * found.nominal(node) for node in load_a]
-    converters = []
+    converters, arrays = [], []
+    array_ports = {index: len(plan.sources) + len(network.strings) + i for i, (index, *_) in enumerate(network.arrays)}
     for port, source in enumerate(plan.sources):
         if isinstance(source, Converter):
-            converters.append((port, len(load_a), source.efficiency.si, source.standby.si if laws[port][0] else 0.0))
-            node = network.feed(source.from_point)
-            load_a.append(node)
-            load_b.append(network.ret(source.from_point))
-            knee.append(KNEE_SHARE * found.nominal(node))
-            draws.append((0.0, 0.0, 0.0))
+            inlet, standby = source.from_point, source.standby.si if laws[port][0] else 0.0
+        elif isinstance(source, Solar) and port in array_ports:
+            inlet, standby = source.input_point, 0.0
+            arrays.append((port, array_ports[port], len(load_a), array_A(source, case)))
+        else:
+            continue
+        converters.append((port, len(load_a), source.efficiency.si, standby))
+        node = network.feed(inlet)
+        load_a.append(node)
+        load_b.append(network.ret(inlet))
+        knee.append(KNEE_SHARE * found.nominal(node))
+        draws.append((0.0, 0.0, 0.0))
     columns = np.array(laws, dtype=float).reshape(len(laws), 7).T
     load_columns = np.array(draws, dtype=float).reshape(len(draws), 3).T
     return Operating(
@@ -160,6 +175,7 @@ def operating(network: Network, case: Case, found: Islands | None = None) -> Ope
         load_S=load_columns[2],
         knee=np.array(knee, dtype=float),
         converters=tuple(converters),
+        arrays=tuple(arrays),
         nominal=np.array([found.nominal(node) for node in at], dtype=float),
         islands=found,
     )
@@ -187,8 +203,9 @@ def _source_law(plan: Plan, source: Source, case: Case, nominal_V: float) -> Law
     if isinstance(source, Battery):
         if linked(source):
             return _IDLE
-        return _battery_law(source, state, nominal_V, source.strings)
+        return _battery_law(plan, source, case, nominal_V, source.strings)
     if isinstance(source, Solar):
+        on = float(array_A(source, case) > 0) if source.array is not None else on
         power = source.power.si * (state.irradiance.si if state.irradiance else 1.0)
         volts = state.volts.si if state.volts else source.ceiling.si
         amps = source.amps.si if source.amps else source.power.si / (KNEE_SHARE * nominal_V)
@@ -202,12 +219,15 @@ def _source_law(plan: Plan, source: Source, case: Case, nominal_V: float) -> Law
 _IDLE: Law = (0.0, 1.0, 1.0, 0.0, 0.0, float("inf"), 0.0)
 
 
-def _battery_law(battery: Battery, state: SourceState, nominal_V: float, strings: int) -> Law:
+def _battery_law(plan: Plan, battery: Battery, case: Case, nominal_V: float, strings: int) -> Law:
     """`strings` equal strings in parallel. A full battery takes no current: it stands at whatever voltage the
     chargers hold, and helps below its own EMF."""
+    state = case.sources.get(battery.name, SourceState())
     full = state.state == "full"
     charge = 1.0 if full else state.charge.si if state.charge else battery.charge.si
-    model = batteries.model(battery, charge, nominal_V, state.emf.si if state.emf else None)
+    stated = state.emf.si if state.emf else None
+    degC = plan.ambient_degC(plan.zone_of_point(battery.at), case)
+    model = batteries.model(battery, charge, nominal_V, stated, degC=degC, aged=state.aged)
     inf = float("inf")
     on = float(state.state != "off")
     return on, model.emf_V, model.resistance_ohm / strings, 0.0 if full else -inf, inf, inf, 0.0
@@ -216,33 +236,92 @@ def _battery_law(battery: Battery, state: SourceState, nominal_V: float, strings
 def _string_law(plan: Plan, index: int, case: Case, nominal_V: float) -> Law:
     battery = plan.sources[index]
     assert isinstance(battery, Battery)
-    return _battery_law(battery, case.sources.get(battery.name, SourceState()), nominal_V, 1)
+    return _battery_law(plan, battery, case, nominal_V, 1)
 
 
-def _diode_law(plan: Plan, index: int) -> Law:
+def array_V(source: Source) -> float:
+    """Voltage of an array at its greatest power: that of its modules in series."""
+    assert isinstance(source, Solar)
+    assert source.array is not None
+    return source.array.vmp.si * source.array.series
+
+
+def array_A(source: Source, case: Case) -> float:
+    """Current of an array at its greatest power in a case: that of its strings under the case's sun."""
+    assert isinstance(source, Solar)
+    assert source.array is not None
+    state = case.sources.get(source.name, SourceState())
+    sun = 0.0 if state.state == "off" else state.irradiance.si if state.irradiance else 1.0
+    return sun * source.array.imp.si * source.array.modules / source.array.series
+
+
+def _array_law(source: Source, case: Case) -> Law:
+    """An array held by its controller at the voltage of greatest power, one way.
+
+    Its current needs no limit here: the controller takes no more power than it has (see `Equations.power`).
+    """
+    bright = Case(name="full sun")
+    ohm = DROOP_SHARE * array_V(source) / array_A(source, bright)
+    return float(array_A(source, case) > 0), array_V(source), ohm, 0.0, float("inf"), float("inf"), 0.0
+
+
+def _diode_law(plan: Plan, index: int, bars: dict[str, float]) -> Law:
     device = plan.devices[index]
     drop = device.drop.si if device.drop else DIODE_DROP_V
-    return 1.0, -drop, max(device_ohm(device), 1e-6), 0.0, float("inf"), float("inf"), DIODE_LEAK_S
+    ohm = device_ohm(device) + bars.get(device.from_point, 0.0) + bars.get(device.to_point, 0.0)
+    return 1.0, -drop, ohm, 0.0, float("inf"), float("inf"), DIODE_LEAK_S
 
 
-def rated(load: Load, nominal_V: float) -> tuple[float, float, float]:
-    """Constant power W, constant current A and conductance S of a load at its full share, by how it behaves."""
+def rated(load: Load, nominal_V: float, *, idling: bool = True) -> tuple[float, float, float]:
+    """Constant power W, constant current A and conductance S of a load at its full share, by how it behaves.
+
+    An inverter draws what it delivers over its efficiency, and while `idling` what it draws doing nothing.
+    """
+    watts = _rated_W(load, nominal_V)
+    if idling and load.standby is not None:
+        watts += load.standby.si
+    return _by_behaviour(load, watts, nominal_V)
+
+
+def _rated_W(load: Load, nominal_V: float) -> float:
     volts = load.rated_volts.si if load.rated_volts else nominal_V
     if load.power is not None:
-        watts = load.power.si
-    elif load.current is not None:
-        watts = load.current.si * volts
-    else:
-        assert load.resistance is not None
-        watts = volts**2 / load.resistance.si
+        return load.power.si / (load.efficiency.si if load.efficiency else 1.0)
+    if load.current is not None:
+        return load.current.si * volts
+    assert load.resistance is not None
+    return volts**2 / load.resistance.si
+
+
+def _by_behaviour(load: Load, watts: float, nominal_V: float) -> tuple[float, float, float]:
+    volts = load.rated_volts.si if load.rated_volts else nominal_V
     behaves = load.behaves or load.rated_as
     return {"power": (watts, 0.0, 0.0), "current": (0.0, watts / volts, 0.0)}.get(behaves, (0.0, 0.0, watts / volts**2))
 
 
-def _load_law(load: Load, case: Case, nominal_V: float) -> tuple[float, float, float]:
+def _load_law(plan: Plan, load: Load, case: Case, nominal_V: float) -> tuple[float, float, float]:
+    """What a load draws in a case: its share of what it is rated at, or of its surge; an inverter idles at share 0."""
+    if fed_by_mains(plan, load, case):
+        return 0.0, 0.0, 0.0
     share = case.share(load.name)
-    watts, amps, siemens = rated(load, nominal_V)
-    return share * watts, share * amps, share * siemens
+    idle_W = load.standby.si if load.standby is not None and case.names(load.name) else 0.0
+    surge = load.surge if load.name in case.surge else None
+    if surge is not None and surge.current is not None:
+        return 0.0, share * surge.current.si, 0.0
+    if surge is not None and surge.resistance is not None:
+        return 0.0, 0.0, share / surge.resistance.si
+    times = surge.times if surge is not None and surge.times is not None else 1.0
+    return _by_behaviour(load, share * times * _rated_W(load, nominal_V) + idle_W, nominal_V)
 
 
-__all__ = ["Charger", "Islands", "Operating", "components", "device_closed", "islands", "operating", "rated"]
+def fed_by_mains(plan: Plan, load: Load, case: Case) -> bool:
+    """Whether an inverter rests because the charger that is one apparatus with it is at work."""
+    if load.inverter_of is None:
+        return False
+    return case.sources.get(load.inverter_of, SourceState()).state != "off"
+
+
+__all__ = [
+    "Charger", "Islands", "Operating", "array_A", "array_V", "components", "device_closed", "fed_by_mains", "islands",
+    "operating", "rated",
+]  # fmt: skip

@@ -452,6 +452,10 @@ class Case(Entry):
             return value
         return {name: {"state": state} if isinstance(state, str) else state for name, state in value.items()}
 
+    def names(self, load: str) -> bool:
+        """Whether the case has anything to say of `load`: one that is named at a share of 0 is switched on, idle."""
+        return load in self.loads if isinstance(self.loads, dict) else self.loads == "all"
+
     def share(self, load: str) -> float:
         """Share of its rating at which `load` is on."""
         if isinstance(self.loads, dict):
@@ -528,6 +532,10 @@ class Plan(Entry):
         if case is not None and case.ambient is not None:
             return case.ambient.si
         return self.zones[zone].ambient.si if zone is not None else self.plan.ambient.si
+
+    def zone_of_point(self, point: str) -> str | None:
+        """The zone of a point, where the plan states one."""
+        return next((one.zone for one in self.points if one.name == point), None)
 
     def zone_of(self, run: Run) -> str | None:
         """The zone of a run: its own, else that of its route."""

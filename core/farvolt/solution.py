@@ -9,7 +9,6 @@ import numpy as np
 from farvolt.fed import Fed, first_diode
 from farvolt.network import BOND, FEED, RETURN, Floats, Network
 from farvolt.operating import Operating
-from farvolt.plan import Converter
 from farvolt.results import (
     CaseResult,
     DeviceResult,
@@ -269,7 +268,7 @@ class Solution:
             )
             amps = float(sum(self.state.delivered_A[one] for one in self._ports(port) if self.supply.source_on[one]))
             drawn = None
-            if isinstance(source, Converter):
+            if port in inputs:
                 load = inputs[port]
                 at_input = self.state.volts[c.load_a[load]] - self.state.volts[c.load_b[load]]
                 drawn = self._number(np.nan_to_num(at_input) * self.state.drawn_A[load])

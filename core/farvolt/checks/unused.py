@@ -8,15 +8,13 @@ from farvolt.plan import Battery, Entry, Plan
 from farvolt.results import Finding
 
 _UNUSED: dict[str, tuple[str, ...]] = {
-    "points": ("rating", "resistance", "zone", "stud", "largest_size"),
-    "sources": ("max_discharge", "max_charge", "array", "aged_times", "max_input"),
-    "devices": ("continuous", "volts"),
-    "loads": ("surge", "hours_per_day", "schedule", "duty", "efficiency", "standby", "inverter_of"),
+    "points": ("stud", "largest_size"),
+    "sources": ("max_discharge", "max_charge", "max_input"),
+    "loads": ("hours_per_day", "schedule", "duty"),
 }
 
 _NOT_CHECKED = (
     "interrupting rating and far-end fault of protection, let-through, selectivity",
-    "ratings of switches, shunts and busbars",
     "the bank's rates of charge and discharge, its days of autonomy, charging when cold",
     "what stays live behind an open switch, returns shared by circuits",
 )
@@ -64,6 +62,13 @@ def _conditional(plan: Plan) -> dict[str, int]:
         "recovery without cut_out": sum(one.recovery is not None and one.cut_out is None for one in plan.loads),
         "rated_volts of loads that draw as they are rated": sum(
             one.rated_volts is not None and (one.behaves or one.rated_as) == one.rated_as for one in plan.loads
+        ),
+        "surge of loads that no case names": sum(
+            load.surge is not None and not any(load.name in case.surge for case in plan.checked_cases)
+            for load in plan.loads
+        ),
+        "zones of points without a battery": sum(
+            point.zone is not None and all(point.name != battery.at for battery in batteries) for point in plan.points
         ),
         "runs.protection.interrupting": sum(one.interrupting is not None for one in guards),
     }  # fmt: skip
