@@ -17,7 +17,7 @@ class ArraySide:
     runs: tuple[int, ...]
     devices: tuple[Device, ...]
     joined: tuple[str, ...]
-    """Points of other sources that it reaches: a plan that goes past the controller."""
+    """Points at which sources deliver and that it reaches: a plan that goes past the controller."""
 
     @property
     def strings(self) -> int:
@@ -32,34 +32,29 @@ def array_sides(context: Context) -> Iterator[ArraySide]:
             yield _side(context.plan, source, source.array)
 
 
-def on_array_sides(plan: Plan) -> set[str]:
-    """Names of the runs and devices on any array's side."""
-    names: set[str] = set()
-    for source in plan.sources:
-        if isinstance(source, Solar) and source.array is not None:
-            side = _side(plan, source, source.array)
-            names |= {plan.runs[index].name for index in side.runs} | {device.name for device in side.devices}
-    return names
+def devices_on_array_sides(context: Context) -> set[str]:
+    """Names of the devices on any array's side."""
+    return {device.name for side in array_sides(context) for device in side.devices}
 
 
 def _side(plan: Plan, source: Solar, array: SolarArray) -> ArraySide:
-    """Walk outward from the array; the controller's output is where it ends."""
+    """Walk outward from the array, up to the controller's input and no further than another source."""
     at: dict[str, list[tuple[Run | Device, str]]] = {}
-    parts_in_line: list[Run | Device] = [*plan.runs, *plan.devices]
-    for part in parts_in_line:
-        if isinstance(part, Device) or part.conducts != "return":
-            at.setdefault(part.from_point, []).append((part, part.to_point))
-            at.setdefault(part.to_point, []).append((part, part.from_point))
-    seen, queue, parts = {array.at}, deque([array.at]), set[str]()
+    parts: list[Run | Device] = [*(run for run in plan.runs if run.conducts != "return"), *plan.devices]
+    for part in parts:
+        at.setdefault(part.from_point, []).append((part, part.to_point))
+        at.setdefault(part.to_point, []).append((part, part.from_point))
+    delivered_to = {one.at for one in plan.sources}
+    seen, queue, reached = {array.at}, deque([array.at] * (array.at not in delivered_to)), set[int]()
     while queue:
         for part, other in at.get(queue.popleft(), ()):
-            if other == source.at:
-                continue
-            parts.add(part.name)
+            reached.add(id(part))
             if other not in seen:
                 seen.add(other)
-                queue.append(other)
-    others = {one.at for one in plan.sources if one is not source} | {source.at}
-    runs = tuple(index for index, run in enumerate(plan.runs) if run.name in parts)
-    devices = tuple(device for device in plan.devices if device.name in parts)
-    return ArraySide(source, array, runs, devices, tuple(sorted(seen & others)))
+                if other not in delivered_to:  # nothing beyond belongs to the array
+                    queue.append(other)
+    joined = tuple(sorted(seen & delivered_to - {array.at}))
+    if joined:  # where a cable goes past the controller, what is the array's own side cannot be told
+        reached.clear()
+    runs = tuple(index for index, run in enumerate(plan.runs) if id(run) in reached)
+    return ArraySide(source, array, runs, tuple(one for one in plan.devices if id(one) in reached), joined)

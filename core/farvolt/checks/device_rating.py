@@ -4,7 +4,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from farvolt.checks.array_side import on_array_sides
+from farvolt.checks.array_side import devices_on_array_sides
 from farvolt.checks.flows import Flow, Flows, device_amps
 from farvolt.checks.registry import apart, check
 from farvolt.checks.upstream import Arrival, Upstream
@@ -27,7 +27,7 @@ Solved = list[tuple[CaseStudy, Solution]]
 def device_rating(context: Context) -> Iterator[Finding]:
     """Devices and bars beyond a rating in some case, or behind protection above it; surges of a case do not count."""
     solved = _solved(context)
-    array_sides = on_array_sides(context.plan)  # judged by the rules on solar, at currents and voltages of their own
+    array_sides = devices_on_array_sides(context)  # judged by the rules on solar, at currents and voltages of their own
     devices = [(index, one) for index, one in enumerate(context.plan.devices) if one.name not in array_sides]
     upstream, flows, highest = Upstream(context), Flows(context), _Highest(context)
     for index, device in devices:
