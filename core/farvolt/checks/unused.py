@@ -4,19 +4,20 @@ from collections.abc import Iterator
 
 from farvolt.checks.registry import check
 from farvolt.context import Context
-from farvolt.plan import Battery, Entry, Plan
+from farvolt.plan import Battery, Plan, Solar
+from farvolt.plan_types import Entry
 from farvolt.results import Finding
 
 _UNUSED: dict[str, tuple[str, ...]] = {
     "points": ("stud", "largest_size"),
-    "sources": ("max_discharge", "max_charge", "max_input"),
+    "sources": ("max_discharge", "max_charge"),
     "loads": ("hours_per_day", "schedule", "duty"),
 }
 
 _NOT_CHECKED = (
     "interrupting rating and far-end fault of protection, let-through, selectivity",
     "the bank's rates of charge and discharge, its days of autonomy, charging when cold",
-    "what stays live behind an open switch, returns shared by circuits",
+    "returns shared by circuits",
 )
 
 
@@ -69,6 +70,9 @@ def _conditional(plan: Plan) -> dict[str, int]:
         ),
         "zones of points without a battery": sum(
             point.zone is not None and all(point.name != battery.at for battery in batteries) for point in plan.points
+        ),
+        "max_input of solar without array": sum(
+            isinstance(one, Solar) and one.max_input is not None and one.array is None for one in plan.sources
         ),
         "runs.protection.interrupting": sum(one.interrupting is not None for one in guards),
     }  # fmt: skip
