@@ -9,7 +9,6 @@ from farvolt.plan_types import Entry
 from farvolt.results import Finding
 
 _UNUSED: dict[str, tuple[str, ...]] = {
-    "points": ("stud", "largest_size"),
     "sources": ("max_discharge", "max_charge"),
     "loads": ("hours_per_day", "schedule", "duty"),
 }
