@@ -6,6 +6,7 @@ from functools import cached_property
 
 from farvolt.ampacity import Ampacity
 from farvolt.conductors import Size, made_sizes
+from farvolt.faults import Faults
 from farvolt.network import Network
 from farvolt.plan import Case, Plan, Run
 from farvolt.rulebook import Basis, Rulebook
@@ -53,6 +54,11 @@ class Context:
     def sections(self) -> Sections:
         """Protection by section, walked once."""
         return sections(self.network)
+
+    @cached_property
+    def faults(self) -> Faults:
+        """Prospective fault currents, each worked out when first asked for."""
+        return Faults(self.network, self.rulebook, self.sections)
 
     @cached_property
     def lowest_ampacity(self) -> tuple[Ampacity | None, ...]:

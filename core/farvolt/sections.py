@@ -63,6 +63,23 @@ class Sections:
     by_run: dict[int, list[Exposure]] = field(default_factory=dict)
     returns: dict[int, list[tuple[int, Guard]]] = field(default_factory=dict)
     """Return conductors of their own, by run: (source, protection of a circuit that returns through it)."""
+    by_device: dict[tuple[int, str, int, Guard], None] = field(default_factory=dict)
+    """Devices that are passed behind a protection: (device, end at which it is fed, source, protection)."""
+
+
+@dataclass(frozen=True, slots=True)
+class Stretch:
+    """A piece of conductor that a protection guards against a source, up to the next protection on the way."""
+
+    guard: Guard
+    source: int
+    run: int
+    """Index of the run, or -1 where it is a device that the current passes."""
+    end: str
+    """The end of the run or device at which the source feeds it."""
+    until_m: float = 0.0
+    """How far along a run it reaches from that end: the whole length where no protection follows in the run."""
+    device: int = -1
 
 
 _Carried = dict[int, dict[tuple[Guard | None, int], None]]
@@ -75,6 +92,7 @@ class _Edge:
     """Index of the run, or -1 for a device."""
     other: int
     end: str
+    device: int = -1
 
 
 @dataclass(frozen=True, slots=True)
@@ -117,6 +135,27 @@ def sections(network: Network) -> Sections:
     return found
 
 
+def stretches(plan: Plan, found: Sections) -> list[Stretch]:
+    """What each protection guards against each source, devices closed: each run and device, by the way it is fed.
+
+    The start of a run before its own protection belongs to the protection upstream. The far ends of a protection's
+    stretches are where a fault gives it the least current.
+    """
+    result: list[Stretch] = []
+    for index, ways in found.by_run.items():
+        run = plan.runs[index]
+        for way in ways:
+            ends_in = [one for one in run.protections if one.pole == "feed" and one.end != way.end]
+            whole = run.length.si - min((one.distance.si if one.distance else 0.0 for one in ends_in), default=0.0)
+            if way.guard is not None:
+                result.append(Stretch(way.guard, way.source, index, way.end, whole))
+            if way.own and way.upstream is not None and way.bare_m > 0:
+                result.append(Stretch(way.upstream, way.source, index, way.end, way.bare_m))
+    for device, end, source, guard in found.by_device:
+        result.append(Stretch(guard, source, -1, end, device=device))
+    return result
+
+
 def _feeds(network: Network) -> _Feeds:
     plan = network.plan
     edges: dict[int, list[_Edge]] = {}
@@ -127,11 +166,11 @@ def _feeds(network: Network) -> _Feeds:
             edges.setdefault(a, []).append(_Edge(index, b, "from"))
             edges.setdefault(b, []).append(_Edge(index, a, "to"))
             guards |= {(index, guard.protection.end): guard for guard in _lowest(index, run)}
-    for device in plan.devices:
+    for index, device in enumerate(plan.devices):
         a, b = network.feed(device.from_point), network.feed(device.to_point)
         if a != b:
-            edges.setdefault(a, []).append(_Edge(-1, b, "from"))
-            edges.setdefault(b, []).append(_Edge(-1, a, "to"))
+            edges.setdefault(a, []).append(_Edge(-1, b, "from", index))
+            edges.setdefault(b, []).append(_Edge(-1, a, "to", index))
     drawn = {network.feed(load.at) for load in plan.loads}
     drawn |= {network.feed(source.from_point) for source in plan.sources if isinstance(source, Converter)}
     bare = {node: sum((edge.run, edge.end) not in guards for edge in leaving) for node, leaving in edges.items()}
@@ -183,6 +222,8 @@ def _walk(feeds: _Feeds, port: int, start: int, found: Sections) -> _Carried:
 def _step(feeds: _Feeds, port: int, edge: _Edge, state: _State, found: Sections) -> _State:
     """Go over an edge: note how a run on it is fed."""
     if edge.run < 0:
+        if state.guard is not None:
+            found.by_device[edge.device, edge.end, port, state.guard] = None
         return replace(state, node=edge.other, came=-1)
     exposure = _exposure(feeds, port, edge, state.guard, state.length_m, state.direct)
     found.by_run.setdefault(edge.run, []).append(exposure)

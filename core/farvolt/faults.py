@@ -1,0 +1,195 @@
+"""Prospective fault currents: what a bolted short between feed and return draws, from the whole network.
+
+The highest is what a protective device has to interrupt: all sources on, batteries new, full and warm, conductors
+cold. As IEC 60050-441-17-01 defines it, a device counts as a link of negligible impedance; so do all others, and any
+contact or joint whose resistance the plan does not state. The lowest is what has to open a device in time: one
+source alone, an aged battery, cold and at low charge, conductors hot, contacts as stated or typical. An arc or a
+loose joint draws less than a bolted short.
+"""
+
+from collections.abc import Hashable, Iterator
+from dataclasses import dataclass
+from functools import cached_property
+from typing import TypeVar
+
+from farvolt import fault_working
+from farvolt.fault_network import TRACE_A, FaultNetwork, coldest, hottest
+from farvolt.network import FEED, RETURN, Network
+from farvolt.operating import islands
+from farvolt.plan import CHASSIS, Battery
+from farvolt.rulebook import Rulebook
+from farvolt.sections import Sections, Stretch, sections, stretches
+from farvolt.shorts import Place, Shorted
+
+_Key = TypeVar("_Key")
+
+
+@dataclass(frozen=True, slots=True)
+class Fault:
+    """A bolted short at a place. Currents in ampere."""
+
+    place: str
+    amps: float
+    """Through the device in question, or in the short itself where it is a point that is asked for."""
+    by_source: tuple[tuple[str, float], ...]
+    """What each source delivers into the network during the fault, negative where it takes current."""
+    estimated: bool
+    """Some of it comes from a battery whose resistance is an estimate."""
+    limited: bool
+    """All of it comes from sources at their own limit: no more ever flows, and a device may not open."""
+    certified: bool
+    """Kirchhoff's current law was found to hold at every node."""
+    imbalance_A: float
+    working: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class FarEnd:
+    """The least fault current at the far end of a stretch that a protection guards against a source."""
+
+    stretch: Stretch
+    fault: Fault
+    """`amps` is the current through the protection."""
+    run_A: float
+    """Current in the feed conductor of the stretch itself, where it is fed; through the protection for a device."""
+
+
+class Faults:
+    """The fault currents of a plan, each worked out when it is first asked for."""
+
+    def __init__(self, network: Network, rulebook: Rulebook, found: Sections | None = None) -> None:
+        self._network, self._rulebook, self._sections = network, rulebook, found
+        self._islands = islands(network)
+
+    @cached_property
+    def points(self) -> dict[str, Fault]:
+        """The highest fault current at each point that is fed, between its feed and its return."""
+        names = self._network.plan.point_names
+        best: dict[str, Fault] = {}
+        for net in self._highest:
+            for name, found in zip(names, net.circuit.shorted([net.point(name) for name in names]), strict=True):
+                _keep_larger(best, name, net, found, abs(found.amps), f'at "{name}"')
+        return best
+
+    @cached_property
+    def devices(self) -> dict[tuple[int, int], Fault]:
+        """The highest current that each protection may have to interrupt, by (run, place among its protections).
+
+        The short is at the device, on either side of it: a device has to interrupt what comes from the other one.
+        """
+        best: dict[tuple[int, int], Fault] = {}
+        for net in self._highest:
+            shorts = list(self._at_devices(net))
+            for (key, pole, _), found in zip(shorts, net.circuit.shorted([one[2] for one in shorts]), strict=True):
+                parts = net.parts_A(found, found.place.feed if pole == FEED else found.place.back)
+                words = fault_working.at_device(self._network.plan.runs[key[0]], key[1])
+                _keep_larger(best, key, net, found, max(map(abs, parts)), words)
+        return best
+
+    def _at_devices(self, net: FaultNetwork) -> Iterator[tuple[tuple[int, int], int, Place]]:
+        """Every protection and its pole, with each of the shorts that may be the worst for it."""
+        for index, run in enumerate(self._network.plan.runs):
+            for number, one in enumerate(run.protections):
+                along = one.distance.si if one.distance else 0.0
+                pole = FEED if one.pole == "feed" else RETURN
+                spot = net.spot(index, pole, one.end, along)
+                for other in net.opposite(index, RETURN if pole == FEED else FEED, one.end, along) if spot else ():
+                    assert spot is not None
+                    yield (index, number), pole, Place(spot, other) if pole == FEED else Place(other, spot)
+
+    @cached_property
+    def far_ends(self) -> tuple[FarEnd, ...]:
+        """The lowest fault current at the far end of every stretch, against each source that counts.
+
+        These are the batteries behind a protection, one at a time; sources that limit themselves only where there
+        is none. The switches are as the cases have them, and all closed.
+        """
+        wanted = self._guarded
+        least: dict[int, FarEnd] = {}
+        for source in dict.fromkeys(one.source for one in wanted):
+            mine = [place for place, one in enumerate(wanted) if one.source == source]
+            for net in hottest(self._network, self._islands, self._rulebook, source):
+                for place, far in _far_ends(net, {place: wanted[place] for place in mine}):
+                    if place not in least or far.fault.amps < least[place].fault.amps:
+                        least[place] = far
+        return tuple(least[place] for place in sorted(least))
+
+    @cached_property
+    def lowest(self) -> dict[tuple[int, str], FarEnd]:
+        """The far end that gives each protection the least current, by (run, end at which it sits)."""
+        least: dict[tuple[int, str], FarEnd] = {}
+        for far in self.far_ends:
+            key = _seat(far.stretch)
+            if key not in least or far.fault.amps < least[key].fault.amps:
+                least[key] = far
+        return least
+
+    @property
+    def _guarded(self) -> list[Stretch]:
+        plan = self._network.plan
+        every = stretches(plan, self._sections if self._sections is not None else sections(self._network))
+        strong = {_seat(one) for one in every if isinstance(plan.sources[one.source], Battery)}
+        return [one for one in every if isinstance(plan.sources[one.source], Battery) or _seat(one) not in strong]
+
+    @cached_property
+    def _highest(self) -> list[FaultNetwork]:
+        return coldest(self._network, self._islands)
+
+
+def _seat(stretch: Stretch) -> tuple[int, str]:
+    return stretch.guard.run, stretch.guard.protection.end
+
+
+def _far_ends(net: FaultNetwork, wanted: dict[int, Stretch]) -> Iterator[tuple[int, FarEnd]]:
+    """The far ends of some stretches in one setting, those left out to which no current comes."""
+    shorts: dict[Hashable, tuple[Place, str]] = {}
+    groups: dict[Hashable, list[int]] = {}
+    for number, stretch in wanted.items():
+        found = _far_place(net, stretch)
+        if found is not None:
+            shorts.setdefault(found[0], found[1:])
+            groups.setdefault(found[0], []).append(number)
+    for key, short in zip(shorts, net.circuit.shorted([place for place, _ in shorts.values()]), strict=True):
+        for number in groups[key]:
+            stretch = wanted[number]
+            amps = net.feed_A(short, *_seat(stretch))
+            if amps >= TRACE_A:
+                fault = _fault(net, short, amps, shorts[key][1])
+                in_run = net.feed_A(short, stretch.run, stretch.end) if stretch.run >= 0 else amps
+                yield number, FarEnd(stretch, fault, in_run)
+
+
+def _far_place(net: FaultNetwork, stretch: Stretch) -> tuple[Hashable, Place, str] | None:
+    """The short at the far end of a stretch, what tells it from others, and its name."""
+    plan = net.network.plan
+    if stretch.run < 0:
+        passed = plan.devices[stretch.device]
+        name = passed.to_point if stretch.end == "from" else passed.from_point
+        return name, net.point(name), f'at "{name}"'
+    run = plan.runs[stretch.run]
+    if stretch.until_m >= run.length.si * (1 - 1e-9):
+        name = run.to_point if stretch.end == "from" else run.from_point
+        return None if name == CHASSIS else (name, net.point(name), f'at "{name}"')
+    spot = net.spot(stretch.run, FEED, stretch.end, stretch.until_m)
+    others = net.opposite(stretch.run, RETURN, stretch.end, stretch.until_m)
+    if spot is None or not others:
+        return None
+    words = fault_working.along(run, stretch.end, stretch.until_m)
+    return (stretch.run, stretch.end, stretch.until_m), Place(spot, others[0]), words
+
+
+def _keep_larger(
+    best: dict[_Key, Fault], key: _Key, net: FaultNetwork, found: Shorted, amps: float, place: str
+) -> None:
+    if amps >= TRACE_A and (key not in best or amps > best[key].amps):
+        best[key] = _fault(net, found, amps, place)
+
+
+def _fault(net: FaultNetwork, found: Shorted, amps: float, place: str) -> Fault:
+    delivered = fault_working.by_source(net, found)
+    working = fault_working.working(net, found, amps)
+    giving = [place for place in net.taking_part(found) if found.port_A[place] > 0]
+    return Fault(
+        place, amps, delivered, any(net.sources[one].estimated for one in giving),
+        bool(giving) and all(found.limited[one] for one in giving), found.certified, found.imbalance_A, working,
+    )  # fmt: skip
