@@ -146,9 +146,10 @@ def _live_beyond(context: Context, parts: _Parts, index: int, far: int, fed: tup
     names = [[plan.sources[port].name for port in ports] for ports in fed]
     loads = parts.loads_in(parts.reach([parts.switches[index][far]], frozenset((index,))))
     count = f" with {len(loads)} {'loads' if len(loads) > 1 else 'load'}" if loads else ""
+    still = f'what lies beyond it at "{points[far]}"{count} stays live from {listed(names[far])}'
     return _finding(
         "note", device.name, "device",
-        f'With "{device.name}" open, what lies beyond it at "{points[far]}"{count} stays live from {listed(names[far])}',
+        f'With "{device.name}" open, {still}',
         tuple(f'at "{point}": {listed(side)}' for point, side in zip(points, names, strict=True)),
         f'switch off or cut off {listed(names[far])} as well before work there; a mark at "{device.name}" that says so',
     )  # fmt: skip
