@@ -34,7 +34,7 @@ class _Parts:
     switches: dict[int, tuple[int, int]]
     """Closed device to the parts at its `from` and `to`."""
     one_way: list[tuple[int, int]]
-    """(part, part that it feeds) by a diode or a converter."""
+    """(part, part that it feeds) by a diode, a converter or a solar controller."""
     sources: dict[int, list[int]]
     """Part to the sources that stand in it, by place in the plan."""
     near: dict[int, list[tuple[int, int]]] = field(default_factory=dict)
@@ -87,12 +87,14 @@ def _parts(network: Network) -> _Parts:
     ]
     sources: dict[int, list[int]] = {}
     for port, source in enumerate(plan.sources):
+        seat = source.at
         if isinstance(source, Converter):
             one_way.append((part(source.from_point), part(source.at)))
-        else:
-            sources.setdefault(part(source.at), []).append(port)
+            continue
         if isinstance(source, Solar) and source.array is not None:
-            sources.setdefault(part(source.array.at), []).append(port)
+            one_way.append((part(source.input_point), part(source.at)))
+            seat = source.array.at
+        sources.setdefault(part(seat), []).append(port)
     found = _Parts(network, of_node, switches, one_way, sources)
     devices = list(switches)
     found.near = {
