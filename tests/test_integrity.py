@@ -8,6 +8,7 @@ import pytest
 
 from farvolt import examples, integrity, planfile
 from farvolt.errors import Fault, PlanError
+from farvolt.plan import NAMED
 
 BASE: dict[str, Any] = {
     "format": 1,
@@ -52,6 +53,27 @@ def test_a_plan_that_hangs_together_has_no_faults() -> None:
 @pytest.mark.parametrize("name", examples.names())
 def test_the_examples_hang_together(name: str) -> None:
     assert integrity.faults(tomllib.loads(examples.text(name))) == []
+
+
+@pytest.mark.parametrize(
+    ("loads", "surge", "problem", "accepted"),
+    [
+        ("all", ["pump"], None, ""), ({"pump": 1.0}, ["pump"], None, ""),
+        ("all", ["lamp"], "states no surge", '"pump"'), ("all", ["pmup"], "no such load", '"lamp", "pump"'),
+        ("none", ["pump"], "is off in the case", '"pump" = 1.0'), ({"lamp": 1.0}, ["pump"], "is off", '"pump" = 1.0'),
+        ({"pump": 0}, ["pump"], "is off", '"pump" = 1.0'),
+    ],
+)  # fmt: skip
+def test_a_case_starts_what_is_on_and_states_a_surge(loads: Any, surge: Any, problem: str | None, accepted: str) -> None:
+    raw = changed("cases.0", {"name": "start", "loads": loads, "surge": surge})
+    raw["loads"][1]["surge"] = {"times": 3}
+    found = [fault for _, fault in integrity.faults(raw)]
+    assert len(found) == (problem is not None)
+    for fault in found:
+        assert (fault.where, fault.field) == ('cases "start"', "surge")
+        assert problem is not None
+        assert problem in fault.problem
+        assert accepted in fault.accepted
 
 
 BUS = {"from": "bus", "to": "chassis", "name": "x", "length": "1 m"}
@@ -221,6 +243,6 @@ def test_an_entry_without_a_name_is_told_by_its_place() -> None:
 @pytest.mark.parametrize(
     "odd", [None, 3, "x", [], {}, [1, "x", None, [], {}], {"name": {}}, [{"name": [], "kind": {}}]]
 )
-@pytest.mark.parametrize("table", ["plan", "zones", "routes", "points", "sources", "runs", "devices", "loads", "cases"])
+@pytest.mark.parametrize("table", ["plan", *NAMED, "points", "sources", "runs", "devices", "loads", "cases"])
 def test_tables_of_any_shape_are_looked_at_without_error(table: str, odd: Any) -> None:
     assert all(isinstance(fault, Fault) for _, fault in integrity.faults({**BASE, table: odd}))

@@ -333,8 +333,8 @@ FAULTS = [
     (SIZE, "protection = 3", RUN, "protection", "3", "not a table", 'type = "blade"', ""),
     (SIZE, 'protection = { type = "blade" }', RUN, "protection.rating", "", "is missing", '"30 A"', ""),
     (
-        SIZE, 'protection = { type = "blad", rating = "5 A" }', RUN, "protection.type", '"blad"', "not a known type",
-        "terminal fuse", '"blade"',
+        SIZE, 'protection = { type = "blad", rating = "5 A" }', RUN, "protection.type", '"blad"',
+        "no such type of protection", "terminal fuse", '"blade"',
     ),
     (
         SIZE, 'protection = [{ type = "blade", rating = "5 A" }, { type = "blade", rating = "5 V" }]', RUN,

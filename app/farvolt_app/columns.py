@@ -19,7 +19,7 @@ class Column:
     kind: Kind = "text"
     choices: tuple[str, ...] = ()
     names_of: str = ""
-    """The table whose names are the choices (zones, routes), or "classes" for those of the rulebook."""
+    """The table whose names are choices (zones, routes, protection_types), or "classes" for those of the rulebook."""
     main: bool = True
     """Shown at once; the others only when asked for, or when one of them is filled in."""
 
@@ -77,7 +77,8 @@ def _protection(path: str, end: str, mark: str, *, main: bool) -> tuple[Column, 
     where = f"fuse or breaker at the {end} end"
     types = protection_type_names()
     return (
-        _field(f"{path}.type", f"Protection{mark}", f"Type of the {where}; empty: none.", choices=types, main=main),
+        _field(f"{path}.type", f"Protection{mark}", f"Type of the {where}; empty: none.", choices=types,
+               names_of="protection_types", main=main),
         _field(f"{path}.rating", f"Rated{mark}", f"Rated current of the {where}: 20 A.", main=main),
         _more(f"{path}.distance", f"Distance{mark}", f"How far from that end the {where} sits: 0.15 m."),
         _more(f"{path}.pole", f"Pole{mark}", f"The conductor that holds it ({where}).", choices=("feed", "return")),

@@ -13,13 +13,10 @@ from dataclasses import dataclass, replace
 from typing import Any
 
 from farvolt.errors import FarvoltError
+from farvolt.plan import NAMED
 from farvolt_app.blocks import Block, Entry, core_and_tail, group, split
 
 Path = tuple[str | int, ...]
-
-NAMED = ("zones", "routes")
-"""Tables whose entries are called by their key."""
-
 
 @dataclass(frozen=True, slots=True)
 class Set:
@@ -43,7 +40,7 @@ class RenameKey:
 
 @dataclass(frozen=True, slots=True)
 class Add:
-    """Add an entry at the end of its table; among zones and routes `name` is its key."""
+    """Add an entry at the end of its table; in a table of `NAMED` ones `name` is its key."""
 
     table: str
     fields: dict[str, Any]
@@ -103,11 +100,19 @@ def renaming(raw: dict[str, Any], table: str, entry: Entry, name: str) -> list[S
         return steps  # a name that is taken is a fault to be shown; nothing may follow it
     if table == "sources" and _dict(raw.get("plan")).get("reference") == old:
         steps.append(Set("plan", None, ("reference",), name))
-    if table in NAMED:
+    if table == "sources":
+        pairs = enumerate(_list(raw.get("loads")))
+        steps += [Set("loads", i, ("inverter_of",), name) for i, row in pairs if _dict(row).get("inverter_of") == old]
+    if table == "protection_types":
+        steps += _protections(raw, old, name)
+    elif table in NAMED:
         steps += _references(raw, table.removesuffix("s"), old, name)
     for index, case in enumerate(_list(raw.get("cases"))):
         if old in _dict(_dict(case).get(table)):
             steps.append(RenameKey("cases", index, (table, old), name))
+        surge = _list(_dict(case).get("surge"))
+        if table == "loads" and old in surge:
+            steps.append(Set("cases", index, ("surge",), [name if one == old else one for one in surge]))
     return steps
 
 
@@ -120,6 +125,17 @@ def _references(raw: dict[str, Any], field: str, old: str, name: str) -> list[St
     for key, row in _dict(raw.get("routes")).items():
         if field == "zone" and _dict(row).get(field) == old:
             found.append(Set("routes", key, (field,), name))
+    return found
+
+
+def _protections(raw: dict[str, Any], old: str, name: str) -> list[Step]:
+    """The steps that move the protection on runs to the new name of its type."""
+    found: list[Step] = []
+    for index, run in enumerate(_list(raw.get("runs"))):
+        given, at_to = _dict(run).get("protection"), _dict(run).get("protection_to")
+        guards: list[tuple[Path, Any]] = [(("protection",), given), (("protection_to",), at_to)]
+        guards += [(("protection", number), one) for number, one in enumerate(_list(given))]
+        found += [Set("runs", index, (*path, "type"), name) for path, one in guards if _dict(one).get("type") == old]
     return found
 
 

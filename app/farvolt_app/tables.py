@@ -8,6 +8,7 @@ import re
 from collections.abc import Mapping, Sequence
 from typing import Any
 
+from farvolt.plan import NAMED
 from farvolt_app import edits
 from farvolt_app.blocks import Entry
 from farvolt_app.columns import Column, Sheet
@@ -24,7 +25,7 @@ YES, NO = "yes", "no"
 def keys(raw: Raw, sheet: Sheet) -> list[Entry]:
     """The entries that a sheet shows, in its order."""
     found = raw.get(sheet.table)
-    if sheet.table in edits.NAMED:
+    if sheet.table in NAMED:
         return list(found) if isinstance(found, dict) else []
     rows = found if isinstance(found, list) else []
     return [index for index, row in enumerate(rows) if not sheet.kind or _entry(row).get("kind") == sheet.kind]
@@ -45,7 +46,7 @@ def rows(raw: Raw, sheet: Sheet) -> list[Row]:
     found = []
     for key in keys(raw, sheet):
         entry = _entry(raw[sheet.table][key])
-        if sheet.table in edits.NAMED:
+        if sheet.table in NAMED:
             entry = {"name": key, **entry}
         found.append({column.id: _cell(entry, column) for column in sheet.columns})
     return found
@@ -59,7 +60,7 @@ def choices(raw: Raw, column: Column, classes: Sequence[str]) -> tuple[str, ...]
         return tuple(classes)
     if column.names_of:
         found = raw.get(column.names_of)
-        return tuple(found) if isinstance(found, dict) else ()
+        return (*column.choices, *(found if isinstance(found, dict) else ()))
     return column.choices
 
 
@@ -128,7 +129,7 @@ def free_name(raw: Raw, table: str, name: str) -> str:
 
 def _added(raw: Raw, sheet: Sheet, by_id: dict[str, Column], added: Sequence[Mapping[str, Any]]) -> list[Step]:
     found: list[Step] = []
-    taken = {sheet.table: dict.fromkeys(raw.get(sheet.table, ()))} if sheet.table in edits.NAMED else {}
+    taken = {sheet.table: dict.fromkeys(raw.get(sheet.table, ()))} if sheet.table in NAMED else {}
     for cells in added:
         fields: dict[str, Any] = {}
         for column_id, value in cells.items():
@@ -139,7 +140,7 @@ def _added(raw: Raw, sheet: Sheet, by_id: dict[str, Column], added: Sequence[Map
         if sheet.kind:
             fields["kind"] = sheet.kind
         key = None
-        if sheet.table in edits.NAMED:
+        if sheet.table in NAMED:
             wanted = fields.pop("name", f"new {sheet.table.removesuffix('s')}")
             key = free_name(taken, sheet.table, str(wanted))
             taken[sheet.table][key] = None

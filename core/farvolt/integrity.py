@@ -9,7 +9,8 @@ from itertools import islice
 from typing import Any
 
 from farvolt.errors import Fault
-from farvolt.plan import CHASSIS
+from farvolt.plan import CHASSIS, NAMED
+from farvolt.protection_types import is_shipped, protection_type_names
 
 _NAMED = ("points", "sources", "runs", "devices", "loads", "cases")
 _ENDS = {"sources": ("at", "from"), "runs": ("from", "to"), "devices": ("from", "to"), "loads": ("at",)}
@@ -65,7 +66,10 @@ def nearest(word: str, known: Any) -> str:
 
 def faults(raw: dict[str, Any]) -> list[Found]:
     """Every fault between entries, each with its path in the raw tables (for its line)."""
-    checks = (_duplicates, _self_joins, _chassis, _one_pole, _guards, _references, _case_names, _case_states, _sources)
+    checks = (
+        _duplicates, _self_joins, _chassis, _one_pole, _guards, _protection_types, _references, _case_names,
+        _case_states, _sources,
+    )  # fmt: skip
     return [found for check in checks for found in check(raw)]
 
 
@@ -77,7 +81,7 @@ def entries(raw: dict[str, Any], table: str) -> list[tuple[int, dict[str, Any]]]
 
 def names(raw: dict[str, Any], table: str) -> list[str]:
     """The names in a table."""
-    if table in ("zones", "routes"):
+    if table in NAMED:
         return list(raw[table]) if isinstance(raw.get(table), dict) else []
     return [row["name"] for _, row in entries(raw, table) if isinstance(row.get("name"), str)]
 
@@ -170,6 +174,31 @@ def _guards(raw: dict[str, Any]) -> Iterator[Found]:
                 yield ("runs", index, field), Fault(where, f"{field}.end", '"from"', problem, 'no end, or "to"')
 
 
+def _protection_types(raw: dict[str, Any]) -> Iterator[Found]:
+    """Protection of a type that is neither shipped nor the plan's own; own types that take a shipped one's name."""
+    own = names(raw, "protection_types")
+    for name in [one for one in own if is_shipped(one)]:
+        where = f'protection_types "{shorten(name)}"'
+        yield ("protection_types", name), Fault(where, "", "", "a type of this name is shipped", "another name")
+    known = _Names("type of protection", [*own, *protection_type_names()])
+    for index, row in entries(raw, "runs"):
+        for path, guard in _protection_of(row):
+            kind = guard.get("type")
+            if isinstance(kind, str) and not is_shipped(kind):
+                parts = (f"entry {part + 1}" if isinstance(part, int) else part for part in path)
+                field = ".".join((*parts, "type"))
+                yield from known.unknown(("runs", index, *path, "type"), place("runs", row, index), field, kind)
+
+
+def _protection_of(row: dict[str, Any]) -> Iterator[tuple[Path, dict[str, Any]]]:
+    """The well-formed protections of a run with their paths in it, whichever way the file writes them."""
+    given = row.get("protection")
+    found: list[tuple[Path, Any]] = [(("protection",), given), (("protection_to",), row.get("protection_to"))]
+    if isinstance(given, list):
+        found += [(("protection", number), one) for number, one in enumerate(given)]
+    return ((path, one) for path, one in found if isinstance(one, dict))
+
+
 class _Names:
     """The names of one kind that a plan defines, for many look-ups."""
 
@@ -236,10 +265,14 @@ def _case_names(raw: dict[str, Any]) -> Iterator[Found]:
 
 
 def _no_surge(raw: dict[str, Any], index: int, row: dict[str, Any], name: Any) -> Iterator[Found]:
-    """A case that asks for the surge of a load which states none."""
+    """A case that asks for the surge of a load which states none, or which is off in it."""
+    path, where, on = ("cases", index, "surge"), place("cases", row, index), row.get("loads", "all")
     if any(load.get("name") == name and "surge" not in load for _, load in entries(raw, "loads")):
-        fault = Fault(place("cases", row, index), "surge", shown(name), "this load states no surge", "a load with one")
-        yield ("cases", index, "surge"), fault
+        stating = [load["name"] for _, load in entries(raw, "loads") if "surge" in load and "name" in load]
+        some = ", ".join(f'"{shorten(str(one), 30)}"' for one in stating[:8]) + (", …" if len(stating) > 8 else "")
+        yield path, Fault(where, "surge", shown(name), "this load states no surge", some or "none: no load states one")
+    elif on == "none" or (isinstance(on, dict) and isinstance(name, str) and on.get(name, 0) == 0):
+        yield path, Fault(where, "surge", shown(name), "this load is off in the case", f"{shown(name)} = 1.0 under loads")
 
 
 def _case_states(raw: dict[str, Any]) -> Iterator[Found]:

@@ -4,13 +4,15 @@ Each class is one table of format 1. What concerns several entries at once is in
 lines and messages are in `planfile`. Quantities keep the text as written (`units.Quantity`).
 """
 
-from collections.abc import Mapping
 from functools import cached_property
-from typing import Annotated, Any, Literal, Self
+from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from farvolt import units
+from farvolt.plan_protection import OpeningTime as OpeningTime
+from farvolt.plan_protection import OwnProtection
+from farvolt.plan_protection import Protection as Protection
 from farvolt.plan_types import (
     AnyResistance,
     CableSize,
@@ -19,8 +21,8 @@ from farvolt.plan_types import (
     Count,
     Current,
     DaySpan,
-    Distance,
     Efficiency,
+    Entry,
     Factor,
     Flag,
     Hours,
@@ -28,7 +30,6 @@ from farvolt.plan_types import (
     Multiple,
     Name,
     Power,
-    ProtectionTypeName,
     Rating,
     Resistance,
     Seconds,
@@ -42,24 +43,15 @@ from farvolt.plan_types import (
     refusal,
     shares,
 )
+from farvolt.protection_types import ProtectionType
 
 CHASSIS = "chassis"
 """The reserved point of one node: the metal body used as a return."""
 
 FORMAT = 1
 
-
-class Entry(BaseModel):
-    """Base of all tables: unknown fields are errors, values never change."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True, arbitrary_types_allowed=True)
-
-    def model_copy(self, *, update: Mapping[str, Any] | None = None, deep: bool = False) -> Self:
-        """A copy with some fields changed; what was worked out from the old ones is forgotten."""
-        copy = super().model_copy(update=update, deep=deep)
-        for name in [name for name in copy.__dict__ if name not in type(self).model_fields]:
-            del copy.__dict__[name]
-        return copy
+NAMED = ("zones", "routes", "protection_types")
+"""Tables whose entries are called by their key."""
 
 
 class PlanInfo(Entry):
@@ -234,20 +226,6 @@ class Converter(Entry):
 
 
 Source = Annotated[Battery | Charger | Solar | Converter, Field(discriminator="kind")]
-
-
-class Protection(Entry):
-    """A fuse or breaker on a run, at one of its ends and in one of its poles."""
-
-    type: ProtectionTypeName
-    rating: Rating
-    distance: Distance | None = None
-    """Along the conductor from that end of the run."""
-    end: Literal["from", "to"] = "from"
-    pole: Literal["feed", "return"] = "feed"
-    volts: Voltage | None = None
-    interrupting: Rating | None = None
-    resistance: AnyResistance | None = None
 
 
 class ReturnConductor(Entry):
@@ -484,6 +462,7 @@ class Plan(Entry):
     plan: PlanInfo
     zones: dict[Name, Zone] = Field(default_factory=dict)
     routes: dict[Name, Route] = Field(default_factory=dict)
+    protection_types: dict[Name, OwnProtection] = Field(default_factory=dict)
     points: tuple[Point, ...] = ()
     sources: tuple[Source, ...] = ()
     runs: tuple[Run, ...] = ()
@@ -494,8 +473,10 @@ class Plan(Entry):
 
     @cached_property
     def checked_cases(self) -> tuple[Case, ...]:
-        """The cases to solve: the plan's own, or one with everything on."""
-        return self.cases or (Case(name="Everything on"),)
+        """The cases to solve: the plan's own, or the standard set where it states none."""
+        from farvolt.standard_cases import standard_cases  # it is made of a plan's classes
+
+        return self.cases or standard_cases(self)
 
     @cached_property
     def joins(self) -> tuple[tuple[str, str], ...]:
@@ -526,6 +507,19 @@ class Plan(Entry):
         batteries = [source.name for source in self.sources if source.kind == "battery"]
         first = [source.name for source in self.sources if source.kind != "converter"]
         return self.plan.reference or next(iter(batteries or first), None)
+
+    @model_validator(mode="after")
+    def _types_of_protection(self) -> "Plan":
+        if self.protection_types:
+            for run in self.runs:
+                for one in (*run.protection, *run.protections):
+                    one.is_of(self.own_types)
+        return self
+
+    @cached_property
+    def own_types(self) -> dict[str, ProtectionType]:
+        """The plan's own types of protection, by name."""
+        return {name: one.as_type(name) for name, one in self.protection_types.items()}
 
     def ambient_degC(self, zone: str | None, case: Case | None = None) -> float:
         """Ambient of a zone (None: the plan's own), or the case's where that replaces it."""

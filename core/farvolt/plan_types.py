@@ -5,12 +5,13 @@ Every refusal carries the problem, what is accepted and the nearest choice apart
 
 import difflib
 import re
-from typing import Annotated, Any, Literal
+from collections.abc import Mapping
+from typing import Annotated, Any, Literal, Self
 
-from pydantic import AfterValidator, BeforeValidator, Field, TypeAdapter, WithJsonSchema
+from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, TypeAdapter, WithJsonSchema
 from pydantic_core import PydanticCustomError
 
-from farvolt import conductors, protection_types, units
+from farvolt import conductors, units
 from farvolt.errors import QuantityError
 from farvolt.units import Quantity
 
@@ -19,6 +20,19 @@ NAME_LIMIT = 200
 # Besides controls: what breaks a line or turns the direction of the text around it.
 _CONTROL = re.compile(r"[\x00-\x1f\x7f-\x9f\u2028\u2029\u202a-\u202e\u2066-\u2069]")
 _TEMPERATURE_WORDS = ("rulebook", "rated", "ambient", "estimated")
+
+
+class Entry(BaseModel):
+    """Base of all tables: unknown fields are errors, values never change."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True, arbitrary_types_allowed=True)
+
+    def model_copy(self, *, update: Mapping[str, Any] | None = None, deep: bool = False) -> Self:
+        """A copy with some fields changed; what was worked out from the old ones is forgotten."""
+        copy = super().model_copy(update=update, deep=deep)
+        for name in [name for name in copy.__dict__ if name not in type(self).model_fields]:
+            del copy.__dict__[name]
+        return copy
 
 
 def refusal(problem: str, accepted: str, nearest: str = "") -> PydanticCustomError:
@@ -129,14 +143,6 @@ def _read_conductor_temperature(value: Any) -> Any:
     return _read_temperature(value)
 
 
-def _known_type(name: str) -> str:
-    try:
-        protection_types.protection_type(name)
-    except QuantityError as error:
-        raise _translated(error) from None
-    return name
-
-
 def _day_span(span: str) -> str:
     match = re.fullmatch(r"([0-9]{1,2}):([0-9]{2})-([0-9]{1,2}):([0-9]{2})", span)
     parts = [int(part) for part in match.groups()] if match else []
@@ -166,6 +172,7 @@ AnyResistance = Annotated[
 Charge = Annotated[Quantity, BeforeValidator(_reader("charge", above=0, minimum=1e-3, maximum=1e7)), _schema("charge")]
 Share = Annotated[Quantity, BeforeValidator(_reader("share", minimum=0, maximum=1)), _schema("share")]
 Efficiency = Annotated[Quantity, BeforeValidator(_reader("share", above=0, minimum=0.01, maximum=1)), _schema("share")]
+Duration = Annotated[Quantity, BeforeValidator(_reader("time", minimum=0, maximum=1e7)), _schema("time")]
 Temperature = Annotated[Quantity, BeforeValidator(_read_temperature), _schema("temperature")]
 ConductorTemperature = Annotated[
     Quantity | Literal["rulebook", "rated", "ambient", "estimated"],
@@ -194,7 +201,6 @@ Multiple = Annotated[float, Field(strict=True, gt=0, le=1000, allow_inf_nan=Fals
 Seconds = Annotated[float, Field(strict=True, gt=0, le=3600, allow_inf_nan=False)]
 Hours = Annotated[float, Field(strict=True, ge=0, le=24, allow_inf_nan=False)]
 DaySpan = Annotated[str, Field(strict=True), AfterValidator(_day_span)]
-ProtectionTypeName = Annotated[Name, AfterValidator(_known_type)]
 
 shares = TypeAdapter(dict[str, Factor])
 """Reads the loads of a case, by name."""

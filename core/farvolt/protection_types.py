@@ -1,7 +1,7 @@
 """Types of fuses and breakers: ratings made, voltage, interrupting rating, opening times and resistance.
 
-A plan's type is looked up with `Plan.protection_type(name)`, which knows the plan's own types as well; the functions
-here know those shipped. Every figure shipped is typical of a kind of part: the data sheet goes before it.
+The type of a protection on a run is its `kind`, which knows the plan's own types as well; the functions here know those
+shipped. Every figure shipped is typical of a kind of part: the data sheet goes before it.
 """
 
 import difflib

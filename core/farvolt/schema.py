@@ -4,7 +4,8 @@ import json
 from functools import lru_cache
 from typing import Any
 
-from farvolt.plan import FORMAT, Entry, Plan
+from farvolt.plan import FORMAT, NAMED, Plan
+from farvolt.plan_types import Entry
 
 
 def json_schema() -> dict[str, Any]:
@@ -30,7 +31,7 @@ def accepted(model: type[Entry], field: str) -> str:
     schema = _schema()
     if model is Plan:
         words = {"format": str(FORMAT), "plan": "a table headed [plan]"}
-        words |= {table: f"tables headed [{table}.NAME]" for table in ("zones", "routes")}
+        words |= {table: f"tables headed [{table}.NAME]" for table in NAMED}
         return words.get(field, f"tables headed [[{field}]]")
     entry = schema["$defs"][model.__name__]["properties"].get(field)
     return _words(entry, schema["$defs"]) if entry else ""

@@ -7,6 +7,8 @@ from farvolt import integrity, plan, schema
 from farvolt.errors import Fault
 from farvolt.integrity import Found, Path
 from farvolt.plan import FORMAT, Plan
+from farvolt.plan_protection import OpeningTime, OwnProtection, Protection
+from farvolt.plan_types import Entry
 
 _TOML_WORDS = {
     "Expected newline or end of document after a statement": "something stands after the value",
@@ -155,7 +157,7 @@ def _value_at(raw: Any, path: Path) -> Any:
 def _where(path: Path, raw: dict[str, Any]) -> tuple[str, str]:
     if len(path) >= 2 and isinstance(path[1], int):
         place, rest = integrity.place(str(path[0]), _value_at(raw, path[:2]), path[1]), path[2:]
-    elif path[0] in ("zones", "routes") and len(path) >= 2:
+    elif path[0] in plan.NAMED and len(path) >= 2:
         place, rest = f'{path[0]} "{integrity.shorten(str(path[1]))}"', path[2:]
     else:
         place, rest = (str(path[0]) if len(path) > 1 else ""), path[1:] if len(path) > 1 else path
@@ -165,26 +167,27 @@ def _where(path: Path, raw: dict[str, Any]) -> tuple[str, str]:
     return place, ".".join(parts)
 
 
-_TABLES: dict[str, type[plan.Entry]] = {
+_TABLES: dict[str, type[Entry]] = {
     "plan": plan.PlanInfo, "zones": plan.Zone, "routes": plan.Route, "points": plan.Point, "runs": plan.Run,
-    "devices": plan.Device, "loads": plan.Load, "cases": plan.Case,
+    "devices": plan.Device, "loads": plan.Load, "cases": plan.Case, "protection_types": OwnProtection,
 }  # fmt: skip
-_SOURCES: dict[str, type[plan.Entry]] = {
+_SOURCES: dict[str, type[Entry]] = {
     "battery": plan.Battery, "charger": plan.Charger, "solar": plan.Solar, "converter": plan.Converter,
 }  # fmt: skip
-_NESTED: dict[tuple[str, str], type[plan.Entry]] = {
-    ("runs", "protection"): plan.Protection, ("runs", "protection_to"): plan.Protection,
+_NESTED: dict[tuple[str, str], type[Entry]] = {
+    ("runs", "protection"): Protection, ("runs", "protection_to"): Protection,
     ("runs", "return"): plan.ReturnConductor, ("loads", "surge"): plan.Surge,
     ("sources", "link"): plan.LinkCable, ("sources", "array"): plan.SolarArray,
+    ("protection_types", "band"): OpeningTime,
 }  # fmt: skip
 
 
-def fields(model: type[plan.Entry]) -> list[str]:
+def fields(model: type[Entry]) -> list[str]:
     """The names of a table's fields, as written in the file."""
     return [info.alias or name for name, info in model.model_fields.items()]
 
 
-def _model_of(path: Path, raw: dict[str, Any]) -> type[plan.Entry] | None:
+def _model_of(path: Path, raw: dict[str, Any]) -> type[Entry] | None:
     """The table that holds the field at the end of `path`; None where its names are the user's own."""
     table = str(path[0])
     if len(path) == 1:

@@ -2,7 +2,6 @@
 
 from collections.abc import Iterator
 
-from farvolt.checks.rating import made
 from farvolt.checks.registry import apart, check
 from farvolt.checks.upstream import Arrival, Upstream
 from farvolt.context import Context, label
@@ -44,7 +43,7 @@ def _over(context: Context, load: Load, way: Arrival) -> Finding:
         on, rating = label(context.plan.runs[way.run]), number(way.protection.rating.si)
         message = f'"{load.name}" is protected by the {way.protection.rating} on {on}'
         working = f'Nearest protection from "{source}": {rating} A on {on}; {compared}'
-        lower = max((one for one in made(way.protection.type) if one <= limit), default=None)
+        lower = max((one for one in way.protection.kind.ratings_A if one <= limit), default=None)
         less = f"{number(lower)} A on {on}, if that still carries all behind it" if lower else ""
         remedy = "; or ".join(filter(None, (less, _in_its_own_feed(load))))
     return Finding(

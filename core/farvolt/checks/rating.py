@@ -8,10 +8,9 @@ from farvolt.checks.registry import apart, cannot_be_made, check, run_finding
 from farvolt.checks.ways import PRACTICE, ampacity_A, exempt, failing, limited_A, near_enough, self_limited
 from farvolt.conductors import Size
 from farvolt.context import Context, basis_text, label, larger_sizes
-from farvolt.errors import QuantityError
 from farvolt.network import FEED, return_size
 from farvolt.plan import Run
-from farvolt.protection_types import protection_type
+from farvolt.protection_types import ProtectionType
 from farvolt.results import Finding, Severity
 from farvolt.rulebook import SmallConductor
 from farvolt.sections import Exposure, Guard
@@ -148,25 +147,17 @@ def _tolerated(context: Context, guard: Guard, amps: float, limit_A: float) -> b
     rule = context.rulebook.protection.over_conductor
     if rule is None:
         return False
-    next_up = min((one for one in _standard(context, guard.protection.type) if one >= limit_A), default=None)
+    next_up = min((one for one in _standard(context, guard.protection.kind) if one >= limit_A), default=None)
     is_next = next_up is not None and guard.rating_A <= next_up
     if rule.allowance_percent is not None:
         return is_next and guard.rating_A <= amps * rule.allowance_percent / 100
     return rule.next_standard_up_to_A is not None and is_next and guard.rating_A <= rule.next_standard_up_to_A
 
 
-def _standard(context: Context, kind: str) -> tuple[float, ...]:
+def _standard(context: Context, kind: ProtectionType) -> tuple[float, ...]:
     """The rulebook's own standard ratings, else those made of a type of protection."""
     standard = context.rulebook.protection.standard_ratings
-    return standard.amps if standard else made(kind)
-
-
-def made(kind: str) -> tuple[float, ...]:
-    """Ratings made of a type of protection, in ampere."""
-    try:
-        return protection_type(kind).ratings_A
-    except QuantityError:
-        return ()
+    return standard.amps if standard else kind.ratings_A
 
 
 def _over_remedy(context: Context, index: int, guard: Guard, limit: Limit, demands: Demands) -> str:
@@ -175,7 +166,7 @@ def _over_remedy(context: Context, index: int, guard: Guard, limit: Limit, deman
     size = size_for_rating(context, index, guard.rating_A)
     thicker = f"{label(run)}: {size.name} may carry {number(guard.rating_A)} A" if size else ""
     demand, _ = demands.worst(guard.run, FEED)
-    lower = max((one for one in made(guard.protection.type) if demand <= one <= limit.amps), default=None)
+    lower = max((one for one in guard.protection.kind.ratings_A if demand <= one <= limit.amps), default=None)
     on = label(context.plan.runs[guard.run])
     less = f"{number(lower)} A instead of {guard.protection.rating} on {on}" if lower else ""
     return "; or ".join(filter(None, (thicker, less))) or "less load on this cable, or its load shared among several"

@@ -7,7 +7,6 @@ from farvolt.checks.array_side import ArraySide, array_sides
 from farvolt.checks.registry import apart, check, run_finding
 from farvolt.context import Context, label
 from farvolt.plan import Plan, Protection, Run
-from farvolt.protection_types import protection_type
 from farvolt.results import Finding, Kind
 from farvolt.tables import read
 from farvolt.units import number
@@ -111,7 +110,7 @@ def _parts(context: Context, side: ArraySide, cold: ColdVolts, volts: float) -> 
 
 def _guard(run: Run, guard: Protection, cold: ColdVolts, volts: float) -> Iterator[Finding]:
     """The plan's own voltage rating of a protection, else that of its type."""
-    kind = protection_type(guard.type)
+    kind = guard.kind
     stated = guard.volts is not None
     limit = guard.volts.si if guard.volts is not None else kind.volts
     if volts <= limit * (1 + 1e-9):

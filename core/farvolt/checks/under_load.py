@@ -3,7 +3,7 @@
 from collections.abc import Iterator
 
 from farvolt.checks.demand import Demands
-from farvolt.checks.rating import limit_for, made, size_for_rating
+from farvolt.checks.rating import limit_for, size_for_rating
 from farvolt.checks.registry import apart, cannot_be_made, check, run_finding
 from farvolt.checks.ways import PRACTICE, ampacity_A, exempt
 from farvolt.context import Context, basis_text, label
@@ -53,7 +53,7 @@ def _under(
 
 def _rating_for(context: Context, behind: list[int], one: Protection, demand: float) -> str:
     """A rating that carries the load and that every cable behind it allows; else what stands in the way."""
-    rating = min((each for each in made(one.type) if each >= demand), default=None)
+    rating = min((each for each in one.kind.ratings_A if each >= demand), default=None)
     if rating is None:
         return f"no {one.type} is made for {number(demand)} A: another type of protection, or the load on two circuits"
     for index in behind:

@@ -5,7 +5,6 @@ from collections.abc import Iterator
 from farvolt.checks.registry import check, run_finding
 from farvolt.context import Context, label
 from farvolt.plan import Battery, Solar, Source
-from farvolt.protection_types import protection_type
 from farvolt.results import Finding
 from farvolt.units import number
 
@@ -61,7 +60,7 @@ def voltage_rating(context: Context) -> Iterator[Finding]:
     for run in context.plan.runs:
         island = int(islands.of_node[context.network.feed(run.from_point)]) if run.conducts != "return" else -1
         for guard in run.protections:
-            kind = protection_type(guard.type)
+            kind = guard.kind
             rated = guard.volts.si if guard.volts else kind.volts
             if rated >= highest.get(island, 0.0):
                 continue
