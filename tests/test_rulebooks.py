@@ -310,6 +310,7 @@ START = 'starts_from = "small-craft-us"\n'
         ("[drop_basis]\ntemperature_degC = 20\nfactor_on_R20 = 1.2", "give either temperature_degC or"),
         ('[minimum_size]\nseparate = ["16"]', 'minimum_size, separate: "16": "16" alone means'),
         ("[minimum_size]\nseparate = []", "minimum_size, separate: must hold at least one size"),
+        ('[minimum_size]\nexempt = [{ text = "x", basis = "y" }]', "exempt 1, up_to_m: give up_to_m, up_to_A or"),
         ("[bundling]\nsteps = [{ up_to = 3, factor = 2 }]", "bundling.steps 1, factor: must lie from"),
         ("[bundling]\nsteps = []", "bundling, steps: must be a list of"),
         ("[protection.unprotected_length]\nplain_m = -1", "protection.unprotected_length, plain_m"),

@@ -10,6 +10,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import lru_cache
 from pathlib import Path
+from typing import Literal
 
 from farvolt.conductors import Size
 from farvolt.errors import RulebookError
@@ -105,17 +106,35 @@ class Bundling:
 
 
 @dataclass(frozen=True, slots=True)
+class SizeExemption:
+    """Conductors that may be thinner: up to a length or a current, and where used for what a plan does not tell."""
+
+    text: str
+    up_to_m: float | None
+    up_to_A: float | None
+    used_for: str
+    """What only a person can judge; empty where length and current decide."""
+    basis: Basis
+
+
+@dataclass(frozen=True, slots=True)
 class MinimumSize:
     """Smallest conductor allowed; at most one size of each system, the first for systems not named."""
 
     separate: tuple[Size, ...]
     in_sheath: tuple[Size, ...]
-    exemption: str
+    aluminium: tuple[Size, ...]
+    """For aluminium and copper-clad aluminium; empty where they are held to the same sizes."""
+    outside_sheath_m: float | None
+    """How far a conductor that is allowed in a sheath only may leave it."""
+    exempt: tuple[SizeExemption, ...]
     basis: Basis
 
-    def least(self, system: str, sheathed: bool) -> Size:
+    def least(self, system: str, sheathed: bool, material: str = "copper") -> Size:
         """The smallest size for a conductor of a system ("metric", "AWG", "SAE")."""
         sizes = self.in_sheath if sheathed else self.separate
+        if "aluminium" in material and self.aluminium:
+            sizes = self.aluminium
         return next((size for size in sizes if size.system == system), sizes[0])
 
 
@@ -194,6 +213,50 @@ class StandardRatings:
 
 
 @dataclass(frozen=True, slots=True)
+class InterruptingStep:
+    """Least interrupting ratings of protection behind a bank of batteries, in ampere."""
+
+    up_to_V: float
+    """Greatest nominal voltage of the system."""
+    up_to_cca: float
+    """Greatest cold cranking current of the batteries connected together, in ampere."""
+    main_A: float
+    """The first protection from the bank."""
+    branch_A: float
+    """Any further one."""
+
+
+@dataclass(frozen=True, slots=True)
+class Interrupting:
+    """Least interrupting ratings by the size of the bank, whatever a calculation gives."""
+
+    steps: tuple[InterruptingStep, ...]
+    """By rising voltage and size."""
+    cca_per_Ah: float
+    """Cold cranking current that a bank of known capacity is taken to have, in ampere for each Ah."""
+    text: str
+    basis: Basis
+
+    def step(self, system_V: float, capacity_Ah: float) -> InterruptingStep | None:
+        """The step that binds; None for a voltage or a bank beyond the table."""
+        least_V = min((one.up_to_V for one in self.steps if system_V <= one.up_to_V), default=None)
+        fits = [one for one in self.steps if one.up_to_V == least_V and self.cca(capacity_Ah) <= one.up_to_cca]
+        return min(fits, key=lambda one: one.up_to_cca, default=None)
+
+    def cca(self, capacity_Ah: float) -> float:
+        """Cold cranking current, in ampere, that a capacity is taken to have."""
+        return capacity_Ah * self.cca_per_Ah
+
+
+@dataclass(frozen=True, slots=True)
+class FaultDamage:
+    """What it means that a conductor may reach the limit of its insulation before its protection opens."""
+
+    severity: Literal["fail", "warn"]
+    basis: Basis
+
+
+@dataclass(frozen=True, slots=True)
 class Protection:
     """What a rulebook says of fuses and breakers."""
 
@@ -203,6 +266,8 @@ class Protection:
     unprotected_length: UnprotectedLength | None
     exempt: Exempt | None
     standard_ratings: StandardRatings | None
+    interrupting: Interrupting | None
+    fault_damage: FaultDamage | None
 
 
 @dataclass(frozen=True, slots=True)

@@ -23,12 +23,16 @@ from farvolt.rulebook import (
     DropClass,
     EngineSpace,
     Exempt,
+    FaultDamage,
+    Interrupting,
+    InterruptingStep,
     MinimumSize,
     OverConductor,
     Protection,
     Refused,
     Returns,
     Rulebook,
+    SizeExemption,
     SmallConductor,
     SmallConductors,
     StandardRatings,
@@ -39,12 +43,13 @@ from farvolt.rulebook import (
 PURPOSES = ("cranking", "bond")
 _LIMITS = ("ampacity", "ambient", "engine_space", "bundling", "minimum_size", "refused", "returns")
 _PROTECTION = ("continuous", "over_conductor", "small_conductors", "unprotected_length", "exempt")
-ENTRIES = (*_LIMITS, *_PROTECTION, "standard_ratings")
+ENTRIES = (*_LIMITS, *_PROTECTION, "standard_ratings", "interrupting", "fault_damage")
 """Entries a rulebook may leave out, and give a reason for under `missing`."""
 
 _SHIPPED_TABLES = FOLDER / "tables"
 _HOTTEST_DEGC = 300.0
 _MOST_AMPS = 10_000.0
+_MOST_FAULT_AMPS = 200_000.0
 _T = TypeVar("_T")
 
 
@@ -281,11 +286,22 @@ def _bundling(fields: Fields) -> Bundling:
 
 def _minimum_size(fields: Fields) -> MinimumSize:
     sizes = {}
-    for key in ("separate", "in_sheath"):
-        sizes[key] = tuple(_size(fields, key, text) for text in fields.texts(key))
-        if not sizes[key]:
+    for key, default in (("separate", None), ("in_sheath", None), ("aluminium", ())):
+        sizes[key] = tuple(_size(fields, key, text) for text in fields.texts(key, default))
+        if not sizes[key] and default is None:
             raise fields.fail(key, "must hold at least one size")
-    return MinimumSize(sizes["separate"], sizes["in_sheath"], fields.text("exemption", ""), _basis(fields))
+    outside = fields.number_or_none("outside_sheath_m", 0, 10)
+    exempt = tuple(_size_exemption(entry) for entry in fields.tables("exempt"))
+    return MinimumSize(sizes["separate"], sizes["in_sheath"], sizes["aluminium"], outside, exempt, _basis(fields))
+
+
+def _size_exemption(entry: Fields) -> SizeExemption:
+    length, amps = entry.number_or_none("up_to_m", 0, 100), entry.number_or_none("up_to_A", 0, _MOST_AMPS)
+    made = SizeExemption(entry.text("text"), length, amps, entry.text("used_for", ""), _basis(entry))
+    if length is None and amps is None and not made.used_for:
+        raise entry.fail("up_to_m", "give up_to_m, up_to_A or used_for")
+    entry.done()
+    return made
 
 
 def _protection(fields: Fields) -> Protection:
@@ -296,6 +312,8 @@ def _protection(fields: Fields) -> Protection:
         unprotected_length=_optional(fields, "unprotected_length", _unprotected_length),
         exempt=_optional(fields, "exempt", _exempt),
         standard_ratings=_optional(fields, "standard_ratings", _standard_ratings),
+        interrupting=_optional(fields, "interrupting", _interrupting),
+        fault_damage=_optional(fields, "fault_damage", _fault_damage),
     )
     fields.done()
     return made
@@ -338,6 +356,22 @@ def _exempt(fields: Fields) -> Exempt:
 
 def _standard_ratings(fields: Fields) -> StandardRatings:
     return StandardRatings(fields.numbers("amps", 0.1, _MOST_AMPS), _basis(fields))
+
+
+def _interrupting(fields: Fields) -> Interrupting:
+    steps: list[InterruptingStep] = []
+    for entry in fields.tables("steps"):
+        volts, cca = entry.number("up_to_V", 1, 1000), entry.number("up_to_cca", 1, math.inf)
+        main, branch = (entry.number(key, 1, _MOST_FAULT_AMPS) for key in ("main_A", "branch_A"))
+        steps.append(InterruptingStep(volts, cca, main, branch))
+        entry.done()
+    if not steps or any((a.up_to_V, a.up_to_cca) >= (b.up_to_V, b.up_to_cca) for a, b in itertools.pairwise(steps)):
+        raise fields.fail("steps", "must be a list of { up_to_V, up_to_cca, main_A, branch_A }, rising")
+    return Interrupting(tuple(steps), fields.number("cca_per_Ah", 0.1, 100), fields.text("text", ""), _basis(fields))
+
+
+def _fault_damage(fields: Fields) -> FaultDamage:
+    return FaultDamage(fields.choice("severity", ("fail", "warn")), _basis(fields))
 
 
 def _refused(fields: Fields) -> Refused:

@@ -1,4 +1,4 @@
-"""The cable itself: ampacity, smallest size, material, return path."""
+"""The cable itself: ampacity, material, return path."""
 
 from collections.abc import Iterator
 
@@ -8,10 +8,9 @@ from farvolt.ampacity import Ampacity
 from farvolt.checks.registry import apart, cannot_be_made, check, run_finding
 from farvolt.conductors import Size
 from farvolt.context import CaseStudy, Context, basis_text, label, larger_sizes
-from farvolt.network import Floats, return_size
+from farvolt.network import Floats
 from farvolt.plan import CHASSIS, Run
 from farvolt.results import Finding
-from farvolt.sections import sheathed
 from farvolt.temperatures import run_ampacity
 from farvolt.units import number
 
@@ -121,31 +120,6 @@ def _no_size(context: Context, run: Run) -> Finding:
         "cannot be checked",
         context.rulebook.title, (), "state the size of the cable beside its resistance",
     )  # fmt: skip
-
-
-@check("conductor.minimum-size", title="Smallest conductor allowed", reads=("minimum_size",))
-def minimum_size(context: Context) -> Iterator[Finding]:
-    """Runs with a conductor thinner than the rulebook allows, with its exemptions in the remedy."""
-    rule = context.rulebook.minimum_size
-    if rule is None:
-        yield cannot_be_made(context, "conductor.minimum-size", "minimum_size", "the smallest size of a conductor")
-        return
-    for run in context.plan.runs:
-        sizes = [size for size in (run.size, return_size(run)) if size is not None]
-        if not sizes or run.purpose == "bond":
-            continue
-        size = min(sizes, key=lambda one: one.area_mm2)
-        in_sheath = sheathed(context.plan, run)
-        least = rule.least(size.system, in_sheath)
-        if size.area_mm2 < least.area_mm2 * (1 - 1e-6):
-            where = "in a sheath" if in_sheath else "laid singly"
-            which = "" if size == run.size else "the return of "
-            yield run_finding(
-                "conductor.minimum-size", "fail", run, size.area_mm2, least.area_mm2, "mm2",
-                f"{which}{label(run)} is {size.name}; {least.name} is the smallest conductor allowed {where}",
-                basis_text(rule.basis), (f"{number(size.area_mm2)} mm2 < {number(least.area_mm2)} mm2",),
-                f"{which}{label(run)}: {least.name}" + (f". Exempt: {rule.exemption}" if rule.exemption else ""),
-            )  # fmt: skip
 
 
 @check("conductor.material", title="Conductor materials and strands the rulebook refuses", reads=("refused",))
