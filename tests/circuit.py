@@ -5,10 +5,12 @@ highest solution. At 20 °C throughout. Nodes are the numbers of (point, "+" or 
 """
 
 from collections.abc import Iterable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import TypeVar
 
-from farvolt.plan import Battery, Case, Charger, Converter, Device, Load, Plan, ReturnConductor, Run, Solar
+import numpy as np
+
+from farvolt.plan import Battery, Case, Charger, Converter, Device, Load, Plan, ReturnConductor, Run, Solar, SourceState
 
 Pin = tuple[str, str]
 Node = TypeVar("Node")
@@ -24,6 +26,9 @@ COPPER_PER_K = 0.00393
 
 BLOCKED_S = 1e-6
 """What a diode lets through backwards, as the solver states it."""
+
+CONTROLLER_BOND_OHM = 1e-3
+"""Between the two negatives of a solar controller, which are common: as the solver states it."""
 
 
 @dataclass(frozen=True)
@@ -81,7 +86,7 @@ class Drain:
 
 @dataclass(frozen=True)
 class Coupling:
-    """A converter: what `drain` takes is what `feeder` gives over its efficiency, and the standby."""
+    """A converter or solar controller: `drain` takes what `feeder` gives over its efficiency, and the standby."""
 
     feeder: Feeder
     drain: Drain
@@ -113,11 +118,12 @@ def circuit_of(plan: Plan, case: Case) -> Circuit:
     pins = _numbered(plan)
     resistors = [Resistor(pins[a], pins[b], ohm) for a, b, ohm in _conductors(plan, devices)]
     nominal = _nominals(plan, pins)
-    feeders = [one for source in plan.sources if (one := _feeder(plan, source, case, pins, nominal)) is not None]
-    feeders += [_diode(device, pins) for device, _ in devices if device.kind == "diode"]
-    drains = [_drain(load, case.share(load.name), pins, nominal) for load in plan.loads]
-    couplings = [_coupling(plan, source, feeder, pins, nominal) for source, feeder in _converters(plan, feeders)]
-    return _at_work(Circuit(pins, resistors, feeders, drains, couplings))
+    whole = Circuit(pins, resistors)
+    for source in plan.sources:
+        _add_source(whole, source, case.sources.get(source.name, SourceState()), nominal)
+    whole.feeders += [_diode(device, pins, _half_bars(plan)) for device, _ in devices if device.kind == "diode"]
+    whole.drains += [_drain(load, case, pins, nominal) for load in plan.loads]
+    return _at_work(whole)
 
 
 # Nodes and conductors ----------------------------------------------------------------------------------------------
@@ -126,6 +132,7 @@ def circuit_of(plan: Plan, case: Case) -> Circuit:
 def _numbered(plan: Plan) -> dict[Pin, int]:
     """Nodes by pin; the pole that passes a device by is one node on both sides."""
     pins: list[Pin] = [(name, pole) for name in plan.point_names for pole in "+-"] + [("chassis", "-")]
+    pins += [pin for source in plan.sources for pin in _string_pins(source)]
     passing = [
         ((device.from_point, pole), (device.to_point, pole))
         for device in plan.devices
@@ -155,26 +162,37 @@ def connected(nodes: Iterable[Node], edges: Iterable[tuple[Node, Node]]) -> dict
 
 def _conductors(plan: Plan, devices: list[tuple[Device, bool]]) -> list[tuple[Pin, Pin, float]]:
     found: list[tuple[Pin, Pin, float]] = []
+    bars = _half_bars(plan)
     for run in plan.runs:
-        found += [((run.from_point, pole), (run.to_point, pole), ohm) for pole, ohm in _run_ohm(run).items()]
+        ends = bars.get(run.from_point, 0.0) + bars.get(run.to_point, 0.0)
+        found += [((run.from_point, pole), (run.to_point, pole), ohm + ends) for pole, ohm in _run_ohm(run).items()]
         if run.return_path == "chassis":
             found.append((("chassis", "-"), (run.to_point, "-"), plan.plan.chassis_bond.si))
     for device, _ in devices:
-        found += [] if device.kind == "diode" else _device_conductors(device)
+        found += [] if device.kind == "diode" else _device_conductors(device, bars)
     for source in plan.sources:
         if isinstance(source, Converter) and not source.isolated:
             found.append(((source.from_point, "-"), (source.at, "-"), source.return_bond.si))
+        if isinstance(source, Solar) and source.array is not None and source.input_point != source.at:
+            found.append(((source.input_point, "-"), (source.at, "-"), CONTROLLER_BOND_OHM))
+        found += _links(source)
     _bond_starts(plan, found)
-    opened = [conductor for device, closed in devices if not closed for conductor in _device_conductors(device)]
+    opened = [conductor for device, closed in devices if not closed for conductor in _device_conductors(device, bars)]
     for conductor in opened:
         found.remove(conductor)
     return found
 
 
-def _device_conductors(device: Device) -> list[tuple[Pin, Pin, float]]:
+def _half_bars(plan: Plan) -> dict[str, float]:
+    """What a bar adds to each conductor that ends at it: half of its resistance from end to end."""
+    return {point.name: point.resistance.si / 2 for point in plan.points if point.resistance is not None}
+
+
+def _device_conductors(device: Device, bars: dict[str, float]) -> list[tuple[Pin, Pin, float]]:
     assert device.resistance is not None
+    ohm = device.resistance.si + bars.get(device.from_point, 0.0) + bars.get(device.to_point, 0.0)
     poles = {"feed": "+", "return": "-", "both": "+-"}[device.pole]
-    return [((device.from_point, pole), (device.to_point, pole), device.resistance.si) for pole in poles]
+    return [((device.from_point, pole), (device.to_point, pole), ohm) for pole in poles]
 
 
 def _bond_starts(plan: Plan, found: list[tuple[Pin, Pin, float]]) -> None:
@@ -216,87 +234,197 @@ def _protection_ohm(run: Run, pole: str) -> float:
     return sum(one.resistance.si for one in run.protections if one.pole == pole and one.resistance is not None)
 
 
+# The strings of a battery -------------------------------------------------------------------------------------------
+
+
+def string_name(battery: str, number: int) -> str:
+    """A string's own node, as the network names it too; the control character is in no name of a plan."""
+    return f"\x1f{battery}\x1f{number}"
+
+
+def _apart(source: object) -> bool:
+    return isinstance(source, Battery) and source.strings > 1 and source.link is not None
+
+
+def _string_ends(battery: Battery, number: int) -> tuple[Pin, Pin]:
+    """Where the feed and the return of a string are: at the battery's point where a main cable is on it."""
+    last = battery.strings - 1
+    main_feed, main_return = {"same end": (0, 0), "ends": (0, last), "bar": (None, None)}[battery.take_off]
+    own = string_name(battery.name, number)
+    feed = battery.at if number == main_feed else own
+    back = battery.at if number == main_return else own
+    return (feed, "+"), (back, "-")
+
+
+def _string_pins(source: object) -> list[Pin]:
+    if not _apart(source):
+        return []
+    assert isinstance(source, Battery)
+    ends = [pin for number in range(source.strings) for pin in _string_ends(source, number)]
+    return [pin for pin in ends if pin[0] != source.at]
+
+
+def _links(source: object) -> list[tuple[Pin, Pin, float]]:
+    """Link cables, always at 20 °C: to the neighbour in each pole, or from every string to the bar."""
+    if not _apart(source):
+        return []
+    assert isinstance(source, Battery)
+    assert source.link is not None
+    ohm = CLASS_5_OHM_PER_KM[source.link.size.name] / 1000 * source.link.length.si
+    ends = [_string_ends(source, number) for number in range(source.strings)]
+    if source.take_off == "bar":
+        return [((source.at, pin[1]), pin, ohm) for pair in ends for pin in pair]
+    return [(a, b, ohm) for i in range(source.strings - 1) for a, b in zip(ends[i], ends[i + 1], strict=True)]
+
+
+def _strings(battery: Battery, state: SourceState, pins: dict[Pin, int]) -> list[Feeder]:
+    """The strings of a battery, each behind its own resistance; as one where no link between them is stated."""
+    assert battery.emf is not None
+    emf = state.emf.si if state.emf is not None else battery.emf.si
+    if battery.resistance is not None:
+        ohm = battery.resistance.si
+    else:
+        assert battery.short_circuit is not None
+        ohm = emf / battery.short_circuit.si
+    if state.aged:
+        assert battery.aged_times is not None
+        ohm *= battery.aged_times
+    low = 0.0 if state.state == "full" else float("-inf")
+    if not _apart(battery):
+        a, b = pins[battery.at, "+"], pins[battery.at, "-"]
+        return [Feeder(battery.name, a, b, emf, ohm / battery.strings, low, float("inf"))]
+    ends = [_string_ends(battery, number) for number in range(battery.strings)]
+    return [
+        Feeder(string_name(battery.name, number), pins[a], pins[b], emf, ohm, low, float("inf"))
+        for number, (a, b) in enumerate(ends)
+    ]
+
+
 # Sources and loads ---------------------------------------------------------------------------------------------
 
 
 def _nominals(plan: Plan, pins: dict[Pin, int]) -> dict[int, float]:
-    """Nominal voltage at every feed node: a converter's own where only it delivers, else the plan's."""
+    """Nominal voltage at every feed node: a converter's or an array's own where only it delivers, else the plan's."""
     edges = [((run.from_point, "+"), (run.to_point, "+")) for run in plan.runs if "+" in _run_ohm(run)]
     edges += [((device.from_point, "+"), (device.to_point, "+")) for device in plan.devices]
     part = connected(pins, edges)
-    own = {part[source.at, "+"]: source.nominal.si for source in plan.sources if isinstance(source, Converter)}
+    own: dict[int, float] = {}
+    for source in plan.sources:
+        if isinstance(source, Solar) and source.array is not None:
+            own[part[source.array.at, "+"]] = source.array.vmp.si * source.array.series
+    own |= {part[source.at, "+"]: source.nominal.si for source in plan.sources if isinstance(source, Converter)}
     for source in plan.sources:
         if not isinstance(source, Converter):
             own[part[source.at, "+"]] = plan.plan.nominal.si
     return {node: own.get(part[pin], plan.plan.nominal.si) for pin, node in pins.items() if pin[1] == "+"}
 
 
-def _feeder(plan: Plan, source: object, case: Case, pins: dict[Pin, int], nominal: dict[int, float]) -> Feeder | None:
+def _add_source(whole: Circuit, source: object, state: SourceState, nominal: dict[int, float]) -> None:
+    """The elements that a source is, unless it is off."""
     assert isinstance(source, Battery | Charger | Solar | Converter)
-    state = case.sources.get(source.name)
-    if state is not None and state.state == "off":
-        return None
+    if state.state == "off":
+        return
+    pins = whole.pins
     a, b = pins[source.at, "+"], pins[source.at, "-"]
     if isinstance(source, Battery):
-        assert source.emf is not None
-        emf = state.emf.si if state is not None and state.emf is not None else source.emf.si
-        ohm = (
-            source.resistance.si
-            if source.resistance is not None
-            else emf / (source.short_circuit.si if source.short_circuit else 0)
-        )
-        low = 0.0 if state is not None and state.state == "full" else float("-inf")
-        return Feeder(source.name, a, b, emf, ohm / source.strings, low, float("inf"))
-    if isinstance(source, Solar):
-        watts = source.power.si * (state.irradiance.si if state is not None and state.irradiance is not None else 1.0)
-        # The default output limit of a controller: its power at 40 % of nominal.
-        limit, volts = source.power.si / (0.4 * nominal[a]), source.ceiling.si
-        return Feeder(source.name, a, b, volts, 1e-3 * volts / limit, 0.0, limit, watts, 0.4 * nominal[a])
-    volts, limit = source.volts.si, source.amps.si
-    ohm = source.resistance.si if source.resistance is not None else 1e-3 * volts / limit
-    return Feeder(source.name, a, b, volts, ohm, 0.0, limit)
+        whole.feeders += _strings(source, state, pins)
+    elif isinstance(source, Solar):
+        _add_solar(whole, source, state, nominal[a])
+    else:
+        volts, limit = source.volts.si, source.amps.si
+        ohm = source.resistance.si if source.resistance is not None else 1e-3 * volts / limit
+        feeder = Feeder(source.name, a, b, volts, ohm, 0.0, limit)
+        whole.feeders.append(feeder)
+        if isinstance(source, Converter):
+            a, b = pins[source.from_point, "+"], pins[source.from_point, "-"]
+            drain = Drain(source.name, a, b, 0.0, 0.0, 0.0, 0.4 * nominal[a])
+            whole.couplings.append(Coupling(feeder, drain, source.efficiency.si, source.standby.si))
 
 
-def _diode(device: Device, pins: dict[Pin, int]) -> Feeder:
+def _add_solar(whole: Circuit, source: Solar, state: SourceState, nominal: float) -> None:
+    """A controller and, where its array is stated, the array ahead of it."""
+    irradiance = state.irradiance.si if state.irradiance is not None else 1.0
+    # The default output limit of a controller: its power at 40 % of nominal.
+    limit = source.amps.si if source.amps is not None else source.power.si / (0.4 * nominal)
+    volts = source.ceiling.si
+    a, b = whole.pins[source.at, "+"], whole.pins[source.at, "-"]
+    watts = source.power.si * irradiance
+    feeder = Feeder(source.name, a, b, volts, 1e-3 * volts / limit, 0.0, limit, watts, 0.4 * nominal)
+    if source.array is None:
+        whole.feeders.append(feeder)
+    elif irradiance > 0:
+        amps, best = source.array.imp.si * source.array.modules / source.array.series, source.array.vmp.si
+        best *= source.array.series
+        pins = [whole.pins[at, pole] for at in (source.array.at, source.input_point) for pole in "+-"]
+        array = Feeder(f"{source.name} array", pins[0], pins[1], best, 1e-3 * best / amps, 0.0, float("inf"))
+        amps *= irradiance
+        arriving = best - amps * (array.ohm + _ohm_between(whole.resistors, pins))
+        feeder = replace(feeder, watts=min(watts, source.efficiency.si * arriving * amps))
+        drain = Drain(source.name, pins[2], pins[3], 0.0, 0.0, 0.0, 0.4 * best)
+        whole.feeders += [array, feeder]
+        whole.couplings.append(Coupling(feeder, drain, source.efficiency.si, 0.0))
+
+
+def _ohm_between(resistors: list[Resistor], pins: list[int]) -> float:
+    """Fall from the first pair of nodes to the second for each ampere that goes there by one and back by the other."""
+    rows = {node: row for row, node in enumerate({*pins, *(node for one in resistors for node in (one.a, one.b))})}
+    matrix, injected = np.zeros((len(rows), len(rows))), np.zeros(len(rows))
+    for one in resistors:
+        ends = [rows[one.a], rows[one.b]]
+        np.add.at(matrix, (ends, ends), 1 / one.ohm)
+        np.add.at(matrix, (ends, ends[::-1]), -1 / one.ohm)
+    signs = np.array([1.0, -1.0, -1.0, 1.0])
+    at = [rows[node] for node in pins]
+    np.add.at(injected, at, signs)
+    volts = np.linalg.lstsq(matrix, injected, rcond=None)[0]
+    return float(signs @ volts[at])
+
+
+def _diode(device: Device, pins: dict[Pin, int], bars: dict[str, float]) -> Feeder:
     assert device.drop is not None
     assert device.resistance is not None
     pole = "-" if device.pole == "return" else "+"
     a, b = pins[device.to_point, pole], pins[device.from_point, pole]
     upstream = a if device.pole == "return" else b
-    drop, ohm = -device.drop.si, device.resistance.si
-    return Feeder(device.name, a, b, drop, ohm, 0.0, float("inf"), leak_S=BLOCKED_S, upstream=upstream)
+    ohm = device.resistance.si + bars.get(device.from_point, 0.0) + bars.get(device.to_point, 0.0)
+    return Feeder(device.name, a, b, -device.drop.si, ohm, 0.0, float("inf"), leak_S=BLOCKED_S, upstream=upstream)
 
 
-def _drain(load: Load, share: float, pins: dict[Pin, int], nominal: dict[int, float]) -> Drain:
+def _drain(load: Load, case: Case, pins: dict[Pin, int], nominal: dict[int, float]) -> Drain:
     a, b = pins[load.at, "+"], pins[load.at, "-"]
     volts = load.rated_volts.si if load.rated_volts is not None else nominal[a]
+    return Drain(load.name, a, b, *_draw(load, case, volts), 0.4 * nominal[a])
+
+
+def _draw(load: Load, case: Case, volts: float) -> tuple[float, float, float]:
+    """Watts, amps and siemens of a load in a case."""
+    share, surge = case.share(load.name), load.surge if load.name in case.surge else None
+    if load.inverter_of is not None and case.sources.get(load.inverter_of, SourceState()).state != "off":
+        return 0.0, 0.0, 0.0
+    if surge is not None and surge.current is not None:
+        return 0.0, share * surge.current.si, 0.0
+    if surge is not None and surge.resistance is not None:
+        return 0.0, 0.0, share / surge.resistance.si
+    times = surge.times if surge is not None and surge.times is not None else 1.0
+    rated, watts = _rated(load, volts)
+    watts *= share * times
+    named = case.loads if isinstance(case.loads, dict) else ()
+    if load.standby is not None and (case.loads == "all" or load.name in named):
+        watts += load.standby.si
+    behaves = load.behaves or rated
+    if behaves == "power":
+        return watts, 0.0, 0.0
+    return (0.0, watts / volts, 0.0) if behaves == "current" else (0.0, 0.0, watts / volts**2)
+
+
+def _rated(load: Load, volts: float) -> tuple[str, float]:
+    """How a load is rated, and what it draws at its rated volts; an inverter without its standby."""
     if load.power is not None:
-        rated, watts = "power", load.power.si
-    elif load.current is not None:
-        rated, watts = "current", load.current.si * volts
-    else:
-        assert load.resistance is not None
-        rated, watts = "resistance", volts**2 / load.resistance.si
-    behaves, watts = load.behaves or rated, watts * share
-    laws = {
-        "power": (watts, 0.0, 0.0),
-        "current": (0.0, watts / volts, 0.0),
-        "resistance": (0.0, 0.0, watts / volts**2),
-    }
-    return Drain(load.name, a, b, *laws[behaves], 0.4 * nominal[a])
-
-
-def _converters(plan: Plan, feeders: list[Feeder]) -> list[tuple[Converter, Feeder]]:
-    by_name = {feeder.name: feeder for feeder in feeders}
-    return [(one, by_name[one.name]) for one in plan.sources if isinstance(one, Converter) and one.name in by_name]
-
-
-def _coupling(
-    plan: Plan, source: Converter, feeder: Feeder, pins: dict[Pin, int], nominal: dict[int, float]
-) -> Coupling:
-    a, b = pins[source.from_point, "+"], pins[source.from_point, "-"]
-    drain = Drain(source.name, a, b, 0.0, 0.0, 0.0, 0.4 * nominal[a])
-    return Coupling(feeder, drain, source.efficiency.si, source.standby.si)
+        return "power", load.power.si / (load.efficiency.si if load.efficiency is not None else 1.0)
+    if load.current is not None:
+        return "current", load.current.si * volts
+    assert load.resistance is not None
+    return "resistance", volts**2 / load.resistance.si
 
 
 def _at_work(whole: Circuit) -> Circuit:
@@ -311,9 +439,10 @@ def _at_work(whole: Circuit) -> Circuit:
         part = connected(nodes, edges)
         fed = {part[one.a] for one in working if not one.leak_S}
         joined = [
-            one.feeder for one in whole.couplings
+            one.feeder
+            for one in whole.couplings
             if one.feeder not in working and part[one.drain.a] in fed and part[one.drain.a] == part[one.drain.b]
-        ]  # fmt: skip
+        ]
         joined += [one for one in diodes if one not in working and part[one.upstream] in fed]
         if not joined:
             break

@@ -58,7 +58,7 @@ def answer(circuit: Circuit, rise_s: float = 2.0) -> Answer:
     start = _no_load(circuit)
     rows = _run(circuit, [
         f"Vshare share 0 PWL(0 0 {rise_s!r} 1 {end_s!r} 1)",
-        *(f"Cport{index} n{one.a} n{one.b} 1m" for index, one in enumerate(ends)),
+        *(f"Cport{index} n{one.a} n{one.b} 100u" for index, one in enumerate(ends)),
         *(f".ic v(n{node})={volts!r}" for node, volts in start.items()),
     ], f"tran {STEP_S!r} {end_s!r} 0 {STEP_S!r} uic")  # fmt: skip
     return Answer([row[0] for row in rows], [_by_node(circuit, row) for row in rows], rise_s)

@@ -46,6 +46,21 @@ class Wishes:
     bonded: float = 0.7
     """Of plans with a chassis: those that show its way back to the first point."""
     open_devices: float = 0.1
+    rings: float = 0.1
+    """Plans whose points lie along one ring of runs."""
+    doubled: float = 0.1
+    """Plans with unequal cables side by side."""
+    linked: float = 0.3
+    """Of batteries with several strings: those that state the links between them."""
+    aged: float = 0.0
+    chained: float = 0.3
+    """Of converters: those with a further one behind them."""
+    arrays: float = 0.0
+    """Of solar sources: those that state their array."""
+    inverters: float = 0.0
+    surges: float = 0.0
+    busbars: float = 0.0
+    """Points that state the resistance of a bar."""
 
 
 LINEAR = Wishes(limited_sources=False, chargers=0.0, charger_only=0.0, solar=0.0, converters=0.0, diodes=0.0)
@@ -58,17 +73,25 @@ def random_draft(chance: random.Random, wishes: Wishes = Wishes()) -> Draft:
     draft: Draft = {
         "format": 1,
         "plan": {"name": "Random", "nominal": f"{nominal} V", "chassis_bond": _ohm(chance, 0.3e-3, 3e-3)},
-        "sources": [], "runs": [], "devices": [], "loads": [], "cases": [],
+        "points": [], "sources": [], "runs": [], "devices": [], "loads": [], "cases": [],
     }  # fmt: skip
     points = [f"p{index}" for index in range(chance.randint(*wishes.points))]
     _sources(chance, wishes, draft, points, nominal)
-    _tree(chance, wishes, draft, points)
+    if chance.random() < wishes.rings:
+        for start, end in zip(points, [*points[1:], points[0]], strict=True):
+            _run(chance, draft, start, end, "same")
+    else:
+        _tree(chance, wishes, draft, points)
     for _ in range(chance.randint(0, wishes.loops)):
         start, end = chance.sample(points, 2)
         _run(chance, draft, start, end, "same")
+    if chance.random() < wishes.doubled:
+        _double(chance, draft)
     _loads(chance, wishes, draft, points, nominal)
     if chance.random() < wishes.converters:
-        _converter(chance, draft, points, nominal)
+        _converter(chance, wishes, draft, points)
+    _arrays(chance, wishes, draft)
+    _busbars(chance, wishes, draft)
     draft["cases"].append(_case(chance, wishes, draft))
     return draft
 
@@ -91,9 +114,9 @@ def _sources(chance: random.Random, wishes: Wishes, draft: Draft, points: list[s
     scale, sources = nominal / 12, draft["sources"]
     charger_only = chance.random() < wishes.charger_only
     if not charger_only:
-        sources.append(_battery(chance, "house bank", points[0], scale))
+        sources.append(_battery(chance, wishes, "house bank", points[0], scale))
         while chance.random() < wishes.extra_batteries and len(sources) < 3:
-            sources.append(_battery(chance, f"bank {len(sources) + 1}", chance.choice(points), scale))
+            sources.append(_battery(chance, wishes, f"bank {len(sources) + 1}", chance.choice(points), scale))
     if charger_only or chance.random() < wishes.chargers:
         at = points[0] if charger_only else chance.choice(points)
         volts = _uniform(chance, 13.6 * scale, 14.8 * scale, "V")
@@ -109,14 +132,68 @@ def _sources(chance: random.Random, wishes: Wishes, draft: Draft, points: list[s
         )
 
 
-def _battery(chance: random.Random, name: str, at: str, scale: float) -> Draft:
+def _battery(chance: random.Random, wishes: Wishes, name: str, at: str, scale: float) -> Draft:
     battery = {"name": name, "kind": "battery", "at": at, "emf": _uniform(chance, 12.4 * scale, 13.3 * scale, "V")}
-    battery["strings"] = chance.choice((1, 1, 2, 3))
+    linked = chance.random() < wishes.linked
+    battery["strings"] = chance.randint(2, 4) if linked else chance.choice((1, 1, 2, 3))
+    if linked:
+        battery["take_off"] = chance.choice(("same end", "ends", "bar"))
+        battery["link"] = {"length": _uniform(chance, 0.1, 1, "m"), "size": chance.choice(SIZES[-4:])}
     if chance.random() < 0.8:
         battery["resistance"] = _ohm(chance, 2e-3, 20e-3)
     else:
         battery["short_circuit"] = _uniform(chance, 600, 4000, "A")
+    if chance.random() < wishes.aged:
+        battery["aged_times"] = round(chance.uniform(1.2, 3), 3)
     return battery
+
+
+def _arrays(chance: random.Random, wishes: Wishes, draft: Draft) -> None:
+    """Arrays behind the solar controllers that there are, at the controller or at the end of runs of their own."""
+    for source in draft["sources"]:
+        if source["kind"] != "solar" or chance.random() >= wishes.arrays:
+            continue
+        series, side_by_side = chance.randint(1, 3), chance.randint(1, 2)
+        vmp, imp = chance.uniform(17, 40), chance.uniform(2, 8)
+        array = {"at": "roof box", "modules": series * side_by_side, "series": series}
+        array |= {"vmp": f"{vmp:.5g} V", "voc": f"{1.2 * vmp:.5g} V"}
+        source["array"] = array | {"imp": f"{imp:.5g} A", "isc": f"{1.1 * imp:.5g} A"}
+        source["power"] = f"{series * side_by_side * vmp * imp * chance.uniform(0.6, 1.3):.5g} W"
+        if chance.random() < 0.8:
+            source["efficiency"] = _uniform(chance, 92, 99, "%")
+        if chance.random() < 0.3:
+            source["amps"] = _uniform(chance, 5, 40, "A")
+        if chance.random() < 0.85:
+            source["from"] = "controller input"
+            _roof_runs(chance, wishes, draft)
+
+
+def _roof_runs(chance: random.Random, wishes: Wishes, draft: Draft) -> None:
+    """From the array to its controller: one run or two side by side, at times with a switch ahead of the input."""
+    end = "controller input"
+    if chance.random() < 0.5 * wishes.devices:
+        end = "array switch"
+        _device(chance, draft, end, "controller input")
+    for _ in range(chance.choice((1, 1, 2))):
+        _run(chance, draft, "roof box", end, "same")
+
+
+def _double(chance: random.Random, draft: Draft) -> None:
+    """A further cable, of its own size and length, beside one that there is, drawn either way round."""
+    beside = [run for run in draft["runs"] if run.get("return") != "chassis" and run["to"] != "chassis"]
+    if beside:
+        run = chance.choice(beside)
+        ends = [run["from"], run["to"]]
+        chance.shuffle(ends)
+        _run(chance, draft, *ends, "same", carries=run.get("carries"))
+
+
+def _busbars(chance: random.Random, wishes: Wishes, draft: Draft) -> None:
+    """Bars that have a resistance at some of the points."""
+    names = {row[key] for table in ("runs", "devices") for row in draft[table] for key in ("from", "to")}
+    for name in sorted(names - {"chassis"}):
+        if chance.random() < wishes.busbars:
+            draft["points"].append({"name": name, "kind": "busbar", "resistance": _ohm(chance, 0.05e-3, 2e-3)})
 
 
 def _tree(chance: random.Random, wishes: Wishes, draft: Draft, points: list[str]) -> None:
@@ -209,22 +286,62 @@ def _loads(chance: random.Random, wishes: Wishes, draft: Draft, points: list[str
             load["resistance"] = f"{nominal**2 / watts:.5g} ohm"
         if chance.random() < 0.3:
             load["rated_volts"] = _uniform(chance, nominal, 1.15 * nominal, "V")
+        _inverter(chance, wishes, draft, load)
+        if chance.random() < wishes.surges:
+            load["surge"] = _surge(chance, watts, nominal, inverter="efficiency" in load or "standby" in load)
         draft["loads"].append(load)
 
 
-def _converter(chance: random.Random, draft: Draft, points: list[str], nominal: int) -> None:
-    """A converter with an island of its own behind it: two points, a run and a load."""
-    own = chance.choice((12, 24))
-    amps = chance.uniform(2, 10)
-    converter = {"name": "converter", "kind": "converter", "from": chance.choice(points), "at": "far bus"}
-    converter |= {"nominal": f"{own} V", "volts": _uniform(chance, own, 1.15 * own, "V"), "amps": f"{amps:.5g} A"}
-    converter |= {"efficiency": _uniform(chance, 80, 97, "%"), "standby": _uniform(chance, 0, 3, "W")}
-    converter |= {"isolated": chance.random() < 0.5, "return_bond": _ohm(chance, 0.5e-3, 5e-3)}
-    draft["sources"].append(converter)
-    _run(chance, draft, "far bus", "far end", "same")
-    watts = own * amps * chance.uniform(0.1, 0.7)
-    behaves = chance.choice(("power", "current", "resistance"))
-    draft["loads"].append({"name": "far load", "at": "far end", "power": f"{watts:.5g} W", "behaves": behaves})
+def _inverter(chance: random.Random, wishes: Wishes, draft: Draft, load: Draft) -> None:
+    """Makes an inverter of some loads that are rated by their power."""
+    if "power" not in load or chance.random() >= wishes.inverters:
+        return
+    if chance.random() < 0.8:
+        load["efficiency"] = _uniform(chance, 80, 96, "%")
+    if chance.random() < 0.7:
+        load["standby"] = _uniform(chance, 0.5, 20, "W")
+    chargers = [source["name"] for source in draft["sources"] if source["kind"] == "charger"]
+    if chargers and chance.random() < 0.4:
+        load["inverter_of"] = chance.choice(chargers)
+
+
+def _surge(chance: random.Random, watts: float, nominal: int, *, inverter: bool) -> Draft:
+    times = chance.uniform(1.2, 5)
+    kind = "times" if inverter else chance.choice(("times", "current", "resistance"))
+    if kind == "times":
+        return {"times": round(times, 3)}
+    if kind == "current":
+        return {"current": f"{times * watts / nominal:.5g} A"}
+    return {"resistance": f"{nominal**2 / (times * watts):.5g} ohm"}
+
+
+def _converter(chance: random.Random, wishes: Wishes, draft: Draft, points: list[str]) -> None:
+    """Converters up or down, at times a chain: behind each an island of its own, of two points, a run and a load."""
+    watts, number = chance.uniform(25, 200), 1
+    before = chance.choice(points)
+    while True:
+        mark = "" if number == 1 else f" {number}"
+        own = chance.choice((12, 24, 48))
+        converter = {"name": f"converter{mark}", "kind": "converter", "from": before, "at": f"far bus{mark}"}
+        converter |= {"nominal": f"{own} V", "volts": _uniform(chance, own, 1.15 * own, "V")}
+        converter |= {"amps": f"{watts / own:.5g} A"}
+        converter |= {"efficiency": _uniform(chance, 80, 97, "%"), "standby": _uniform(chance, 0, 3, "W")}
+        converter |= {"isolated": chance.random() < 0.5, "return_bond": _ohm(chance, 0.5e-3, 5e-3)}
+        draft["sources"].append(converter)
+        _run(chance, draft, f"far bus{mark}", f"far end{mark}", "same")
+        power, behaves = watts * chance.uniform(0.1, 0.6), chance.choice(("power", "current", "resistance"))
+        draft["loads"].append(
+            {"name": f"far load{mark}", "at": f"far end{mark}", "power": f"{power:.5g} W", "behaves": behaves}
+        )
+        if number == 3 or chance.random() >= wishes.chained:
+            return
+        # Behind it, or beside it: what both may draw together is within what the first can give.
+        if chance.random() < 0.8:
+            before = chance.choice((f"far bus{mark}", f"far end{mark}"))
+            watts *= chance.uniform(0.1, 0.3)
+        else:
+            before = chance.choice(points)
+        number += 1
 
 
 def _case(chance: random.Random, wishes: Wishes, draft: Draft) -> Draft:
@@ -233,14 +350,19 @@ def _case(chance: random.Random, wishes: Wishes, draft: Draft) -> Draft:
         case["loads"] = {
             load["name"]: round(chance.uniform(0, 1.2), 3) for load in draft["loads"] if chance.random() < 0.8
         }
-    if wishes.limited_sources:
-        for source in draft["sources"]:
-            state = _source_state(chance, source, draft["sources"])
-            if state is not None:
-                case["sources"][source["name"]] = state
+        case["loads"] |= {name: 0.0 for name in case["loads"] if chance.random() < 0.1}
+    for source in draft["sources"]:
+        state = _source_state(chance, source, draft["sources"]) if wishes.limited_sources else None
+        if "aged_times" in source and state != "off" and chance.random() < 0.7:
+            state = {"state": state or "on", "aged": True}
+        if state is not None:
+            case["sources"][source["name"]] = state
     for device in draft["devices"]:
         if device["kind"] in ("switch", "relay") and chance.random() < wishes.open_devices:
             case["devices"][device["name"]] = "open"
+    surging = [load["name"] for load in draft["loads"] if "surge" in load and chance.random() < 0.4]
+    if surging:
+        case["surge"] = surging
     return case
 
 
@@ -253,6 +375,8 @@ def _source_state(chance: random.Random, source: Draft, sources: list[Draft]) ->
         return "off"
     if source["kind"] == "solar" and state < 0.5:
         return {"irradiance": f"{chance.uniform(0, 100):.4g} %"}
+    if source["kind"] == "solar" and state < 0.55:
+        return chance.choice(("off", {"irradiance": "0 %"}))
     return None
 
 
@@ -283,12 +407,21 @@ def _value(value: Any) -> str:
 
 
 def changed(draft: Draft, change: Callable[[str, str, Any], Any]) -> Draft:
-    """A copy with every field of every source, run, device and load put through `change(table, field, value)`."""
+    """A copy with every field of every point, source, run, device and load put through `change(table, field, value)`.
+
+    Fields of tables within them are put through it too.
+    """
+
+    def through(table: str, key: str, value: Any) -> Any:
+        if isinstance(value, dict):
+            return {inner: through(table, inner, one) for inner, one in value.items()}
+        if isinstance(value, list):
+            return [through(table, key, one) for one in value]
+        return change(table, key, value)
+
     result = copy.deepcopy(draft)
-    for table in ("sources", "runs", "devices", "loads"):
-        for row in result[table]:
-            for key in row:
-                row[key] = change(table, key, row[key])
+    for table in ("points", "sources", "runs", "devices", "loads"):
+        result[table] = [through(table, "", row) for row in result[table]]
     return result
 
 

@@ -1,19 +1,19 @@
 """The solver against ngspice, a circuit simulator that shares no line with it, on random two-wire plans."""
 
-import os
 import random
 import shutil
 from collections.abc import Callable
-from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
+import against_spice
 import numpy as np
 import pytest
+from against_spice import AGREE_V, KINDS, SLOW_RISE_S, compare, compare_kind
 
 from circuit import Circuit, Drain, Feeder, Resistor, circuit_of, imbalance
 from farvolt import network, operating, rulebook
-from farvolt.solve import State, solve
-from spice import Answer, answer, largest_difference_V
+from farvolt.solve import solve
+from spice import answer, largest_difference_V
 from strategies import Wishes, plan_of, random_draft
 
 pytestmark = [
@@ -21,84 +21,28 @@ pytestmark = [
     pytest.mark.skipif(shutil.which("ngspice") is None, reason="the ngspice program is not installed"),
 ]
 
-AGREE_V = 1e-6
-QUICK_RISE_S, SLOW_RISE_S = 2.0, 40.0
 REFERENCE_MAY_FAIL = 0.02
-"""Share of plans on which ngspice itself may end without an answer, or fall off too early at first."""
-
-KINDS: dict[str, tuple[Wishes, int]] = {
-    "mixed": (Wishes(), 200),
-    "radial": (Wishes(loops=0), 80),
-    "meshed": (Wishes(loops=8, points=(6, 14)), 80),
-    "through the chassis": (Wishes(chassis=1.0), 60),
-    "converters, solar and diodes": (Wishes(converters=1.0, solar=0.7, diodes=1.0), 80),
-    "nothing but a charger": (Wishes(charger_only=1.0, converters=0.0), 80),
-    "heavily loaded": (Wishes(load_share=2.5), 120),
-}
-
-
-@dataclass(frozen=True)
-class Compared:
-    """One plan solved twice."""
-
-    seed: int
-    circuit: Circuit
-    state: State
-    volts: dict[int, float]
-    reference: Answer
-
-    @property
-    def difference_V(self) -> float:
-        """The largest difference of a node's volts."""
-        return largest_difference_V(self.circuit, self.volts, self.reference.volts[-1])
-
-    def asked_again(self) -> "Compared":
-        """The same with a rise so slow that ngspice does not step over a narrow branch of solutions."""
-        return replace(self, reference=answer(self.circuit, SLOW_RISE_S))
-
-
-def compare(seed: int, wishes: Wishes, rise_s: float = QUICK_RISE_S) -> Compared:
-    """Solve the random plan of a seed with Farvolt and with ngspice."""
-    plan = plan_of(random_draft(random.Random(seed), wishes))
-    case = plan.checked_cases[0]
-    built = network.build(plan, rulebook.load("small-craft-iso"))
-    state = solve(built, operating.operating(built, case), np.ones(len(plan.runs)))
-    circuit = circuit_of(plan, case)
-    volts = {
-        node: float(state.volts[built.nodes[name, 0 if pole == "+" else 1]])
-        for (name, pole), node in circuit.pins.items()
-        if node in circuit.live
-    }
-    return Compared(seed, circuit, state, volts, answer(circuit, rise_s) if circuit.live else Answer([], [], rise_s))
-
-
-def compare_all(kind: str) -> list[Compared]:
-    """All plans of a kind, ngspice side by side on the cores there are."""
-    wishes, count = KINDS[kind]
-    first = 10_000 * list(KINDS).index(kind)
-    with ThreadPoolExecutor(os.cpu_count()) as pool:
-        return list(pool.map(lambda seed: compare(seed, wishes), range(first, first + count)))
+"""Share of plans on which ngspice itself may end without an answer, or has to be asked again."""
 
 
 @pytest.mark.parametrize("kind", KINDS)
 def test_node_volts_agree_with_ngspice(kind: str, record_property: Callable[[str, object], None]) -> None:
-    found = [one for one in compare_all(kind) if one.circuit.live]
-    again = [one for one in found if one.state.solved and one.reference.complete and not one.difference_V <= AGREE_V]
-    found = [one.asked_again() if one in again else one for one in found]
-    solved = [one for one in found if one.state.solved]
-    answered = [one for one in solved if one.reference.complete]
-    falling = [one for one in found if not one.state.solved]
-    worst_V = max(one.difference_V for one in answered)
-    summary = (
-        f"{kind}: {len(found)} fed plans, {len(falling)} give way, {len(solved) - len(answered)} without an answer "
-        f"from ngspice, {len(again)} asked again, {len(answered)} compared, largest difference {worst_V:.1e} V"
-    )
-    record_property("summary", summary)
-    print(summary)
-    assert {one.seed: one.difference_V for one in answered if not one.difference_V <= AGREE_V} == {}
-    assert [one.seed for one in falling if one.reference.holds(one.circuit)] == []
-    assert len(solved) - len(answered) + len(again) <= REFERENCE_MAY_FAIL * len(found)
-    assert len(answered) >= 0.75 * KINDS[kind][1]
+    count = KINDS[kind][1]
+    tally = compare_kind(kind, count)
+    record_property("summary", str(tally))
+    print(tally)
+    assert tally.disagreeing == []
+    assert tally.worst_V <= AGREE_V
+    assert tally.unanswered + tally.asked_again <= REFERENCE_MAY_FAIL * count
+    assert len(tally.compared) >= 0.75 * count
+
+
+def test_the_program_that_compares_at_length(capsys: pytest.CaptureFixture[str]) -> None:
+    """Its table names every kind, and its word is that of the comparisons."""
+    assert against_spice.main(3 * len(KINDS))
+    printed = capsys.readouterr().out
+    assert [kind for kind in KINDS if kind not in printed] == []
+    assert printed.splitlines()[-1].startswith("all")
 
 
 @pytest.mark.parametrize("kind", ["mixed", "converters, solar and diodes"])
