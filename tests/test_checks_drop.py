@@ -12,6 +12,7 @@ from strategies import Wishes, random_draft
 from strategies import plan_of as drafted
 from wiring import (
     CLASS_5_OHM_PER_KM,
+    Row,
     bank,
     cable,
     charger,
@@ -124,7 +125,8 @@ def test_a_nearer_charger_makes_a_negative_drop_and_no_finding() -> None:
         cable("feed", "bus", "fridge", "1 m", "10 mm2", protection=fuse("15 A")),
     ]
     sources = [bank(), charger(at="bus")]
-    plan = plan_of(runs, [lamp("fridge", "fridge", "5 A", **{"class": "critical"})], sources=sources)
+    loads = [lamp("fridge", "fridge", "5 A", **{"class": "critical"})]
+    plan = plan_of(runs, loads, sources=sources, cases=[{"name": "Everything on"}])
     solution = context_of(plan).cases[0].solutions["basis"]
     assert solution.load_drop_V[0] < 0
     assert findings(plan, "drop.load") == []
@@ -140,6 +142,23 @@ def test_a_drop_is_counted_from_a_working_source() -> None:
     cases = [{"name": "On the charger", "sources": {"bank": "off"}}]
     found = only(plan_of(runs, loads, sources=[bank(), charger()], cases=cases), "drop.load", "fridge")
     assert found.value == pytest.approx(4.125, rel=1e-9)
+
+
+@pytest.mark.parametrize(("stand_in", "severity"), [(charger(), "warn"), (bank("charger", emf="14.4 V"), "fail")])
+def test_what_a_charger_alone_delivers_warns_and_a_second_bank_fails(stand_in: Row, severity: str) -> None:
+    """A limit on drop means the source in service: a bank is one, a charger that runs without its bank a makeshift."""
+    runs = [
+        cable("charging", "charger", "bank", "1 m", "10 mm2"),
+        cable("feed", "charger", "galley", "5 m", "4 mm2", protection=fuse("15 A")),
+    ]
+    loads = [lamp("fridge", "galley", "10 A", **{"class": "critical"})]
+    cases = [{"name": "Without the bank", "sources": {"bank": "off"}}]
+    found = only(plan_of(runs, loads, sources=[bank(), stand_in], cases=cases), "drop.load", "fridge")
+    assert found.severity == severity
+    assert ("no bank" in found.message) == (severity == "warn")
+    cases.append({"name": "Without the charger", "sources": {"charger": "off"}})
+    again = only(plan_of(runs, loads, sources=[bank(), stand_in], cases=cases), "drop.load", "fridge")
+    assert again.severity == "fail"
     assert 'at "charger"' in found.working[-2]
 
 

@@ -64,14 +64,13 @@ def test_the_examples_hang_together(name: str) -> None:
         ({"pump": 0}, ["pump"], "is off", '"pump" = 1.0'),
     ],
 )  # fmt: skip
-def test_a_case_starts_what_is_on_and_states_a_surge(loads: Any, surge: Any, problem: str | None, accepted: str) -> None:
+def test_a_case_starts_what_is_on_and_states_a_surge(loads: Any, surge: Any, problem: Any, accepted: str) -> None:
     raw = changed("cases.0", {"name": "start", "loads": loads, "surge": surge})
     raw["loads"][1]["surge"] = {"times": 3}
     found = [fault for _, fault in integrity.faults(raw)]
     assert len(found) == (problem is not None)
     for fault in found:
-        assert (fault.where, fault.field) == ('cases "start"', "surge")
-        assert problem is not None
+        assert (fault.place, fault.field) == ('cases "start"', "surge")
         assert problem in fault.problem
         assert accepted in fault.accepted
 

@@ -18,7 +18,7 @@ def chain(sources: str, loads: int, watts: float) -> str:
         start = "bank" if i % 5 == 0 else f"p{i - 1}"
         text += f'[[runs]]\nname = "r{i}"\nfrom = "{start}"\nto = "p{i}"\nlength = "{2 + i % 3} m"\nsize = "4 mm2"\n'
         text += f'[[loads]]\nname = "l{i}"\nat = "p{i}"\n{ratings[i % 3]}\n'
-    return text
+    return text + '[[cases]]\nname = "Everything on"\n'
 
 
 def ready(text: str) -> tuple[network.Network, Operating, np.ndarray]:

@@ -48,6 +48,9 @@ def case(sources: str) -> str:
     return f"cases The case: sources = {{ {sources} }}"
 
 
+EVERYTHING_ON = case("")
+
+
 # Loads on one feed ------------------------------------------------------------------------------------------------
 
 SIX_SQUARE = 'runs feed: from = "bank"; to = "lamp"; length = "10 m"; size = "6 mm2"; strand = "flexible"'
@@ -234,7 +237,7 @@ def test_a_full_battery_helps_a_charger_at_its_limit() -> None:
 
 def test_a_battery_that_is_not_full_is_charged() -> None:
     """30 A into 10 mohm from 12.8 V: 13.1 V, under the charger's 14.4 V."""
-    found = solved(plan_text(*FULL))
+    found = solved(plan_text(*FULL, EVERYTHING_ON))
     assert found.volts("bus") == pytest.approx(13.1, abs=1e-9)
     assert found.source_amps == pytest.approx({"bank": -30.0, "charger": 30.0})
 
@@ -318,7 +321,7 @@ def test_a_converter_draws_what_it_delivers_over_its_efficiency(isolated: str) -
 def test_a_solar_controller_gives_its_power_up_to_its_ceiling() -> None:
     """200 W into 12.8 V behind 10 mohm: i = P/u and u = E + r·i, so u = E/2 + sqrt(E²/4 + P·r)."""
     roof = 'sources roof: kind = "solar"; at = "bus"; power = "200 W"; ceiling = "14.4 V"'
-    found = solved(plan_text(battery("bank", "bus", "12.8 V", "10 mohm"), roof))
+    found = solved(plan_text(battery("bank", "bus", "12.8 V", "10 mohm"), roof, EVERYTHING_ON))
     assert found.volts("bus") == pytest.approx(6.4 + math.sqrt(6.4**2 + 200 * 0.01), abs=1e-9)
     full = solved(plan_text(battery("bank", "bus", "12.8 V", "10 mohm"), roof, case('"bank" = "full"')))
     assert full.volts("bus") == pytest.approx(14.4, abs=1e-6)

@@ -8,6 +8,7 @@ from farvolt.context import Context
 from farvolt.network import CONTACT_OHM, DIODE_DROP_V
 from farvolt.plan import Battery, Charger, Converter, Plan, Solar
 from farvolt.rulebook import Rulebook
+from farvolt.standard_cases import low_charge, standard_set
 
 
 def assumptions(context: Context) -> tuple[str, ...]:
@@ -70,7 +71,7 @@ def _cables(plan: Plan, rulebook: Rulebook) -> Iterator[str]:
 
 def _cases(plan: Plan, rulebook: Rulebook) -> Iterator[str]:
     if not plan.cases:
-        yield 'The plan states no cases: one case, "Everything on", is checked.'
+        yield from _standard(plan)
     for case in plan.checked_cases:
         silent = [f'"{source.name}"' for source in plan.sources if source.name not in case.sources]
         if silent:
@@ -80,6 +81,17 @@ def _cases(plan: Plan, rulebook: Rulebook) -> Iterator[str]:
         rule = rulebook.classes[rulebook.default_class]
         limit = f"{rule.limit_percent:g} % of drop"
         yield f'{unclassed} of {len(plan.loads)} loads state no class: taken as "{rule.name}", with {limit} allowed.'
+
+
+def _standard(plan: Plan) -> Iterator[str]:
+    found = standard_set(plan)
+    listed = "; ".join(case.name for case in found.cases)
+    yield f"The plan states no cases: the standard ones for what it has are checked. {listed}."
+    for source in plan.sources:
+        low = low_charge(source) if isinstance(source, Battery) else None
+        if low is not None:
+            yield f'Low charge of "{source.name}": {low}, typical (common practice), or as stated where that is lower.'
+    yield from found.left_out
 
 
 def _recalled(plan: Plan) -> Iterator[str]:

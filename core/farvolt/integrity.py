@@ -272,7 +272,8 @@ def _no_surge(raw: dict[str, Any], index: int, row: dict[str, Any], name: Any) -
         some = ", ".join(f'"{shorten(str(one), 30)}"' for one in stating[:8]) + (", …" if len(stating) > 8 else "")
         yield path, Fault(where, "surge", shown(name), "this load states no surge", some or "none: no load states one")
     elif on == "none" or (isinstance(on, dict) and isinstance(name, str) and on.get(name, 0) == 0):
-        yield path, Fault(where, "surge", shown(name), "this load is off in the case", f"{shown(name)} = 1.0 under loads")
+        accepted = f"{shown(name)} = 1.0 under loads"
+        yield path, Fault(where, "surge", shown(name), "this load is off in the case", accepted)
 
 
 def _case_states(raw: dict[str, Any]) -> Iterator[Found]:

@@ -1,6 +1,7 @@
 """Voltage drop from the source to each load, against the rulebook's limit for the load's class."""
 
 from collections.abc import Iterator, Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -8,6 +9,7 @@ from farvolt.checks.enlarge import Aim, Remedies
 from farvolt.checks.registry import apart, check
 from farvolt.context import CaseStudy, Context
 from farvolt.network import Floats
+from farvolt.plan import Battery
 from farvolt.results import Finding
 from farvolt.rulebook import DropClass
 from farvolt.solution import Solution, Step
@@ -42,7 +44,10 @@ def loads_on(solution: Solution) -> np.ndarray:
 
 @check("drop.load", title="Voltage drop from the source to each load", reads=("classes", "drop_basis"))
 def drop_to_load(context: Context) -> Iterator[Finding]:
-    """The worst case of every load over its limit, at the rulebook's own conductor temperature."""
+    """The worst case of every load over its limit, at the rulebook's own conductor temperature.
+
+    A case in which something stands in for lost batteries only warns: the limit means the source in service.
+    """
     count = len(context.plan.loads)
     table = np.array([percents(one.solutions["basis"]) for one in context.cases]).reshape(len(context.cases), count)
     remedies = Remedies(context)
@@ -50,8 +55,20 @@ def drop_to_load(context: Context) -> Iterator[Finding]:
         limit = drop_class(context, load).limit_percent
         over = np.flatnonzero(table[:, load] > limit * (1 + 1e-9))
         if len(over):
-            worst = int(over[np.argmax(table[over, load])])
+            in_service = [case for case in over if not _stands_in(context.cases[case].solutions["basis"], load)]
+            first = np.array(in_service or over)
+            worst = int(first[np.argmax(table[first, load])])
             yield _to_load(context, load, worst, over.tolist(), remedies)
+
+
+def _stands_in(solution: Solution, load: int) -> bool:
+    """Whether a load's drop is counted from a source that stands in for the lost batteries of its island."""
+    port, condition, sources = solution.references[load], solution.condition, solution.network.plan.sources
+    if port is None or isinstance(sources[port], Battery):
+        return False
+    of_source = condition.islands.of_node[condition.source_a[: len(sources)]]
+    banks = [isinstance(source, Battery) for source in sources]
+    return bool(np.any(banks & (of_source == of_source[port])))
 
 
 def _to_load(context: Context, load: int, worst: int, over: Sequence[int], remedies: Remedies) -> Finding:
@@ -63,12 +80,16 @@ def _to_load(context: Context, load: int, worst: int, over: Sequence[int], remed
         f'"{name}" loses {apart(value, rule.limit_percent)} % of {number(nominal)} V on the way; '
         f'{number(rule.limit_percent)} % is the limit of the class "{rule.name}"'
     )
+    makeshift = _stands_in(solution, load)
+    if makeshift:
+        message += f'; counted from "{context.plan.sources[solution.references[load] or 0].name}", with no bank on'
     aim = Aim(
         load, "basis", worst, tuple(over), solution.way(load), lambda found: percent(found, load), rule.limit_percent,
         -100 / nominal, "%",
     )  # fmt: skip
     shown = tuple(working(one, solution, load))
-    return over_limit(context, "drop.load", aim, value, message, shown, remedies.for_load(aim))
+    found = over_limit(context, "drop.load", aim, value, message, shown, remedies.for_load(aim))
+    return replace(found, severity="warn") if makeshift else found
 
 
 def over_limit(
