@@ -111,17 +111,11 @@ def test_what_is_taken_as_given_is_listed() -> None:
     assert any('1 of 1 loads state no class: taken as "other", with 5 % of drop allowed' in line for line in lines)
 
 
-def test_a_short_circuit_current_beside_a_resistance_is_said_to_be_unused() -> None:
-    """Both state the same thing; the resistance is the one that counts."""
-    (one,) = told("plan.not-used-yet", battery='12.8 V"\nshort_circuit = "900 A')
-    assert "short_circuit of batteries that state resistance (1)" in one.message
-
-
 def test_what_is_not_checked_is_always_said() -> None:
     """A plan that states none of these fields is told all the same."""
     (one,) = told("plan.not-checked-yet")
     assert one.severity == "note"
-    assert "interrupting" in one.message
+    assert "selectivity" in one.message
 
 
 @pytest.mark.parametrize(

@@ -277,3 +277,18 @@ def test_a_switch_that_a_case_opens_may_send_more_through_a_device() -> None:
     one = plan_of(runs, [lamp("lamp", "lamp")], sources=sources, devices=devices, cases=cases)
     assert lowest(one, "a way").fault.amps == pytest.approx(lowest(both, "a way").fault.amps)
     assert faults(one).points == faults(both).points
+
+
+def test_a_device_itself_is_a_link_but_stated_resistance_before_it_counts() -> None:
+    """IEC 60050-441-17-01. Main fuse of 0.5 mohm, then a branch fuse of 3 mohm: 12.8 V / (1 + 0.5 + cable) mohm."""
+    runs = [
+        cable("main", "bank", "panel", "1 m", "10 mm2", protection=fuse("80 A", "0 m", "strip", resistance="0.5 mohm")),
+        cable("branch", "panel", "lamp", "4 m", "4 mm2", protection=fuse("15 A", "0 m", resistance="3 mohm")),
+    ]
+    found = faults(plan_of(runs, [lamp("lamp", "lamp")]))
+    feeder = 2 * CLASS_5_OHM_PER_KM["10 mm2"] / 1000
+    assert found.devices[0, 0].amps == pytest.approx(12800, rel=1e-9)
+    assert found.devices[1, 0].amps == pytest.approx(12.8 / (1.5e-3 + feeder), rel=1e-9)
+    assert found.devices[1, 0].working[-1] == "12.8 V / (1 + 3.82 cable + 0.5 joints and contacts) mohm = 2406 A"
+    branch = 8 * CLASS_5_OHM_PER_KM["4 mm2"] / 1000
+    assert found.points["lamp"].amps == pytest.approx(12.8 / (4.5e-3 + feeder + branch), rel=1e-9)

@@ -8,7 +8,7 @@ from farvolt import conductors
 from farvolt.fault_sources import FaultSource, coldest_degC, fault_sources, ports
 from farvolt.network import BOND, FEED, LEAST_OHM, RETURN, Floats, Network
 from farvolt.operating import Islands, device_closed
-from farvolt.plan import CHASSIS
+from farvolt.plan import CHASSIS, Run
 from farvolt.rulebook import Rulebook
 from farvolt.shorts import Circuit, Place, Shorted, Spot
 from farvolt.temperatures import at as temperatures_at
@@ -47,19 +47,20 @@ class FaultNetwork:
         """A short between the feed and the return of a point."""
         return Place(Spot(self.network.feed(name)), Spot(self.network.ret(name)))
 
-    def spot(self, run: int, pole: int, end: str, along_m: float) -> Spot | None:
+    def spot(self, run: int, pole: int, end: str, along_m: float, beyond_ohm: float = 0.0) -> Spot | None:
         """A place in one conductor of a run, `along_m` from one of its ends; None where it has no such conductor.
 
-        Half of the joints lie on either side.
+        Half of what is no cable lies on either side, but for `beyond_ohm`, which lies beyond the place.
         """
         branch = self._branches.get((run, pole))
         if branch is None:
             return None
         share = min(along_m / self.network.plan.runs[run].length.si, 1.0)
-        half, cable = float(self.fixed_ohm[branch]) / 2, float(self.cable_ohm[branch])
+        beyond_ohm = min(beyond_ohm, float(self.fixed_ohm[branch]))
+        half, cable = (float(self.fixed_ohm[branch]) - beyond_ohm) / 2, float(self.cable_ohm[branch])
         a, b = int(self.circuit.a[branch]), int(self.circuit.b[branch])
         node, other = (a, b) if end == "from" else (b, a)
-        return Spot(node, branch, other, half + share * cable, half + (1 - share) * cable)
+        return Spot(node, branch, other, half + share * cable, half + (1 - share) * cable + beyond_ohm, half)
 
     def opposite(self, run: int, pole: int, end: str, along_m: float) -> list[Spot]:
         """What a short within a run may end at: its own conductor of that pole beside it; where it has none, that
@@ -138,15 +139,21 @@ def _stated(network: Network, degC: float, factors: Floats) -> tuple[Floats, Flo
     for branch in np.flatnonzero(~links):
         run, device = int(network.run[branch]), int(network.device[branch])
         if network.cable_ohm_20[branch] > 0:
-            entry = plan.runs[run]
-            stated = entry.resistance is None and "joint_resistance" in entry.model_fields_set
-            fixed[branch] = entry.joints * entry.joint_resistance.si / entry.parallel if stated else 0.0
+            fixed[branch] = _stated_in_run(plan.runs[run], "feed" if network.pole[branch] == FEED else "return")
         elif device >= 0:
             known = plan.devices[device].resistance
             fixed[branch] = max(known.si, LEAST_OHM) if known is not None else LEAST_OHM
         elif chassis in (network.a[branch], network.b[branch]):
             fixed[branch] = max(bond_ohm, LEAST_OHM)
     return fixed, cable
+
+
+def _stated_in_run(run: Run, pole: str) -> float:
+    """What the plan states of the joints and the protection in one pole of a run; a measured resistance has them."""
+    if run.resistance is not None:
+        return 0.0
+    joints = run.joints * run.joint_resistance.si / run.parallel if "joint_resistance" in run.model_fields_set else 0.0
+    return joints + sum(one.resistance.si for one in run.protections if one.pole == pole and one.resistance is not None)
 
 
 def _settings(network: Network) -> list[np.ndarray]:

@@ -81,6 +81,7 @@ def _part(net: FaultNetwork, found: Shorted, spot: Spot) -> tuple[float, float]:
     if spot.branch < 0:
         return 0.0, 0.0
     near, far = (abs(part) for part in net.parts_A(found, spot))
-    ohm = spot.near_ohm if near >= far else spot.far_ohm
-    fixed = float(net.fixed_ohm[spot.branch]) / 2
-    return max(ohm - fixed, 0.0), min(fixed, ohm)
+    if near >= far:
+        return spot.near_ohm - spot.near_fixed_ohm, spot.near_fixed_ohm
+    fixed = float(net.fixed_ohm[spot.branch]) - spot.near_fixed_ohm
+    return spot.far_ohm - fixed, fixed

@@ -1,10 +1,10 @@
 """Prospective fault currents: what a bolted short between feed and return draws, from the whole network.
 
 The highest is what a protective device has to interrupt: all sources on, batteries new, full and warm, conductors
-cold. As IEC 60050-441-17-01 defines it, a device counts as a link of negligible impedance; so do all others, and any
-contact or joint whose resistance the plan does not state. The lowest is what has to open a device in time: one
-source alone, an aged battery, cold and at low charge, conductors hot, contacts as stated or typical. An arc or a
-loose joint draws less than a bolted short.
+cold. The device itself counts as a link of negligible impedance, which is how IEC 60050-441-17-01 defines prospective
+current; so does any contact, joint or protection whose resistance the plan does not state. The lowest is what has to
+open a device in time: one source alone, an aged battery, cold and at low charge, conductors hot, contacts as stated
+or typical. An arc or a loose joint draws less than a bolted short.
 """
 
 from collections.abc import Hashable, Iterator
@@ -81,21 +81,25 @@ class Faults:
         for net in self._highest:
             shorts = list(self._at_devices(net))
             for (key, pole, _), found in zip(shorts, net.circuit.shorted([one[2] for one in shorts]), strict=True):
-                parts = net.parts_A(found, found.place.feed if pole == FEED else found.place.back)
+                near, _ = net.parts_A(found, found.place.feed if pole == FEED else found.place.back)
                 words = fault_working.at_device(self._network.plan.runs[key[0]], key[1])
-                _keep_larger(best, key, net, found, max(map(abs, parts)), words)
+                _keep_larger(best, key, net, found, abs(near), words)
         return best
 
     def _at_devices(self, net: FaultNetwork) -> Iterator[tuple[tuple[int, int], int, Place]]:
-        """Every protection and its pole, with each of the shorts that may be the worst for it."""
+        """Every protection and its pole, with each of the shorts that may be the worst for it: what comes from the
+        near side of the place counts. Its own resistance lies beyond."""
         for index, run in enumerate(self._network.plan.runs):
             for number, one in enumerate(run.protections):
                 along = one.distance.si if one.distance else 0.0
-                pole = FEED if one.pole == "feed" else RETURN
-                spot = net.spot(index, pole, one.end, along)
-                for other in net.opposite(index, RETURN if pole == FEED else FEED, one.end, along) if spot else ():
-                    assert spot is not None
-                    yield (index, number), pole, Place(spot, other) if pole == FEED else Place(other, spot)
+                other_end = "to" if one.end == "from" else "from"
+                pole, opposite = (FEED, RETURN) if one.pole == "feed" else (RETURN, FEED)
+                against = net.opposite(index, opposite, one.end, along)
+                for end, metres in ((one.end, along), (other_end, run.length.si - along)):
+                    spot = net.spot(index, pole, end, metres, one.resistance.si if one.resistance else 0.0)
+                    for back in against if spot is not None else ():
+                        assert spot is not None
+                        yield (index, number), pole, Place(spot, back) if pole == FEED else Place(back, spot)
 
     @cached_property
     def far_ends(self) -> tuple[FarEnd, ...]:

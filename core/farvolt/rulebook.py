@@ -287,6 +287,18 @@ class Returns:
     basis: Basis
 
 
+@dataclass(frozen=True, slots=True)
+class Terminals:
+    """Temperature that terminals are rated for: a conductor carries no more than its table's figure under it."""
+
+    unmarked_degC: float
+    """For conductors up to `unmarked_up_to`, unless the terminals are marked for more."""
+    unmarked_up_to: Size
+    marked_degC: float
+    """For thicker conductors, and the highest usually marked."""
+    basis: Basis
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Rulebook:
     """The limits a plan is held against. What is None or empty is not given; `missing` may say why."""
@@ -309,6 +321,7 @@ class Rulebook:
     protection: Protection
     refused: Refused | None
     returns: Returns | None
+    terminals: Terminals | None
     missing: Mapping[str, str]
     """Entry to the reason why the rulebook does not give it."""
 

@@ -5,7 +5,7 @@ import math
 import tomllib
 from collections.abc import Callable
 from pathlib import Path
-from typing import TypeVar
+from typing import Literal, TypeVar
 
 from farvolt import tables
 from farvolt.conductors import MATERIALS, STRANDS, SYSTEMS, Size, parse_size
@@ -36,12 +36,13 @@ from farvolt.rulebook import (
     SmallConductor,
     SmallConductors,
     StandardRatings,
+    Terminals,
     UnprotectedLength,
     shipped,
 )
 
 PURPOSES = ("cranking", "bond")
-_LIMITS = ("ampacity", "ambient", "engine_space", "bundling", "minimum_size", "refused", "returns")
+_LIMITS = ("ampacity", "ambient", "engine_space", "bundling", "minimum_size", "refused", "returns", "terminals")
 _PROTECTION = ("continuous", "over_conductor", "small_conductors", "unprotected_length", "exempt")
 ENTRIES = (*_LIMITS, *_PROTECTION, "standard_ratings", "interrupting", "fault_damage")
 """Entries a rulebook may leave out, and give a reason for under `missing`."""
@@ -115,6 +116,7 @@ def _rulebook(top: Fields, path: Path) -> Rulebook:
         protection=_protection(top.table("protection") or Fields({}, "protection", top.fault)),
         refused=_optional(top, "refused", _refused),
         returns=_optional(top, "returns", _returns),
+        terminals=_optional(top, "terminals", _terminals),
         missing=_missing(top),
     )
     defaults.done()
@@ -371,7 +373,8 @@ def _interrupting(fields: Fields) -> Interrupting:
 
 
 def _fault_damage(fields: Fields) -> FaultDamage:
-    return FaultDamage(fields.choice("severity", ("fail", "warn")), _basis(fields))
+    severity: Literal["fail", "warn"] = "fail" if fields.choice("severity", ("fail", "warn")) == "fail" else "warn"
+    return FaultDamage(severity, _basis(fields))
 
 
 def _refused(fields: Fields) -> Refused:
@@ -381,3 +384,9 @@ def _refused(fields: Fields) -> Refused:
 
 def _returns(fields: Fields) -> Returns:
     return Returns(fields.choices("forbidden", ("chassis",)), _basis(fields))
+
+
+def _terminals(fields: Fields) -> Terminals:
+    unmarked = fields.number("unmarked_degC", 40, _HOTTEST_DEGC)
+    up_to = _size(fields, "unmarked_up_to", fields.text("unmarked_up_to"))
+    return Terminals(unmarked, up_to, fields.number("marked_degC", unmarked, _HOTTEST_DEGC), _basis(fields))

@@ -59,6 +59,8 @@ class Spot:
     """The far end of the branch, counted from `node`."""
     near_ohm: float = 0.0
     far_ohm: float = 0.0
+    near_fixed_ohm: float = 0.0
+    """The part of `near_ohm` that is no cable."""
 
     @property
     def weights(self) -> tuple[tuple[int, float], ...]:
@@ -98,7 +100,8 @@ class Shorted:
     branch_A: Floats
     imbalance_A: float
     certified: bool
-    """Kirchhoff's current law holds at every node, to the rounding of the currents there."""
+    """Kirchhoff's current law holds at every node: to the rounding of the currents there, or to a billionth of the
+    fault current."""
     limited: np.ndarray
     """Over ports: at its limit."""
 
@@ -189,7 +192,7 @@ class Circuit:
         out -= self._port_incidence @ (port_A - self._leak_S[:, None] * across)
         out = np.abs(np.where(self.live[:, None], out, 0.0))
         allowed = 64 * _EPSILON * self._allowed_S[:, None] * np.abs(volts).max(axis=0, initial=0.0)
-        certified = np.all(out <= np.maximum(allowed, IMBALANCE_A), axis=0)
+        certified = np.all(out <= np.maximum(allowed, IMBALANCE_A * np.maximum(1.0, np.abs(amps))), axis=0)
         for k, place in enumerate(places):
             yield Shorted(
                 place, float(amps[k]), port_A[:, k], branch_A[:, k], float(out[:, k].max(initial=0.0)),

@@ -14,7 +14,7 @@ _UNUSED: dict[str, tuple[str, ...]] = {
 }
 
 _NOT_CHECKED = (
-    "interrupting rating and far-end fault of protection, let-through, selectivity",
+    "far-end fault of protection, let-through, selectivity",
     "the bank's rates of charge and discharge, its days of autonomy, charging when cold",
     "returns shared by circuits",
 )
@@ -45,14 +45,10 @@ def _conditional(plan: Plan) -> dict[str, int]:
     batteries = [source for source in plan.sources if isinstance(source, Battery)]
     fixed = {battery.name for battery in batteries if battery.emf is not None}
     states = [(name, state) for case in plan.cases for name, state in case.sources.items()]
-    guards = [one for run in plan.runs for one in run.protections]
     return {
         "charge of batteries that state emf": sum(
             battery.name in fixed and "charge" in battery.model_fields_set for battery in batteries
         ) + sum(name in fixed and state.charge is not None for name, state in states),
-        "short_circuit of batteries that state resistance": sum(
-            one.short_circuit is not None and one.resistance is not None for one in batteries
-        ),
         "joints and protection resistance of runs that state a measured resistance": sum(
             run.joints > 0 or any(one.resistance is not None for one in run.protections)
             for run in plan.runs
@@ -73,7 +69,6 @@ def _conditional(plan: Plan) -> dict[str, int]:
         "max_input of solar without array": sum(
             isinstance(one, Solar) and one.max_input is not None and one.array is None for one in plan.sources
         ),
-        "runs.protection.interrupting": sum(one.interrupting is not None for one in guards),
     }  # fmt: skip
 
 
