@@ -114,7 +114,8 @@ def bus(rating: str | None, *, fused: str = "60 A", amps: str = "20 A") -> Plan:
     ]
     point: Row = {"name": "bar", "kind": "busbar"} | ({"rating": rating} if rating else {})
     loads = [lamp("one", "one", amps), lamp("two", "two", "25 A")]
-    return plan_of(runs, loads, sources=[bank(), charger()], points=[point])
+    cases = [{"name": "all on"}]
+    return plan_of(runs, loads, sources=[bank(), charger()], points=[point], cases=cases)
 
 
 @pytest.mark.parametrize(("amps", "over"), [("35 A", False), ("35.01 A", True)])

@@ -1,10 +1,12 @@
-"""Insulation in places hotter than it may be."""
+"""Insulation in places hotter than it may be, and cables that run hotter than their terminals may."""
 
 import pytest
 
 from farvolt import planfile
 from farvolt.results import Finding
+from farvolt.rulebook import load
 from farvolt.study import study
+from wiring import cable, findings, fuse, lamp, plan_of
 
 PLAN = """format = 1
 [plan]
@@ -62,3 +64,43 @@ def test_the_hottest_case_is_named() -> None:
     (one,) = told("60 degC", "160 degF")
     assert one.case == "Hot day"
     assert one.value == pytest.approx(71.11, abs=0.01)
+
+
+def carried(amps: str, *, book: str = "cabin-nec", size: str = "12 AWG", **more: str) -> list[Finding]:
+    """The findings on one cable of a constant current."""
+    runs = [cable("feed", "bank", "lamp", size=size, protection=fuse("100 A"), **more)]
+    plan = plan_of(runs, [lamp("lamp", "lamp", amps)], rulebook=book, info={"ambient": "30 degC"})
+    return findings(plan, "conductor.temperature-rating")
+
+
+@pytest.mark.parametrize(
+    ("amps", "severity"), [("20 A", None), ("20.01 A", "warn"), ("25 A", "warn"), ("25.01 A", "fail")]
+)
+def test_boundaries_of_what_terminals_allow(amps: str, severity: str | None) -> None:
+    """NEC 110.14(C)(1) with Table 310.16: 12 AWG copper is 20 A at 60 degC, 25 A at 75 degC, 30 A at 90 degC.
+
+    Insulation of 90 degC serves for correction alone: the terminals hold the cable to 25 A.
+    """
+    found = carried(amps, insulation="90 degC")
+    assert [one.severity for one in found] == ([severity] if severity else [])
+    if severity == "warn":
+        assert "marked for 75 degC" in (found[0].remedy or "")
+        assert "110.14(C)" in found[0].basis
+
+
+def test_thick_conductors_are_taken_at_marked_terminals() -> None:
+    """NEC 110.14(C)(1)(b): above 1 AWG, 75 degC: 1/0 AWG is 125 A at 60 degC and 150 A at 75 degC (Table 310.16)."""
+    assert carried("150 A", size="1/0 AWG") == []
+    assert carried("150.1 A", size="1/0 AWG")[0].severity == "fail"
+
+
+def test_cables_in_parallel_share_what_their_terminals_allow() -> None:
+    runs = [cable("feed", "bank", "lamp", size="12 AWG", parallel=2, protection=fuse("100 A"))]
+    for amps, told in (("40 A", 0), ("40.1 A", 1)):
+        plan = plan_of(runs, [lamp("lamp", "lamp", amps)], rulebook="cabin-nec")
+        assert len(findings(plan, "conductor.temperature-rating")) == told
+
+
+def test_a_rulebook_without_a_rule_for_terminals_says_why() -> None:
+    assert carried("29 A", book="small-craft-us", size="12 AWG") == []
+    assert "rates terminals" in load("small-craft-us").missing["terminals"]

@@ -316,6 +316,7 @@ START = 'starts_from = "small-craft-us"\n'
         ("[protection.unprotected_length]\nplain_m = -1", "protection.unprotected_length, plain_m"),
         ('[protection.exempt]\npurposes = ["starting"]', '"starting" is not known; accepted: cranking'),
         ('[refused]\nmaterials = ["steel"]', 'refused, materials: "steel" is not known'),
+        ('[terminals]\nunmarked_degC = 60', "own.toml: terminals, unmarked_up_to: is missing"),
         ('[missing]\nambience = "?"', "missing, ambience: unknown field; did you mean ambient?"),
         ("title = ", "own.toml: not a TOML file in UTF-8"),
         ("[drop_basis]\ntemperature_degC = 1" + "0" * 400, "drop_basis, temperature_degC: must lie from -50"),
