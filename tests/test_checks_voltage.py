@@ -125,7 +125,6 @@ def test_what_is_not_checked_is_always_said() -> None:
             '[[cases]]\nname = "c"\nsources = { "bank" = { charge = "50 %" } }\n',
             "charge of batteries that state emf (1)",
         ),
-        ('[[points]]\nname = "bank"\nstud = "M8"\n', "points.stud (1)"),
         (
             '[[runs]]\nname = "m"\nfrom = "bank"\nto = "x"\nlength = "1 m"\nresistance = "9 mohm"\njoints = 2\n',
             "joints and protection resistance of runs that state a measured resistance (1)",

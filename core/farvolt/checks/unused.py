@@ -16,7 +16,6 @@ _UNUSED: dict[str, tuple[str, ...]] = {
 _NOT_CHECKED = (
     "far-end fault of protection, let-through, selectivity",
     "the bank's rates of charge and discharge, its days of autonomy, charging when cold",
-    "returns shared by circuits",
 )
 
 
