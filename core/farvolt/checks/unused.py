@@ -14,7 +14,6 @@ _UNUSED: dict[str, tuple[str, ...]] = {
 }
 
 _NOT_CHECKED = (
-    "far-end fault of protection, let-through, selectivity",
     "the bank's rates of charge and discharge, its days of autonomy, charging when cold",
 )
 
@@ -55,9 +54,6 @@ def _conditional(plan: Plan) -> dict[str, int]:
         ),
         "take_off without link": sum("take_off" in one.model_fields_set and one.link is None for one in batteries),
         "recovery without cut_out": sum(one.recovery is not None and one.cut_out is None for one in plan.loads),
-        "rated_volts of loads that draw as they are rated": sum(
-            one.rated_volts is not None and (one.behaves or one.rated_as) == one.rated_as for one in plan.loads
-        ),
         "surge of loads that no case names": sum(
             load.surge is not None and not any(load.name in case.surge for case in plan.checked_cases)
             for load in plan.loads
