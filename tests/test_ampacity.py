@@ -1,10 +1,11 @@
 """Ampacity against spot values of each rulebook's published tables, and the rules around them."""
 
 import math
+import re
 
 import pytest
 
-from farvolt.ampacity import Ampacity, ampacity, conductor_temperature_degC
+from farvolt.ampacity import Ampacity, ampacity, at_current, conductor_temperature_degC
 from farvolt.conductors import parse_size
 from farvolt.rulebook import load
 
@@ -123,9 +124,7 @@ def test_insulation_of_60_degc_is_not_for_engine_spaces() -> None:
         ("leisure-vehicle-eu", 70, 60, 0.50),
     ],
 )
-def test_listed_ambient_factors(
-    book: str, insulation_degC: float, ambient_degC: float, factor: float
-) -> None:
+def test_listed_ambient_factors(book: str, insulation_degC: float, ambient_degC: float, factor: float) -> None:
     assert allowed(book, "10 AWG", insulation_degC, ambient_degC=ambient_degC).ambient_factor == factor
 
 
@@ -254,8 +253,7 @@ def test_the_working_can_be_redone_with_a_calculator() -> None:
         "engine space (50 degC), 105 degC insulation: x 0.86 (ISO 10133:2012 Annex A, provisional)",
         "ambient 60 degC: x sqrt((105 - 60) / (105 - 50)) = x 0.9045 "
         "(common practice, on top of the engine-space factor)",
-        "4 conductors laid together: x 0.70 "
-        "(ISO 13297 Annex A, bundles of more than three conductors, provisional)",
+        "4 conductors laid together: x 0.70 (ISO 13297 Annex A, bundles of more than three conductors, provisional)",
         "= 60 x 0.86 x 0.9045 x 0.7 = 32.67 A",
     )
     assert found.amps == pytest.approx(60 * 0.86 * math.sqrt(45 / 55) * 0.7)
@@ -275,3 +273,34 @@ def test_conductor_temperature_rises_with_the_square_of_the_current() -> None:
     assert conductor_temperature_degC(-30, 60, 30, 105) == pytest.approx(30 + 75 / 4)
     assert conductor_temperature_degC(0, 0, 110, 105) == 110
     assert conductor_temperature_degC(1, 0, 110, 105) == math.inf
+
+
+@pytest.mark.parametrize(
+    ("current_A", "degC", "mohm"),
+    [
+        (0.0, 30.0, 3.30 * (1 + 0.00393 * 10)),
+        (35.0, 48.75, 3.30 * (1 + 0.00393 * 28.75)),
+        (70.0, 105.0, 3.30 * (1 + 0.00393 * 85)),
+    ],
+)
+def test_resistance_at_the_current_goes_with_the_temperature_it_causes(
+    current_A: float, degC: float, mohm: float
+) -> None:  # fmt: skip
+    """Of 6 mm2, class 5: 3.30 mohm/m at 20 degC (IEC 60228 Table 3), 0.00393 per kelvin (IEC 60028).
+
+    At half the ampacity a quarter of the rise: 30 + 75 / 4 = 48.75 degC.
+    """
+    size = parse_size("6 mm2")
+    found = Ampacity(70.0, (), "", False, "", 70.0, size, 105.0)
+    line = at_current(found, current_A, 30.0, size, "copper", "flexible")
+    told = re.search(r" = ([\d.]+) degC, ([\d.]+) mohm/m$", line)
+    assert told is not None
+    assert float(told[1]) == pytest.approx(degC, rel=5e-3)
+    assert float(told[2]) == pytest.approx(mohm, rel=5e-3)
+
+
+def test_a_conductor_without_ampacity_has_no_temperature_to_tell() -> None:
+    size = parse_size("6 mm2")
+    for amps in (None, 0.0):
+        found = Ampacity(amps, (), "", False, "", 70.0, size, 105.0)
+        assert at_current(found, 10.0, 30.0, size, "copper", "flexible") == ""

@@ -61,6 +61,41 @@ def test_every_factor_is_in_the_working() -> None:
     assert findings(loaded("30.6 A", zone="engine", bundled=6), "conductor.ampacity") == []
 
 
+def test_where_it_lies_and_how_warm_it_gets_is_in_the_working() -> None:
+    """60 + (105 - 60) x (55 A / Iz)^2 with Iz = 60 A x sqrt((105 - 60) / (105 - 30)) = 46.48 A: 123.0 degC.
+
+    Copper of 5.261 mm2 (10 AWG, ASTM B258) there: 17.241 / 5.261 x (1 + 0.00393 x 103.0) = 4.604 mohm/m by IEC 60028,
+    and the lay of the strand on top.
+    """
+    working = only(loaded("55 A", zone="hot"), "conductor.ampacity", "feed").working
+    assert working[0] == 'Ambient 60 degC, that of the zone "hot"; 2 conductors laid together, its own'
+    assert "At 55 A the conductor reaches about 60 + (105 - 60) x (55 / 46.48)^2 = 123 degC, " in working[-1]
+    mohm = float(working[-1].removesuffix(" mohm/m").split(", ")[-1])
+    assert 1.0 <= mohm / (17.241 / 5.261 * (1 + 0.00393 * 103.0)) < 1.05
+
+
+@pytest.mark.parametrize(
+    ("more", "told"),
+    [
+        ({"route": "loom"}, '6 conductors laid together, as stated for the route "loom"'),
+        ({"bundled": 7}, "7 conductors laid together, as the run states"),
+        ({}, "2 conductors laid together, its own"),
+    ],
+)
+def test_what_is_laid_together_is_told_with_where_it_comes_from(more: dict[str, Any], told: str) -> None:
+    assert told in only(loaded("61 A", **more), "conductor.ampacity", "feed").working[0]
+
+
+def test_conductors_of_a_route_are_counted_run_by_run() -> None:
+    """Two runs of two conductors each in one route without a stated number: four, so E-11's x 0.60."""
+    runs = [cable(name, "bank", name, "2 m", "10 AWG", route="way", protection=fuse("60 A")) for name in ("one", "two")]
+    plan = plan_of(runs, [lamp("one", "one", "40 A"), lamp("two", "two", "30 A")], rulebook="small-craft-us",
+                   tables={"routes": {"way": {}}}, cases=[{"name": "on"}])  # fmt: skip
+    found = only(plan, "conductor.ampacity", "one")
+    assert '4 conductors laid together, all that pass the route "way"' in found.working[0]
+    assert found.limit == pytest.approx(36)
+
+
 def test_nec_table_and_its_ambient_factor() -> None:
     """NEC Table 310.16: 12 AWG copper, 75 degC: 25 A; Table 310.15(B)(1): x 0.58 at 56 to 60 degC: 14.5 A."""
     found = only(loaded("15 A", "12 AWG", "cabin-nec", zone="hot"), "conductor.ampacity", "feed")

@@ -9,7 +9,7 @@ import math
 from dataclasses import dataclass, field
 from functools import lru_cache
 
-from farvolt.conductors import Size
+from farvolt.conductors import Size, resistance_ohm_per_m
 from farvolt.rulebook import AmbientCorrection, AmpacityTable, Basis, Bundling, Cell, EngineSpace, Rulebook
 from farvolt.units import number
 
@@ -115,6 +115,26 @@ def conductor_temperature_degC(
     if ampacity_A <= 0:
         return math.inf
     return ambient_degC + (insulation_degC - ambient_degC) * (current_A / ampacity_A) ** 2
+
+
+def at_current(
+    found: Ampacity, current_A: float, ambient_degC: float, size: Size, material: str, strand: str
+) -> str:  # fmt: skip
+    """What a conductor reaches at a current, and its resistance then, as a line of working; empty with no ampacity.
+
+    `current_A` is that of all conductors in parallel, as is the ampacity; the resistance is that of one of them.
+    """
+    if not found.amps or found.column_degC is None:
+        return ""
+    degC = conductor_temperature_degC(current_A, found.amps, ambient_degC, found.column_degC)
+    mohm = 1000 * resistance_ohm_per_m(size, material, strand, degC)
+    ambient, rated = number(ambient_degC), number(found.column_degC)
+    rise = f"({rated} - {ambient}) x ({number(current_A, 4)} / {number(found.amps, 4)})^2"
+    one = " each" if found.parallel > 1 else ""
+    return (
+        f"At {number(current_A, 4)} A the conductor reaches about {ambient} + {rise} = {number(degC)} degC, "
+        f"{number(mohm)} mohm/m{one}"
+    )
 
 
 def _table_figure(

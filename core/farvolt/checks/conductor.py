@@ -4,14 +4,14 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from farvolt.ampacity import Ampacity
+from farvolt.ampacity import Ampacity, at_current
 from farvolt.checks.registry import apart, cannot_be_made, check, run_finding
 from farvolt.conductors import Size
 from farvolt.context import CaseStudy, Context, basis_text, label, larger_sizes
-from farvolt.network import Floats
+from farvolt.network import Floats, return_size, strand
 from farvolt.plan import CHASSIS, Run
 from farvolt.results import Finding
-from farvolt.temperatures import run_ampacity
+from farvolt.temperatures import run_ambient_degC, run_ampacity
 from farvolt.units import number
 
 _TRIALS = 20
@@ -70,9 +70,34 @@ def _over(context: Context, index: int, worst: int, over: list[int], currents: F
     return run_finding(
         "conductor.ampacity", "fail", entry, amps, found.amps, "A",
         f"{label(entry)} carries {apart(amps, found.amps)} A; {number(found.amps)} A is its ampacity where it lies",
-        found.basis, (*found.working, f"{apart(amps, found.amps, 4)} A > {number(found.amps, 4)} A"),
+        found.basis,
+        (_place(context, entry, one), *found.working, f"{apart(amps, found.amps, 4)} A > {number(found.amps, 4)} A",
+         _warmth(context, entry, found, amps, one)),
         carries or "several cables in parallel, cables laid apart or in a cooler place, or less load", one.name,
     )  # fmt: skip
+
+
+def _place(context: Context, run: Run, one: CaseStudy) -> str:
+    """Where a run lies and what lies with it: what ambient and bundling are taken from."""
+    plan, count = context.plan, context.together[run.name]
+    zone, route = plan.zone_of(run), plan.routes[run.route] if run.route is not None else None
+    degC = f"{number(run_ambient_degC(plan, run, one.case))} degC"
+    stated = "of the case" if one.case.ambient is not None else f'of the zone "{zone}"' if zone else "of the plan"
+    if run.bundled is not None:
+        why = "as the run states"
+    elif route is not None:
+        why = f'{"as stated for" if route.conductors is not None else "all that pass"} the route "{run.route}"'
+    else:
+        why = "its own"
+    return f"Ambient {degC}, that {stated}; {count} conductor{'s' if count != 1 else ''} laid together, {why}"
+
+
+def _warmth(context: Context, run: Run, found: Ampacity, amps: float, one: CaseStudy) -> str:
+    """What the thinner of a run's conductors reaches at its current."""
+    sizes = [size for size in (run.size, return_size(run)) if size is not None]
+    size = min(sizes, key=lambda each: each.area_mm2)
+    ambient = run_ambient_degC(context.plan, run, one.case)
+    return at_current(found, amps, ambient, size, run.material, strand(run, context.rulebook))
 
 
 def _large_enough(context: Context, index: int, over: list[int], currents: Floats, exact: bool) -> Size | None:
@@ -132,9 +157,9 @@ def material(context: Context) -> Iterator[Finding]:
             yield cannot_be_made(context, "conductor.material", "refused", "which materials and strands are refused")
         return
     for run in context.plan.runs:
-        strand = run.strand or context.rulebook.default_strand
+        made = strand(run, context.rulebook)
         refused = [str(run.material)] * (run.material in rule.materials)
-        refused += [f"{strand} conductors"] * (strand in rule.strands)
+        refused += [f"{made} conductors"] * (made in rule.strands)
         if refused:
             yield run_finding(
                 "conductor.material", "fail", run, None, None, None,
