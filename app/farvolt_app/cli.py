@@ -150,6 +150,35 @@ def drop(plan: str, load: str, case_name: str | None) -> None:
 
 @main.command()
 @click.argument("plan")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object for machines.")
+@click.option("--case", "case_name", help="Name of the case; all cases unless given.")
+@click.option("--load", help="Load to show what matters most to; the one that may come lowest unless given.")
+@click.option(
+    "--samples", type=click.IntRange(1, 100_000), help="Samples where nothing is proven; 10000, fewer for a large plan."
+)
+@click.option("--seed", type=click.IntRange(0, 2**32 - 1), default=0, show_default=True, help="Start of the samples.")
+def tolerances(
+    plan: str, as_json: bool, case_name: str | None, load: str | None, samples: int | None, seed: int
+) -> None:
+    """Show how low and how high the voltage at each load of PLAN may come within its [tolerances].
+
+    Guaranteed where that is proven, else of samples, with what these can claim; then which tolerance matters most.
+    """
+    from farvolt_app import tolerances_text
+
+    read = _read(plan)
+    with _placed(read, plan), _progress("Solving the ends of the tolerances and samples between them"):
+        from farvolt.study import prepared
+
+        answer = tolerances_text.Answer(prepared(read.plan, read.folder), case_name, load, samples, seed)
+    if as_json:
+        _print_whole(json.dumps(tolerances_text.as_object(answer), ensure_ascii=False, allow_nan=False) + "\n")
+    else:
+        tolerances_text.show(answer)
+
+
+@main.command()
+@click.argument("plan")
 @click.option("--output", "-o", required=True, help="File to write: .xlsx or .csv; - writes CSV to standard output.")
 def schedule(plan: str, output: str) -> None:
     """Write the cable schedule of PLAN: cables, loads, protection, shopping totals, findings.
@@ -216,6 +245,18 @@ def list_examples(name: str | None, output: str | None) -> None:
     path = Path(output or f"{name}.toml")
     planfile.save(path, text, expected=None)
     click.echo(f"Wrote {path}. Next: farvolt check {path}", err=True)
+
+
+@main.command("cases")
+@click.argument("plan")
+def standard_cases(plan: str) -> None:
+    """Print the standard set of cases for PLAN, as text to put into its file.
+
+    A plan that states no cases is checked in these; put them in to change them, and add hours of your own.
+    """
+    from farvolt_app import case_grid, edits
+
+    _print_whole(edits.apply("", case_grid.standard(_read(plan).plan)).lstrip("\n"))
 
 
 @main.command()

@@ -25,6 +25,8 @@ FIRST_STEP = 1 / 16
 
 _ITERATIONS = 30
 
+_HAIR_V = 1e-8
+
 _CHUNK = 500
 """Variants at a time: their arrays then stay in the processor's cache."""
 
@@ -188,8 +190,15 @@ class _Batch:
             condition = replace(condition, power=self._array_power(variants), arrays=())
         equations = Equations(network, condition, np.empty(0), replace(supply, grounds=tuple(each.tolist())))
         start, held = self._newton(equations, self._first_guess(variants), count, 0.0)
-        volts, ended = way(equations, start, count)
+        volts, ended = way(equations, self._inside(start, count), count)
         self._accept(equations, volts, held & ended, rows, found)
+
+    def _inside(self, volts: Floats, count: int) -> Floats:
+        """A hair below: a source that idles at its very own voltage then conducts, and Newton sees its slope."""
+        lower = volts.reshape(count, -1).copy()
+        for nodes, _ in self.feeds:
+            lower[:, nodes] -= _HAIR_V
+        return lower.ravel()
 
     def fall(self, equations: Equations, volts: Floats, count: int) -> tuple[Floats, np.ndarray]:
         """From the unloaded network down in one go, as `solve.solve` tries first."""
