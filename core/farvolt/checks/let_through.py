@@ -60,6 +60,8 @@ def near_faults(context: Context) -> Iterator[NearFault]:
             continue
         for way in ways:
             guard = way.guard
+            if limited_A(context, way.source) is not None:
+                continue  # its own limit is what the cable has to carry
             if guard is None or (key := (guard.run, guard.protection.end, index)) in seen:
                 continue
             seen.add(key)
