@@ -37,8 +37,9 @@ def test_the_finding_says_what_and_how_and_what_to_buy() -> None:
     assert found.message == (
         '"feed": its 20 A blade interrupts 1000 A at 12 V; a bolted short drives 2000 A through it'
     )
-    assert found.working[0].startswith('"bank": 12.8 V (stated in the plan) behind 6.4 mohm')
-    assert "12.8 V / (6.4) mohm = 2000 A" in found.working
+    assert found.working[0] == 'Short at the 20 A blade of "feed" near "bank"'
+    assert found.working[1].startswith('"bank": 12.8 V (stated in the plan) behind 6.4 mohm')
+    assert "12.8 V / 6.4 mohm = 2000 A" in found.working
     assert found.working[-1] == "2000 A > 1000 A at 12 V"
     assert any("an arc or a loose joint draws less" in line for line in found.working)
     assert found.remedy is not None

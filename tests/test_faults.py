@@ -276,7 +276,8 @@ def test_a_switch_that_a_case_opens_may_send_more_through_a_device() -> None:
     both = plan_of(runs, [lamp("lamp", "lamp")], sources=sources, devices=devices, cases=cases[:1])
     one = plan_of(runs, [lamp("lamp", "lamp")], sources=sources, devices=devices, cases=cases)
     assert lowest(one, "a way").fault.amps == pytest.approx(lowest(both, "a way").fault.amps)
-    assert faults(one).points == faults(both).points
+    amps = {name: fault.amps for name, fault in faults(both).points.items()}
+    assert {name: fault.amps for name, fault in faults(one).points.items()} == pytest.approx(amps)
 
 
 def test_a_device_itself_is_a_link_but_stated_resistance_before_it_counts() -> None:
@@ -292,3 +293,23 @@ def test_a_device_itself_is_a_link_but_stated_resistance_before_it_counts() -> N
     assert found.devices[1, 0].working[-1] == "12.8 V / (1 + 3.82 cable + 0.5 joints and contacts) mohm = 2406 A"
     branch = 8 * CLASS_5_OHM_PER_KM["4 mm2"] / 1000
     assert found.points["lamp"].amps == pytest.approx(12.8 / (4.5e-3 + feeder + branch), rel=1e-9)
+
+
+def test_a_short_further_on_counts_where_its_way_back_is_better() -> None:
+    """Beside the fuse the way back is 10 m of 1.5 mm2; a metre on, a thick return of its own leads home."""
+    runs = [
+        cable("feed", "bank", "near", "1 m", "16 mm2", carries="feed", protection=fuse("60 A", "0 m", "strip")),
+        cable("thin back", "near", "bank", "10 m", "1.5 mm2", carries="return"),
+        cable("onward", "near", "far", "1 m", "16 mm2", carries="feed"),
+        cable("thick back", "far", "bank", "2 m", "16 mm2", carries="return"),
+    ]
+    found = faults(plan_of(runs, [lamp("lamp", "far")]))
+    ohm = 4 * CLASS_5_OHM_PER_KM["16 mm2"] / 1000
+    beyond = 12.8 / (1e-3 + ohm)
+    assert found.points["far"].amps == pytest.approx(beyond, rel=1e-6)
+    # The device's own point of reference is the return at its end, the bank's: right beside it nothing limits it.
+    assert found.devices[0, 0].amps == pytest.approx(12800, rel=1e-9)
+    away = [runs[0] | {"protection": [], "protection_to": fuse("60 A", "0 m", "strip")}, *runs[1:]]
+    moved = faults(plan_of(away, [lamp("lamp", "far")])).devices[0, 0]
+    assert moved.amps == pytest.approx(beyond, rel=1e-6)
+    assert moved.place == 'at "far"'

@@ -43,6 +43,17 @@ class FaultNetwork:
         keys = zip(self.run[cables].tolist(), self.pole[cables].tolist(), strict=True)
         self._branches = dict(zip(keys, cables.tolist(), strict=True))
 
+    @property
+    def guarded(self) -> list[tuple[tuple[int, int], int]]:
+        """Every protection as (run, place among its protections), with the conductor that it sits in."""
+        found = []
+        for index, run in enumerate(self.network.plan.runs):
+            for number, one in enumerate(run.protections):
+                branch = self._branches.get((index, FEED if one.pole == "feed" else RETURN))
+                if branch is not None:
+                    found.append(((index, number), branch))
+        return found
+
     def point(self, name: str) -> Place:
         """A short between the feed and the return of a point."""
         return Place(Spot(self.network.feed(name)), Spot(self.network.ret(name)))

@@ -1,8 +1,8 @@
 """What each source gives into a fault: at the most it could be, and at the least.
 
-Most: a new battery, full and warm; a limited source at its limit. Least: an aged battery, cold and at low charge. A
-battery's electronics that open are no protection and are left out of account. Motors that run back into a fault are
-not counted, nor what a capacitor gives in the first instant.
+Most: a new battery, full and warm, none that takes current from the fault; a limited source at its limit. Least: an
+aged battery, cold and at low charge. A battery's electronics that open are no protection and are left out of account.
+Motors that run back into a fault are not counted, nor what a capacitor gives in the first instant.
 """
 
 from collections.abc import Iterator, Sequence
@@ -102,7 +102,7 @@ def _battery(network: Network, index: int, battery: Battery, nominal_V: float, e
     for a, b in places or [(network.feed(battery.at), network.ret(battery.at))]:
         estimated = string.resistance_is_estimated
         yield FaultSource(
-            index, battery.name, a, b, string.emf_V, ohm, float("inf"), False, estimated, text
+            index, battery.name, a, b, string.emf_V, ohm, float("inf"), end == "highest", estimated, text
         )  # fmt: skip
 
 

@@ -52,7 +52,7 @@ def working(net: FaultNetwork, found: Shorted, amps: float) -> tuple[str, ...]:
 def _one_way(net: FaultNetwork, found: Shorted, port: int, amps: float) -> str | None:
     """The sum along the only way, where it gives the current; None in a mesh, and with a diode or a limit on it."""
     source, total = net.sources[port], abs(found.amps)
-    if source.one_way or abs(amps - total) > _SAME * total:
+    if np.isfinite(source.limit_A) or abs(amps - total) > _SAME * total:
         return None
     carried = _carried(net, found)
     whole = np.abs(carried - 1) < _SAME
@@ -64,7 +64,8 @@ def _one_way(net: FaultNetwork, found: Shorted, port: int, amps: float) -> str |
         return None
     terms = [(source.ohm, ""), (cable, " cable"), (fixed, " joints and contacts")]
     shown = " + ".join(f"{number(1000 * ohm, 4)}{what}" for ohm, what in terms if ohm > 0)
-    return f"{number(source.volts, 4)} V / ({shown}) mohm = {number(total, 4)} A"
+    summed = f"({shown})" if cable or fixed else shown
+    return f"{number(source.volts, 4)} V / {summed} mohm = {number(total, 4)} A"
 
 
 def _carried(net: FaultNetwork, found: Shorted) -> Floats:

@@ -12,6 +12,8 @@ from dataclasses import dataclass
 from functools import cached_property
 from typing import TypeVar
 
+import numpy as np
+
 from farvolt import fault_working
 from farvolt.fault_network import TRACE_A, FaultNetwork, coldest, hottest
 from farvolt.network import FEED, RETURN, Network
@@ -75,7 +77,8 @@ class Faults:
     def devices(self) -> dict[tuple[int, int], Fault]:
         """The highest current that each protection may have to interrupt, by (run, place among its protections).
 
-        The short is at the device, on either side of it: a device has to interrupt what comes from the other one.
+        The short is at the device, on either side of it: a device has to interrupt what comes from the other one. Or
+        it is at a point, where that drives more through it: as where the way back from there is a better one.
         """
         best: dict[tuple[int, int], Fault] = {}
         for net in self._highest:
@@ -84,7 +87,22 @@ class Faults:
                 near, _ = net.parts_A(found, found.place.feed if pole == FEED else found.place.back)
                 words = fault_working.at_device(self._network.plan.runs[key[0]], key[1])
                 _keep_larger(best, key, net, found, abs(near), words)
+            self._at_points(net, best)
         return best
+
+    def _at_points(self, net: FaultNetwork, best: dict[tuple[int, int], Fault]) -> None:
+        """Put in the shorts at points that drive more through a device than one beside it."""
+        names, guards = self._network.plan.point_names, net.guarded
+        branches = np.array([branch for _, branch in guards], dtype=np.int64)
+        most, where = np.array([best[key].amps if key in best else 0.0 for key, _ in guards]), np.full(len(guards), -1)
+        for place, found in enumerate(net.circuit.shorted([net.point(name) for name in names])):
+            amps = np.abs(found.branch_A[branches])
+            higher = amps > most * (1 + 1e-9)
+            most, where = np.where(higher, amps, most), np.where(higher, place, where)
+        places = np.unique(where[where >= 0]).tolist()
+        for place, found in zip(places, net.circuit.shorted([net.point(names[one]) for one in places]), strict=True):
+            for number in np.flatnonzero(where == place):
+                _keep_larger(best, guards[number][0], net, found, float(most[number]), f'at "{names[place]}"')
 
     def _at_devices(self, net: FaultNetwork) -> Iterator[tuple[tuple[int, int], int, Place]]:
         """Every protection and its pole, with each of the shorts that may be the worst for it: what comes from the

@@ -112,7 +112,7 @@ def _failing(context: Context, device: _Device) -> Finding:
         basis = basis_text(rule.basis)
     else:
         asks, basis = f"a bolted short drives {shown} A through it", _basis(device.one)
-        working = (*working, SCOPE)
+        working = (f"Short {device.fault.place}", *working, SCOPE)
     doubt = " The battery's resistance is an estimate: it may be more or less." if device.fault.estimated else ""
     return run_finding(
         RULE, "fail", device.run, needed, rating, "A",
