@@ -58,7 +58,7 @@ class Band:
         at = bisect_left(self.least, times * (1 - _SAME), key=_times)
         if at == 0:
             first, first_s = self.least[0] if self.least else (math.inf, 0.0)
-            return math.inf if times < 1 or (times <= 1 and first > 1) else first_s
+            return math.inf if times < 1 or (times <= 1 + _SAME and first > 1) else first_s
         low, low_s = self.least[at - 1]
         if at == len(self.least):
             return low_s * (low / times) ** 2

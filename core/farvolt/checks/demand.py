@@ -6,10 +6,14 @@ import numpy as np
 
 from farvolt.context import Context
 from farvolt.network import FEED, RETURN, Floats
+from farvolt.solution import Solution
 
 
 class Demands:
-    """Currents to be carried over (pole, case, run), and their continuous part, with hot conductors."""
+    """Lasting currents over (pole, case, run), and their continuous part, with hot conductors.
+
+    A case with a start counts as after it: what a start asks of protection is a question of time.
+    """
 
     def __init__(self, context: Context) -> None:
         self._context = context
@@ -17,10 +21,17 @@ class Demands:
         self.factor = rule.factor if rule else 1.0
 
     @cached_property
+    def _solutions(self) -> list[Solution]:
+        found = []
+        for one in self._context.cases:
+            after = one.case.model_copy(update={"surge": ()})
+            found.append(self._context.solve_case(after, "hot") if one.case.surge else one.solutions["hot"])
+        return found
+
+    @cached_property
     def amps(self) -> Floats:
         """Current in A; 0 in a case that gives way."""
-        solutions = [one.solutions["hot"] for one in self._context.cases]
-        found = [[one.run_amps(pole) * one.state.solved for one in solutions] for pole in (FEED, RETURN)]
+        found = [[one.run_amps(pole) * one.state.solved for one in self._solutions] for pole in (FEED, RETURN)]
         amps: Floats = np.nan_to_num(np.abs(np.array(found)))
         return amps
 
@@ -28,18 +39,19 @@ class Demands:
     def continuous(self) -> Floats:
         """The part of it that goes to continuous loads: as their share in all loads beyond."""
         shares = []
-        for one in self._context.cases:
-            every, lasting = one.solutions["hot"].feed_demand
+        for one in self._solutions:
+            every, lasting = one.feed_demand
             shares.append(np.divide(lasting, every, out=np.zeros_like(every), where=every > 0))
         found: Floats = self.amps * np.array(shares)
         return found
 
     @cached_property
-    def _counted(self) -> Floats:
+    def counted(self) -> Floats:
+        """Current to be counted in A: continuous loads raised as the rulebook asks."""
         return self.amps if self.factor == 1 else self.amps + (self.factor - 1) * self.continuous
 
     def worst(self, run: int, pole: int) -> tuple[float, int]:
         """The largest current to be counted for one pole of a run, and its case."""
-        counted = self._counted[pole, :, run]
+        counted = self.counted[pole, :, run]
         case = int(np.argmax(counted))
         return float(counted[case]), case

@@ -1,8 +1,11 @@
 """The rating of each protection against the current it carries."""
 
-from collections.abc import Iterator
+import operator
+from collections.abc import Callable, Iterator
+from functools import partial
 
 from farvolt.checks.demand import Demands
+from farvolt.checks.derating import ambient_degC, carried_share, derated
 from farvolt.checks.rating import limit_for, size_for_rating
 from farvolt.checks.registry import apart, cannot_be_made, check, run_finding
 from farvolt.checks.ways import PRACTICE, ampacity_A, exempt
@@ -19,13 +22,39 @@ def under_load(context: Context) -> Iterator[Finding]:
     if context.rulebook.protection.continuous is None and any(load.continuous for load in context.plan.loads):
         what = "a factor on continuous loads; they are counted once"
         yield cannot_be_made(context, "protection.under-load", "continuous", what)
-    demands, behind = Demands(context), _behind(context)
+    demands, behind = Demands(context), protected_by(context)
     for index, run in enumerate(context.plan.runs):
         for one in run.protections:
-            demand, case = demands.worst(index, FEED if one.pole == "feed" else RETURN)
+            pole = FEED if one.pole == "feed" else RETURN
+            demand, case = demands.worst(index, pole)
+            shares = [carried_share(context.plan, run, one, each.case) for each in context.cases]
+            asked = [float(demands.counted[pole, each, index]) / share for each, share in enumerate(shares)]
+            warmest = max(range(len(asked)), key=lambda each: asked[each])
+            if asked[warmest] <= one.rating.si * (1 + 1e-9):
+                continue
+            what = f"{number(asked[warmest])} A"
+            remedy = rating_for(context, behind[id(one)], one, what, partial(operator.le, asked[warmest]))
             if demand > one.rating.si * (1 + 1e-9):
-                remedy = _rating_for(context, behind[id(one)], one, demand)
                 yield _under(context, index, one, (demand, case), demands, remedy)
+            else:
+                yield _derated(context, index, one, (asked[warmest] * shares[warmest], warmest), remedy)
+
+
+def _derated(context: Context, index: int, one: Protection, worst: tuple[float, int], remedy: str) -> Finding:
+    """A protection that carries its load in the cool, but not where it sits."""
+    run, (demand, case), kind = context.plan.runs[index], worst, one.kind
+    found = context.cases[case]
+    left = one.rating.si * carried_share(context.plan, run, one, found.case)
+    warm = number(ambient_degC(context.plan, run, one, found.case))
+    unsure = "" if kind.own else " (provisional)"
+    return run_finding(
+        "protection.under-load", "fail" if kind.own else "warn", run, demand, left, "A",
+        f"{label(run)}: at {warm} degC its {one.rating} {one.type} carries {number(left)} A; it is to carry "
+        f"{apart(demand, left)} A",
+        f"{PRACTICE}: a protection carries its load without opening, wherever it sits; {kind.times_basis}{unsure}",
+        (derated(context.plan, run, one, found.case), f"{apart(demand, left, 4)} A > {number(left, 4)} A"),
+        f"{remedy}; or the protection in a cooler place", found.name,
+    )  # fmt: skip
 
 
 def _under(
@@ -51,11 +80,11 @@ def _under(
     )  # fmt: skip
 
 
-def _rating_for(context: Context, behind: list[int], one: Protection, demand: float) -> str:
-    """A rating that carries the load and that every cable behind it allows; else what stands in the way."""
-    rating = min((each for each in one.kind.ratings_A if each >= demand), default=None)
+def rating_for(context: Context, behind: list[int], one: Protection, what: str, fits: Callable[[float], bool]) -> str:
+    """The lowest rating that `fits` and that every cable behind it allows; else what stands in the way."""
+    rating = min(filter(fits, one.kind.ratings_A), default=None)
     if rating is None:
-        return f"no {one.type} is made for {number(demand)} A: another type of protection, or the load on two circuits"
+        return f"no {one.type} is made for {what}: another type of protection, or the load on two circuits"
     for index in behind:
         run, amps = context.plan.runs[index], ampacity_A(context, index)
         if not exempt(context, run) and (amps is None or limit_for(context, run, amps).amps < rating):
@@ -65,7 +94,7 @@ def _rating_for(context: Context, behind: list[int], one: Protection, demand: fl
     return f"a rating of {number(rating)} A, which the cable may carry"
 
 
-def _behind(context: Context) -> dict[int, list[int]]:
+def protected_by(context: Context) -> dict[int, list[int]]:
     """By the identity of a protection, the runs it protects: up to the next protection, returns included."""
     found: dict[int, dict[int, None]] = {}
     for index, run in enumerate(context.plan.runs):

@@ -42,6 +42,8 @@ def _conditional(plan: Plan) -> dict[str, int]:
     """Fields that mean nothing beside what else their entry states, and how often that is so."""
     batteries = [source for source in plan.sources if isinstance(source, Battery)]
     fixed = {battery.name for battery in batteries if battery.emf is not None}
+    placed = {battery.at for battery in batteries}
+    placed |= {run.from_point if one.end == "from" else run.to_point for run in plan.runs for one in run.protections}
     states = [(name, state) for case in plan.cases for name, state in case.sources.items()]
     return {
         "charge of batteries that state emf": sum(
@@ -54,12 +56,12 @@ def _conditional(plan: Plan) -> dict[str, int]:
         ),
         "take_off without link": sum("take_off" in one.model_fields_set and one.link is None for one in batteries),
         "recovery without cut_out": sum(one.recovery is not None and one.cut_out is None for one in plan.loads),
-        "surge of loads that no case names": sum(
+        "surge of loads that no case names, for volts and drop": sum(
             load.surge is not None and not any(load.name in case.surge for case in plan.checked_cases)
             for load in plan.loads
         ),
-        "zones of points without a battery": sum(
-            point.zone is not None and all(point.name != battery.at for battery in batteries) for point in plan.points
+        "zones of points without battery or protection": sum(
+            point.zone is not None and point.name not in placed for point in plan.points
         ),
         "max_input of solar without array": sum(
             isinstance(one, Solar) and one.max_input is not None and one.array is None for one in plan.sources
