@@ -102,6 +102,7 @@ FAULTS = [
     (None, TYPE.replace('times = 6, not_before = "0.1 s", within = "1 s"', "times = 6"), "band.entry 2", "nothing", ""),
     (None, TYPE.replace('within = "1 s"', "within = 1"), "band.entry 2.within", "a bare number", '"1 s"'),
     (None, TYPE.replace('within = "1 s"', 'withn = "1 s"'), "band.entry 2.withn", "no such field", '"within"'),
+    (None, TYPE.replace('not_before = "0.1 s", within = "1 s"', 'within = "0 s"'), "band.entry 2", "no time", ""),
     (None, TYPE.replace("drop", "dropp"), "dropp", "no such field", '"drop"'),
 ]
 

@@ -68,6 +68,8 @@ class OpeningTime(Entry):
             raise refusal("a device carries up to 1 times its rating", "times from 1, such as 1.35")
         if self.within is None and self.not_before is None:
             raise refusal("says nothing of the time", 'within = "600 s", not_before = "0.75 s", or both')
+        if self.within is not None and self.within.si == 0:
+            raise refusal("nothing opens within no time", 'within above zero, such as "20 ms"')
         return self
 
     @property

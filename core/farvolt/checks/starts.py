@@ -78,16 +78,25 @@ def starts(context: Context) -> Iterator[Finding]:
 def _starts(context: Context) -> Iterator[_Start]:
     """Every start that a case asks for, and of small plans that of each load alone in every case it is on in."""
     surging = [load for load in context.plan.loads if load.surge is not None]
-    asked = [one.case for one in context.cases if one.case.surge]
+    solved = [(one.case, one.solutions["hot"]) for one in context.cases if one.case.surge]
     if context.remedies_are_exact:
-        for one in context.cases:
-            alone = [load.name for load in surging if one.case.share(load.name) > 0]
-            asked += [one.case.model_copy(update={"surge": (name,)}) for name in alone if not one.case.surge]
-    for case in asked:
-        solution = context.solve_case(case, "hot")
+        known = [_unnamed(case) for case, _ in solved]
+        for one in (each.case for each in context.cases if not each.case.surge):
+            alone = [_with_start(one, load) for load in surging if one.share(load.name) > 0]
+            solved += [(case, context.solve_case(case, "hot")) for case in alone if _unnamed(case) not in known]
+    for case, solution in solved:
         if solution.state.solved:
             loads = tuple(load for load in surging if load.name in case.surge)
             yield _Start(case, loads, (abs(solution.run_amps(FEED)), abs(solution.run_amps(RETURN))))
+
+
+def _with_start(case: Case, load: Load) -> Case:
+    return case.model_copy(update={"surge": (load.name,)})
+
+
+def _unnamed(case: Case) -> Case:
+    """The case for comparison: two of other names may ask for the same."""
+    return case.model_copy(update={"name": "", "notes": ""})
 
 
 def _not_tried(context: Context) -> Iterator[Finding]:
