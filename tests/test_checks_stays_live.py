@@ -9,7 +9,7 @@ from farvolt import planfile
 from farvolt.checks.stays_live import OPENS, stays_live
 from farvolt.fed import fed
 from farvolt.operating import operating
-from farvolt.plan import Plan
+from farvolt.plan import Case, Plan
 from strategies import Draft, Wishes, drafts, text_of
 from wiring import bank, cable, charger, context_of, findings, lamp, only, plan_of
 
@@ -150,13 +150,13 @@ def test_an_array_s_own_isolator() -> None:
 @given(drafts(Wishes(devices=1.0, open_devices=0.3)))
 def test_both_ends_stay_live_where_a_device_is_named(draft: Draft) -> None:
     """Compared with the graph search that precedes every solution, with that device open and all others as planned."""
-    draft["cases"] = []
+    draft["cases"] = [{"name": "as planned"}]
     context = context_of(planfile.parse(text_of(draft)))
     plan, net = context.plan, context.network
     named = {one.subject for one in stays_live(context)}
     for device in plan.devices:
         if device.kind in OPENS and device.pole != "return" and device.state == "closed":
-            case = plan.checked_cases[0].model_copy(update={"devices": {device.name: "open"}})
+            case = Case(name="opened", devices={device.name: "open"})
             live = fed(net, operating(net, case)).live
             ends = [bool(live[net.feed(point)]) for point in (device.from_point, device.to_point)]
             assert (device.name in named) == all(ends), device.name

@@ -115,7 +115,7 @@ def test_what_is_not_checked_is_always_said() -> None:
     """A plan that states none of these fields is told all the same."""
     (one,) = told("plan.not-checked-yet")
     assert one.severity == "note"
-    assert "selectivity" in one.message
+    assert one.message.startswith("Not checked by this version: ")
 
 
 @pytest.mark.parametrize(
@@ -136,3 +136,60 @@ def test_a_field_that_means_nothing_here_is_said_to(more: str, said: str) -> Non
     """Read and kept, but never silently."""
     (one,) = told("plan.not-used-yet", more)
     assert said in one.message
+
+
+LOAD = '[[loads]]\nname = "lamp"\nat = "heater"\npower = "10 W"\nrated_volts = "{rated}"\n{more}'
+
+
+@pytest.mark.parametrize(
+    ("rated", "more", "severity"),
+    [
+        ("12 V", "", None),
+        ("24 V", "", "warn"),
+        ("24 V", 'min_volts = "9 V"\n', None),
+        ("6 V", "", "fail"),
+        ("6 V", 'max_volts = "30 V"\n', None),
+        ("6 V", 'max_volts = "11 V"\n', "fail"),
+        ("15 V", "", None),
+        ("15.1 V", "", "warn"),
+        ("8.58 V", "", None),
+        ("8.56 V", "", "fail"),
+    ],
+)
+def test_loads_made_for_another_system(rated: str, more: str, severity: str | None) -> None:
+    """Of the rated voltage, 0.8 to 1.4 times must hold 12 V: 12/0.8 = 15 V and 12/1.4 = 8.571 V are the boundaries."""
+    found = [one for one in told("plan.volts-mismatch", LOAD.format(rated=rated, more=more)) if one.kind == "load"]
+    assert [one.severity for one in found] == ([severity] if severity else [])
+    if severity == "fail":
+        assert "burns or is destroyed" in found[0].message
+
+
+def test_a_source_of_another_system_says_what_joins_it() -> None:
+    """A 24 V bank at the end of the heater's run: the run joins the two systems."""
+    second = (
+        '[[sources]]\nname = "other"\nkind = "battery"\nat = "far"\nnominal = "24 V"\nemf = "25 V"\n'
+        'resistance = "5 mohm"\n[[runs]]\nname = "tie"\nfrom = "heater"\nto = "far"\nlength = "1 m"\nsize = "8 AWG"\n'
+    )
+    (one,) = told("plan.volts-mismatch", second)
+    assert one.message == '"other" stands at 24 V in a system of 12 V, joined to "bank" by "feed", "tie"'
+
+
+def test_a_charger_made_for_another_system_is_named_though_its_volts_fit() -> None:
+    charger = (
+        '[[sources]]\nname = "charger"\nkind = "charger"\nat = "bank"\n'
+        'volts = "14 V"\namps = "10 A"\nnominal = "24 V"\n'
+    )
+    (one,) = told("plan.volts-mismatch", charger)
+    assert one.message == '"charger" is made for 24 V in a system of 12 V, joined to "bank" at "bank"'
+
+
+def test_a_converter_between_two_systems_is_no_mismatch() -> None:
+    """24 V on one side, 12 V on the other; and one whose output is not that of the part it feeds."""
+    row = (
+        '[[sources]]\nname = "drop"\nkind = "converter"\nfrom = "bank"\nat = "low"\nnominal = "12 V"\n'
+        'volts = "{volts}"\namps = "5 A"\nefficiency = "90 %"\n'
+    )
+    high = {"nominal": "24 V", "battery": "25.6 V", "emf": "26 V"}
+    assert told("plan.volts-mismatch", row.format(volts="13 V"), **high) == []
+    (one,) = told("plan.volts-mismatch", row.format(volts="24 V"), **high)
+    assert (one.subject, one.severity, one.limit) == ("drop", "fail", 12.0)

@@ -4,8 +4,8 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from farvolt.checks.joined import listed
 from farvolt.checks.registry import check
-from farvolt.checks.stays_live import listed
 from farvolt.context import CaseStudy, Context
 from farvolt.network import Network
 from farvolt.operating import components

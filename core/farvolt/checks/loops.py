@@ -6,9 +6,9 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
+from farvolt.checks.joined import listed
 from farvolt.checks.registry import check
 from farvolt.checks.rings import ring_numbers
-from farvolt.checks.stays_live import listed
 from farvolt.context import CaseStudy, Context
 from farvolt.network import FEED, LEAST_OHM, Network
 from farvolt.operating import components

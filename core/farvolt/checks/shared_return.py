@@ -5,9 +5,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from farvolt.checks.joined import listed
 from farvolt.checks.registry import check, run_finding
 from farvolt.checks.rings import ring_numbers
-from farvolt.checks.stays_live import listed
 from farvolt.context import CaseStudy, Context, label
 from farvolt.network import FEED, RETURN, Floats, Network
 from farvolt.results import Finding

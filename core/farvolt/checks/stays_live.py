@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
+from farvolt.checks.joined import listed, names_between
 from farvolt.checks.registry import check
 from farvolt.checks.rings import edges_at
 from farvolt.context import Context
@@ -22,7 +23,6 @@ OPENS = ("switch", "selector", "relay")
 """Kinds of device that a person or a control opens."""
 
 _PRACTICE = "common practice: whoever opens a switch takes what lies beyond it for dead"
-_LISTED = 6
 
 
 @dataclass(slots=True)
@@ -193,20 +193,11 @@ def _in_the_return(context: Context, index: int) -> Finding:
 
 def _way_round(network: Network, index: int, pole: int) -> list[str]:
     """What leads from one end of a device to the other without it, in one pole: names, the fewest first."""
-    plan, device = network.plan, network.plan.devices[index]
+    device = network.plan.devices[index]
     start, end = network.nodes[device.from_point, pole], network.nodes[device.to_point, pole]
     if start == end:
         return _passing(network, pole, start)
-    on = (network.pole != (RETURN if pole == FEED else FEED)) & (network.device != index)
-    states = np.array([one.state == "closed" for one in plan.devices] + [True])
-    places = np.flatnonzero(on & states[network.device]).tolist()
-    edges = list(zip(network.a[places].tolist(), network.b[places].tolist(), strict=True))
-    names = [_name(network, place) for place in places]
-    for place, a, b in network.diodes:
-        if place != index and (plan.devices[place].pole == "return") == (pole == RETURN):
-            edges.append((a, b))
-            names.append(plan.devices[place].name)
-    return [names[edge] for edge in _fewest(edges, start, end) if names[edge]]
+    return names_between(network, start, end, pole, without=index)
 
 
 def _passing(network: Network, pole: int, node: int) -> list[str]:
@@ -214,30 +205,6 @@ def _passing(network: Network, pole: int, node: int) -> list[str]:
     other = "return" if pole == FEED else "feed"
     devices = [device for device in network.plan.devices if device.pole == other]
     return [device.name for device in devices if network.nodes[device.from_point, pole] == node]
-
-
-def _name(network: Network, branch: int) -> str:
-    run, device = int(network.run[branch]), int(network.device[branch])
-    if run >= 0:
-        return network.plan.runs[run].name
-    return network.plan.devices[device].name if device >= 0 else "bond"
-
-
-def _fewest(edges: list[tuple[int, int]], start: int, end: int) -> list[int]:
-    """The shortest way from one node to another, as places in `edges`."""
-    at, came = edges_at(edges), {start: (-1, start)}
-    waiting = deque([start])
-    while waiting and end not in came:
-        node = waiting.popleft()
-        for edge, other in at.get(node, ()):
-            if other not in came:
-                came[other] = (edge, node)
-                waiting.append(other)
-    found, node = [], end
-    while node != start and node in came:
-        edge, node = came[node]
-        found.append(edge)
-    return found[::-1]
 
 
 @check("plan.stays-live", title="Loads that no switch, selector or relay cuts off")
@@ -256,12 +223,6 @@ def always_live(context: Context) -> Iterator[Finding]:
             (f"{len(live)} of {len(context.plan.loads)} loads have a way from a battery that nothing opens",),
             "as meant for an alarm or an automatic pump; else feed it from behind the switch",
         )  # fmt: skip
-
-
-def listed(names: list[str]) -> str:
-    """Names in quotes, the first few of many."""
-    shown = ", ".join(f'"{name}"' for name in names[:_LISTED])
-    return shown + (f" and {len(names) - _LISTED} more" if len(names) > _LISTED else "")
 
 
 def _finding(
