@@ -33,6 +33,49 @@ def test_a_load_behind_an_open_switch_is_unfed_in_that_case_alone() -> None:
     assert findings(plan_of(runs, [lamp("pump", "pump")], devices=devices, cases=cases), "plan.unfed") == []
 
 
+@pytest.mark.parametrize(
+    ("device", "why"),
+    [
+        ({"kind": "switch", "state": "open"}, '"d" is open'),
+        ({"kind": "relay", "state": "open", "pole": "both"}, '"d" is open'),
+        ({"kind": "diode", "from": "far", "to": "bank"}, 'the diode "d" lies the other way round'),
+    ],
+)
+def test_an_unfed_load_is_told_what_stops_the_current(device: dict[str, Any], why: str) -> None:
+    device = {"name": "d", "from": "bank", "to": "far", **device}
+    plan = plan_of([cable("feed", "far", "pump")], [lamp("pump", "pump")], devices=[device])
+    found = only(plan, "plan.unfed", "pump")
+    assert found.message.endswith(f"no closed way leads there from a source that is on: {why}")
+
+
+@pytest.mark.parametrize(
+    ("device", "why"),
+    [
+        ({"kind": "switch", "state": "open"}, '"d" is open'),
+        ({"kind": "diode"}, 'the diode "d" lies the other way round'),
+    ],
+)
+def test_a_load_without_a_way_back_is_told_what_stops_it(device: dict[str, Any], why: str) -> None:
+    """A diode in the return conducts from `from` to `to`: here away from the source."""
+    device = {"name": "d", "from": "bank", "to": "far", "pole": "return", **device}
+    plan = plan_of([cable("feed", "far", "pump")], [lamp("pump", "pump")], devices=[device])
+    rules = ("plan.no-return", "plan.unfed")
+    (found,) = [one for rule in rules for one in findings(plan, rule) if one.kind == "load"]
+    assert found.message.endswith(why)
+
+
+def test_a_source_that_is_off_or_not_fed_is_named() -> None:
+    row = {
+        "name": "drop", "kind": "converter", "from": "none", "at": "low", "nominal": "12 V", "volts": "12 V",
+        "amps": "5 A", "efficiency": "90 %",
+    }  # fmt: skip
+    plan = plan_of([FEED], [lamp("lamp", "low")], sources=[bank(), row])
+    assert '"drop" is itself not fed' in only(plan, "plan.unfed", "lamp").message
+    cases = [{"name": "c", "sources": {"bank": "off"}}]
+    off = only(plan_of([FEED], [lamp("pump", "pump")], cases=cases), "plan.unfed", "pump")
+    assert off.message.endswith('"bank" is off')
+
+
 def test_an_unfed_load_is_said_once_for_all_its_cases() -> None:
     cases = [{"name": name, "sources": {"bank": "off"}} for name in ("one", "two", "three")]
     assert only(plan_of([FEED], [lamp("pump", "pump")], cases=cases), "plan.unfed", "pump").case == "one"

@@ -5,10 +5,12 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from farvolt.checks.joined import listed
 from farvolt.checks.registry import check
-from farvolt.context import Context, label
+from farvolt.context import CaseStudy, Context, label
 from farvolt.network import FEED, RETURN
-from farvolt.plan import CHASSIS, Converter, Run, Solar
+from farvolt.operating import device_closed
+from farvolt.plan import CHASSIS, Converter, Run
 from farvolt.results import Finding, Kind, Severity
 
 _BASIS = "common practice: every load has a way from a source and a way back"
@@ -27,11 +29,12 @@ def _finding(
 @check("plan.unfed", "plan.no-return", title="Loads without a source, and loads without a way back")
 def unfed(context: Context) -> Iterator[Finding]:
     """Each load that is on in a case and not fed there, or whose return does not lead back; said in its first case."""
-    reached = {name for ends in context.plan.joins for name in ends}
+    reached = {name for ends in context.plan.joins for name in ends} | {source.at for source in context.plan.sources}
     near = _Near(context)
     told: set[tuple[str, str]] = set()
     for one in context.cases:
         supply, condition = one.solutions["plan"].supply, one.solutions["plan"].condition
+        stops = _stops(context, one)
         for index, load in enumerate(context.plan.loads):
             if supply.load_on[index] or one.case.share(load.name) == 0:
                 continue
@@ -41,14 +44,44 @@ def unfed(context: Context) -> Iterator[Finding]:
                 continue
             told.add((rule, load.name))
             if fed:
-                message = f'"{load.name}" at "{load.at}" is fed but its return leads back to no source that feeds it'
+                why = stops.get((int(supply.group[condition.load_b[index]]), RETURN), "")
+                message = (
+                    f'"{load.name}" at "{load.at}" is fed but its return leads back to no source that feeds it{why}'
+                )
                 remedy = 'a run that carries the return, or return = "chassis" with the source bonded to it'
             else:
                 nothing = f"no run reaches that point{near.to(load.at)}" if load.at not in reached else ""
-                why = nothing or "no closed way leads there from a source that is on"
+                why = stops.get((int(supply.group[condition.load_a[index]]), FEED), "")
+                why = nothing or f"no closed way leads there from a source that is on{why}"
                 message = f'"{load.name}" at "{load.at}" is not fed: {why}'
                 remedy = f'a run to "{load.at}" that carries the feed, or a closed switch, or a working source'
             yield _finding(rule, "fail", load.name, "load", message, _BASIS, remedy, one.name)
+
+
+def _stops(context: Context, one: CaseStudy) -> dict[tuple[int, int], str]:
+    """By galvanic part and pole: what in a case stops current on its way into that part, in words."""
+    network, plan = context.network, context.plan
+    supply, condition = one.solutions["plan"].supply, one.solutions["plan"].condition
+    found: dict[tuple[int, int], list[str]] = {}
+
+    def stop(node: int, pole: int, why: str) -> None:
+        found.setdefault((int(supply.group[node]), pole), []).append(why)
+
+    for index, device in enumerate(plan.devices):
+        if device.kind != "diode" and not device_closed(plan, index, one.case):
+            for pole in [FEED] * (device.pole != "return") + [RETURN] * (device.pole != "feed"):
+                for point in (device.from_point, device.to_point):
+                    stop(network.nodes[point, pole], pole, f'"{device.name}" is open')
+    for index, start, end in network.diodes:
+        device = plan.devices[index]
+        if supply.group[start] != supply.group[end]:
+            inner, pole = (end, RETURN) if device.pole == "return" else (start, FEED)
+            stop(inner, pole, f'the diode "{device.name}" lies the other way round')
+    for port, source in enumerate(plan.sources):
+        if not one.solutions["plan"].working(port):
+            why = "is off" if not condition.source_on[port] else "is itself not fed"
+            stop(network.feed(source.at), FEED, f'"{source.name}" {why}')
+    return {part: f": {', '.join(reasons[:4])}" for part, reasons in found.items()}
 
 
 @check("plan.unfed", title="Parts of the plan that nothing feeds in any case")
@@ -66,20 +99,17 @@ def unfed_parts(context: Context) -> Iterator[Finding]:
         if name in fed_points and not live[node]:
             parts.setdefault(int(islands[node]), []).append(name)
     told = {load.at for load in context.plan.loads if any(one.case.share(load.name) > 0 for one in context.cases)}
-    arrays = {source.array.at for source in context.plan.sources if isinstance(source, Solar) and source.array}
     for names in parts.values():
         if told.isdisjoint(names):
-            yield _unfed_part(names, [name for name in names if name in arrays])
+            yield _unfed_part(names)
 
 
-def _unfed_part(names: list[str], arrays: list[str]) -> Finding:
-    listed = ", ".join(f'"{name}"' for name in names[:6]) + (f" and {len(names) - 6} more" if len(names) > 6 else "")
-    message = f"No source feeds {listed} in any case: the cables there are not checked"
-    remedy = "a run from a source, a case with the switch closed or the source on, or delete what is not meant"
-    if arrays:
-        message += "; the modules of an array are not taken as a source by this version"
-        remedy = "judge the cables of the array by hand"
-    return _finding("plan.unfed", "warn", names[0], "point", message, _BASIS, remedy)
+def _unfed_part(names: list[str]) -> Finding:
+    return _finding(
+        "plan.unfed", "warn", names[0], "point",
+        f"No source feeds {listed(names)} in any case: the cables there are not checked", _BASIS,
+        "a run from a source, a case with the switch closed or the source on, or delete what is not meant",
+    )  # fmt: skip
 
 
 class _Near:
