@@ -98,7 +98,7 @@ FAULTS = [
     (None, TYPE.replace('volts = "32 V"\n', ""), "volts", "is missing", ""),
     (None, TYPE.replace("times = 6", "times = 1.2"), "band", "the multiples must rise", ""),
     (None, TYPE.replace('"0.1 s"', '"9 s"'), "band", "the least time is above the greatest", ""),
-    (None, TYPE.replace("times = 6", "times = 0.6"), "band.entry 2", "carries up to 1 times", ""),
+    (None, TYPE.replace("times = 6", "times = 0.6"), "band.entry 2.times", "is too small", ""),
     (None, TYPE.replace('times = 6, not_before = "0.1 s", within = "1 s"', "times = 6"), "band.entry 2", "nothing", ""),
     (None, TYPE.replace('within = "1 s"', "within = 1"), "band.entry 2.within", "a bare number", '"1 s"'),
     (None, TYPE.replace('within = "1 s"', 'withn = "1 s"'), "band.entry 2.withn", "no such field", '"within"'),

@@ -11,8 +11,8 @@ from farvolt.plan_types import (
     Distance,
     Duration,
     Entry,
-    Multiple,
     Name,
+    Overload,
     Rating,
     Share,
     Temperature,
@@ -55,8 +55,8 @@ class Protection(Entry):
 class OpeningTime(Entry):
     """What a data sheet says of a device's opening time at one multiple of its rating."""
 
-    times: Multiple
-    """Current over rated current, from 1."""
+    times: Overload
+    """Current over rated current."""
     within: Duration | None = None
     """It has opened by then."""
     not_before: Duration | None = None
@@ -64,8 +64,6 @@ class OpeningTime(Entry):
 
     @model_validator(mode="after")
     def _says_something(self) -> "OpeningTime":
-        if self.times < 1:
-            raise refusal("a device carries up to 1 times its rating", "times from 1, such as 1.35")
         if self.within is None and self.not_before is None:
             raise refusal("says nothing of the time", 'within = "600 s", not_before = "0.75 s", or both')
         if self.within is not None and self.within.si == 0:
