@@ -51,6 +51,14 @@ class Context:
     """Sizes taken for the runs that state none; `plan` has them filled in."""
 
     @cached_property
+    def _run_places(self) -> dict[str, int]:
+        return {run.name: index for index, run in enumerate(self.plan.runs)}
+
+    def run_index(self, name: str) -> int:
+        """Where a run stands in the plan, by its name."""
+        return self._run_places[name]
+
+    @cached_property
     def sections(self) -> Sections:
         """Protection by section, walked once."""
         return sections(self.network)

@@ -12,7 +12,7 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
-from farvolt import conductors, protection_types
+from farvolt import conductors
 from farvolt.plan import CHASSIS, Battery, Converter, Device, Plan, ReturnConductor, Run, Solar
 from farvolt.rulebook import Rulebook
 from farvolt.tables import read
@@ -178,7 +178,7 @@ def joints_ohm(run: Run) -> float:
 def protection_ohm(run: Run, pole: str) -> float:
     """Resistance of the protection in one pole of a run: as stated, else typical of its type and rating."""
     return sum(
-        one.resistance.si if one.resistance is not None else protection_types.resistance_ohm(one.type, one.rating.si)
+        one.resistance.si if one.resistance is not None else one.kind.resistance_ohm(one.rating.si)
         for one in run.protections
         if one.pole == pole
     )

@@ -5,6 +5,7 @@ Adding a check touches one file: every module in this folder is read, and what i
 
 import importlib
 import pkgutil
+from collections.abc import Collection
 
 from farvolt.checks.registry import Check, check, registered
 from farvolt.context import Context
@@ -19,6 +20,12 @@ def run_all(context: Context) -> tuple[Finding, ...]:
     return tuple(sorted(found, key=lambda finding: _SEVERITIES.index(finding.severity)))
 
 
+def run_some(context: Context, rules: Collection[str]) -> tuple[Finding, ...]:
+    """The findings under some rules, of the checks that report under them."""
+    found = [one for each in checks() if not set(rules).isdisjoint(each.rules) for one in each.run(context)]
+    return tuple(one for one in found if one.rule in rules)
+
+
 def checks() -> tuple[Check, ...]:
     """Every check, by module and then in the order of its text."""
     for module in sorted(pkgutil.iter_modules(__path__), key=lambda module: module.name):
@@ -26,4 +33,4 @@ def checks() -> tuple[Check, ...]:
     return registered()
 
 
-__all__ = ["Check", "check", "checks", "run_all"]
+__all__ = ["Check", "check", "checks", "run_all", "run_some"]

@@ -1,0 +1,274 @@
+"""Which protection fits where a check found fault: standard ratings that pass every check, for the cable as it is.
+
+Each offer is tried: put into the plan, with all offers at once, and held against the checks of protection again. What
+is offered has therefore passed them. Where nothing passes, the offer says what stands in the way, and which cable
+opens the window.
+"""
+
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass, field, replace
+
+from farvolt import checks, network
+from farvolt.checks.demand import Demands
+from farvolt.checks.rating import limit_for
+from farvolt.checks.ways import ampacity_A, exempt
+from farvolt.conductors import Size
+from farvolt.context import CaseStudy, Context, label, larger_sizes
+from farvolt.network import FEED
+from farvolt.plan import Plan, Protection, Run
+from farvolt.protection_types import ProtectionType, protection_type, protection_type_names
+from farvolt.results import Finding
+from farvolt.temperatures import run_ampacity
+from farvolt.units import number
+
+RULES = (
+    "protection.missing", "protection.over-conductor", "protection.under-load", "protection.over-load-limit",
+    "protection.interrupting", "protection.voltage-rating", "protection.far-end", "protection.let-through",
+    "protection.rating-not-made",
+)  # fmt: skip
+"""What an offer has to pass; where protection sits and whether it is selective are no matters of its rating."""
+
+SPARE = 1.25
+"""Times its load that a protection is rated at where there is a choice (common practice)."""
+
+_ROUNDS = 12
+_SIZES = 4
+"""How many larger sizes are tried to open a window."""
+
+
+@dataclass(frozen=True, slots=True)
+class Place:
+    """Where a protection sits or is missing: an end of a run, in its feed."""
+
+    run: int
+    end: str
+
+
+@dataclass(frozen=True, slots=True)
+class Offer:
+    """A protection for a place, with a thicker cable where the present one leaves no window."""
+
+    kind: ProtectionType
+    rating_A: float
+    size: Size | None = None
+
+    @property
+    def text(self) -> str:
+        """The offer in words."""
+        cable = f"{self.size.name} cable and then " if self.size is not None else ""
+        return f"{cable}{number(self.rating_A)} A {self.kind.name}"
+
+
+@dataclass(slots=True)
+class Choice:
+    """The offers for a place in order of preference, and how far they have been tried."""
+
+    place: Place
+    offers: list[Offer]
+    tried: int = 0
+    blocking: dict[str, None] = field(default_factory=dict)
+    """Rules that the offers tried so far did not pass, in that order."""
+
+    @property
+    def offer(self) -> Offer | None:
+        """The offer that stands; None when all have failed."""
+        return self.offers[self.tried] if self.tried < len(self.offers) else None
+
+    def fails(self, rules: list[str]) -> None:
+        """Go on to the next offer that may do better: what fails for its type, or for a rating too high or too low,
+        fails with the others of that type as well."""
+        failed = self.offer
+        assert failed is not None
+        self.blocking |= dict.fromkeys(rules)
+        self.tried += 1
+        while (offer := self.offer) is not None and offer.kind == failed.kind and offer.size == failed.size:
+            higher = offer.rating_A > failed.rating_A
+            if not (_OF_TYPE.intersection(rules) or (_WANT_LESS if higher else _WANT_MORE).intersection(rules)):
+                break
+            self.tried += 1
+
+
+_OF_TYPE = {"protection.interrupting", "protection.voltage-rating"}
+_WANT_LESS = {"protection.far-end", "protection.over-conductor", "protection.over-load-limit", "protection.let-through"}
+_WANT_MORE = {"protection.under-load"}
+
+
+def choices(context: Context, places: Iterable[Place]) -> list[Choice]:
+    """For each place the first of its offers that passes, all tried together; see `Choice.offer`."""
+    demands = Demands(context)
+    found = [Choice(place, list(_offers(context, place, demands))) for place in places]
+    for _ in range(_ROUNDS):
+        standing = [one for one in found if one.offer is not None]
+        failed = _failed(context, standing) if standing else {}
+        if not failed:
+            return found
+        for one in standing:
+            if one.place in failed:
+                one.fails(failed[one.place])
+    for one in found:
+        if one.place in failed:
+            one.tried = len(one.offers)  # none was shown to pass within the rounds
+    return found
+
+
+def fitting(context: Context, place: Place, kind: ProtectionType) -> tuple[float, ...]:
+    """All ratings made of one type that pass at a place with its present cable."""
+    passing = []
+    for rating in kind.ratings_A:
+        one = Choice(place, [Offer(kind, rating)])
+        if not _failed(context, [one]):
+            passing.append(rating)
+    return tuple(passing)
+
+
+def with_remedies(context: Context, findings: tuple[Finding, ...]) -> tuple[Finding, ...]:
+    """Findings of protection with what was found to pass as their remedy."""
+    if not context.remedies_are_exact:
+        return findings
+    places: dict[Place, None] = {}
+    for finding in findings:
+        places |= dict.fromkeys(_places(context, finding))
+    offers = {one.place: one for one in choices(context, places)}
+    return tuple(_with_remedy(context, finding, offers) for finding in findings)
+
+
+def _with_remedy(context: Context, finding: Finding, offers: dict[Place, Choice]) -> Finding:
+    texts = [_text(context, offers[place], finding) for place in _places(context, finding)]
+    said = "; ".join(dict.fromkeys(filter(None, texts)))
+    if not said:
+        return finding
+    other = f"; or {finding.remedy}" if finding.remedy and finding.rule not in _SUPERSEDED else ""
+    return replace(finding, remedy=f"{said}{other}")
+
+
+_SUPERSEDED = ("protection.under-load", "protection.interrupting", "protection.rating-not-made")
+"""Whose own remedy names a rating or a type without having tried it."""
+
+
+def _text(context: Context, choice: Choice, finding: Finding) -> str:
+    run, offer = context.plan.runs[choice.place.run], choice.offer
+    at = run.from_point if choice.place.end == "from" else run.to_point
+    on = "" if finding.subject == run.name else f" on {label(run)}"
+    if offer is None:
+        if finding.rule == "protection.missing" or not choice.blocking:
+            return ""
+        return f"no standard rating passes here{on} ({', '.join(choice.blocking)} in the way)"
+    missing = ' in the feed at "' + at + '"' if finding.rule == "protection.missing" else ""
+    return f"{offer.text}{missing}{on}: passes all checks of protection"
+
+
+def _places(context: Context, finding: Finding) -> list[Place]:
+    """The places whose protection a finding is about."""
+    if finding.rule not in RULES or finding.severity == "note" or finding.kind != "run":
+        return []
+    index = context.run_index(finding.subject)
+    if finding.rule == "protection.missing":
+        bare = [one for one in context.sections.by_run.get(index, []) if one.guard is None and not one.own]
+        return list(dict.fromkeys(Place(index, one.end) for one in bare))
+    own = [Place(index, one.end) for one in context.plan.runs[index].protections if one.pole == "feed"]
+    if own or finding.rule != "protection.over-conductor":
+        return list(dict.fromkeys(own))
+    guards = [one.guard for one in context.sections.by_run.get(index, []) if one.guard is not None]
+    return list(dict.fromkeys(Place(one.run, one.protection.end) for one in guards))
+
+
+def _offers(context: Context, place: Place, demands: Demands) -> Iterator[Offer]:
+    """Ratings between the load and what the cable may carry: of the present type first, then of the others; then with
+    a thicker cable."""
+    run = context.plan.runs[place.run]
+    demand, _ = demands.worst(place.run, FEED)
+    amps = ampacity_A(context, place.run)
+    present = _present(run, place)
+    most = limit_for(context, run, amps).amps if amps is not None else 0.0
+    kinds = [present.kind] if present is not None else []
+    kinds += [kind for kind in _kinds(context.plan) if present is None or kind != present.kind]
+    for kind in kinds:
+        yield from (Offer(kind, rating) for rating in _between(kind, demand, most))
+    if run.size is None or exempt(context, run):
+        return
+    for size in larger_sizes(run.size)[:_SIZES]:
+        thicker = _resized(run, size)
+        found = run_ampacity(context.plan, context.rulebook, thicker, None, context.together[run.name])
+        limit = limit_for(context, thicker, found.amps).amps if found is not None and found.amps is not None else 0.0
+        for kind in kinds[:1]:
+            yield from (Offer(kind, rating, size) for rating in _between(kind, demand, limit))
+
+
+def _between(kind: ProtectionType, demand: float, most: float) -> list[float]:
+    """Ratings that carry the load and that the cable allows: first those with a quarter in hand, from the lowest."""
+    fits = [rating for rating in kind.ratings_A if demand <= rating <= most * (1 + 1e-9)]
+    roomy = [rating for rating in fits if rating >= SPARE * demand]
+    return roomy + [rating for rating in reversed(fits) if rating < SPARE * demand]
+
+
+def _kinds(plan: Plan) -> list[ProtectionType]:
+    return [*plan.own_types.values(), *(protection_type(name) for name in protection_type_names())]
+
+
+def _present(run: Run, place: Place) -> Protection | None:
+    found = [one for one in run.protections if one.pole == "feed" and one.end == place.end]
+    return min(found, key=lambda one: one.rating.si, default=None)
+
+
+def _failed(context: Context, tried: list[Choice]) -> dict[Place, list[str]]:
+    """The places whose offers do not pass, all of them put in at once, with the rules that they break."""
+    changed = _changed(context, tried)
+    broken: dict[Place, list[str]] = {}
+    mine = {one.place for one in tried}
+    for finding in checks.run_some(changed, RULES):
+        if finding.severity == "note" or "not verified" in finding.message:
+            continue
+        for place in _places(changed, finding):
+            if place in mine:
+                broken.setdefault(place, []).append(finding.rule)
+    return broken
+
+
+def _changed(context: Context, tried: list[Choice]) -> Context:
+    """The context of a plan with the offers in their places; currents are taken to stay as they are."""
+    runs = list(context.plan.runs)
+    resized: list[int] = []
+    for one in tried:
+        offer = one.offer
+        assert offer is not None
+        run = runs[one.place.run]
+        if offer.size is not None:
+            run = _resized(run, offer.size)
+            resized.append(one.place.run)
+        runs[one.place.run] = _with_protection(context, run, one.place, offer)
+    plan = context.plan.model_copy(update={"runs": tuple(runs)})
+    cases = tuple(_reampacity(context, plan, case, resized) for case in context.cases)
+    return replace(context, plan=plan, network=network.build(plan, context.rulebook), cases=cases)
+
+
+def _reampacity(context: Context, plan: Plan, one: CaseStudy, resized: list[int]) -> CaseStudy:
+    if not resized:
+        return one
+    amps = list(one.ampacities)
+    for index in resized:
+        run = plan.runs[index]
+        amps[index] = run_ampacity(plan, context.rulebook, run, one.case, context.together[run.name])
+    return replace(one, ampacities=tuple(amps))
+
+
+def _resized(run: Run, size: Size) -> Run:
+    """The run with both of its conductors at a size, or the return kept where it is thicker."""
+    changed = run.model_copy(update={"size": size})
+    back = run.return_path
+    if not isinstance(back, str) and back.size is not None and back.size.area_mm2 < size.area_mm2:
+        changed = changed.model_copy(update={"return_path": back.model_copy(update={"size": size})})
+    return changed
+
+
+def _with_protection(context: Context, run: Run, place: Place, offer: Offer) -> Run:
+    """The run with the offer instead of what sits in its feed at that end."""
+    present = _present(run, place)
+    fields = {"type": offer.kind.name, "rating": f"{offer.rating_A:.15g} A", "end": place.end}
+    distance = {"distance": present.distance} if present is not None and present.distance is not None else {}
+    made = Protection.model_validate({**fields, **distance})
+    made.is_of(context.plan.own_types)
+    others = [one for one in run.protections if one.pole != "feed" or one.end != place.end]
+    return run.model_copy(update={"protection": (*others, made), "protection_to": None})
+
+
+__all__ = ["RULES", "Choice", "Offer", "Place", "choices", "fitting", "with_remedies"]
