@@ -3,8 +3,15 @@
 from typing import Any
 
 import pytest
+from hypothesis import given
 
+from farvolt import planfile
+from farvolt.errors import PlanError
+from farvolt.network import build
+from farvolt.operating import components
 from farvolt.plan import Plan
+from farvolt.rulebook import load
+from strategies import Draft, Wishes, drafts, text_of
 from wiring import bank, cable, fails, findings, fuse, lamp, only, plan_of
 
 FEED = cable("feed", "bank", "pump", "2 m", "4 mm2", protection=fuse("15 A"))
@@ -157,3 +164,43 @@ def test_an_interim_size_is_named() -> None:
     assert found.severity == "warn"
     assert "has no size yet" in found.message
     assert fails(plan, "conductor.ampacity") == []
+
+
+@given(drafts(Wishes(devices=0.8, chassis=0.6, diodes=0.3)))
+def test_no_conductor_of_a_plan_joins_a_feed_and_a_return(draft: Draft) -> None:
+    """A source cannot be shorted by what a plan says: only loads and sources stand between feed and return."""
+    plan = planfile.parse(text_of(draft))
+    network = build(plan, load(plan.plan.rulebook))
+    part = components(network.node_count, network.a, network.b)
+    feeds = {int(part[network.feed(name)]) for name in plan.point_names}
+    assert not feeds & {int(part[network.ret(name)]) for name in plan.point_names}
+
+
+@pytest.mark.parametrize(
+    ("table", "row", "said"),
+    [
+        ("runs", cable("slip", "bank", "chassis", carries="feed"), "a run to the chassis is a return"),
+        ("devices", {"name": "d", "kind": "switch", "from": "bank", "to": "chassis"}, "the chassis is one node"),
+        ("loads", lamp("lamp", "chassis"), "the chassis is one node"),
+    ],
+)
+def test_a_feed_taken_to_the_chassis_is_refused(table: str, row: dict[str, Any], said: str) -> None:
+    rows: dict[str, Any] = {"runs": [FEED], "loads": [lamp("pump", "pump")], "devices": []}
+    rows[table] = [*rows[table], row]
+    with pytest.raises(PlanError, match=said):
+        plan_of(rows["runs"], rows["loads"], devices=rows["devices"])
+
+
+@pytest.mark.parametrize(
+    ("case", "said"),
+    [
+        ({"devices": {"swich": "open"}}, 'there is no such device .*accepted: "switch"; did you mean "switch"'),
+        ({"devices": {"switch": "opened"}}, 'accepted: "closed" or "open"; did you mean "open"'),
+        ({"sources": {"bank": "shut"}}, 'accepted: "on", "off" or "full"'),
+        ({"loads": {"pmup": 1.0}}, 'there is no such load .*did you mean "pump"'),
+    ],
+)
+def test_a_case_that_names_what_is_not_there(case: dict[str, Any], said: str) -> None:
+    devices = [{"name": "switch", "kind": "switch", "from": "pump", "to": "far"}]
+    with pytest.raises(PlanError, match=said):
+        plan_of([FEED], [lamp("pump", "pump")], devices=devices, cases=[{"name": "night", **case}])
