@@ -344,6 +344,16 @@ def test_examples_are_listed_and_copied(tmp_path: Path, monkeypatch: pytest.Monk
     assert line.endswith(f'did you mean "{VAN}"?')
 
 
+def test_the_standard_cases_of_a_plan_are_printed_to_be_put_into_it(tmp_path: Path) -> None:
+    bare = examples.starter_text()
+    path = tmp_path / "plan.toml"
+    path.write_text(bare)
+    printed = run("cases", str(path)).stdout
+    assert planfile.parse(f"{bare}\n{printed}").cases == planfile.parse(bare).checked_cases
+    assert printed.startswith('[[cases]]\nname = "Everything on, low charge"\nloads = "all"\n')
+    assert 'sources = { battery = { charge = "20 %" } }\n' in printed
+
+
 def test_schema_is_printed_and_takes_the_starter() -> None:
     result = run("schema")
     assert (result.exit_code, result.stderr) == (0, "")

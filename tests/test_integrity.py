@@ -60,11 +60,10 @@ def test_the_examples_hang_together(name: str) -> None:
     [
         ("all", ["pump"], None, ""), ({"pump": 1.0}, ["pump"], None, ""),
         ("all", ["lamp"], "states no surge", '"pump"'), ("all", ["pmup"], "no such load", '"lamp", "pump"'),
-        ("none", ["pump"], "is off in the case", '"pump" = 1.0'), ({"lamp": 1.0}, ["pump"], "is off", '"pump" = 1.0'),
-        ({"pump": 0}, ["pump"], "is off", '"pump" = 1.0'),
+        ("none", ["pump"], None, ""), ({"lamp": 1.0}, ["lamp"], "states no surge", '"pump"'),
     ],
 )  # fmt: skip
-def test_a_case_starts_what_is_on_and_states_a_surge(loads: Any, surge: Any, problem: Any, accepted: str) -> None:
+def test_a_case_starts_what_states_a_surge(loads: Any, surge: Any, problem: Any, accepted: str) -> None:
     raw = changed("cases.0", {"name": "start", "loads": loads, "surge": surge})
     raw["loads"][1]["surge"] = {"times": 3}
     found = [fault for _, fault in integrity.faults(raw)]

@@ -204,6 +204,22 @@ def test_what_a_case_says_beyond_the_usual_gets_a_row() -> None:
     assert cell(text, "Source: house bank (rest voltage)", 0) == "12.5 V"
 
 
+def test_what_starts_in_a_case_is_a_list_with_commas() -> None:
+    label = "Starting: loads that draw their surge (with commas)"
+    text = set_cell(VAN, label, 2, " water pump, bench outlets ,")
+    assert planfile.parse(text).cases[2].surge == ("water pump", "bench outlets")
+    assert cell(text, label, 2) == "water pump, bench outlets"
+    assert planfile.parse(set_cell(text, label, 2, " ")).cases[2].surge == ()
+
+
+@pytest.mark.parametrize("text", [VAN, examples.text("bird-observatory-cabin"), examples.starter_text()])
+def test_the_standard_cases_put_into_a_plan_are_what_was_checked_without(text: str) -> None:
+    bare = edits.apply(text, [edits.Remove("cases", 0) for _ in edits.read(text).get("cases", ())])
+    expected = planfile.parse(bare).checked_cases
+    after = planfile.parse(edits.apply(bare, case_grid.standard(planfile.parse(bare))))
+    assert after.cases == expected
+
+
 def test_a_new_case_has_all_loads_on() -> None:
     after = planfile.parse(edits.apply(VAN, [case_grid.new_case(edits.read(VAN))]))
     assert (after.cases[-1].name, after.cases[-1].loads) == ("New case", "all")

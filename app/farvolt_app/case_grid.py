@@ -1,4 +1,4 @@
-"""The table of cases: a column for each case, a row for each thing that a case decides.
+"""The table of cases: a column for each case, a row for each thing that a case decides; the standard cases as entries.
 
 Loads show the share of their rating at which they are on (empty: off), sources and devices their state.
 """
@@ -7,6 +7,7 @@ import re
 from dataclasses import dataclass
 from typing import Any
 
+from farvolt.plan import Case, Plan, SourceState
 from farvolt_app import edits
 from farvolt_app.edits import Set, Step
 from farvolt_app.tables import Delta, Raw, Row, written
@@ -49,9 +50,10 @@ def case_names(raw: Raw) -> list[str]:
 
 
 def lines(raw: Raw) -> list[Line]:
-    """The rows: name and ambient, each load, each source, each device."""
+    """The rows: name and ambient, each load, what starts, each source, each device."""
     found = [Line("Name of the case", ("name",)), Line("Ambient instead of the zones'", ("ambient",))]
     found += [Line(f"Load: {name}", ("loads", name)) for name in names(raw, "loads")]
+    found += [Line("Starting: loads that draw their surge (with commas)", ("surge",))]
     for source in _rows(raw, "sources"):
         name = source.get("name")
         if isinstance(name, str):
@@ -98,6 +100,8 @@ def _listed(raw: Raw, case: dict[str, Any]) -> dict[str, float]:
 
 def _value(path: tuple[str, ...], value: Any) -> Any:
     text = "" if value is None else str(value).strip()
+    if path[0] == "surge":
+        return [part.strip() for part in text.split(",") if part.strip()] or None
     if path[0] != "loads":
         return text or None
     if text.lower() in ("", "off", "0"):
@@ -145,6 +149,26 @@ def _rows(raw: Raw, table: str) -> list[dict[str, Any]]:
 def names(raw: Raw, table: str) -> list[str]:
     """The names in one of the plan's arrays of tables."""
     return [row["name"] for row in _rows(raw, table) if isinstance(row.get("name"), str)]
+
+
+def standard(plan: Plan) -> list[Step]:
+    """The standard set of cases, added to the plan as cases of its own."""
+    from farvolt.standard_cases import standard_cases
+
+    return [edits.Add("cases", fields(case)) for case in standard_cases(plan)]
+
+
+def fields(case: Case) -> dict[str, Any]:
+    """A case of the standard set as the file holds it."""
+    sources = {name: _state(state) for name, state in case.sources.items()}
+    found: dict[str, Any] = {"name": case.name, "loads": case.loads, "sources": sources}
+    return found | ({"surge": list(case.surge)} if case.surge else {})
+
+
+def _state(state: SourceState) -> str | dict[str, Any]:
+    """In a bare word where it says no more than on, off or full."""
+    said = {name: getattr(state, name) for name in ("charge", "irradiance") if getattr(state, name) is not None}
+    return {name: str(value) for name, value in said.items()} or state.state
 
 
 def new_case(raw: Raw) -> Step:

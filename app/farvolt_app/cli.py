@@ -256,7 +256,9 @@ def standard_cases(plan: str) -> None:
     """
     from farvolt_app import case_grid, edits
 
-    _print_whole(edits.apply("", case_grid.standard(_read(plan).plan)).lstrip("\n"))
+    head = "format = 1\n"  # what the cases are written under, as in a plan
+    text = edits.apply(head, case_grid.standard(_read(plan).plan))
+    _print_whole(text.removeprefix(head).lstrip("\n"))
 
 
 @main.command()

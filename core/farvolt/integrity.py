@@ -265,15 +265,12 @@ def _case_names(raw: dict[str, Any]) -> Iterator[Found]:
 
 
 def _no_surge(raw: dict[str, Any], index: int, row: dict[str, Any], name: Any) -> Iterator[Found]:
-    """A case that asks for the surge of a load which states none, or which is off in it."""
-    path, where, on = ("cases", index, "surge"), place("cases", row, index), row.get("loads", "all")
+    """A case that asks for the surge of a load which states none."""
+    path, where = ("cases", index, "surge"), place("cases", row, index)
     if any(load.get("name") == name and "surge" not in load for _, load in entries(raw, "loads")):
         stating = [load["name"] for _, load in entries(raw, "loads") if "surge" in load and "name" in load]
         some = ", ".join(f'"{shorten(str(one), 30)}"' for one in stating[:8]) + (", …" if len(stating) > 8 else "")
         yield path, Fault(where, "surge", shown(name), "this load states no surge", some or "none: no load states one")
-    elif on == "none" or (isinstance(on, dict) and isinstance(name, str) and on.get(name, 0) == 0):
-        accepted = f"{shown(name)} = 1.0 under loads"
-        yield path, Fault(where, "surge", shown(name), "this load is off in the case", accepted)
 
 
 def _case_states(raw: dict[str, Any]) -> Iterator[Found]:

@@ -134,7 +134,7 @@ def _cases(raw: tables.Raw) -> None:
     )
     names = case_grid.case_names(raw)
     if not names:
-        st.info("The plan states no cases: one case, with everything on, is checked.")
+        st.info(plain(_unstated()))
     else:
         frame = pd.DataFrame(case_grid.rows(raw), dtype=object)
         key = state.editor_key("cases")
@@ -148,12 +148,33 @@ def _cases(raw: tables.Raw) -> None:
         )  # fmt: skip
     with st.container(horizontal=True):
         st.button("Add a case", on_click=_add_case, key="add_case")
+        if not names:
+            st.button("Add the standard cases", on_click=_add_standard_cases, key="add_standard_cases")
         if names:
             with st.popover("Copy or remove a case"):
                 chosen = st.selectbox("Case", range(len(names)), format_func=names.__getitem__,
                                       key=state.editor_key("case_chosen"))  # fmt: skip
                 st.button("Copy", on_click=_copy, args=("cases", chosen, names[chosen]), key="copy_case")
                 st.button("Remove", on_click=_remove_case, args=(chosen,), key="remove_case")
+
+
+def _unstated() -> str:
+    """What is checked while the plan states no cases, by name where the text is a plan."""
+    results = state.draft().results
+    listed = "; ".join(case.name for case in results.plan.checked_cases) if results else ""
+    return "The plan states no cases, so a standard set is checked" + (f": {listed}." if listed else ".")
+
+
+def _add_standard_cases() -> None:
+    from farvolt import planfile
+
+    text = state.draft().text
+    try:
+        plan = planfile.parse(text)
+    except FarvoltError as error:
+        state.say(f"The standard cases follow from a plan without faults. {error}")
+        return
+    _apply(text, lambda raw: case_grid.standard(plan))
 
 
 def _commit_cases(key: str) -> None:
