@@ -76,53 +76,74 @@ def uneven_sharing(context: Context) -> Iterator[Finding]:
     The even share of a way goes with its ampacity. Feeds and returns are looked at apart; each group is said once.
     """
     worst: dict[frozenset[str], tuple[CaseStudy, _Group]] = {}
+    meshes: dict[bytes, list[_MeshWay]] = {}
     for one in context.cases:
-        if not one.solutions["plan"].state.solved:
+        solution = one.solutions["plan"]
+        if not solution.state.solved:
             continue
-        for group in (*_groups(context, one, FEED), *_groups(context, one, RETURN)):
-            key = frozenset(name for share in group.shares for name in share.names)
-            if key not in worst or group.loading > worst[key][1].loading * (1 + 1e-9):
-                worst[key] = (one, group)
+        on = solution.condition.branch_on & solution.supply.live[context.network.a]
+        key = on.tobytes()
+        if key not in meshes:
+            meshes[key] = [way for pole in (FEED, RETURN) for way in _meshed(solution, on, pole)]
+        for group in _groups(context.network, one, meshes[key]):
+            names = frozenset(name for share in group.shares for name in share.names)
+            if names not in worst or group.loading > worst[names][1].loading * (1 + 1e-9):
+                worst[names] = (one, group)
     for one, group in worst.values():
         yield from _uneven_ring(context, one, group) if group.ring else _uneven(context, one, group)
 
 
-def _groups(context: Context, one: CaseStudy, pole: int) -> Iterator[_Group]:
-    """The groups of ways that share a current in one pole, in a case."""
-    network, solution = context.network, one.solutions["plan"]
-    c = solution.condition
-    mine = (network.pole == FEED) == (pole == FEED)
-    places = np.flatnonzero(mine & c.branch_on & solution.supply.live[network.a])
+@dataclass(frozen=True, slots=True)
+class _MeshWay:
+    """A way that lies on a ring, in one pole."""
+
+    pole: int
+    mesh: int
+    start: int
+    end: int
+    branches: tuple[int, ...]
+
+
+def _meshed(solution: Solution, on: np.ndarray, pole: int) -> Iterator[_MeshWay]:
+    """The ways on rings among the conductors of one pole that are `on`; bonds count among the returns."""
+    network, c = solution.network, solution.condition
+    places = np.flatnonzero(on & ((network.pole == FEED) == (pole == FEED)))
     edges = list(zip(network.a[places].tolist(), network.b[places].tolist(), strict=True))
     meshes = ring_numbers(edges)
     meshed = [place for place, mesh in enumerate(meshes) if mesh >= 0]
-    if not meshed:
-        return
-    ports = {int(node) for nodes in (c.source_a, c.source_b, c.load_a, c.load_b) for node in nodes}
-    beside = {node for place, edge in enumerate(edges) if meshes[place] < 0 for node in edge}
-    between: dict[tuple[int, int], list[_Share]] = {}
-    leaving: dict[tuple[int, int], list[tuple[_Share, float]]] = {}
-    for way in ways([edges[place] for place in meshed], ports | beside):
-        branches = [int(places[meshed[edge]]) for edge in way.edges]
-        share = _share(network, one, solution, branches)
-        if share is not None and way.start != way.end:
-            between.setdefault((min(way.start, way.end), max(way.start, way.end)), []).append(share)
-            forward = 1.0 if network.a[branches[0]] == way.start else -1.0
-            away = forward * float(solution.state.branch_A[branches[0]])
-            mesh = meshes[meshed[way.edges[0]]]
-            leaving.setdefault((mesh, way.start), []).append((share, away))
-            leaving.setdefault((mesh, way.end), []).append((share, -away))
-    yield from (_Group(pole, False, shares) for shares in between.values() if len(shares) > 1)
-    parallel = [set(map(id, shares)) for shares in between.values() if len(shares) > 1]
-    outward = 1.0 if pole == FEED else -1.0
-    for legs in leaving.values():
+    ends = {int(node) for nodes in (c.source_a, c.source_b, c.load_a, c.load_b) for node in nodes}
+    ends |= {node for place, edge in enumerate(edges) if meshes[place] < 0 for node in edge}
+    for way in ways([edges[place] for place in meshed], ends):
+        branches = tuple(int(places[meshed[edge]]) for edge in way.edges)
+        yield _MeshWay(pole, meshes[meshed[way.edges[0]]], way.start, way.end, branches)
+
+
+def _groups(network: Network, one: CaseStudy, mesh_ways: list[_MeshWay]) -> Iterator[_Group]:
+    """The groups of ways that share a current in a case: those between the same junctions, and the ends of rings."""
+    solution = one.solutions["plan"]
+    between: dict[tuple[int, int, int], list[_Share]] = {}
+    leaving: dict[tuple[int, int, int], list[tuple[_Share, float]]] = {}
+    for way in mesh_ways:
+        share = _share(network, one, solution, way.branches)
+        if share is None or way.start == way.end:
+            continue
+        between.setdefault((way.pole, min(way.start, way.end), max(way.start, way.end)), []).append(share)
+        first = way.branches[0]
+        forward = 1.0 if network.a[first] == way.start else -1.0
+        # Feeds lead away from where a ring is fed, returns towards it.
+        away = forward * float(solution.state.branch_A[first]) * (1.0 if way.pole == FEED else -1.0)
+        leaving.setdefault((way.pole, way.mesh, way.start), []).append((share, away))
+        leaving.setdefault((way.pole, way.mesh, way.end), []).append((share, -away))
+    parallel = {key: shares for key, shares in between.items() if len(shares) > 1}
+    yield from (_Group(pole, False, shares) for (pole, _, _), shares in parallel.items())
+    told = {frozenset(map(id, shares)) for shares in parallel.values()}
+    for (pole, _, _), legs in leaving.items():
         shares = [share for share, _ in legs]
-        fed = len(legs) > 1 and all(outward * away > 0 for _, away in legs)
-        if fed and not any(set(map(id, shares)) <= group for group in parallel):
+        if len(legs) > 1 and all(away > 0 for _, away in legs) and frozenset(map(id, shares)) not in told:
             yield _Group(pole, True, shares)
 
 
-def _share(network: Network, one: CaseStudy, solution: Solution, branches: list[int]) -> _Share | None:
+def _share(network: Network, one: CaseStudy, solution: Solution, branches: tuple[int, ...]) -> _Share | None:
     """A way with its current and the least of its ampacities; None where none of those is known.
 
     A bond to the chassis belongs to its run, but the run's ampacity is that of its cable.
