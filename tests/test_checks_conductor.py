@@ -117,6 +117,15 @@ def test_the_thinner_return_decides() -> None:
     assert named_sizes(found.remedy) == {}
 
 
+def test_a_start_warms_no_cable() -> None:
+    """10 A and five times that for a moment, in a cable that carries 25 A or so and more than 10 A."""
+    runs = [cable("feed", "bank", "galley", "3 m", "1.5 mm2", protection=fuse("15 A"))]
+    loads = [lamp("fridge", "galley", "10 A", surge={"times": 5})]
+    assert fails(plan_of(runs, loads, cases=[{"name": "Start", "surge": ["fridge"]}]), "conductor.ampacity") == []
+    lasting = [{"name": "All at once", "loads": {"fridge": 5.0}}]
+    assert fails(plan_of(runs, loads, cases=lasting), "conductor.ampacity") == ["feed"]
+
+
 def test_the_worst_case_is_named() -> None:
     runs = [cable("feed", "bank", "pump", "2 m", "10 AWG", protection=fuse("100 A", kind="strip"))]
     cases = [

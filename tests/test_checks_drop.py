@@ -144,6 +144,18 @@ def test_a_drop_is_counted_from_a_working_source() -> None:
     assert found.value == pytest.approx(4.125, rel=1e-9)
 
 
+@pytest.mark.parametrize(("size", "severity"), [("4 mm2", "warn"), ("2.5 mm2", "fail")])
+def test_a_start_alone_only_warns_of_drop(size: str, severity: str) -> None:
+    """5 A over 2 x 3 m at 20 degC: 0.149 V (1.24 %) of 4 mm2, 0.239 V of 2.5 mm2; five times that in a start. The
+    critical class allows 3 %: of a rated 10 A, 2.48 % of 4 mm2 and 3.99 % of 2.5 mm2."""
+    runs = [cable("feed", "bank", "galley", "3 m", size, protection=fuse("15 A"))]
+    loads = [lamp("fridge", "galley", "10 A", surge={"times": 5}, **{"class": "critical"})]
+    cases = [{"name": "Start", "surge": ["fridge"]}, {"name": "Running"}]
+    found = only(plan_of(runs, loads, cases=cases), "drop.load", "fridge")
+    assert (found.severity, found.case) == (severity, "Start" if severity == "warn" else "Running")
+    assert ("starts" in found.message) == (severity == "warn")
+
+
 @pytest.mark.parametrize(("stand_in", "severity"), [(charger(), "warn"), (bank("charger", emf="14.4 V"), "fail")])
 def test_what_a_charger_alone_delivers_warns_and_a_second_bank_fails(stand_in: Row, severity: str) -> None:
     """A limit on drop means the source in service: a bank is one, a charger that runs without its bank a makeshift."""

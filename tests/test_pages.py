@@ -101,6 +101,18 @@ def test_each_example_and_each_table_can_be_shown(page: AppTest, name: str) -> N
     assert page.data_editor[0].value.iloc[0, 1:].tolist() == [case["name"] for case in raw["cases"]]
 
 
+def test_the_standard_cases_are_taken_into_a_plan_that_states_none(page: AppTest) -> None:
+    bare = examples.starter_text()
+    write(page, bare)
+    choose(page, "Cases")
+    assert "Everything on, low charge" in page.info[0].value
+    page.button(key="add_standard_cases").click().run()
+    assert not page.exception
+    names = [case.name for case in planfile.parse(bare).checked_cases]
+    assert page.data_editor[0].value.iloc[0, 1:].tolist() == names
+    assert not [one for one in page.button if one.key == "add_standard_cases"]
+
+
 def test_a_longer_cable_lowers_the_volts_and_undo_brings_them_back(page: AppTest) -> None:
     before = volts(page)["fridge"]
     write(page, longer("9 m"))

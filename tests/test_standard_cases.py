@@ -4,6 +4,7 @@ from typing import Any
 
 import pytest
 
+from farvolt.assumptions import assumptions
 from farvolt.plan import Case, Plan
 from farvolt.standard_cases import MOST_LOST, standard_cases, standard_set
 from wiring import Row, bank, cable, charger, context_of, lamp, plan_of
@@ -185,6 +186,17 @@ def test_many_sources_are_not_all_lost_and_the_set_says_so() -> None:
     assert lost[0] == 'Without "house bank"'
     assert len(lost) == MOST_LOST
     assert any(str(MOST_LOST) in line for line in found.left_out)
+
+
+def test_a_study_says_which_cases_were_taken_and_which_left_out() -> None:
+    plan = plan_with(LEAD, charger(at="bus", amps="1 A"))
+    told = " ".join(assumptions(context_of(plan)))
+    for case in standard_cases(plan):
+        assert case.name in told
+    assert 'Low charge of "house bank": 50 %' in told
+    assert 'The loss of "house bank" is not checked' in told
+    stated = plan_with(LEAD, cases=[{"name": "Evening"}])
+    assert "The plan states no cases" not in " ".join(assumptions(context_of(stated)))
 
 
 def test_long_names_make_cases_with_names_that_can_be_read() -> None:

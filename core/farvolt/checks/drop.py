@@ -46,7 +46,7 @@ def loads_on(solution: Solution) -> np.ndarray:
 def drop_to_load(context: Context) -> Iterator[Finding]:
     """The worst case of every load over its limit, at the rulebook's own conductor temperature.
 
-    A case in which something stands in for lost batteries only warns: the limit means the source in service.
+    A start, or what stands in for lost batteries, only warns: the limit means the rated load and the source in service.
     """
     count = len(context.plan.loads)
     table = np.array([percents(one.solutions["basis"]) for one in context.cases]).reshape(len(context.cases), count)
@@ -55,20 +55,23 @@ def drop_to_load(context: Context) -> Iterator[Finding]:
         limit = drop_class(context, load).limit_percent
         over = np.flatnonzero(table[:, load] > limit * (1 + 1e-9))
         if len(over):
-            in_service = [case for case in over if not _stands_in(context.cases[case].solutions["basis"], load)]
+            in_service = [case for case in over if not _exceptional(context.cases[case].solutions["basis"], load)]
             first = np.array(in_service or over)
             worst = int(first[np.argmax(table[first, load])])
             yield _to_load(context, load, worst, over.tolist(), remedies)
 
 
-def _stands_in(solution: Solution, load: int) -> bool:
-    """Whether a load's drop is counted from a source that stands in for the lost batteries of its island."""
+def _exceptional(solution: Solution, load: int) -> str:
+    """Why a case is none that a limit on drop means: a start, or a source that stands in for its island's batteries."""
     port, condition, sources = solution.references[load], solution.condition, solution.network.plan.sources
+    if condition.case.surge:
+        return "while a load starts"
     if port is None or isinstance(sources[port], Battery):
-        return False
+        return ""
     of_source = condition.islands.of_node[condition.source_a[: len(sources)]]
     banks = [isinstance(source, Battery) for source in sources]
-    return bool(np.any(banks & (of_source == of_source[port])))
+    lost = bool(np.any(banks & (of_source == of_source[port])))
+    return f'counted from "{sources[port].name}", with no bank on' if lost else ""
 
 
 def _to_load(context: Context, load: int, worst: int, over: Sequence[int], remedies: Remedies) -> Finding:
@@ -80,16 +83,15 @@ def _to_load(context: Context, load: int, worst: int, over: Sequence[int], remed
         f'"{name}" loses {apart(value, rule.limit_percent)} % of {number(nominal)} V on the way; '
         f'{number(rule.limit_percent)} % is the limit of the class "{rule.name}"'
     )
-    makeshift = _stands_in(solution, load)
-    if makeshift:
-        message += f'; counted from "{context.plan.sources[solution.references[load] or 0].name}", with no bank on'
+    exceptional = _exceptional(solution, load)
+    message += f"; {exceptional}" if exceptional else ""
     aim = Aim(
         load, "basis", worst, tuple(over), solution.way(load), lambda found: percent(found, load), rule.limit_percent,
         -100 / nominal, "%",
     )  # fmt: skip
     shown = tuple(working(one, solution, load))
     found = over_limit(context, "drop.load", aim, value, message, shown, remedies.for_load(aim))
-    return replace(found, severity="warn") if makeshift else found
+    return replace(found, severity="warn") if exceptional else found
 
 
 def over_limit(
