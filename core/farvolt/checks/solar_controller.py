@@ -17,10 +17,11 @@ def controller(context: Context) -> Iterator[Finding]:
     """Arrays too low to charge, or of impossible ratings; controllers that pass on less than their array gives."""
     for side in array_sides(context):
         array, ceiling = side.array, side.source.ceiling.si
-        for high, low, names in ((array.voc, array.vmp, "voc, vmp"), (array.isc, array.imp, "isc, imp")):
+        pairs = ((array.voc, array.vmp, "voc, vmp", "V"), (array.isc, array.imp, "isc, imp", "A"))
+        for high, low, names, unit in pairs:
             if low.si > high.si * (1 + 1e-9):
                 message = f"its array states {names} as {high}, {low}: the second is never the higher"
-                yield _finding(side, "warn", low.si, high.si, None, message, _MODULE, (), "the data sheet's figures")
+                yield _finding(side, "warn", low.si, high.si, unit, message, _MODULE, (), "the data sheet's figures")
         volts = array.series * array.vmp.si
         sums = f"{array.series} in series x {array.vmp} = {number(volts, 4)} V, at 25 degC; less when they are hot"
         if volts <= ceiling * (1 + 1e-9):
@@ -50,7 +51,7 @@ def _given_away(side: ArraySide) -> Iterator[Finding]:
 
 
 def _finding(
-    side: ArraySide, severity: Severity, value: float, limit: float, unit: str | None, message: str, basis: str,
+    side: ArraySide, severity: Severity, value: float, limit: float, unit: str, message: str, basis: str,
     working: tuple[str, ...], remedy: str,
 ) -> Finding:  # fmt: skip
     name = side.source.name
