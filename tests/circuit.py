@@ -165,7 +165,7 @@ def _conductors(plan: Plan, devices: list[tuple[Device, bool]]) -> list[tuple[Pi
     bars = _half_bars(plan)
     for run in plan.runs:
         ends = bars.get(run.from_point, 0.0) + bars.get(run.to_point, 0.0)
-        found += [((run.from_point, pole), (run.to_point, pole), ohm + ends) for pole, ohm in _run_ohm(run).items()]
+        found += [((run.from_point, pole), (run.to_point, pole), ohm + ends) for pole, ohm in run_ohm(run).items()]
         if run.return_path == "chassis":
             found.append((("chassis", "-"), (run.to_point, "-"), plan.plan.chassis_bond.si))
     for device, _ in devices:
@@ -209,7 +209,7 @@ def _bond_starts(plan: Plan, found: list[tuple[Pin, Pin, float]]) -> None:
                 found.append(((at, "-"), ("chassis", "-"), plan.plan.chassis_bond.si))
 
 
-def _run_ohm(run: Run) -> dict[str, float]:
+def run_ohm(run: Run) -> dict[str, float]:
     """Resistance at 20 °C of the conductors of a run by pole: ρ-table × length / parallel, joints, protection."""
     assert run.size is not None
     lengths, sizes = {"+": run.length.si, "-": run.length.si}, {"+": run.size.name, "-": run.size.name}
@@ -305,7 +305,7 @@ def _strings(battery: Battery, state: SourceState, pins: dict[Pin, int]) -> list
 
 def _nominals(plan: Plan, pins: dict[Pin, int]) -> dict[int, float]:
     """Nominal voltage at every feed node: a converter's or an array's own where only it delivers, else the plan's."""
-    edges = [((run.from_point, "+"), (run.to_point, "+")) for run in plan.runs if "+" in _run_ohm(run)]
+    edges = [((run.from_point, "+"), (run.to_point, "+")) for run in plan.runs if "+" in run_ohm(run)]
     edges += [((device.from_point, "+"), (device.to_point, "+")) for device in plan.devices]
     part = connected(pins, edges)
     own: dict[int, float] = {}

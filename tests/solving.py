@@ -51,8 +51,11 @@ class Solved:
 
     @property
     def source_amps(self) -> dict[str, float]:
-        """Current that every source delivers by its name."""
-        return {source.name: float(self.state.delivered_A[index]) for index, source in enumerate(self.plan.sources)}
+        """Current that every source delivers by its name, that of a battery with all its strings."""
+        found = {source.name: float(self.state.delivered_A[index]) for index, source in enumerate(self.plan.sources)}
+        for place, (index, _, _) in enumerate(self.network.strings):
+            found[self.plan.sources[index].name] += float(self.state.delivered_A[len(self.plan.sources) + place])
+        return found
 
     @property
     def run_amps(self) -> dict[tuple[str, int], float]:

@@ -46,9 +46,9 @@ class Wishes:
     bonded: float = 0.7
     """Of plans with a chassis: those that show its way back to the first point."""
     open_devices: float = 0.1
-    rings: float = 0.1
+    rings: float = 0.0
     """Plans whose points lie along one ring of runs."""
-    doubled: float = 0.1
+    doubled: float = 0.0
     """Plans with unequal cables side by side."""
     linked: float = 0.3
     """Of batteries with several strings: those that state the links between them."""
@@ -62,6 +62,11 @@ class Wishes:
     busbars: float = 0.0
     """Points that state the resistance of a bar."""
 
+
+ANYTHING = Wishes(
+    rings=0.1, doubled=0.2, aged=0.3, arrays=0.5, inverters=0.3, surges=0.3, busbars=0.15
+)  # fmt: skip
+"""Plans of every element."""
 
 LINEAR = Wishes(limited_sources=False, chargers=0.0, charger_only=0.0, solar=0.0, converters=0.0, diodes=0.0)
 """Batteries, conductors and devices only: sources that are linear."""
@@ -360,7 +365,12 @@ def _case(chance: random.Random, wishes: Wishes, draft: Draft) -> Draft:
     for device in draft["devices"]:
         if device["kind"] in ("switch", "relay") and chance.random() < wishes.open_devices:
             case["devices"][device["name"]] = "open"
-    surging = [load["name"] for load in draft["loads"] if "surge" in load and chance.random() < 0.4]
+    shares = case.get("loads", {load["name"]: 1.0 for load in draft["loads"]})
+    surging = [
+        load["name"]
+        for load in draft["loads"]
+        if "surge" in load and shares.get(load["name"], 0.0) > 0 and chance.random() < 0.4
+    ]
     if surging:
         case["surge"] = surging
     return case

@@ -10,13 +10,13 @@ import pytest
 from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
-from circuit import Circuit, currents, imbalance
+from circuit import Circuit, currents, imbalance, run_ohm
+from farvolt.network import FEED
 from solving import Solved, solved
-from strategies import LINEAR, Draft, Wishes, changed, drafts, plan_of, random_draft, times
+from strategies import ANYTHING, LINEAR, Draft, changed, drafts, plan_of, random_draft, times
 
 EPSILON = float(np.finfo(float).eps)
-MIXED = Wishes()
-HEAVY = Wishes(load_share=3.0)
+HEAVY = replace(ANYTHING, load_share=3.0)
 quick = settings(deadline=None, max_examples=60)
 
 
@@ -32,7 +32,7 @@ def close(one: dict[str, float], other: dict[str, float], *, factor: float = 1.0
 
 
 @quick
-@given(drafts(MIXED) | drafts(HEAVY))
+@given(drafts(ANYTHING) | drafts(HEAVY))
 def test_no_node_is_out_of_balance(draft: Draft) -> None:
     """Kirchhoff's current law from the laws of the elements, at the share of the loads that the state is for."""
     found = solved(plan_of(draft))
@@ -49,7 +49,7 @@ def assert_balanced(found: Solved) -> None:
 
 
 @quick
-@given(drafts(MIXED))
+@given(drafts(ANYTHING))
 def test_what_sources_give_is_what_loads_and_conductors_take(draft: Draft) -> None:
     """Conservation of energy: the sum of u times i over all elements is zero (Tellegen's theorem)."""
     found = solved(plan_of(draft))
@@ -61,7 +61,7 @@ def test_what_sources_give_is_what_loads_and_conductors_take(draft: Draft) -> No
 
 
 @quick
-@given(drafts(MIXED))
+@given(drafts(ANYTHING))
 def test_a_solved_plan_draws_what_its_loads_are_rated_for(draft: Draft) -> None:
     found = solved(plan_of(draft))
     assume(found.state.solved)
@@ -71,6 +71,86 @@ def test_a_solved_plan_draws_what_its_loads_are_rated_for(draft: Draft) -> None:
         assert found.load_amps[name] == pytest.approx(expected, rel=1e-9, abs=1e-12)
         drain = by_name.get(name)
         assert drain is None or drain.watts == drain.amps == 0 or volts >= drain.knee
+
+
+def kept(draft: Draft, **changes: object) -> Draft:
+    """The draft with other shares of its loads, and nothing in surge, so that the same elements are at work."""
+    result = copy.deepcopy(draft)
+    result["cases"][0] |= {"surge": [], **changes}
+    return result
+
+
+@quick
+@given(drafts(replace(LINEAR, busbars=0.2)), st.floats(0.1, 0.9))
+def test_volts_of_one_state_times_currents_of_another_sum_to_nothing(draft: Draft, share: float) -> None:
+    """Tellegen's theorem: over one network, whatever its elements do, the sum of u times i' is zero."""
+    names = [load["name"] for load in draft["loads"]]
+    one = solved(plan_of(kept(draft, loads="all")))
+    other = solved(plan_of(kept(draft, loads=dict.fromkeys(names, share))))
+    assume(one.state.solved and other.state.solved)
+    pairs = zip(
+        currents(one.circuit, one.node_volts), currents(other.circuit, other.node_volts), strict=True
+    )  # fmt: skip
+    volts, watts = one.node_volts, []
+    for (a, b, _), (same_a, same_b, amps) in pairs:
+        assert (a, b) == (same_a, same_b)
+        watts.append((volts[a] - volts[b]) * amps)
+    assert abs(math.fsum(watts)) <= 1e-9 * math.fsum(map(abs, watts)) + 1e-9
+
+
+@quick
+@given(drafts(ANYTHING) | drafts(HEAVY))
+def test_around_every_loop_of_runs_the_drops_cancel(draft: Draft) -> None:
+    """Kirchhoff's voltage law, from the currents that are reported and the resistances of the plan's own tables."""
+    falls = conductor_falls(solved(plan_of(draft)))
+    level = levels(falls)
+    # Along the tree that the levels were found by this says nothing; every other conductor closes a loop.
+    wrong = [(a, b) for a, b, fall in falls if not math.isclose(level[a] - level[b], fall, abs_tol=1e-8)]
+    assert wrong == []
+
+
+def conductor_falls(found: Solved) -> list[tuple[int, int, float]]:
+    """(from, to, V) of every conductor of a run: its resistance times the current that is reported."""
+    bars = {point.name: point.resistance.si / 2 for point in found.plan.points if point.resistance is not None}
+    runs, pins = {run.name: run for run in found.plan.runs}, found.circuit.pins
+    falls = []
+    for (name, pole), amps in found.run_amps.items():
+        run, mark = runs[name], "+" if pole == FEED else "-"
+        start, ohm = run.from_point, found.plan.plan.chassis_bond.si
+        if run.return_path == "chassis" and mark == "-":
+            start = "chassis"
+        else:
+            ohm = run_ohm(run)[mark] + bars.get(run.from_point, 0.0) + bars.get(run.to_point, 0.0)
+        falls.append((pins[start, mark], pins[run.to_point, mark], ohm * amps))
+    return falls
+
+
+def levels(falls: list[tuple[int, int, float]]) -> dict[int, float]:
+    """A voltage at every node, walking along the conductors from one node of each part at zero."""
+    beside: dict[int, list[tuple[int, float]]] = {}
+    for a, b, fall in falls:
+        beside.setdefault(a, []).append((b, -fall))
+        beside.setdefault(b, []).append((a, fall))
+    level: dict[int, float] = {}
+    for start in beside:
+        level.setdefault(start, 0.0)
+        stack = [start]
+        while stack:
+            node = stack.pop()
+            ahead = [(other, level[node] + rise) for other, rise in beside[node] if other not in level]
+            level.update(ahead)
+            stack += [other for other, _ in ahead]
+    return level
+
+
+@quick
+@given(drafts(replace(ANYTHING, chassis=0.0, extra_batteries=0.8, charger_only=0.0)), st.randoms(use_true_random=False))
+def test_the_choice_of_a_reference_changes_no_volts(draft: Draft, chance: random.Random) -> None:
+    """Which source's return is called zero is a matter of naming: differences of potential are what there is."""
+    candidates = [source["name"] for source in draft["sources"] if source["kind"] != "converter"]
+    other = copy.deepcopy(draft)
+    draft["plan"]["reference"], other["plan"]["reference"] = candidates[0], chance.choice(candidates)
+    assert same(solved(plan_of(other)), solved(plan_of(draft)))
 
 
 # The highest solution --------------------------------------------------------------------------------------------
@@ -129,6 +209,69 @@ def ports(circuit: Circuit) -> tuple[np.ndarray, np.ndarray]:
         incidence[nodes[drain.a], column] += 1
         incidence[nodes[drain.b], column] -= 1
     return incidence.T @ np.linalg.solve(matrix, injected), incidence.T @ np.linalg.solve(matrix, incidence)
+
+
+# Only up, or only down -------------------------------------------------------------------------------------------
+
+ONE_SOURCE = replace(LINEAR, extra_batteries=0.0, linked=0.0, busbars=0.2)
+"""Feed and return meet at one source alone: nothing but loads joins them elsewhere."""
+
+TREES = replace(ONE_SOURCE, loops=0, doubled=0.0, chassis=0.0, behaviours=("power", "current"))
+
+
+def nowhere_higher(lower: Solved, higher: Solved) -> bool:
+    """Whether no load of the first stands above where it stands in the second; NaN where neither is fed."""
+    pairs = [(lower.load_volts[name], volts) for name, volts in higher.load_volts.items()]
+    return all(one <= other + 1e-9 for one, other in pairs if math.isfinite(other))
+
+
+@quick
+@given(drafts(ONE_SOURCE), st.randoms(use_true_random=False), st.floats(1.01, 1.5))
+def test_with_one_source_more_load_raises_no_volts(draft: Draft, chance: random.Random, factor: float) -> None:
+    """Transfer resistances of two networks that meet at one source are sums of entries of inverses of M-matrices, so
+    none is negative (A. Berman and R. Plemmons, Nonnegative matrices in the mathematical sciences, ch. 6)."""
+    before = kept(draft, loads="all")
+    heavier = copy.deepcopy(before)
+    load = chance.choice(heavier["loads"])
+    key = next(one for one in ("power", "current", "resistance") if one in load)
+    load[key] = times(load[key], 1 / factor if key == "resistance" else factor)
+    found, after = solved(plan_of(before)), solved(plan_of(heavier))
+    assert found.state.solved or not after.state.solved
+    if after.state.solved:
+        assert nowhere_higher(after, found)
+
+
+@quick
+@given(drafts(ONE_SOURCE), st.floats(1.001, 1.2))
+def test_with_one_source_more_emf_lowers_no_volts(draft: Draft, factor: float) -> None:
+    """For the same reason: without loads every voltage is the EMF, and all that loads draw falls with the voltage."""
+    before = with_stated_resistance(draft)
+    stronger = copy.deepcopy(before)
+    stronger["sources"][0]["emf"] = times(before["sources"][0]["emf"], factor)
+    found, after = solved(plan_of(before)), solved(plan_of(stronger))
+    assert after.state.solved or not found.state.solved
+    if found.state.solved:
+        assert nowhere_higher(found, after)
+
+
+@quick
+@given(drafts(TREES), st.randoms(use_true_random=False), st.floats(1.01, 2.0))
+def test_in_trees_of_powers_and_currents_a_longer_cable_raises_no_volts(
+    draft: Draft, chance: random.Random, factor: float
+) -> None:
+    """Where feed and return are both trees each conductor carries all that stands beyond it: by induction from the
+    source on, a greater resistance lowers what is beyond, which then draws no less. Not so with resistances: see
+    `test_a_thicker_cable_to_a_heater_lowers_its_neighbour`."""
+    assume(draft["runs"])
+    longer = copy.deepcopy(draft)
+    run = chance.choice(longer["runs"])
+    for key in ("length", "resistance"):
+        if key in run:
+            run[key] = times(run[key], factor)
+    found, after = solved(plan_of(draft)), solved(plan_of(longer))
+    assert found.state.solved or not after.state.solved
+    if after.state.solved:
+        assert nowhere_higher(after, found)
 
 
 # Linear networks --------------------------------------------------------------------------------------------------
@@ -204,11 +347,11 @@ def same(one: Solved, other: Solved, **factors: float) -> bool:
 
 
 @quick
-@given(drafts(MIXED), st.sampled_from([0.5, 2.0, 3.0]))
+@given(drafts(ANYTHING), st.sampled_from([0.5, 2.0, 3.0]))
 def test_volts_and_amps_scale_together(draft: Draft, factor: float) -> None:
     """With every voltage and current times k and every power times k², the same network gives k times the answer."""
-    volts = {"emf", "volts", "ceiling", "nominal", "rated_volts", "drop"}
-    amps, watts = {"amps", "current", "short_circuit"}, {"power", "standby"}
+    volts = {"emf", "volts", "ceiling", "nominal", "rated_volts", "drop", "vmp", "voc"}
+    amps, watts = {"amps", "current", "short_circuit", "imp", "isc"}, {"power", "standby"}
 
     def scaled(table: str, key: str, value: object) -> object:
         power = 1 if key in volts | amps else 2 if key in watts else 0
@@ -220,17 +363,16 @@ def test_volts_and_amps_scale_together(draft: Draft, factor: float) -> None:
 
 
 @quick
-@given(drafts(Wishes(diodes=0.0)), st.sampled_from([0.5, 2.0, 3.0]))
+@given(drafts(replace(ANYTHING, diodes=0.0, arrays=0.0)), st.sampled_from([0.5, 2.0, 3.0]))
 def test_longer_cables_with_smaller_loads_keep_the_volts(draft: Draft, factor: float) -> None:
-    """With every resistance times k and every current and power over k, volts stay and currents are over k."""
+    """With every resistance times k and every current and power over k, volts stay and currents are over k.
+
+    Left out is what has a resistance of its own that no plan states: diodes that leak, the controllers of arrays.
+    """
     ohms = {"resistance", "joint_resistance", "return_bond", "length"}
     amps = {"amps", "current", "short_circuit", "power", "standby"}
 
     def scaled(table: str, key: str, value: object) -> object:
-        if key == "return" and isinstance(value, dict):
-            return {**value, "length": times(value["length"], factor)}
-        if key == "protection" and isinstance(value, list):
-            return [{**one, "resistance": times(one["resistance"], factor)} for one in value]
         return times(str(value), factor if key in ohms else 1 / factor) if key in ohms | amps else value
 
     larger = changed(draft, scaled)
@@ -239,15 +381,20 @@ def test_longer_cables_with_smaller_loads_keep_the_volts(draft: Draft, factor: f
 
 
 @quick
-@given(drafts(MIXED), st.randoms(use_true_random=False))
+@given(drafts(ANYTHING), st.randoms(use_true_random=False))
 def test_names_and_order_do_not_matter(draft: Draft, chance: random.Random) -> None:
     points = list(plan_of(draft).point_names)
     names = dict(
         zip(points, chance.sample([f"Punkt {index}" for index in range(len(points))], len(points)), strict=True)
     )
     places = {"at", "from", "to"}
-    other = changed(draft, lambda table, key, value: names.get(value, value) if key in places else value)
-    for table in ("sources", "runs", "devices", "loads"):
+    other = changed(
+        draft,
+        lambda table, key, value: (
+            names.get(value, value) if key in places or (table, key) == ("points", "name") else value
+        ),
+    )
+    for table in ("points", "sources", "runs", "devices", "loads"):
         chance.shuffle(other[table])
     for one in (draft, other):
         one["plan"]["reference"] = draft["sources"][0]["name"]
@@ -255,7 +402,7 @@ def test_names_and_order_do_not_matter(draft: Draft, chance: random.Random) -> N
 
 
 @quick
-@given(drafts(MIXED), st.randoms(use_true_random=False))
+@given(drafts(ANYTHING), st.randoms(use_true_random=False))
 def test_a_run_drawn_the_other_way_round_only_turns_its_current(draft: Draft, chance: random.Random) -> None:
     either_way = [index for index, run in enumerate(draft["runs"]) if run.get("return") != "chassis"]
     assume(either_way)
@@ -272,19 +419,24 @@ def test_a_run_drawn_the_other_way_round_only_turns_its_current(draft: Draft, ch
 
 
 @quick
-@given(drafts(replace(MIXED, extra_batteries=0.0, chargers=0.0, solar=0.0, converters=0.0)))
+@given(drafts(replace(ANYTHING, extra_batteries=0.0, chargers=0.0, solar=0.0, converters=0.0)))
 def test_twin_branches_see_the_same_volts(draft: Draft) -> None:
     """Everything beyond the source's point is there twice: by symmetry both twins are alike."""
     twins = copy.deepcopy(draft)
     stays = {"p0", "chassis"}
-    for table in ("runs", "devices", "loads"):
+    for table in ("points", "runs", "devices", "loads"):
         for row in draft[table]:
+            if row["name"] in stays:
+                continue
             beside = {
                 key: f"{row[key]} twin" for key in ("name", "from", "to", "at") if key in row and row[key] not in stays
             }
             twins[table].append({**row, **beside})
     for states in (twins["cases"][0]["devices"], twins["cases"][0].get("loads", {})):
         states.update({f"{name} twin": state for name, state in list(states.items())})
+    twins["cases"][0]["surge"] = [
+        twin for name in draft["cases"][0].get("surge", []) for twin in (name, f"{name} twin")
+    ]
     found = solved(plan_of(twins))
     assume(found.state.solved)
     volts = found.load_volts

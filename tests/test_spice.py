@@ -45,7 +45,7 @@ def test_the_program_that_compares_at_length(capsys: pytest.CaptureFixture[str])
     assert printed.splitlines()[-1].startswith("all")
 
 
-@pytest.mark.parametrize("kind", ["mixed", "converters, solar and diodes"])
+@pytest.mark.parametrize("kind", ["anything", "converters, solar and diodes", "arrays behind controllers"])
 def test_the_same_parts_are_fed(kind: str) -> None:
     wishes, count = KINDS[kind]
     for seed in range(count):

@@ -21,24 +21,27 @@ from circuit import Circuit, circuit_of
 from farvolt import network, operating, rulebook
 from farvolt.solve import State, solve
 from spice import Answer, answer, largest_difference_V
-from strategies import Wishes, plan_of, random_draft
+from strategies import ANYTHING, Wishes, plan_of, random_draft
 
 AGREE_V = 1e-6
 QUICK_RISE_S, SLOW_RISE_S, SLOWEST_RISE_S = 2.0, 40.0, 400.0
 PLANS = 2000
 
 KINDS: dict[str, tuple[Wishes, int]] = {
-    "mixed": (Wishes(), 120),
-    "radial": (Wishes(loops=0, rings=0.0, doubled=0.0), 60),
-    "rings": (Wishes(loops=0, rings=1.0), 60),
-    "meshed": (Wishes(loops=8, points=(6, 14), rings=0.0), 60),
-    "cables side by side": (Wishes(doubled=1.0, rings=0.0), 40),
-    "through the chassis": (Wishes(chassis=1.0, rings=0.0), 50),
-    "strings with links": (Wishes(linked=1.0, extra_batteries=0.6, charger_only=0.0), 60),
-    "converters, solar and diodes": (Wishes(converters=1.0, solar=0.7, diodes=1.0, rings=0.0), 60),
+    "anything": (ANYTHING, 150),
+    "radial": (Wishes(loops=0), 50),
+    "rings": (Wishes(loops=0, rings=1.0), 50),
+    "meshed": (Wishes(loops=8, points=(6, 14)), 50),
+    "cables side by side": (Wishes(doubled=1.0), 40),
+    "through the chassis": (Wishes(chassis=1.0), 50),
+    "strings, aged and not": (Wishes(linked=1.0, aged=0.5, extra_batteries=0.6, charger_only=0.0), 50),
+    "converters, solar and diodes": (Wishes(converters=1.0, solar=0.7, diodes=1.0), 50),
     "converters behind converters": (Wishes(converters=1.0, chained=0.8), 50),
-    "nothing but a charger": (Wishes(charger_only=1.0, converters=0.0), 60),
-    "heavily loaded": (Wishes(load_share=2.5), 80),
+    "arrays behind controllers": (Wishes(solar=1.0, arrays=1.0, charger_only=0.0), 60),
+    "inverters and surges": (Wishes(inverters=0.6, surges=0.7), 50),
+    "busbars": (Wishes(busbars=0.5), 40),
+    "nothing but a charger": (Wishes(charger_only=1.0, converters=0.0), 50),
+    "heavily loaded": (replace(ANYTHING, load_share=2.5), 60),
 }
 """What a random plan of each kind may hold, and how many the tests compare."""
 
