@@ -64,16 +64,19 @@ def test_the_fault_level_falls_with_distance(lengths: list[float], size: str) ->
 @settings(max_examples=40, deadline=None)
 @given(SEEDS, st.sampled_from(["battery", "charger"]))
 def test_a_further_source_never_lowers_the_highest(seed: int, kind: str) -> None:
-    """On plans whose feeds and returns run side by side, at every point."""
+    """On radial plans whose returns run beside their feeds. In others a further source may raise the return that a
+    fault's current needs, and lower it by a little."""
     chance = random.Random(seed)
-    draft = random_draft(chance, Wishes(chassis=0, converters=0))
+    draft = random_draft(chance, Wishes(loops=0, chassis=0, converters=0))
+    together = [one for one in draft["runs"] if one.get("carries") != "return"]
+    draft["runs"] = [{key: value for key, value in one.items() if key != "carries"} for one in together]
     volts = f"{chance.uniform(0.5, 1.2) * float(draft['plan']['nominal'].split()[0]):.4g} V"
     more: dict[str, Any] = {"name": "further", "kind": kind, "at": chance.choice(draft["runs"])["to"]}
     more |= {"emf": volts, "resistance": "5 mohm"} if kind == "battery" else {"volts": volts, "amps": "25 A"}
     before = faults(plan_of(draft)).points
     after = faults(plan_of(draft | {"sources": [*draft["sources"], more]})).points
     assert {
-        name: (one.amps, after[name].amps) for name, one in before.items() if after[name].amps < one.amps * (1 - 1e-7)
+        name: (one.amps, after[name].amps) for name, one in before.items() if after[name].amps < one.amps * (1 - 1e-6)
     } == {}
 
 

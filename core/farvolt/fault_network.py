@@ -39,6 +39,8 @@ class FaultNetwork:
         self.ohm = self.fixed_ohm + self.cable_ohm
         self.run, self.device, self.pole = network.run[closed], network.device[closed], network.pole[closed]
         self.circuit = Circuit(network.node_count, network.a[closed], network.b[closed], self.ohm, ports(sources))
+        ends = (self.circuit.a, self.circuit.b, self.circuit.ports.a, self.circuit.ports.b)
+        self._meeting = np.bincount(np.concatenate(ends), minlength=network.node_count)
         cables = np.flatnonzero((self.run >= 0) & (self.cable_ohm > 0))
         keys = zip(self.run[cables].tolist(), self.pole[cables].tolist(), strict=True)
         self._branches = dict(zip(keys, cables.tolist(), strict=True))
@@ -72,6 +74,10 @@ class FaultNetwork:
         a, b = int(self.circuit.a[branch]), int(self.circuit.b[branch])
         node, other = (a, b) if end == "from" else (b, a)
         return Spot(node, branch, other, half + share * cable, half + (1 - share) * cable + beyond_ohm, half)
+
+    def ends_at(self, spot: Spot) -> bool:
+        """Whether nothing but the run that a spot lies in is joined to its `node`: no current comes from there."""
+        return bool(self._meeting[spot.node] == 1)
 
     def opposite(self, run: int, pole: int, end: str, along_m: float) -> list[Spot]:
         """What a short within a run may end at: its own conductor of that pole beside it; where it has none, that

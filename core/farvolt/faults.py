@@ -95,8 +95,10 @@ class Faults:
         names, guards = self._network.plan.point_names, net.guarded
         branches = np.array([branch for _, branch in guards], dtype=np.int64)
         most, where = np.array([best[key].amps if key in best else 0.0 for key, _ in guards]), np.full(len(guards), -1)
-        for place, found in enumerate(net.circuit.shorted([net.point(name) for name in names])):
-            amps = np.abs(found.branch_A[branches])
+        if not guards:
+            return
+        for place, currents in enumerate(net.circuit.through([net.point(name) for name in names], branches)):
+            amps = np.abs(currents)
             higher = amps > most * (1 + 1e-9)
             most, where = np.where(higher, amps, most), np.where(higher, place, where)
         places = np.unique(where[where >= 0]).tolist()
@@ -115,8 +117,9 @@ class Faults:
                 against = net.opposite(index, opposite, one.end, along)
                 for end, metres in ((one.end, along), (other_end, run.length.si - along)):
                     spot = net.spot(index, pole, end, metres, one.resistance.si if one.resistance else 0.0)
-                    for back in against if spot is not None else ():
-                        assert spot is not None
+                    if spot is None or net.ends_at(spot):
+                        continue
+                    for back in against:
                         yield (index, number), pole, Place(spot, back) if pole == FEED else Place(back, spot)
 
     @cached_property

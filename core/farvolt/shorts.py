@@ -22,8 +22,8 @@ from farvolt.operating import components
 LEAK_S = 1e-6
 """Leak across every one-way port, as of a blocking diode: no part of a network floats."""
 
-BLOCK = 256
-"""Places solved together."""
+BLOCK = 32
+"""Places solved together: few enough for what they need to stay in a processor's cache."""
 
 _EPSILON = float(np.finfo(float).eps)
 _ROUNDS = 20
@@ -116,6 +116,18 @@ class Shorted:
         return through + near * drawn, -through + far * drawn
 
 
+@dataclass(frozen=True)
+class _Block:
+    """Places solved together. By node and place: what an ampere of each short draws, and the volts that it takes off;
+    by bounded port and place: what the port injects beyond its sloping range; by port and place: its limit."""
+
+    draws: Floats
+    by_place: Floats
+    injected: Floats
+    limits: np.ndarray
+    amps: Floats
+
+
 class Circuit:
     """One network of conductors and ports, ready to be shorted anywhere."""
 
@@ -173,8 +185,17 @@ class Circuit:
         for first in range(0, len(places), BLOCK):
             yield from self._block(places[first : first + BLOCK])
 
-    def _block(self, places: Sequence[Place]) -> Iterator[Shorted]:
-        p, draws = self.ports, self._draws(places)
+    def through(self, places: Sequence[Place], branches: Ints) -> Iterator[Floats]:
+        """For each place, the currents in some branches alone; without what shows that they balance."""
+        a, b = self.a[branches], self.b[branches]
+        for first in range(0, len(places), BLOCK):
+            part = self._solved(places[first : first + BLOCK])
+            start, by_port = self._start_V[a] - self._start_V[b], self._by_port_V[a] - self._by_port_V[b]
+            across = start[:, None] + by_port @ part.injected - (part.by_place[a] - part.by_place[b]) * part.amps
+            yield from (self.siemens[branches, None] * across).T
+
+    def _solved(self, places: Sequence[Place]) -> "_Block":
+        draws = self._draws(places)
         by_place = self._spread(draws)
         inner = np.array([place.feed.inner_ohm + place.back.inner_ohm for place in places])
         ohm = np.einsum("nk,nk->k", draws, by_place) + inner
@@ -183,8 +204,12 @@ class Circuit:
         at_ports = self._across(by_place)
         injected, limits = self._corrections(at_ports, draws.T @ self._start_V, ohm)
         amps = (draws.T @ self._start_V + np.einsum("mk,mk->k", at_ports[self._bounded], injected)) / ohm
-        amps = np.where(joined, amps, 0.0)
-        volts = self._start_V[:, None] + self._by_port_V @ injected - by_place * amps
+        return _Block(draws, by_place, injected, limits, np.where(joined, amps, 0.0))
+
+    def _block(self, places: Sequence[Place]) -> Iterator[Shorted]:
+        p, part = self.ports, self._solved(places)
+        draws, amps, limits = part.draws, part.amps, part.limits
+        volts = self._start_V[:, None] + self._by_port_V @ part.injected - part.by_place * amps
         branch_A = self.siemens[:, None] * (volts[self.a] - volts[self.b])
         across = self._across(volts)
         port_A = np.clip((p.volts[:, None] - across) / p.ohm[:, None], p.low[:, None], p.high[:, None])
