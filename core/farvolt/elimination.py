@@ -41,6 +41,9 @@ class Elimination:
             self._place(unknown, unknown)
         self._steps = [self._step(unknown, sorted(rest)) for unknown, rest in _order(beside)]
         self.places = len(self._places)
+        codes = np.array([row * size + column for row, column in self._places], dtype=np.int64)
+        self._rank = np.argsort(codes)
+        self._codes = codes[self._rank]
 
     def _place(self, row: int, column: int) -> int:
         return self._places.setdefault((row, column), len(self._places))
@@ -58,8 +61,8 @@ class Elimination:
 
     def place(self, rows: Ints, columns: Ints) -> Ints:
         """Where each entry (row, column) is among the `places` of a matrix."""
-        pairs = zip(rows.tolist(), columns.tolist(), strict=True)
-        return np.array([self._places[pair] for pair in pairs], dtype=np.int64)
+        found: Ints = self._rank[np.searchsorted(self._codes, rows * self.size + columns)]
+        return found
 
     def solve(self, matrices: Floats, right: Floats) -> tuple[Floats, np.ndarray]:
         """Solutions over (unknown, matrix), and for each matrix whether all its pivots are positive.

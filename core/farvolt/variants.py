@@ -30,7 +30,7 @@ _HAIR_V = 1e-8
 _CHUNK = 500
 """Variants at a time: their arrays then stay in the processor's cache."""
 
-_CHUNK_NODES = 50_000
+_CHUNK_NODES = 400_000
 """Nodes of a batch, at most, unless fewer than 20 variants are left of it."""
 
 
