@@ -110,6 +110,17 @@ def test_devices_and_protection_on_the_array_s_side_are_held_to_it() -> None:
     assert only(roof(devices=(switch,), **held), VOLTS, "roof").severity == "warn"
 
 
+def test_what_a_remedy_asks_for_is_rounded_up() -> None:
+    """38.3 V x 1.14 = 43.662 V: a fuse for 43.7 V, never for 43.6 V; of 1.16 x 38.3 V = 44.428 V 44.5 V."""
+    for coldest, volts in (("-7 degC", "43.7 V"), ("-15 degC", "44.5 V")):
+        plan = roof(coldest=coldest, run={"protection": fuse("15 A")})
+        assert volts in (only(plan, VOLTS, "array cable").remedy or "")
+
+
+def test_the_controller_s_input_is_no_lonely_point() -> None:
+    assert findings(roof(), "plan.lonely-point") == []
+
+
 def test_cables_past_the_controller_are_a_fault_of_their_own() -> None:
     found = only(roof(runs=(cable("slip", "roof box", "bank"),)), "solar.past-controller", "roof")
     assert found.severity == "fail"

@@ -6,7 +6,7 @@ import numpy as np
 
 from farvolt.checks.array_side import devices_on_array_sides
 from farvolt.checks.flows import Flow, Flows, device_amps
-from farvolt.checks.registry import apart, check
+from farvolt.checks.registry import apart, at_least, check
 from farvolt.checks.upstream import Arrival, Upstream
 from farvolt.checks.ways import PRACTICE
 from farvolt.context import CaseStudy, Context, label
@@ -90,7 +90,7 @@ def _device_volts(context: Context, device: Device, highest: "_Highest") -> Iter
             f'"{device.name}" ({device.kind}) is rated {device.volts}; its part of the plan reaches '
             f"{apart(volts, limit)} V",
             _VOLTS, (f"{why}: {apart(volts, limit, 4)} V > {number(limit, 4)} V",),
-            f"a {device.kind} rated for at least {number(volts)} V DC",
+            f"a {device.kind} rated for at least {at_least(volts)} V DC",
         )  # fmt: skip
 
 
@@ -118,7 +118,7 @@ def _over(
     return Finding(
         "device.rating", "fail", name, kind, case, amps, rating, "A",
         f'"{name}" ({what}) carries {apart(amps, rating)} A; it is rated {number(rating)} A', _RATING, working,
-        f"a {what} rated for at least {number(amps)} A continuous, or less load through it",
+        f"a {what} rated for at least {at_least(amps)} A continuous, or less load through it",
     )  # fmt: skip
 
 
@@ -134,7 +134,7 @@ def _behind_more(context: Context, name: str, kind: Kind, what: str, rating: Qua
         f'"{name}" ({what}) is rated {rating}, less than {by} that protects it',
         f"{PRACTICE}: what stands behind a protection is rated at least as high, or it may be overloaded unnoticed",
         (f"{apart(amps, rating.si)} A > {number(rating.si)} A",),
-        f"a {what} rated for at least {number(amps)} A, or {less}",
+        f"a {what} rated for at least {at_least(amps)} A, or {less}",
     )  # fmt: skip
 
 

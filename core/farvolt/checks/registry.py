@@ -1,5 +1,6 @@
 """Where a check says its rule, its title and what it reads of the rulebook."""
 
+import math
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
@@ -59,6 +60,12 @@ def apart(value: float, limit: float, digits: int = 3) -> str:
     """A value rounded for reading, with as many digits as keep it apart from the limit it breaks."""
     enough = (more for more in range(digits, 12) if number(value, more) != number(limit, more))
     return number(value, next(enough, digits))
+
+
+def at_least(value: float, digits: int = 3) -> str:
+    """A value rounded up for reading: what a remedy asks for must not fall short of what is needed."""
+    step = 10 ** (math.floor(math.log10(value)) - digits + 1) if value > 0 else 1.0
+    return number(math.ceil(value / step - 1e-9) * step, digits)
 
 
 def registered() -> tuple[Check, ...]:

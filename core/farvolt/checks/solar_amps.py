@@ -3,7 +3,7 @@
 from collections.abc import Iterator
 
 from farvolt.checks.array_side import ArraySide, array_sides
-from farvolt.checks.registry import apart, check, run_finding
+from farvolt.checks.registry import apart, at_least, check, run_finding
 from farvolt.context import Context, label, larger_sizes
 from farvolt.plan import Device, Run
 from farvolt.results import Finding
@@ -103,7 +103,7 @@ def _guards(side: ArraySide, run: Run) -> Iterator[Finding]:
                 f"{label(run)}: its {guard.rating} {guard.type} is rated below the {apart(needs, rating)} A that the "
                 "array asks for: it may open in bright sun", _BASIS,
                 (_working(side), f"x {LASTING} (lasting) = {apart(needs, rating, 4)} A > {number(rating, 4)} A"),
-                f"a rating of at least {number(needs)} A that the cable's ampacity still allows",
+                f"a rating of at least {at_least(needs)} A that the cable's ampacity still allows",
             )  # fmt: skip
 
 
@@ -121,7 +121,7 @@ def _device(side: ArraySide, device: Device) -> Iterator[Finding]:
             f'"{device.name}" ({device.kind}) is rated {device.continuous}; its array may drive '
             f"{apart(amps, rating)} A",
             _BASIS, (_working(side), f"{apart(amps, rating, 4)} A > {number(rating, 4)} A"),
-            f"a {device.kind} rated for at least {number(amps)} A DC",
+            f"a {device.kind} rated for at least {at_least(amps)} A DC",
         )  # fmt: skip
 
 
@@ -147,7 +147,7 @@ def _fuses(side: ArraySide, amps: float, allowed: float, sums: str) -> Finding:
     """Each string needs a fuse: from 1.56 x its short-circuit current up to what the maker allows."""
     least = side.array.isc.si * BRIGHT * LASTING
     rating = f"{BRIGHT} x {LASTING} x {number(side.array.isc.si, 4)} A = {number(least, 4)} A"
-    fits = f"a fuse in each string, rated from {number(least)} A to {number(allowed)} A, at the array"
+    fits = f"a fuse in each string, rated from {at_least(least)} A to {number(allowed)} A, at the array"
     none = f"no fuse fits: {rating} is the least, above the {number(allowed)} A allowed; fewer strings in parallel"
     return _reverse(
         side, amps, allowed,

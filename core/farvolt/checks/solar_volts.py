@@ -4,7 +4,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from farvolt.checks.array_side import ArraySide, array_sides
-from farvolt.checks.registry import apart, check, run_finding
+from farvolt.checks.registry import apart, at_least, check, run_finding
 from farvolt.context import Context, label
 from farvolt.plan import Plan, Protection, Run
 from farvolt.results import Finding, Kind
@@ -97,7 +97,7 @@ def _parts(context: Context, side: ArraySide, cold: ColdVolts, volts: float) -> 
     for device in side.devices:
         if device.volts is not None and volts > device.volts.si * (1 + 1e-9):
             yield _over(device.name, "device", f'"{device.name}" ({device.kind}) is rated {device.volts}', cold, volts,
-                        device.volts.si, f"a {device.kind} rated for at least {number(volts)} V DC")  # fmt: skip
+                        device.volts.si, f"a {device.kind} rated for at least {at_least(volts)} V DC")  # fmt: skip
     for index in side.runs:
         run = context.plan.runs[index]
         for guard in run.protections:
@@ -122,7 +122,7 @@ def _guard(run: Run, guard: Protection, cold: ColdVolts, volts: float) -> Iterat
         "solar.open-circuit-volts", "fail", run, volts, limit, "V",
         f"{label(run)}: its {guard.rating} {guard.type} is rated {number(limit)} V{typical}; the array reaches "
         f"{apart(volts, limit)} V on the coldest day",
-        basis, (*cold.working, compared), f"protection rated for at least {number(volts)} V DC",
+        basis, (*cold.working, compared), f"protection rated for at least {at_least(volts)} V DC",
     )  # fmt: skip
 
 

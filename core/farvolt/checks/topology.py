@@ -10,7 +10,7 @@ from farvolt.checks.registry import check
 from farvolt.context import CaseStudy, Context, label
 from farvolt.network import FEED, RETURN
 from farvolt.operating import device_closed
-from farvolt.plan import CHASSIS, Converter, Run
+from farvolt.plan import CHASSIS, Converter, Run, Solar
 from farvolt.results import Finding, Kind, Severity
 
 _BASIS = "common practice: every load has a way from a source and a way back"
@@ -155,7 +155,8 @@ def lonely_point(context: Context) -> Iterator[Finding]:
             uses[name] = uses.get(name, 0) + 1
     listed = {point.name for point in context.plan.points}
     for source in context.plan.sources:
-        for name in (source.at, *((source.from_point,) if isinstance(source, Converter) else ())):
+        inlet = source.from_point if isinstance(source, Converter | Solar) else None
+        for name in (source.at, *((inlet,) if inlet is not None else ())):
             uses[name] = uses.get(name, 0) + 1
         array = getattr(source, "array", None)
         if array is not None:
