@@ -170,6 +170,47 @@ def test_a_bridge_out_of_balance() -> None:
     assert found.source_amps["bank"] == pytest.approx(136.092e-3, abs=5e-7)
 
 
+def test_a_star_stands_for_a_triangle() -> None:
+    """A. E. Kennelly, 1899: a star of a, b, c equals a triangle whose side across from c is (ab + bc + ca) / c.
+
+    20, 30 and 60 mohm give 3600/60 = 60, 3600/30 = 120 and 3600/20 = 180 mohm.
+    """
+    draws = load("B", "B", current="8 A"), load("C", "C", current="5 A")
+    backs = wire("B back", "B", "A", "1 uohm", "return"), wire("C back", "C", "A", "1 uohm", "return")
+    bank = battery("bank", "A", "12 V")
+    star = (
+        wire("a", "A", "star", "20 mohm", "feed"), wire("b", "B", "star", "30 mohm", "feed"),
+        wire("c", "C", "star", "60 mohm", "feed"),
+    )  # fmt: skip
+    triangle = (
+        wire("ab", "A", "B", "60 mohm", "feed"), wire("ac", "A", "C", "120 mohm", "feed"),
+        wire("bc", "B", "C", "180 mohm", "feed"),
+    )  # fmt: skip
+    one, other = (solved(plan_text(bank, *arms, *backs, *draws)) for arms in (star, triangle))
+    # Through a: 13 A; then each its own.
+    assert 12 - one.volts("B") == pytest.approx(13 * 0.02 + 8 * 0.03, abs=5e-5)
+    assert 12 - one.volts("C") == pytest.approx(13 * 0.02 + 5 * 0.06, abs=5e-5)
+    assert [other.volts("B"), other.volts("C")] == pytest.approx([one.volts("B"), one.volts("C")], abs=1e-10)
+
+
+def test_a_thicker_cable_to_a_heater_lowers_its_neighbour() -> None:
+    """More copper does not raise every voltage. 12 V behind 50 mohm; a lamp of 1 A at the bus; a heater of 1 ohm
+    behind 1 ohm, then behind 0.2 ohm: u = (12 − 0.05 · 1) / (1 + 0.05/R), with R = 2 ohm, then 1.2 ohm."""
+
+    def lamp(ohm: str) -> float:
+        tables = (
+            battery("bank", "bank", "12 V"),
+            wire("feed", "bank", "bus", "50 mohm"),
+            load("lamp", "bus", current="1 A"),
+        )
+        return solved(
+            plan_text(*tables, wire("branch", "bus", "heater", ohm), load("heater", "heater", resistance="1 ohm"))
+        ).volts("bus")
+
+    assert lamp("1 ohm") == pytest.approx(11.95 / (1 + 0.05 / 2), abs=2e-5)
+    assert lamp("0.2 ohm") == pytest.approx(11.95 / (1 + 0.05 / 1.2), abs=2e-5)
+
+
 @pytest.mark.parametrize(("stages", "ohm"), [(1, 2.0), (2, 5 / 3), (3, 13 / 8), (30, (1 + math.sqrt(5)) / 2)])
 def test_a_ladder_of_ones(stages: int, ohm: float) -> None:
     """Ladder of 1 ohm in line and 1 ohm across: ratios of every other Fibonacci number, in the end the golden ratio."""
@@ -192,6 +233,138 @@ def test_a_cube_of_ones(corner: str, ohm: float) -> None:
     volts, feed = found.state.volts, found.network.feed
     assert len(edges) == 12
     assert volts[feed("000")] - volts[feed(corner)] == pytest.approx(ohm, abs=1e-12)
+
+
+# Several strings, bars, surges ---------------------------------------------------------------------------------------
+
+
+def strings(take_off: str, count: int = 4) -> str:
+    """Strings of 4.84 mohm, with links of 0.5 m of 16 mm²: 1.21 mohm/m, so 0.605 mohm in each pole."""
+    bank = battery("bank", "bank", "12.8 V", "4.84 mohm")
+    return bank + f'; strings = {count}; take_off = "{take_off}"; link = {{ length = "0.5 m", size = "16 mm2" }}'
+
+
+def string_amps(found: Solved) -> list[float]:
+    return [float(amps) for amps in found.state.delivered_A[1 : 1 + len(found.network.strings)]]
+
+
+def test_four_strings_taken_off_at_the_same_end() -> None:
+    """A link (both poles) is a quarter of a string's resistance r, so with x in the last: x, x + x/4, then each
+    more by a quarter of all that lie beyond it: 1 : 1.25 : 1.8125 : 2.828125 of 100 A."""
+    found = solved(plan_text(strings("same end"), load("inverter", "bank", current="100 A")))
+    last = 100 / (1 + 1.25 + 1.8125 + 2.828125)
+    assert string_amps(found) == pytest.approx([2.828125 * last, 1.8125 * last, 1.25 * last, last], abs=1e-6)
+    assert string_amps(found) == pytest.approx([41.04, 26.30, 18.14, 14.51], abs=5e-3)
+    assert found.volts("bank") == pytest.approx(12.8 - 2.828125 * last * 4.84e-3, abs=1e-9)
+
+
+def test_three_strings_taken_off_at_both_ends() -> None:
+    """By symmetry the outer two are alike, i₁ = i₃. Between the first two the feed link carries i₂ + i₃ and the
+    return link i₁, so around that loop r·(i₁ − i₂) = l·(i₂ + i₃) − l·i₁ = l·i₂: i₁ = i₂·(1 + l/r)."""
+    found = solved(plan_text(strings("ends", 3), load("inverter", "bank", current="100 A")))
+    middle = 100 / (1 + 2 * (1 + 0.605 / 4.84))
+    assert string_amps(found) == pytest.approx([1.125 * middle, middle, 1.125 * middle], abs=1e-6)
+
+
+def test_strings_on_a_bar_share_alike() -> None:
+    """Each has its own two links: (4.84 + 1.21) / 4 mohm carry 100 A."""
+    found = solved(plan_text(strings("bar"), load("inverter", "bank", current="100 A")))
+    assert string_amps(found) == pytest.approx([25.0] * 4, abs=1e-6)
+    assert found.volts("bank") == pytest.approx(12.8 - 100 * 6.05e-3 / 4, abs=1e-9)
+
+
+def test_an_aged_string_has_a_multiple_of_its_resistance() -> None:
+    """12.8 V behind 2.5 · 10 mohm give 20 A: 12.3 V."""
+    bank = battery("bank", "bank", "12.8 V", "10 mohm") + "; aged_times = 2.5"
+    found = solved(plan_text(bank, load("pump", "bank", current="20 A"), case('"bank" = { aged = true }')))
+    assert found.volts("bank") == pytest.approx(12.3, abs=1e-9)
+
+
+def test_half_of_a_bar_lies_in_every_conductor_that_ends_at_it() -> None:
+    """A bar of 4 mohm in each pole between 20 and 30 mohm, with a lamp on the bar itself: 2 mohm more in each
+    conductor, so 24 mohm carry 15 A to the bar and 34 mohm carry 5 A on."""
+    bar = 'points bus: kind = "busbar"; resistance = "4 mohm"'
+    runs = wire("feed", "bank", "bus", "20 mohm"), wire("branch", "bus", "radio", "30 mohm")
+    loads = load("lamp", "bus", current="10 A"), load("radio", "radio", current="5 A")
+    found = solved(plan_text(battery("bank", "bank", "12 V"), bar, *runs, *loads))
+    assert 12 - found.volts("bus") == pytest.approx(15 * 0.024, abs=2e-5)
+    assert found.volts("bus") - found.volts("radio") == pytest.approx(5 * 0.034, abs=1e-9)
+
+
+INVERTER = load("inverter", "bank", power="900 W", efficiency="90 %", standby="10 W")
+
+
+@pytest.mark.parametrize(
+    ("loads", "surge", "watts"),
+    [
+        ('"all"', "[]", 900 / 0.9 + 10),
+        ('{ "inverter" = 0.5 }', "[]", 450 / 0.9 + 10),
+        ('{ "inverter" = 0.0 }', "[]", 10.0),
+        ('"none"', "[]", 0.0),
+        ('"all"', '["inverter"]', 2 * 900 / 0.9 + 10),
+    ],
+)
+def test_an_inverter_draws_what_it_delivers_over_its_efficiency(loads: str, surge: str, watts: float) -> None:
+    """E²/4r = 4.1 kW is far; u = E/2 + sqrt(E²/4 − P·r) with 12.8 V and 10 mohm."""
+    inverter = INVERTER + "; surge = { times = 2 }"
+    state = f"cases The case: loads = {loads}; surge = {surge}"
+    found = solved(plan_text(battery("bank", "bank", "12.8 V", "10 mohm"), inverter, state))
+    assert found.volts("bank") == pytest.approx(6.4 + math.sqrt(6.4**2 - watts * 0.01), abs=1e-9)
+
+
+@pytest.mark.parametrize(("state", "amps"), [("on", 0.0), ("off", 1000 / 12)])
+def test_an_inverter_of_a_charger_draws_while_that_is_off(state: str, amps: float) -> None:
+    """They are one apparatus. A constant current is rated at its rated volts: 900 W / 90 % at 12 V."""
+    inverter = load("inverter", "bank", power="900 W", efficiency="90 %", behaves="current", inverter_of="charger")
+    sources = battery("bank", "bank", "12.8 V", "10 mohm"), charger("charger", "bank", "14.4 V", "30 A")
+    found = solved(plan_text(*sources, inverter, case(f'"charger" = "{state}"')))
+    assert found.load_amps["inverter"] == pytest.approx(amps)
+
+
+@pytest.mark.parametrize(
+    ("surge", "volts"),
+    [
+        ('{ current = "40 A" }', 12 - 40 * 0.02),
+        ('{ resistance = "0.1 ohm" }', 12 * 0.1 / 0.12),
+        ("{ times = 3 }", 12 - 3 * 10 * 0.02),
+    ],
+)
+def test_a_surge_is_drawn_instead_of_the_rating(surge: str, volts: float) -> None:
+    """A pump of 10 A behind 20 mohm at 12 V: so many amps more, a divider of voltage, three times its current."""
+    pump = load("pump", "bank", current="10 A") + f"; surge = {surge}"
+    found = solved(plan_text(battery("bank", "bank", "12 V", "20 mohm"), pump, 'cases Start: surge = ["pump"]'))
+    assert found.volts("bank") == pytest.approx(volts, abs=1e-9)
+
+
+def test_the_loss_in_an_arrays_cable_is_taken_from_what_its_controller_gives() -> None:
+    """Two modules of 18 V and 5 A side by side, 1 mohm · 18/10 of droop and 150 mohm of cable: 18 − 10 · 0.1518 V
+    arrive with 10 A, of which 95 % leave: 156.6 W, under the controller's 300 W, into 12.8 V behind 10 mohm."""
+    array = '{ at = "roof", modules = 2, voc = "22 V", isc = "5.5 A", vmp = "18 V", imp = "5 A" }'
+    roof = 'sources sun: kind = "solar"; from = "input"; at = "bank"; power = "300 W"; ceiling = "14.4 V"'
+    roof += f'; efficiency = "95 %"; array = {array}'
+    tables = battery("bank", "bank", "12.8 V", "10 mohm"), roof, wire("down", "roof", "input", "150 mohm")
+    for sun in (1.0, 0.5):
+        found = solved(plan_text(*tables, case(f'"sun" = {{ irradiance = "{100 * sun} %" }}')))
+        arriving = 18 - 10 * sun * (1e-3 * 18 / 10 + 0.15)
+        given = 0.95 * arriving * 10 * sun
+        assert found.volts("bank") == pytest.approx(6.4 + math.sqrt(6.4**2 + given * 0.01), abs=1e-9)
+        assert found.volts("input") == pytest.approx(arriving, abs=1e-9)
+
+
+def test_a_chain_of_converters_draws_through_every_efficiency() -> None:
+    """48 V to 24 V at 90 %, on to 12 V at 80 %, each with 1 mohm of droop: what the second takes is what the first
+    gives, so 11.99 V · 10 A / 0.8 / 0.9 = 166.53 W from 51.2 V behind 20 mohm."""
+    down = 'sources {}: kind = "converter"; from = "{}"; at = "{}"; nominal = "{}"; volts = "{}"; amps = "20 A"; '
+    down += 'efficiency = "{}"; resistance = "1 mohm"; isolated = true'
+    chain = (
+        down.format("first", "bank", "24 bus", "24 V", "24 V", "90 %"),
+        down.format("second", "24 bus", "12 bus", "12 V", "12 V", "80 %"),
+    )
+    bank = battery("bank", "bank", "51.2 V", "20 mohm")
+    found = solved(plan_text(bank, *chain, load("radio", "12 bus", current="10 A"), nominal="48 V"))
+    watts = 11.99 * 10 / 0.8 / 0.9
+    assert found.volts("bank") == pytest.approx(25.6 + math.sqrt(25.6**2 - watts * 0.02), abs=1e-9)
+    assert found.source_amps["bank"] == pytest.approx(watts / found.volts("bank"), rel=1e-9)
 
 
 # Sources that know one way only ----------------------------------------------------------------------------------
