@@ -146,3 +146,26 @@ def test_what_states_no_rating_is_listed_once() -> None:
     switch = {"name": "s", "kind": "switch", "from": "stud", "to": "lamp"}
     plan = plan_of([cable("feed", "bank", "stud")], [lamp("lamp", "lamp")], devices=[switch])
     assert only(plan, RULE, "Test plan").working == ('No continuous: "s"', 'No volts: "s"')
+
+
+def test_strings_of_a_battery_count_together_at_their_bar() -> None:
+    """Two strings share 40 A; the bar they stand on carries the whole of it."""
+    battery = bank(strings=2, take_off="bar", link={"length": "0.3 m", "size": "50 mm2"})
+    runs = [cable("feed", "bank", "lamp", size="25 mm2", protection=fuse("60 A"))]
+    plan = plan_of(runs, [lamp("lamp", "lamp", "40 A")], sources=[battery], cases=[{"name": "on"}],
+                   points=[{"name": "bank", "kind": "busbar", "rating": "30 A"}])  # fmt: skip
+    found = only(plan, RULE, "bank")
+    assert found.value == pytest.approx(40)
+    assert '40 A of "bank"' in found.working[0]
+
+
+def test_a_return_through_the_chassis_does_not_pass_the_bar_it_started_from() -> None:
+    """12 A leave the bar's feed and come back through the bond: 12 A in either pole, not 24 A."""
+    runs = [
+        cable("main", "bank", "bar", size="25 mm2", protection=fuse("60 A")),
+        cable("bond", "bar", "chassis", "0.5 m", "25 mm2", purpose="bond"),
+        cable("feed", "bar", "lamp", size="10 mm2", protection=fuse("20 A"), **{"return": "chassis"}),
+    ]
+    plan = plan_of(runs, [lamp("lamp", "lamp", "12 A")], rulebook="leisure-vehicle-eu", cases=[{"name": "on"}],
+                   points=[{"name": "bar", "kind": "busbar", "rating": "10 A"}])  # fmt: skip
+    assert only(plan, RULE, "bar").value == pytest.approx(12)

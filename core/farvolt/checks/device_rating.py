@@ -5,12 +5,12 @@ from collections.abc import Iterator
 import numpy as np
 
 from farvolt.checks.array_side import devices_on_array_sides
-from farvolt.checks.flows import Flow, Flows, device_amps
+from farvolt.checks.flows import Currents, Flow, Flows
 from farvolt.checks.registry import apart, at_least, check
 from farvolt.checks.upstream import Arrival, Upstream
 from farvolt.checks.ways import PRACTICE
 from farvolt.context import CaseStudy, Context, label
-from farvolt.network import FEED, RETURN, Floats
+from farvolt.network import Floats
 from farvolt.plan import Charger, Converter, Device, Point, Solar
 from farvolt.results import Finding, Kind
 from farvolt.solution import Solution
@@ -20,7 +20,7 @@ _RATING = "the maker's continuous rating, as the plan states it"
 _VOLTS = "the maker's voltage rating, as the plan states it"
 _BARS = ("busbar", "fuse block")
 
-Solved = list[tuple[CaseStudy, Solution]]
+Solved = list[tuple[CaseStudy, Currents]]
 
 
 @check("device.rating", title="What devices, busbars and fuse blocks carry and stand against their ratings")
@@ -43,17 +43,14 @@ def _solved(context: Context) -> Solved:
     """Every case without surges, with hot and with cold conductors: either may give the larger current."""
     lasting = [one for one in context.cases if not one.case.surge]
     every = [(one, one.solutions[mode]) for one in lasting for mode in ("hot", "cold")]
-    return [(one, solution) for one, solution in every if solution.state.solved]
+    return [(one, Currents(solution)) for one, solution in every if solution.state.solved]
 
 
 def _device_amps(context: Context, index: int, device: Device, solved: Solved, upstream: Upstream) -> Iterator[Finding]:
     if device.continuous is None:
         return
     rating = device.continuous.si
-    found = [
-        (max(abs(device_amps(solution, index, pole)) for pole in (FEED, RETURN)), one, solution)
-        for one, solution in solved
-    ]
+    found = [(float(abs(currents.devices[:, index]).max()), one, currents.solution) for one, currents in solved]
     worst = max(found, key=lambda each: each[0], default=None)
     if worst is not None and worst[0] > rating * (1 + 1e-9):
         amps, one, solution = worst
@@ -97,7 +94,7 @@ def _device_volts(context: Context, device: Device, highest: "_Highest") -> Iter
 def _point(
     context: Context, point: Point, rating: Quantity, solved: Solved, upstream: Upstream, flows: Flows
 ) -> Iterator[Finding]:
-    found: list[tuple[Flow, CaseStudy]] = [(flows.into(solution, point.name), one) for one, solution in solved]
+    found: list[tuple[Flow, CaseStudy]] = [(flows.into(currents, point.name), one) for one, currents in solved]
     worst = max(found, key=lambda each: each[0].amps, default=None)
     limit = rating.si
     if worst is not None and worst[0].amps > limit * (1 + 1e-9):

@@ -7,16 +7,31 @@ import numpy as np
 
 from farvolt.context import Context
 from farvolt.network import FEED, RETURN, Floats
-from farvolt.plan import Converter, Device, Run
+from farvolt.plan import Converter, Device, Load, Run, Source
 from farvolt.solution import Solution
 from farvolt.units import number
 
 _SHOWN = 6
 """Flows named in a working; the smaller ones beyond are summed."""
 
-
 _Ends = dict[str, list[tuple[int, float]]]
 """Point to (index, 1 at `to`, -1 at `from`)."""
+
+
+class Currents:
+    """The currents of one solved case as arrays, worked out once. Runs and devices are positive from `from` to `to`."""
+
+    def __init__(self, solution: Solution) -> None:
+        self.solution = solution
+        self.runs = tuple(np.nan_to_num(solution.run_amps(pole)) for pole in (FEED, RETURN))
+        """Over runs, by pole."""
+        self.devices = _device_amps(solution)
+        """Over (pole, device); 0 in a pole that passes straight through."""
+        self.sources = _source_amps(solution)
+        """What every source delivers, all strings of a battery together."""
+        on, drawn = solution.supply.load_on, solution.state.drawn_A
+        self.loads: Floats = np.where(on, np.nan_to_num(drawn), 0.0)
+        """Over load ports: what loads and the inputs of converters draw."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,22 +47,18 @@ class Flows:
 
     def __init__(self, context: Context) -> None:
         plan = self._plan = context.plan
-        self._runs: _Ends = {}
-        self._devices: _Ends = {}
-        tables: list[tuple[_Ends, Sequence[Run | Device]]] = [(self._runs, plan.runs), (self._devices, plan.devices)]
-        for at, parts in tables:
-            for index, part in enumerate(parts):
-                at.setdefault(part.from_point, []).append((index, -1.0))
-                at.setdefault(part.to_point, []).append((index, 1.0))
+        self._runs, self._devices = _ends(plan.runs), _ends(plan.devices)
+        self._sources = _at(plan.sources)
+        self._loads = _at(plan.loads)
 
-    def into(self, solution: Solution, point: str) -> Flow:
+    def into(self, currents: Currents, point: str) -> Flow:
         """The larger of a point's two poles. By Kirchhoff's law what flows in flows out again; where a part of it is
         not known apart (the pole that passes straight through a device), the fuller side counts."""
-        poles = [self._pole(solution, point, pole) for pole in (FEED, RETURN)]
+        poles = [self._pole(currents, point, pole) for pole in (FEED, RETURN)]
         return max(poles, key=lambda flow: round(flow.amps, 6))  # of two alike, the feed's
 
-    def _pole(self, solution: Solution, point: str, pole: int) -> Flow:
-        terms = [(name, amps) for name, amps in self._terms(solution, point, pole) if np.isfinite(amps)]
+    def _pole(self, currents: Currents, point: str, pole: int) -> Flow:
+        terms = self._terms(currents, point, pole)
         ways = [(word, sorted(((sign * amps, name) for name, amps in terms if sign * amps > 0), reverse=True))
                 for word, sign in (("into", 1.0), ("out of", -1.0))]  # fmt: skip
         word, listed = max(ways, key=lambda way: round(sum(amps for amps, _ in way[1]), 6))
@@ -58,44 +69,56 @@ class Flows:
         side = "feed" if pole == FEED else "return"
         return Flow(total, f"Flows {word} its {side} side: {' + '.join(parts)} = {number(total, 4)} A")
 
-    def _terms(self, solution: Solution, point: str, pole: int) -> list[tuple[str, float]]:
+    def _terms(self, currents: Currents, point: str, pole: int) -> list[tuple[str, float]]:
         """Name and current of everything at a pole of a point, positive into it."""
-        plan, amps = self._plan, solution.run_amps(pole)
+        plan = self._plan
         terms = [
-            (plan.runs[index].name, sign * float(amps[index]))
+            (plan.runs[index].name, sign * float(currents.runs[pole][index]))
             for index, sign in self._runs.get(point, ())
             if not (pole == RETURN and sign < 0 and plan.runs[index].return_path == "chassis")
         ]
         for index, sign in self._devices.get(point, ()):
-            terms.append((plan.devices[index].name, sign * device_amps(solution, index, pole)))
+            terms.append((plan.devices[index].name, sign * float(currents.devices[pole, index])))
         feeds = 1.0 if pole == FEED else -1.0
-        for port, source in enumerate(plan.sources):
-            if source.at == point:
-                terms.append((source.name, feeds * float(source_amps(solution)[port])))
-        drawn = [(load.name, load.at, place) for place, load in enumerate(plan.loads)]
-        for port, place, *_ in solution.condition.converters:
+        for port in self._sources.get(point, ()):
+            terms.append((plan.sources[port].name, feeds * float(currents.sources[port])))
+        for place in self._loads.get(point, ()):
+            terms.append((plan.loads[place].name, -feeds * float(currents.loads[place])))
+        for port, place, *_ in currents.solution.condition.converters:
             source = plan.sources[port]
-            if isinstance(source, Converter):
-                drawn.append((source.name, source.from_point, place))
-        for name, at, place in drawn:
-            if at == point and solution.supply.load_on[place]:
-                terms.append((name, -feeds * float(solution.state.drawn_A[place])))
+            if isinstance(source, Converter) and source.from_point == point:
+                terms.append((source.name, -feeds * float(currents.loads[place])))
         return terms
 
 
-def device_amps(solution: Solution, device: int, pole: int) -> float:
-    """Current of a device in one pole, positive from `from` to `to`; 0 in a pole that passes straight through."""
+def _ends(parts: Sequence[Run | Device]) -> _Ends:
+    at: _Ends = {}
+    for index, part in enumerate(parts):
+        at.setdefault(part.from_point, []).append((index, -1.0))
+        at.setdefault(part.to_point, []).append((index, 1.0))
+    return at
+
+
+def _at(entries: Sequence[Source | Load]) -> dict[str, list[int]]:
+    at: dict[str, list[int]] = {}
+    for place, entry in enumerate(entries):
+        at.setdefault(entry.at, []).append(place)
+    return at
+
+
+def _device_amps(solution: Solution) -> Floats:
     network = solution.network
+    found = np.zeros((2, len(network.plan.devices)))
+    branches = np.flatnonzero(network.device >= 0)
+    amps = np.nan_to_num(solution.state.branch_A[branches])
+    np.add.at(found, (network.pole[branches], network.device[branches]), amps)
     for place, (index, _, _) in enumerate(network.diodes):
-        entry = network.plan.devices[index]
-        if index == device and pole == (RETURN if entry.pole == "return" else FEED):
-            return float(solution.diode_amps[place])
-    branches = (network.device == device) & (network.pole == pole)
-    return float(np.nan_to_num(solution.state.branch_A[branches]).sum())
+        pole = RETURN if network.plan.devices[index].pole == "return" else FEED
+        found[pole, index] = solution.diode_amps[place]
+    return found
 
 
-def source_amps(solution: Solution) -> Floats:
-    """What every source delivers in A, all strings of a battery together."""
+def _source_amps(solution: Solution) -> Floats:
     network, supply = solution.network, solution.supply
     count = len(network.plan.sources)
     delivered = np.where(supply.source_on, np.nan_to_num(solution.state.delivered_A), 0.0)
