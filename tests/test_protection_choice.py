@@ -108,7 +108,7 @@ def test_each_fault_gets_an_offer_that_passes(rule: str, one: Plan) -> None:
 def test_ratings_that_fit_lie_between_the_load_and_the_cable() -> None:
     one = plan(blade("10 A"))
     # 60 W at some 12.5 V are 4.8 A; 2.5 mm2 in a zone at 30 degC carries more than 20 A.
-    found = fitting(prepared(one), Place(1, "from"), protection_type("blade"))
+    found = fitting(prepared(one), Place(1, "from"), [protection_type("blade")])["blade"]
     assert found
     assert min(found) == 5.0
     for rating in found:

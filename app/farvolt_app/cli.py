@@ -179,6 +179,39 @@ def tolerances(
 
 @main.command()
 @click.argument("plan")
+@click.option("--run", "run_name", help="Show one run, with every rating that passes there.")
+@click.option("--output", "-o", help="Write the run's time-current chart: .svg, .pdf or .png; needs --run.")
+def protection(plan: str, run_name: str | None, output: str | None) -> None:
+    """Show each protection of PLAN beside its load, its cables and the largest and least fault current.
+
+    With --run also the ratings that pass every check there; with --output its time-current chart.
+    """
+    from farvolt_app import protection_text
+
+    if output is not None and run_name is None:
+        raise click.UsageError("--output draws the chart of one run; name it with --run")
+    suffix = Path(output).suffix.lower() if output is not None else ""
+    if output is not None and suffix not in (".svg", ".pdf", ".png"):
+        raise click.BadParameter(f'"{suffix or output}" is not written; accepted: .svg, .pdf, .png',
+                                 param_hint="--output")  # fmt: skip
+    read = _read(plan)
+    with _placed(read, plan), _progress("Solving"):
+        from farvolt.study import prepared
+
+        context = prepared(read.plan, read.folder)
+    protection_text.show(context, run_name)
+    if output is not None and run_name is not None:
+        from farvolt.protected import time_current
+        from farvolt_app import time_current_chart as charts
+
+        picture = time_current(context, run_name)
+        data = charts.svg(picture).encode() if suffix == ".svg" else (
+            charts.pdf(picture) if suffix == ".pdf" else charts.png(picture))  # fmt: skip
+        _write_beside(plan, output, data)
+
+
+@main.command()
+@click.argument("plan")
 @click.option("--output", "-o", required=True, help="File to write: .xlsx or .csv; - writes CSV to standard output.")
 def schedule(plan: str, output: str) -> None:
     """Write the cable schedule of PLAN: cables, loads, protection, shopping totals, findings.
@@ -187,30 +220,20 @@ def schedule(plan: str, output: str) -> None:
     kept beside it as NAME.previous.
     """
     from farvolt import planfile
-    from farvolt.errors import SaveError
 
     suffix = Path(output).suffix.lower()
     if output != planfile.STDIN and suffix not in (".xlsx", ".csv"):
         raise click.BadParameter(f'"{suffix or output}" is not written; accepted: .xlsx, .csv', param_hint="--output")
-    if output != planfile.STDIN and Path(output).resolve() == Path(plan).resolve():
-        raise click.BadParameter(f'"{output}" is the plan itself; accepted: another file', param_hint="--output")
+    _refuse_plan(plan, output)
     found = _studied(plan, margins=False)
     from farvolt_app import schedule as rows
     from farvolt_app import workbook
-    from farvolt_app.shown import CAUTION
 
     if output == planfile.STDIN:
         _print_whole(rows.to_csv(found))
         return
     data = workbook.to_bytes(found) if suffix == ".xlsx" else rows.to_csv(found).encode("utf-8-sig")
-    path = Path(output)
-    try:
-        if path.is_file():
-            planfile.write_whole(path.with_name(f"{path.name}.previous"), path.read_bytes())
-        planfile.write_whole(path, data)
-    except OSError as error:
-        raise SaveError(f"{output}: cannot be written ({error.strerror})") from None
-    click.echo(f"Wrote {output}. {CAUTION}", err=True)
+    _write_beside(plan, output, data)
 
 
 @main.command()
@@ -294,6 +317,29 @@ def _placed(read: "PlanFile", path: str) -> Iterator[None]:
         yield
     except (PlanError, RulebookError) as error:
         raise planfile.placed(error, read.text, path if read.path else "standard input") from None
+
+
+def _refuse_plan(plan: str, output: str) -> None:
+    """An output is never written over the plan itself."""
+    if output != "-" and Path(output).resolve() == Path(plan).resolve():
+        raise click.BadParameter(f'"{output}" is the plan itself; accepted: another file', param_hint="--output")
+
+
+def _write_beside(plan: str, output: str, data: bytes) -> None:
+    """Write a file whole, keeping one that is there already as NAME.previous, and say so with the usual caution."""
+    from farvolt import planfile
+    from farvolt.errors import SaveError
+    from farvolt_app.shown import CAUTION
+
+    _refuse_plan(plan, output)
+    path = Path(output)
+    try:
+        if path.is_file():
+            planfile.write_whole(path.with_name(f"{path.name}.previous"), path.read_bytes())
+        planfile.write_whole(path, data)
+    except OSError as error:
+        raise SaveError(f"{output}: cannot be written ({error.strerror})") from None
+    click.echo(f"Wrote {output}. {CAUTION}", err=True)
 
 
 def _print_whole(text: str) -> None:

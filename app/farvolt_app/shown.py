@@ -1,5 +1,6 @@
 """What the pages show of a study, as plain rows and sentences. Nothing here draws; figures keep full precision."""
 
+import math
 import re
 from collections.abc import Sequence
 from typing import Any
@@ -76,6 +77,36 @@ def source_rows(case: CaseResult) -> list[Cells]:
     return [
         {"Source": one.name, "Volts (V)": one.volts, "Current (A)": one.amps, "Power (W)": one.watts}
         for one in case.sources
+    ]
+
+
+PROTECTION_NOTES = (
+    "Cable allows: the highest rating that all cables behind it allow. Fault currents are of bolted shorts; an arc or "
+    "a loose joint draws less. Opens within, cable stands: at the least fault current, at the far end that is worst "
+    "off; a cable without a time carries that current for good."
+)
+
+
+def protection_rows(study: Study) -> list[Cells]:
+    """Each protection beside its load, its cables and its fault currents."""
+    labels = {run.name: run.label or "" for run in study.plan.runs}
+    return [
+        {
+            "Label": labels[one.run],
+            "Run": one.run,
+            "Protection": f"{number(one.rating_A)} A {one.type}",
+            "End": one.end if one.pole == "feed" else f"{one.end}, return",
+            "Findings": _about(study, "run", one.run),
+            "Load (A)": one.load_A,
+            "Cable allows (A)": one.cable_A,
+            "Highest fault (A)": one.highest_A,
+            "Interrupts (A)": one.interrupts_A,
+            "Least fault (A)": one.lowest_A,
+            "Opens within (s)": one.opens_s if one.opens_s is not None and math.isfinite(one.opens_s) else None,
+            "Cable stands (s)": one.allowed_s,
+            "Least fault is": one.far_end,
+        }
+        for one in study.protections
     ]
 
 

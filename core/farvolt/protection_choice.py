@@ -111,14 +111,24 @@ def choices(context: Context, places: Iterable[Place]) -> list[Choice]:
     return found
 
 
-def fitting(context: Context, place: Place, kind: ProtectionType) -> tuple[float, ...]:
-    """All ratings made of one type that pass at a place with its present cable."""
-    passing = []
-    for rating in kind.ratings_A:
-        one = Choice(place, [Offer(kind, rating)])
-        if not _failed(context, [one]):
-            passing.append(rating)
-    return tuple(passing)
+def fitting(context: Context, place: Place, kinds: Iterable[ProtectionType]) -> dict[str, tuple[float, ...]]:
+    """By type, all ratings that pass at a place with its present cable; types of which none does are left out."""
+    run, (demand, _) = context.plan.runs[place.run], Demands(context).worst(place.run, FEED)
+    amps = ampacity_A(context, place.run)
+    most = limit_for(context, run, amps).amps if amps is not None else 0.0
+    found: dict[str, tuple[float, ...]] = {}
+    for kind in kinds:
+        choice, passing = Choice(place, [Offer(kind, rating) for rating in sorted(_between(kind, demand, most))]), []
+        while (offer := choice.offer) is not None:
+            failed = _failed(context, [choice])
+            if failed:
+                choice.fails(failed[place])
+            else:
+                passing.append(offer.rating_A)
+                choice.tried += 1
+        if passing:
+            found[kind.name] = tuple(passing)
+    return found
 
 
 def with_remedies(context: Context, findings: tuple[Finding, ...]) -> tuple[Finding, ...]:

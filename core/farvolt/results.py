@@ -6,11 +6,14 @@ way). Rounding is for the views.
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
-from typing import Literal
+from typing import TYPE_CHECKING, Literal
 
 from farvolt.conductors import Size
 from farvolt.plan import Plan
 from farvolt.rulebook import Rulebook
+
+if TYPE_CHECKING:
+    from farvolt.protected import ProtectionResult, TimeCurrent
 
 Severity = Literal["fail", "warn", "note"]
 Kind = Literal["run", "load", "source", "device", "point", "case", "plan"]
@@ -151,6 +154,10 @@ class Study:
     assumptions: tuple[str, ...]
     interim: Mapping[str, Size] = field(default_factory=dict)
     """Sizes taken for the time being for runs that state none."""
+    protections: tuple["ProtectionResult", ...] = ()
+    """Each protection beside its load, its cables and its fault currents."""
+    time_current: Callable[[str], "TimeCurrent"] | None = field(default=None, repr=False, compare=False)
+    """The time-current picture of a run, by its name."""
 
     @property
     def nominal_V(self) -> Mapping[str, float]:

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import numpy as np
 
-from farvolt import checks, interim, network, operating, protection_choice, solve, temperatures
+from farvolt import checks, interim, network, operating, protected, protection_choice, solve, temperatures
 from farvolt.ampacity import Ampacity
 from farvolt.assumptions import assumptions
 from farvolt.conductors import Size
@@ -43,7 +43,10 @@ def study(plan: Plan, folder: Path | None = None, *, margins: bool = True) -> St
     findings = protection_choice.with_remedies(context, checks.run_all(context))
     taken = assumptions(context)
     # The study keeps the plan as it was written; interim sizes are the context's.
-    return Study(plan, context.rulebook, results, findings, taken, context.interim)
+    return Study(
+        plan, context.rulebook, results, findings, taken, context.interim, protected.protections(context),
+        partial(protected.time_current, context),
+    )  # fmt: skip
 
 
 def prepared(plan: Plan, folder: Path | None = None) -> Context:

@@ -8,6 +8,7 @@ PAGES = (
     ("plan_page.py", "Plan", "plan"),
     ("drawing_page.py", "Drawing", "drawing"),
     ("findings_page.py", "Findings", "findings"),
+    ("protection_page.py", "Protection", "protection"),
     ("schedule_page.py", "Schedule", "schedule"),
 )
 
