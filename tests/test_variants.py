@@ -12,6 +12,7 @@ from farvolt.elimination import Elimination
 from farvolt.fed import Fed
 from farvolt.operating import Operating
 from farvolt.plan import Plan
+from farvolt.tolerances import loads_on
 from farvolt.variants import Variants, solve_variant, solve_variants
 from strategies import LINEAR, Draft, Wishes, drafts, plan_of, random_draft
 
@@ -40,8 +41,12 @@ def scattered(net: network.Network, condition: Operating, count: int, seed: int 
 
 
 def assert_same_as_alone(draft: Draft, count: int = 5) -> variants.Answers:
-    """Node for node within 1 µV of `solve.solve`, which gives way in the same variants."""
+    """Loads that draw are within 1 µV of `solve.solve`, which gives way in the same variants.
+
+    Where nothing draws, the law of a source that idles holds at any voltage above its own, so none is compared.
+    """
     net, condition, supply = ready(plan_of(draft))
+    drawing = loads_on(condition, supply, len(net.plan.loads))
     every = scattered(net, condition, count)
     found = solve_variants(net, condition, supply, every)
     for row in range(count):
@@ -49,10 +54,8 @@ def assert_same_as_alone(draft: Draft, count: int = 5) -> variants.Answers:
         assert found.solved[row] == state.solved
         assert found.share_held[row] == state.share_held
         if state.solved:
-            loads = len(net.plan.loads)
-            alone = state.volts[condition.load_a[:loads]] - state.volts[condition.load_b[:loads]]
-            expected = np.where(supply.load_on[:loads], alone, np.nan)
-            assert found.load_volts[row] == pytest.approx(expected, abs=1e-6, nan_ok=True)
+            alone = state.volts[condition.load_a[drawing]] - state.volts[condition.load_b[drawing]]
+            assert found.load_volts[row, drawing] == pytest.approx(alone, abs=1e-6)
     return found
 
 
