@@ -10,6 +10,7 @@ from farvolt.plan import Plan
 from farvolt.study import study
 from farvolt_app import columns, edits, tables
 from plan_text import BASE, outcome
+from wiring import findings, only
 
 TYPE = """
 [protection_types."winch fuse"]
@@ -28,9 +29,7 @@ derating_above = "23 degC"
 SIZE = 'size = "6 mm2"'
 
 
-def with_type(
-    protection: str = '{ type = "winch fuse", rating = "100 A", resistance = "1 mohm" }', own: str = TYPE
-) -> str:
+def with_type(protection: str = '{ type = "winch fuse", rating = "100 A" }', own: str = TYPE) -> str:
     return BASE.replace(SIZE, f"{SIZE}\nprotection = {protection}") + own
 
 
@@ -59,9 +58,22 @@ def test_shipped_types_are_found_beside_it_in_any_case_of_letters() -> None:
     assert plan.runs[0].protections[0].kind.name == "large strip"
 
 
+def test_its_drop_counts_in_the_network() -> None:
+    # By hand: 80 mV at 100 A are 0.8 mohm, 160 mV twice that; the pump's current through it is lost.
+    texts = (with_type(own=TYPE.replace("80 mV", f"{drop} mV")) for drop in (80, 160))
+    less, more = (study(read(text)).cases[0] for text in texts)
+    lost = [
+        source.volts - load.volts
+        for source, load in ((case.sources[0], case.loads[0]) for case in (less, more))
+        if source.volts is not None and load.volts is not None
+    ]
+    assert more.loads[0].amps is not None
+    assert lost[1] - lost[0] == pytest.approx(0.0008 * more.loads[0].amps, rel=0.02)
+
+
 def test_a_rating_it_is_not_made_in_is_named_with_the_nearest() -> None:
-    found = study(read(with_type('{ type = "winch fuse", rating = "125 A", resistance = "1 mohm" }'))).findings
-    made = next(one for one in found if one.rule == "protection.rating-not-made")
+    plan = read(with_type('{ type = "winch fuse", rating = "125 A" }'))
+    made = only(plan, "protection.rating-not-made", "feed")
     assert "125 A is not a usual rating of the type winch fuse" in made.message
     assert made.remedy is not None
     assert "125 A is made as strip, large strip" in made.remedy
@@ -69,15 +81,15 @@ def test_a_rating_it_is_not_made_in_is_named_with_the_nearest() -> None:
 
 
 def test_its_ratings_are_offered_for_shipped_types_too() -> None:
-    found = study(read(with_type('{ type = "rail breaker", rating = "150 A" }'))).findings
-    made = next(one for one in found if one.rule == "protection.rating-not-made")
+    plan = read(with_type('{ type = "rail breaker", rating = "150 A" }'))
+    made = only(plan, "protection.rating-not-made", "feed")
     assert made.remedy is not None
     assert "winch fuse" in made.remedy
 
 
 def test_its_voltage_is_held_against_the_system() -> None:
     own = TYPE.replace('volts = "32 V"', 'volts = "9 V"')
-    found = [one for one in study(read(with_type(own=own))).findings if one.rule == "protection.voltage-rating"]
+    found = findings(read(with_type(own=own)), "protection.voltage-rating")
     assert [(one.value, one.limit) for one in found] == [(13, 9)]
     assert "provisional" not in found[0].basis
 

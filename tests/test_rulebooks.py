@@ -10,7 +10,7 @@ import pytest
 
 from farvolt.conductors import parse_size
 from farvolt.errors import QuantityError, RulebookError
-from farvolt.protection_types import protection_type, protection_type_names, resistance_ohm
+from farvolt.protection_types import protection_type, protection_type_names
 from farvolt.rulebook import FOLDER, Basis, Cell, Protection, Rulebook, load, shipped
 
 CABIN, VEHICLE = ("cabin-iec", "cabin-nec"), ("leisure-vehicle-eu", "leisure-vehicle-us")
@@ -401,7 +401,7 @@ def test_every_protection_type_is_complete(name: str) -> None:
     assert kind.interrupting_at(kind.volts) == kind.interrupting_A
     assert kind.interrupting_at(kind.volts + 1) is None
     # Common practice: a fuse or breaker drops some tens to hundreds of millivolts at its rating.
-    assert 0.03 < resistance_ohm(name, 20) * 20 < 0.3
+    assert 0.03 < kind.resistance_ohm(20) * 20 < 0.3
 
 
 def test_interrupting_falls_as_the_system_voltage_rises() -> None:

@@ -139,6 +139,33 @@ def test_the_points_of_the_drawing_lie_on_the_band(name: str) -> None:
     assert kind.points(50, 10) == ([], [])
 
 
+@st.composite
+def gates(draw: st.DrawFn) -> list[Gate]:
+    """Gates as a data sheet may state them: rising multiples, falling times, some of them left out."""
+    count = draw(st.integers(1, 6))
+    times = sorted(draw(st.lists(st.floats(1, 50), min_size=count, max_size=count)))
+    seconds = st.lists(st.floats(1e-4, 1e6), min_size=count, max_size=count)
+    greatest = sorted(draw(seconds), reverse=True)
+    least = sorted(draw(seconds), reverse=True)
+    stated = draw(st.lists(st.tuples(st.booleans(), st.booleans()), min_size=count, max_size=count))
+    return [
+        Gate(at, min(low, high) if one else None, high if other else None)
+        for at, low, high, (one, other) in zip(times, least, greatest, stated, strict=True)
+    ]
+
+
+@given(gates(), st.floats(0.1, 100), st.floats(0.1, 100))
+def test_any_band_falls_and_passes_its_gates(stated: list[Gate], one: float, other: float) -> None:
+    found, (low, high) = band(stated), sorted((one, other))
+    rounding = 1 + 1e-9
+    assert found.greatest_s(high) <= found.greatest_s(low) * rounding
+    assert found.least_s(high) <= found.least_s(low) * rounding
+    for gate in stated:
+        # Of two gates at one multiple both hold there.
+        assert gate.greatest_s is None or found.greatest_s(gate.times) <= gate.greatest_s * rounding
+        assert gate.least_s is None or found.least_s(gate.times) * rounding >= gate.least_s
+
+
 def test_a_band_that_states_nothing_promises_nothing() -> None:
     assert UNSTATED.greatest_s(1000) == math.inf
     assert UNSTATED.least_s(1.01) == 0

@@ -136,11 +136,6 @@ def is_shipped(name: str) -> bool:
     return _plain(name) in _types()
 
 
-def resistance_ohm(name: str, rating_A: float) -> float:
-    """Resistance in ohm of one protection of a shipped type: see `ProtectionType.resistance_ohm`."""
-    return protection_type(name).resistance_ohm(rating_A)
-
-
 def _plain(name: str) -> str:
     return " ".join(name.lower().split())
 
