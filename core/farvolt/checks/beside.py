@@ -101,8 +101,9 @@ def _circulating(context: Context, one: CaseStudy, solution: Solution, joined: l
     battery = sources[low]
     assert isinstance(battery, Battery)
     limit, why = _limit(battery)
-    over = limit is not None and -amps > limit * (1 + 1e-9)
-    stands = f", and it is good for {number(limit)} A" if over and limit is not None else ""
+    over = limit is None or -amps > limit * (1 + 1e-9)
+    good = "nothing states what it is good for" if limit is None else f"it is good for {number(limit)} A"
+    stands = f"; {good}" if over else ""
     emf = {index: float(c.volts[_ports(context.network, index)[0]]) for index in joined}
     working = [f'"{sources[index].name}" at {number(emf[index], 4)} V: {number(one_A)} A' for one_A, index in found]
     if len(found) == 2:
