@@ -45,9 +45,8 @@ def _loop(ring: _Ring) -> Finding:
     first, way = ring.names[0], " feeds ".join(f'"{name}"' for name in (*ring.names, ring.names[0]))
     alone = len(ring.names) == 1
     told = f'"{first}" draws from what it feeds itself' if alone else f"A ring of converters: {way}"
-    ends = (
-        "with all of them on, power goes round in it and is lost" if ring.fed else "no source starts it, so it is dead"
-    )
+    lost = "power goes round and is lost" if alone else "with all of them on, power goes round and is lost"
+    ends = lost if ring.fed else "no source starts it, so it is dead"
     return Finding(
         "plan.converter-loop", "warn" if ring.fed else "fail", first, "source", ring.case, None, None, None,
         f"{told}; {ends}", _FROM_A_SOURCE, (way,),
