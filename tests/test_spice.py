@@ -48,7 +48,7 @@ def test_the_program_that_compares_at_length(capsys: pytest.CaptureFixture[str])
 @pytest.mark.parametrize("kind", ["anything", "converters, solar and diodes", "arrays behind controllers"])
 def test_the_same_parts_are_fed(kind: str) -> None:
     wishes, count = KINDS[kind]
-    for seed in range(count):
+    for seed in range(min(count, 80)):
         plan = plan_of(random_draft(random.Random(seed), wishes))
         built = network.build(plan, rulebook.load("small-craft-iso"))
         case = plan.checked_cases[0]
