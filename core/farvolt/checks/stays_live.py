@@ -22,6 +22,9 @@ from farvolt.results import Finding, Kind, Severity
 OPENS = ("switch", "selector", "relay")
 """Kinds of device that a person or a control opens."""
 
+_LOOKS = 20
+"""Ways round a device that one check looks up, since each look reads every conductor."""
+
 _PRACTICE = "common practice: whoever opens a switch takes what lies beyond it for dead"
 
 
@@ -30,13 +33,14 @@ class _Parts:
     """The feeds of a plan in parts, with every device as the plan states it."""
 
     network: Network
-    of_node: np.ndarray
     switches: dict[int, tuple[int, int]]
     """Closed device to the parts at its `from` and `to`."""
     one_way: list[tuple[int, int]]
     """(part, part that it feeds) by a diode, a converter or a solar controller."""
     sources: dict[int, list[int]]
     """Part to the sources that stand in it, by place in the plan."""
+    loads: dict[int, list[int]]
+    """Part to the loads that stand in it, likewise."""
     near: dict[int, list[tuple[int, int]]] = field(default_factory=dict)
     """Part to (device, part at its other side)."""
 
@@ -63,9 +67,9 @@ class _Parts:
         return sorted({port for part in parts for port in self.sources.get(part, ())})
 
     def loads_in(self, parts: set[int]) -> list[str]:
-        """The loads that stand in some parts."""
-        plan = self.network.plan
-        return [load.name for load in plan.loads if int(self.of_node[self.network.feed(load.at)]) in parts]
+        """The loads that stand in some parts, in the order of the plan."""
+        places = sorted(place for part in parts for place in self.loads.get(part, ()))
+        return [self.network.plan.loads[place].name for place in places]
 
 
 def _parts(network: Network) -> _Parts:
@@ -95,7 +99,10 @@ def _parts(network: Network) -> _Parts:
             one_way.append((part(source.input_point), part(source.at)))
             seat = source.array.at
         sources.setdefault(part(seat), []).append(port)
-    found = _Parts(network, of_node, switches, one_way, sources)
+    loads: dict[int, list[int]] = {}
+    for place, load in enumerate(plan.loads):
+        loads.setdefault(part(load.at), []).append(place)
+    found = _Parts(network, switches, one_way, sources, loads)
     devices = list(switches)
     found.near = {
         node: [(devices[place], other) for place, other in steps]
@@ -124,7 +131,7 @@ def _between_sources(parts: _Parts) -> list[int]:
 @check("plan.stays-live", title="What stays live when a switch, selector or relay opens")
 def stays_live(context: Context) -> Iterator[Finding]:
     """Each device that opens with a source on both its sides, or with another way round it. Once for each device."""
-    parts = _parts(context.network)
+    parts, looks = _parts(context.network), iter(range(_LOOKS))
     for index in _between_sources(parts):
         device, (start, end) = context.plan.devices[index], parts.switches[index]
         alone = frozenset((index,))
@@ -132,7 +139,10 @@ def stays_live(context: Context) -> Iterator[Finding]:
         fed = (parts.sources_in(before), parts.sources_in(beyond))
         if end in before and start in beyond:
             if fed[0]:
-                yield _led_round(context.network, index, FEED)
+                named = next(looks, None) is not None
+                yield _led_round(
+                    context.network, index, FEED, _way_round(context.network, index, FEED) if named else []
+                )
         elif fed[0] and fed[1]:
             # A diode or converter round the device feeds on one side what stands on the other.
             far = 1 if start in beyond else 0 if end in before else _far_side(context, fed)
@@ -167,22 +177,23 @@ def _far_side(context: Context, fed: tuple[list[int], list[int]]) -> int:
     return 1 if rank[0] <= rank[1] else 0
 
 
-def _led_round(network: Network, index: int, pole: int) -> Finding:
+def _led_round(network: Network, index: int, pole: int, way: list[str]) -> Finding:
     device = network.plan.devices[index]
-    way = _way_round(network, index, pole)
+    by = f" by {listed(way)}" if way else ""
     word = "feed" if pole == FEED else "return"
     return _finding(
         "warn", device.name, "device",
-        f'Opening "{device.name}" cuts off nothing: the {word} leads round it by {listed(way)}',
-        (f'from "{device.from_point}" to "{device.to_point}" without "{device.name}": {listed(way)}',),
+        f'Opening "{device.name}" cuts off nothing: the {word} leads round it{by}',
+        (f'"{device.from_point}" and "{device.to_point}" stay joined without "{device.name}"{by}',),
         f'another device that opens together with "{device.name}" on that way, or no such way',
     )  # fmt: skip
 
 
 def _in_the_return(context: Context, index: int) -> Finding:
     network, device = context.network, context.plan.devices[index]
-    if _way_round(network, index, RETURN):
-        return _led_round(network, index, RETURN)
+    way = _way_round(network, index, RETURN)
+    if way:
+        return _led_round(network, index, RETURN, way)
     return _finding(
         "note", device.name, "device",
         f'"{device.name}" opens the return alone: with it open, the feed beyond stays live',
