@@ -313,3 +313,10 @@ def test_a_short_further_on_counts_where_its_way_back_is_better() -> None:
     moved = faults(plan_of(away, [lamp("lamp", "far")])).devices[0, 0]
     assert moved.amps == pytest.approx(beyond, rel=1e-6)
     assert moved.place == 'at "far"'
+
+
+def test_a_source_stated_to_give_nothing_gives_nothing() -> None:
+    solar = {"name": "sun", "kind": "solar", "at": "x", "power": "0 W", "ceiling": "14 V"}
+    plan = plan_of([cable("feed", "x", "y", protection=fuse("5 A"))], [lamp("lamp", "y")], sources=[solar])
+    assert faults(plan).points == {}
+    assert faults(plan).far_ends == ()

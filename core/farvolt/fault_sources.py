@@ -19,6 +19,9 @@ from farvolt.shorts import Ports
 from farvolt.standard_cases import low_charge
 from farvolt.units import number
 
+LEAST_A = 1e-9
+"""A source that is stated to give nothing has the droop of one that gives this."""
+
 End = Literal["highest", "lowest"]
 
 ARRAY_TIMES = 1.25
@@ -148,7 +151,7 @@ def _limited(plan: Plan, source: Charger | Solar | Converter, nominal_V: float, 
     own_A = _controller_A(source, nominal_V, end) if isinstance(source, Solar) else source.amps.si
     amps = pick([own_A, *(state.amps.si for state in states if state.amps is not None)])
     stated = None if isinstance(source, Solar) else source.resistance
-    return volts, max(stated.si if stated else DROOP_SHARE * volts / amps, LEAST_OHM), amps
+    return volts, max(stated.si if stated else DROOP_SHARE * volts / max(amps, LEAST_A), LEAST_OHM), amps
 
 
 def _controller_A(source: Solar, nominal_V: float, end: End) -> float:
