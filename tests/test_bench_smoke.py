@@ -4,6 +4,7 @@ import shutil
 
 import cold_start
 import file_to_findings
+import many_cases
 import network_and_solve
 import pytest
 from grid import grid
@@ -20,6 +21,12 @@ def test_network_and_solve() -> None:
     assert row["imbalance_A"] < 1e-9
     if shutil.which("ngspice"):
         assert row["difference_V"] < 1e-6
+
+
+def test_many_cases() -> None:
+    for row in many_cases.rows(30, 30).values():
+        assert row["together"] == row["cases"] == 30
+        assert row["difference_V"] < 1e-9
 
 
 def test_file_to_findings() -> None:

@@ -1,225 +1,202 @@
 """Many cases of one network at once: equal conductances share one factorisation.
 
-The conductors, and the resistance of every battery, are factorised once and reduced to the ports: the voltages at
-the ports are u = Z·j with the currents j that loads and EMFs put in there, and only Z (ports by ports) is met again
-by the cases. Loads then differ from case to case as rows of an array.
-
-The way down from the unloaded network is a fixed-point iteration whose step is corrected by one matrix for all cases.
-A case is accepted when its certificate holds and its voltages lie where the iteration is a contraction: there the
-solution is the only one above, hence the one reached from zero load. All others are solved one by one by `solve`.
+Cases whose devices stand alike and whose sources feed the same parts are solved together on the `ports` of their
+network. A case that is not accepted there (see `ports`), and one with a working converter or solar array of its own,
+is solved alone by `solve.solve`: the answer is the same in either way.
 """
 
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
-from functools import cached_property
-from typing import Any
 
 import numpy as np
 
-from farvolt.equations import Equations
 from farvolt.fed import Fed, fed
-from farvolt.linear import factor
-from farvolt.network import Floats, Network
+from farvolt.linear import SingularError
+from farvolt.network import Floats, Ints, Network
 from farvolt.operating import Operating
-from farvolt.solve import POWER_SHARE, solve
+from farvolt.ports import MOST_LIMITED, Ports, Settled
+from farvolt.solve import State, solve
 
-_ITERATIONS = 60
+_CHUNK = 200_000
+"""Node voltages at a time: the arrays of so many cases stay in the processor's cache."""
 
-_CHUNK = 500
-"""Cases at a time: their arrays then stay in the processor's cache."""
+FEWEST = 8
+"""Fewer cases are solved sooner one by one."""
+
+_LAWS = ("volts", "ohm", "low", "high", "power", "leak", "load_W", "load_A", "load_S")
+_STATES = ("branch_on", "source_on")
+
+Changes = Mapping[str, np.ndarray]
+"""Fields of `Operating` that differ from case to case, over (case, port): any of volts, ohm, low, high, power, leak,
+load_W, load_A, load_S, source_on; or branch_on, over (case, branch)."""
 
 
 @dataclass(frozen=True)
 class Many:
-    """Solutions over (case, node), (case, load) and (case, branch), with the certificate of each case."""
+    """States of many cases: arrays over (case, node), (case, port), (case, branch) or cases, as those of `State`."""
 
     solved: np.ndarray
     share_held: Floats
     volts: Floats
-    drawn_A: Floats
     delivered_A: Floats
+    drawn_A: Floats
     branch_A: Floats
     imbalance_A: Floats
+    power_in_W: Floats
+    power_loads_W: Floats
+    power_lost_W: Floats
+    weakest: Ints
+    """The load that falls fastest where a case gives way, or -1."""
     together: np.ndarray
-    """Whether a case was solved together with the others, or one by one."""
+    """Whether a case was solved together with the others, or alone."""
+
+    def __len__(self) -> int:
+        return len(self.solved)
+
+    def state(self, case: int) -> State:
+        """One case, as `solve.solve` gives it."""
+        return State(
+            bool(self.solved[case]),
+            float(self.share_held[case]),
+            self.volts[case].copy(),
+            self.delivered_A[case].copy(),
+            self.drawn_A[case].copy(),
+            self.branch_A[case].copy(),
+            float(self.imbalance_A[case]),
+            float(self.power_in_W[case]),
+            float(self.power_loads_W[case]),
+            float(self.power_lost_W[case]),
+            int(self.weakest[case]) if self.weakest[case] >= 0 else None,
+        )
+
+
+def solve_together(
+    network: Network, conditions: Sequence[Operating], factor_of_20: Floats, supplies: Sequence[Fed] | None = None
+) -> list[State]:
+    """Solve cases of one network at one set of conductor temperatures; `supplies` are theirs, if known already."""
+    supplies = supplies or [fed(network, condition) for condition in conditions]
+    states: dict[int, State] = {}
+    for group in _alike(conditions, supplies):
+        first = conditions[group[0]]
+        if len(group) < FEWEST:
+            states |= {case: solve(network, conditions[case], factor_of_20, supplies[case]) for case in group}
+            continue
+        changes = {name: np.array([getattr(conditions[case], name) for case in group]) for name in _LAWS}
+        found = solve_many(network, first, factor_of_20, changes, supplies[group[0]])
+        states |= {case: found.state(place) for place, case in enumerate(group)}
+    return [states[case] for case in range(len(conditions))]
+
+
+def _alike(conditions: Sequence[Operating], supplies: Sequence[Fed]) -> list[list[int]]:
+    """Cases by the state of their devices and sources, and by what these feed."""
+    groups: dict[object, list[int]] = {}
+    for case, (condition, supply) in enumerate(zip(conditions, supplies, strict=True)):
+        arrays = (condition.branch_on, condition.source_on, supply.live, supply.source_on, supply.load_on)
+        key = *(one.tobytes() for one in arrays), supply.grounds, condition.converters, condition.arrays
+        groups.setdefault(key, []).append(case)
+    return list(groups.values())
 
 
 def solve_many(
-    network: Network, condition: Operating, factor_of_20: Floats, shares: Floats, supply: Fed | None = None
+    network: Network, condition: Operating, factor_of_20: Floats, changes: Changes, supply: Fed | None = None
 ) -> Many:
-    """Solve a condition with other load shares: `shares` is over (case, load), factors on the condition's own loads.
-
-    The condition's loads must be on (their rated demand is what the shares multiply).
-    """
-    supply = supply or fed(network, condition)
-    ports = _Ports(network, condition, factor_of_20, supply)
-    found = ports.empty(len(shares))
-    for start in range(0, len(shares), _CHUNK) if ports.linear else ():
-        ports.descend(shares, found, slice(start, start + _CHUNK))
-    found.together[:] = found.solved
-    for case in np.flatnonzero(~found.solved):
-        _one_by_one(network, condition, factor_of_20, supply, shares, int(case), found)
+    """Solve cases that differ from one condition in `changes`; `supply` is the condition's, if known already."""
+    cases = len(next(iter(changes.values())))
+    found = _empty(network, condition, cases)
+    for rows, base in _by_states(condition, changes, cases):
+        own = supply if supply is not None and base is condition else fed(network, base)
+        laws = {name: values[rows].T for name, values in changes.items() if name in _LAWS and _differs(values)}
+        laws |= {name: values[:1].T for name, values in changes.items() if name in _LAWS and name not in laws}
+        if not any(own.source_on[port] for port, *_ in base.converters):
+            _together(network, base, factor_of_20, own, laws, rows, found)
+        for case in rows[~found.solved[rows]]:
+            one = {name: values[case] for name, values in changes.items() if name in _LAWS}
+            _keep(found, int(case), solve(network, replace(base, **one), factor_of_20, own))
     return found
 
 
-def _one_by_one(
-    network: Network, condition: Operating, factor_of_20: Floats, supply: Fed, shares: Floats, case: int, found: Many
+def shared_demand(condition: Operating, shares: Floats) -> dict[str, np.ndarray]:
+    """The changes that other load shares make: `shares`, over (case, load), multiply the condition's own demand."""
+    full = np.ones((len(shares), len(condition.load_a)))
+    full[:, : shares.shape[1]] = shares
+    own = {name: getattr(condition, name) for name in ("load_W", "load_A", "load_S")}
+    return {name: full * values for name, values in own.items()}
+
+
+def _differs(values: np.ndarray) -> bool:
+    return bool(np.any(values != values[0]))
+
+
+def _by_states(condition: Operating, changes: Changes, cases: int) -> Iterator[tuple[Ints, Operating]]:
+    """Cases whose devices and sources are on alike, with a condition of theirs."""
+    states = [changes[name] for name in _STATES if name in changes]
+    if not states:
+        yield np.arange(cases), condition
+        return
+    _, first, group = np.unique(np.concatenate(states, axis=1), axis=0, return_index=True, return_inverse=True)
+    for number, case in enumerate(first):
+        on = {name: changes[name][case] for name in _STATES if name in changes}
+        yield np.flatnonzero(group.ravel() == number), replace(condition, **on)
+
+
+def _empty(network: Network, condition: Operating, cases: int) -> Many:
+    """Nothing solved yet. Arrays are laid out with the cases beside each other, as they are worked out."""
+    sizes = network.node_count, len(condition.source_a), len(condition.load_a), len(network.a)
+    volts, delivered, drawn, branch = (np.zeros((size, cases)).T for size in sizes)
+    imbalance, given, loads, lost = np.zeros((4, cases))
+    return Many(
+        np.zeros(cases, dtype=bool), np.zeros(cases), volts, delivered, drawn, branch, imbalance, given, loads, lost,
+        np.full(cases, -1), np.zeros(cases, dtype=bool),
+    )  # fmt: skip
+
+
+def _together(
+    network: Network,
+    condition: Operating,
+    factor_of_20: Floats,
+    supply: Fed,
+    laws: dict[str, Floats],
+    rows: Ints,
+    found: Many,
 ) -> None:
-    state = solve(network, scaled(condition, shares[case]), factor_of_20, supply)
-    found.solved[case], found.share_held[case] = state.solved, state.share_held
+    """Solve the cases of `rows` on their ports, as far as they are accepted there; `laws` are over (port, row)."""
+    try:
+        ports = Ports(network, condition, factor_of_20, supply, laws)
+    except SingularError:
+        return
+    step = max(1, _CHUNK // network.node_count)
+    for start in range(0, len(rows) if len(ports.laws.limited) <= MOST_LIMITED else 0, step):
+        chunk = slice(start, min(start + step, len(rows)))
+        _keep_settled(found, rows[chunk], ports, ports.solve(chunk))
+
+
+def _keep_settled(found: Many, rows: Ints, ports: Ports, settled: Settled) -> None:
+    e = ports.equations
+    cases: Ints | slice = rows
+    if len(rows) and rows[-1] - rows[0] + 1 == len(rows):
+        cases = slice(int(rows[0]), int(rows[-1]) + 1)
+    found.solved[cases] = found.together[cases] = settled.accepted
+    found.share_held[cases] = settled.accepted
+    found.volts.T[:, cases] = settled.volts
+    for target, places, values in (
+        (found.delivered_A, e.sources, settled.delivered_A),
+        (found.drawn_A, e.loads, settled.drawn_A),
+        (found.branch_A, e.branches, settled.flow_A),
+    ):
+        if len(places) == target.shape[1]:
+            target.T[:, cases] = values
+        else:
+            target.T[np.ix_(places, rows)] = values
+    found.imbalance_A[cases], found.power_in_W[cases] = settled.imbalance_A, settled.power_in_W
+    found.power_loads_W[cases], found.power_lost_W[cases] = settled.power_loads_W, settled.power_lost_W
+
+
+def _keep(found: Many, case: int, state: State) -> None:
+    found.solved[case], found.share_held[case], found.imbalance_A[case] = (
+        state.solved, state.share_held, state.imbalance_A,
+    )  # fmt: skip
     found.volts[case], found.branch_A[case] = state.volts, state.branch_A
-    found.drawn_A[case], found.delivered_A[case] = state.drawn_A, state.delivered_A
-    found.imbalance_A[case] = state.imbalance_A
-
-
-def scaled(condition: Operating, shares: Floats) -> Operating:
-    """A condition with each load multiplied by its share."""
-    full = np.ones(len(condition.load_a))
-    full[: len(shares)] = shares
-    return replace(
-        condition,
-        load_W=condition.load_W * full,
-        load_A=condition.load_A * full,
-        load_S=condition.load_S * full,
-    )
-
-
-class _Ports:
-    """A network reduced to its ports."""
-
-    def __init__(self, network: Network, condition: Operating, factor_of_20: Floats, supply: Fed) -> None:
-        self.network, self.condition, self.supply = network, condition, supply
-        self.equations = Equations(network, condition, factor_of_20, supply)
-        c, e = condition, self.equations
-        self.linear = (
-            not e.converters
-            and bool(np.all(np.isneginf(c.low[e.sources]) & np.isposinf(c.high[e.sources])))
-            and bool(np.all(np.isinf(c.power[e.sources])))
-            and len(e.loads) > 0
-        )
-        if self.linear:
-            self._reduce()
-
-    def _reduce(self) -> None:
-        """Factorise once: `spread` turns currents into the load ports to node volts, `base` is the unloaded network."""
-        c, e = self.condition, self.equations
-        source_S = 1 / c.ohm[e.sources]
-        a = np.concatenate([e.a, c.source_a[e.sources]])
-        b = np.concatenate([e.b, c.source_b[e.sources]])
-        g = np.concatenate([e.siemens, source_S])
-        rows, columns = np.concatenate([a, b, a, b]), np.concatenate([a, b, b, a])
-        values = np.concatenate([g, g, -g, -g])
-        rows, columns = e.position[rows], e.position[columns]
-        keep = (rows >= 0) & (columns >= 0)
-        solution = factor(e.size, rows[keep], columns[keep], values[keep], symmetric=True)
-        ports = np.zeros((self.network.node_count, len(e.loads)))
-        place = np.arange(len(e.loads))
-        ports[c.load_a[e.loads], place] += 1.0
-        ports[c.load_b[e.loads], place] -= 1.0
-        unknown = e.position >= 0
-        self.spread = np.zeros_like(ports)
-        self.spread[unknown] = solution.solve(ports[unknown])
-        emf = np.zeros(self.network.node_count)
-        np.add.at(emf, c.source_a[e.sources], source_S * c.volts[e.sources])
-        np.add.at(emf, c.source_b[e.sources], -source_S * c.volts[e.sources])
-        self.base = np.zeros(self.network.node_count)
-        self.base[unknown] = solution.solve(emf[unknown])
-        self.impedance = self.spread[c.load_a[e.loads]] - self.spread[c.load_b[e.loads]]
-        self.open_V = self.base[c.load_a[e.loads]] - self.base[c.load_b[e.loads]]
-
-    def empty(self, cases: int) -> Many:
-        """Nothing solved yet."""
-        n, c = self.network, self.condition
-        return Many(
-            np.zeros(cases, dtype=bool),
-            np.zeros(cases),
-            np.full((cases, n.node_count), np.nan),
-            np.zeros((cases, len(c.load_a))),
-            np.zeros((cases, len(c.source_a))),
-            np.zeros((cases, len(n.a))),
-            np.zeros(cases),
-            np.zeros(cases, dtype=bool),
-        )
-
-    def _laws(self, shares: Floats) -> tuple[Floats, Floats, Floats]:
-        """W, A and S of the working loads, over (case, load)."""
-        c, on = self.condition, self.equations.loads
-        mine = shares[:, on]
-        return mine * c.load_W[on], mine * c.load_A[on], mine * c.load_S[on]
-
-    def descend(self, shares: Floats, found: Many, rows: slice) -> None:
-        """Solve the cases of `rows` together, from the unloaded network down, into `found`."""
-        watts, amps, siemens = self._laws(shares[rows])
-        knee = self.condition.knee[self.equations.loads]
-        u = np.broadcast_to(self.open_V, watts.shape).copy()
-        mean_slope = (siemens - watts / u**2).mean(axis=0)
-        correct = np.linalg.inv(np.eye(len(knee)) + self.impedance * mean_slope)
-        toward = (correct @ self.impedance).T
-        keep = correct.T
-        drawn = np.empty_like(u)
-        for _ in range(_ITERATIONS):
-            self._drawn(u, watts, amps, siemens, knee, out=drawn)
-            # u ← u + M (open − Z·drawn − u)
-            step = (self.open_V - u) @ keep - drawn @ toward
-            u += step
-            if np.abs(step).max() < 1e-13 * max(1.0, float(self.open_V.max(initial=0.0))):
-                break
-        self._drawn(u, watts, amps, siemens, knee, out=drawn)
-        contracts = self._contracts(u, watts, siemens)
-        self._answer(u, drawn, contracts & np.all(u >= knee, axis=1), found, rows)
-
-    @staticmethod
-    def _drawn(u: Floats, watts: Floats, amps: Floats, siemens: Floats, knee: Floats, out: Floats) -> None:
-        above = np.maximum(u, knee)
-        np.divide(watts, above, out=out)
-        out += amps
-        out *= np.minimum(u / knee, 1.0) if (u < knee).any() else 1.0
-        out += siemens * u
-
-    def _contracts(self, u: Floats, watts: Floats, siemens: Floats) -> np.ndarray:
-        """Whether the map is a contraction at and above u: |Z|·|slope| sums to less than one at every port."""
-        slope = np.abs(siemens - watts / np.maximum(u, 1e-9) ** 2) + siemens
-        return np.asarray((slope @ np.abs(self.impedance).T).max(axis=1) < 1.0)
-
-    def _answer(self, u: Floats, drawn: Floats, accepted: np.ndarray, found: Many, rows: slice) -> None:
-        """Node volts and currents of all cases, and the certificate from the element laws on the full network."""
-        c, e = self.condition, self.equations
-        volts = self.base - drawn @ self.spread.T
-        flow = e.siemens * (volts[:, e.a] - volts[:, e.b])
-        source_u = volts[:, c.source_a[e.sources]] - volts[:, c.source_b[e.sources]]
-        delivered = (c.volts[e.sources] - source_u) / c.ohm[e.sources]
-        out = self._imbalance(flow, delivered, drawn)
-        found.imbalance_A[rows] = np.abs(out[:, self.supply.live]).max(axis=1, initial=0.0)
-        allowed = np.maximum(1e-9, e.scale * np.abs(volts).max(axis=1, initial=0.0)[:, None])
-        balanced = np.all(np.abs(out) <= allowed, axis=1)
-        load_u = volts[:, c.load_a[e.loads]] - volts[:, c.load_b[e.loads]]
-        power_in = (source_u * delivered).sum(axis=1)
-        used = (load_u * drawn).sum(axis=1) + (flow**2 / e.siemens).sum(axis=1)
-        balanced &= np.abs(power_in - used) <= POWER_SHARE * np.maximum(np.abs(power_in), 1.0)
-        # The currents were taken at the ports' own voltages: those must be the network's.
-        consistent = np.abs(load_u - u).max(axis=1) <= 1e-9
-        found.solved[rows] = accepted & balanced & consistent
-        found.share_held[rows] = np.where(found.solved[rows], 1.0, 0.0)
-        found.volts[rows] = np.where(self.supply.live, volts, np.nan)
-        found.branch_A[rows, e.branches] = flow
-        found.drawn_A[rows, e.loads] = drawn
-        found.delivered_A[rows, e.sources] = delivered
-
-    @cached_property
-    def _incidence(self) -> Any:
-        """Sparse (node, current) matrix of signs: which currents leave and enter each node."""
-        from scipy.sparse import coo_array
-
-        c, e, count = self.condition, self.equations, self.network.node_count
-        ends = np.concatenate(
-            [e.a, e.b, c.source_a[e.sources], c.source_b[e.sources], c.load_a[e.loads], c.load_b[e.loads]]
-        )
-        branch, source = np.arange(len(e.a)), len(e.a) + np.arange(len(e.sources))
-        load = len(e.a) + len(e.sources) + np.arange(len(e.loads))
-        columns = np.concatenate([branch, branch, source, source, load, load])
-        ones_b, ones_s, ones_l = np.ones(len(branch)), np.ones(len(source)), np.ones(len(load))
-        signs = np.concatenate([ones_b, -ones_b, -ones_s, ones_s, ones_l, -ones_l])
-        return coo_array((signs, (ends, columns)), shape=(count, len(branch) + len(source) + len(load))).tocsr()
-
-    def _imbalance(self, flow: Floats, delivered: Floats, drawn: Floats) -> Floats:
-        """Current leaving every node, over (case, node)."""
-        return np.asarray((self._incidence @ np.concatenate([flow, delivered, drawn], axis=1).T).T)
+    found.delivered_A[case], found.drawn_A[case] = state.delivered_A, state.drawn_A
+    found.power_in_W[case], found.power_loads_W[case] = state.power_in_W, state.power_loads_W
+    found.power_lost_W[case] = state.power_lost_W
+    found.weakest[case] = -1 if state.weakest is None else state.weakest
