@@ -70,6 +70,8 @@ _FROM = _field("from", "From point", "The place where it starts, such as a busba
 _TO = _field("to", "To point", "The place where it ends. Runs that name the same point meet there.")
 _AT = _field("at", "At point", "The place it is connected to, such as `main bus`.")
 _OWN_NOMINAL = _more("nominal", "Nominal", "Nominal voltage, where it is not the plan's: 12 V.")
+_COMPENSATED = _more("temperature_compensated", "Compensated",
+                     "Its voltages follow the battery's temperature; they are set for 25 degC.", "flag")  # fmt: skip
 _ZONE = _field("zone", "Zone", "The place whose temperature counts; zones are a table of their own.", names_of="zones")
 
 
@@ -180,6 +182,12 @@ BATTERIES = Sheet(
         _more("take_off", "Take-off", "Where the main cables leave parallel strings.", choices=_TAKE_OFFS),
         _more("link.length", "Link length", "Length of the cable between strings: 0.3 m."),
         _more("link.size", "Link size", "Size of the cable between strings: 50 mm2."),
+        _more("capacity_hours", "Rated hours", "Hours in which its capacity is rated to be drawn: 20.", "number"),
+        _more("peukert", "Peukert exponent", "From the data sheet, if not typical of the chemistry: 1.2.", "number"),
+        _more("efficiency", "Efficiency", "Energy out over energy in, there and back: 85 %."),
+        _more("self_discharge", "Self-discharge", "What it loses in a month at 20 degC: 3 %."),
+        _more("least_charge", "Least charge", "State of charge below which it is not to be taken: 50 %."),
+        _more("min_charge_temperature", "Coldest charging", "Below which it must not be charged: 0 degC."),
         _NOTES,
     ),
     "battery",
@@ -196,9 +204,12 @@ CHARGERS = Sheet(
         _field("volts", "Volts", "Charging voltage it is set to: 14.4 V."),
         _field("amps", "Current limit", "Greatest current it delivers: 30 A."),
         _field("self_limiting", "Limits itself", "Its output stays within its rating even in a short circuit.", "flag"),
-        _field(
-            "resistance", "Droop", "Output resistance; 0.1 % of the voltage at rated current unless stated.", main=False
-        ),
+        _field("hours_per_day", "Hours a day", "How long it runs in a day: driven, or hooked up: 2.", "number"),
+        _more("schedule", "Schedule", "Times of day at which it runs, with commas between: 18:00-07:00.", "list"),
+        _more("hot_amps", "Hot output", "What an alternator still gives when it is hot: 22 A."),
+        _more("float_volts", "Float volts", "What it falls back to when the battery is full: 13.5 V."),
+        _COMPENSATED,
+        _more("resistance", "Droop", "Output resistance; 0.1 % of the voltage at rated current unless stated."),
         _OWN_NOMINAL,
         _NOTES,
     ),
@@ -216,6 +227,11 @@ SOLAR = Sheet(
         _field("power", "Power", "Rated power of the modules together: 200 W."),
         _field("ceiling", "Ceiling", "Charging voltage above which the controller holds back: 14.4 V."),
         _field("amps", "Current limit", "Greatest current of the controller: 20 A."),
+        _field("tilt", "Tilt", "Of the modules from level: 30 deg."),
+        _field("azimuth", "Azimuth", "Where the modules face, clockwise from north: 180 deg is south."),
+        _more("performance_ratio", "Performance ratio", "What dirt, heat and mismatch leave of the power: 75 %."),
+        _more("float_volts", "Float volts", "What it falls back to when the battery is full: 13.5 V."),
+        _COMPENSATED,
         _more("efficiency", "Efficiency", "Of the controller, on what its array gives: 97 %."),
         _more("max_input", "Highest input", "Highest voltage that the controller's input stands: 75 V."),
         _more("from", "Array arrives at", "Point of the controller's input, at the end of the array's runs."),
@@ -229,6 +245,7 @@ SOLAR = Sheet(
         _more("array.vmp", "Vmp", "Voltage of one module at full power: 20 V."),
         _more("array.imp", "Imp", "Current of one module at full power: 5 A."),
         _more("array.voc_rise", "Voc rise", "Rise of Voc for each degC below 25 degC: 0.3 %."),
+        _more("array.power_fall", "Power fall", "Fall of the power for each degC above 25 degC: 0.4 %."),
         _more("array.max_fuse", "Largest fuse", "Largest series fuse that the modules' maker allows: 15 A."),
         _OWN_NOMINAL,
         _NOTES,

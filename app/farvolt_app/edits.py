@@ -103,6 +103,11 @@ def renaming(raw: dict[str, Any], table: str, entry: Entry, name: str) -> list[S
     if table == "sources":
         pairs = enumerate(_list(raw.get("loads")))
         steps += [Set("loads", i, ("inverter_of",), name) for i, row in pairs if _dict(row).get("inverter_of") == old]
+    if table == "days" and _dict(raw.get("bank")).get("design_day") == old:
+        steps.append(Set("bank", None, ("design_day",), name))
+    for index, day in enumerate(_list(raw.get("days"))):
+        if old in _dict(_dict(day).get(table)):
+            steps.append(RenameKey("days", index, (table, old), name))
     if table == "protection_types":
         steps += _protections(raw, old, name)
     elif table in NAMED:

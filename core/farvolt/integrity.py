@@ -12,7 +12,7 @@ from farvolt.errors import Fault
 from farvolt.plan import CHASSIS, NAMED
 from farvolt.protection_types import is_shipped, protection_type_names
 
-_NAMED = ("points", "sources", "runs", "devices", "loads", "cases")
+_NAMED = ("points", "sources", "runs", "devices", "loads", "cases", "days")
 _ENDS = {"sources": ("at", "from"), "runs": ("from", "to"), "devices": ("from", "to"), "loads": ("at",)}
 _CASE_SOURCE_FIELDS = {
     "battery": ("state", "charge", "emf", "aged"),
@@ -68,7 +68,7 @@ def faults(raw: dict[str, Any]) -> list[Found]:
     """Every fault between entries, each with its path in the raw tables (for its line)."""
     checks = (
         _duplicates, _self_joins, _chassis, _one_pole, _guards, _protection_types, _references, _case_names,
-        _case_states, _sources,
+        _case_states, _sources, _days,
     )  # fmt: skip
     return [found for check in checks for found in check(raw)]
 
@@ -292,6 +292,21 @@ def _case_states(raw: dict[str, Any]) -> Iterator[Found]:
             for setting in [one for one in state if one in anywhere and one not in known]:
                 problem = f"is not a setting of a {kind}"
                 yield path, Fault(where, f"{field}.{setting}", shown(state[setting]), problem, ", ".join(known))
+
+
+def _days(raw: dict[str, Any]) -> Iterator[Found]:
+    """Types of day that name what is not there; a bank sized for such a type."""
+    loads, days = _Names("load", names(raw, "loads")), _Names("type of day", names(raw, "days"))
+    kinds = [row.get("name") for _, row in entries(raw, "sources") if row.get("kind") == "charger"]
+    chargers = _Names("charger", [name for name in kinds if isinstance(name, str)])
+    for index, row in entries(raw, "days"):
+        for field, defined in (("loads", loads), ("sources", chargers)):
+            given = row.get(field)
+            for name in given if isinstance(given, dict) else ():
+                yield from defined.unknown(("days", index, field, name), place("days", row, index), field, name)
+    bank = raw.get("bank")
+    wanted = bank.get("design_day") if isinstance(bank, dict) else None
+    yield from days.unknown(("bank", "design_day"), "bank", "design_day", wanted)
 
 
 def _sources(raw: dict[str, Any]) -> Iterator[Found]:

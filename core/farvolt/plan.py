@@ -10,19 +10,27 @@ from typing import Annotated, Any, Literal
 from pydantic import Field, field_validator, model_validator
 
 from farvolt import units
+from farvolt.plan_energy import Bank as Bank
+from farvolt.plan_energy import Block as Block
+from farvolt.plan_energy import DayType as DayType
+from farvolt.plan_energy import DischargeRate as DischargeRate
+from farvolt.plan_energy import Site as Site
 from farvolt.plan_protection import OpeningTime as OpeningTime
 from farvolt.plan_protection import OwnProtection
 from farvolt.plan_protection import Protection as Protection
 from farvolt.plan_types import (
     AnyResistance,
+    Bearing,
     CableSize,
     Charge,
     ConductorTemperature,
     Count,
     Current,
     DaySpan,
+    DischargeHours,
     Efficiency,
     Entry,
+    Exponent,
     Factor,
     Flag,
     Hours,
@@ -37,6 +45,7 @@ from farvolt.plan_types import (
     StatedSize,
     Temperature,
     Text,
+    Tilt,
     Voltage,
     WholeNumber,
     near,
@@ -52,6 +61,9 @@ FORMAT = 1
 
 NAMED = ("zones", "routes", "protection_types")
 """Tables whose entries are called by their key."""
+
+SINGLE = ("plan", "tolerances", "site", "bank")
+"""Tables that are there once and have no entries."""
 
 
 class PlanInfo(Entry):
@@ -127,6 +139,18 @@ class Battery(Entry):
     short_circuit: Rating | None = None
     max_discharge: Rating | None = None
     max_charge: Rating | None = None
+    capacity_hours: DischargeHours | None = None
+    """Hours in which its capacity is rated to be drawn; 20 for lead-acid, 5 for lithium, unless stated."""
+    peukert: Exponent | None = None
+    """Exponent of Peukert's law; typical of the chemistry unless stated."""
+    efficiency: Efficiency | None = None
+    """Energy out over energy in; typical of the chemistry unless stated."""
+    self_discharge: Share | None = None
+    """In a month at 20 °C; typical of the chemistry unless stated."""
+    least_charge: Share | None = None
+    """State of charge below which it is not to be taken; typical of the chemistry unless stated."""
+    min_charge_temperature: Temperature | None = None
+    """Below which it must not be charged; as its chemistry asks unless stated."""
     notes: Text = ""
 
     @model_validator(mode="after")
@@ -151,6 +175,15 @@ class Charger(Entry):
     resistance: Resistance | None = None
     """Droop of the output; 0.1 % of the voltage at rated current unless stated."""
     self_limiting: Flag = False
+    hot_amps: Rating | None = None
+    """What an alternator still gives when hot, at the speed it runs at."""
+    float_volts: Voltage | None = None
+    """What it falls back to when the battery is full; it stays at `volts` unless stated."""
+    temperature_compensated: Flag = False
+    """Whether its voltages, set for 25 °C, follow the temperature of the battery."""
+    hours_per_day: Hours | None = None
+    """Hours it runs: driven, or hooked up to the mains."""
+    schedule: tuple[DaySpan, ...] = ()
     notes: Text = ""
 
 
@@ -166,6 +199,8 @@ class SolarArray(Entry):
     imp: Rating
     voc_rise: Share | None = None
     """Rise of the open-circuit voltage for each kelvin below 25 °C, from the data sheet."""
+    power_fall: Share | None = None
+    """Fall of the power for each kelvin above 25 °C, from the data sheet."""
     max_fuse: Rating | None = None
     """Largest series fuse that the maker of the modules allows."""
 
@@ -188,6 +223,16 @@ class Solar(Entry):
     max_input: Voltage | None = None
     """Highest voltage that the controller's input stands."""
     array: SolarArray | None = None
+    tilt: Tilt | None = None
+    """Of the modules from level."""
+    azimuth: Bearing | None = None
+    """Where the modules face, clockwise from north: south is 180 deg."""
+    performance_ratio: Efficiency = units.parse("75 %", "share")
+    """What dirt, heat, cables and mismatch leave of the rated power, for sizing."""
+    float_volts: Voltage | None = None
+    """What it falls back to when the battery is full; it stays at `ceiling` unless stated."""
+    temperature_compensated: Flag = False
+    """Whether its voltages, set for 25 °C, follow the temperature of the battery."""
     notes: Text = ""
 
     @model_validator(mode="after")
@@ -470,6 +515,9 @@ class Plan(Entry):
     loads: tuple[Load, ...] = ()
     cases: tuple[Case, ...] = ()
     tolerances: Tolerances = Field(default_factory=Tolerances)
+    site: Site | None = None
+    bank: Bank = Field(default_factory=Bank)
+    days: tuple[DayType, ...] = ()
 
     @cached_property
     def checked_cases(self) -> tuple[Case, ...]:

@@ -16,9 +16,11 @@ from farvolt.errors import QuantityError
 from farvolt.units import Quantity
 
 NAME_LIMIT = 200
+DAY_MINUTES = 24 * 60
 
 # Besides controls: what breaks a line or turns the direction of the text around it.
 _CONTROL = re.compile(r"[\x00-\x1f\x7f-\x9f\u2028\u2029\u202a-\u202e\u2066-\u2069]")
+_SPAN = re.compile(r"([0-9]{1,2}):([0-9]{2})-([0-9]{1,2}):([0-9]{2})")
 _TEMPERATURE_WORDS = ("rulebook", "rated", "ambient", "estimated")
 
 
@@ -66,14 +68,14 @@ def _reader(
             bare = _is_number(value)
             problem = "a bare number has no unit" if bare else "is not a text with a number and a unit"
             nearest = units.with_unit(f"{value:.15g}", dimension) if bare else ""
-            raise refusal(problem, f"a {dimension} in quotes such as {example}", nearest)
+            raise refusal(problem, f"{units.a(dimension)} in quotes such as {example}", nearest)
         try:
             quantity = units.parse(value, dimension)
         except QuantityError as error:
             raise _translated(error) from None
         limit = _broken_limit(quantity, minimum, above, maximum)
         if limit:
-            raise refusal(limit, f"a {dimension} such as {example}")
+            raise refusal(limit, f"{units.a(dimension)} such as {example}")
         return quantity
 
     return read
@@ -100,7 +102,7 @@ def _limit(si: float, of: Quantity) -> str:
 
 
 def _schema(dimension: str) -> WithJsonSchema:
-    return WithJsonSchema({"type": "string", "description": f"a {dimension}, such as {units.EXAMPLES[dimension]}"})
+    return WithJsonSchema({"type": "string", "description": f"{units.a(dimension)}, such as {units.EXAMPLES[dimension]}"})
 
 
 def _read_size(value: Any) -> conductors.Size | None:
@@ -144,11 +146,43 @@ def _read_conductor_temperature(value: Any) -> Any:
 
 
 def _day_span(span: str) -> str:
-    match = re.fullmatch(r"([0-9]{1,2}):([0-9]{2})-([0-9]{1,2}):([0-9]{2})", span)
+    match = _SPAN.fullmatch(span)
     parts = [int(part) for part in match.groups()] if match else []
-    if not parts or parts[0] > 24 or parts[2] > 24 or parts[1] > 59 or parts[3] > 59:
+    if not parts or parts[1] > 59 or parts[3] > 59 or max(span_minutes(span)) > DAY_MINUTES:
         raise refusal("is not a span of the day", 'a span such as "18:00-23:30"')
+    start, end = span_minutes(span)
+    if start == end:
+        raise refusal("starts and ends at the same time", 'two times of the day, or "00:00-24:00" for all of it')
     return span
+
+
+def span_minutes(span: str) -> tuple[int, int]:
+    """Start and end of a span of the day, in minutes after midnight; one past midnight ends before it starts."""
+    start, end = (one.split(":") for one in span.split("-"))
+    return int(start[0]) * 60 + int(start[1]), int(end[0]) * 60 + int(end[1])
+
+
+def day_use(value: Any) -> Any:
+    """A type of day's word on one entry: its hours, or the spans of the day in which it is on."""
+    accepted = 'hours from 0 to 24, or a list of spans such as ["18:00-23:30"]'
+    if _is_number(value):
+        if not 0 <= value <= 24:
+            raise refusal("is not a number of hours in a day", accepted)
+        return float(value)
+    if isinstance(value, str):
+        raise refusal("is neither a number nor a list", accepted, f'["{value}"]' if _SPAN.fullmatch(value) else "")
+    if not isinstance(value, list | tuple) or not all(isinstance(one, str) for one in value):
+        raise refusal("is neither a number nor a list", accepted)
+    return tuple(_named_span(one) for one in value)
+
+
+def _named_span(span: str) -> str:
+    """A span among others, which a message must name."""
+    try:
+        return _day_span(span)
+    except PydanticCustomError as error:
+        context = error.context or {}
+        raise refusal(f'"{span}" {context["problem"]}', context["accepted"]) from None
 
 
 _read_temperature = _reader("temperature", minimum=-100, maximum=300)
@@ -173,6 +207,10 @@ Charge = Annotated[Quantity, BeforeValidator(_reader("charge", above=0, minimum=
 Share = Annotated[Quantity, BeforeValidator(_reader("share", minimum=0, maximum=1)), _schema("share")]
 Efficiency = Annotated[Quantity, BeforeValidator(_reader("share", above=0, minimum=0.01, maximum=1)), _schema("share")]
 Duration = Annotated[Quantity, BeforeValidator(_reader("time", minimum=0, maximum=1e7)), _schema("time")]
+Latitude = Annotated[Quantity, BeforeValidator(_reader("angle", minimum=-90, maximum=90)), _schema("angle")]
+Longitude = Annotated[Quantity, BeforeValidator(_reader("angle", minimum=-180, maximum=180)), _schema("angle")]
+Tilt = Annotated[Quantity, BeforeValidator(_reader("angle", minimum=0, maximum=90)), _schema("angle")]
+Bearing = Annotated[Quantity, BeforeValidator(_reader("angle", minimum=0, maximum=360)), _schema("angle")]
 Temperature = Annotated[Quantity, BeforeValidator(_read_temperature), _schema("temperature")]
 ConductorTemperature = Annotated[
     Quantity | Literal["rulebook", "rated", "ambient", "estimated"],
@@ -199,8 +237,12 @@ Flag = Annotated[bool, Field(strict=True)]
 Factor = Annotated[float, Field(strict=True, ge=0, le=1000, allow_inf_nan=False)]
 Multiple = Annotated[float, Field(strict=True, gt=0, le=1000, allow_inf_nan=False)]
 Overload = Annotated[float, Field(strict=True, ge=1, le=1000, allow_inf_nan=False)]
+Times = Annotated[float, Field(strict=True, ge=1, le=10, allow_inf_nan=False)]
+Exponent = Annotated[float, Field(strict=True, ge=1, le=2, allow_inf_nan=False)]
+Ratio = Annotated[float, Field(strict=True, ge=0, le=1, allow_inf_nan=False)]
 Seconds = Annotated[float, Field(strict=True, gt=0, le=3600, allow_inf_nan=False)]
 Hours = Annotated[float, Field(strict=True, ge=0, le=24, allow_inf_nan=False)]
+DischargeHours = Annotated[float, Field(strict=True, gt=0, le=1000, allow_inf_nan=False)]
 DaySpan = Annotated[str, Field(strict=True), AfterValidator(_day_span)]
 
 shares = TypeAdapter(dict[str, Factor])

@@ -4,7 +4,7 @@ import json
 from functools import lru_cache
 from typing import Any
 
-from farvolt.plan import FORMAT, NAMED, Plan
+from farvolt.plan import FORMAT, NAMED, SINGLE, Plan
 from farvolt.plan_types import Entry
 
 
@@ -30,8 +30,9 @@ def accepted(model: type[Entry], field: str) -> str:
     """What a field of a table takes, in words; nothing for a field that the table does not have."""
     schema = _schema()
     if model is Plan:
-        words = {"format": str(FORMAT), "plan": "a table headed [plan]"}
+        words = {"format": str(FORMAT)}
         words |= {table: f"tables headed [{table}.NAME]" for table in NAMED}
+        words |= {table: f"a table headed [{table}]" for table in SINGLE}
         return words.get(field, f"tables headed [[{field}]]")
     entry = schema["$defs"][model.__name__]["properties"].get(field)
     return _words(entry, schema["$defs"]) if entry else ""
@@ -65,13 +66,15 @@ def _tidy(node: Any) -> Any:
 def _words(entry: dict[str, Any], tables: dict[str, Any]) -> str:
     if "$ref" in entry:
         return "a table of " + ", ".join(tables[entry["$ref"].rsplit("/", 1)[-1]]["properties"])
+    if "anyOf" in entry and "description" in entry:
+        return str(entry["description"])
     if "anyOf" in entry:
         return ", or ".join(_words(one, tables) for one in entry["anyOf"])
     if "const" in entry or "enum" in entry:
         return _either([json.dumps(one) for one in entry.get("enum", [entry.get("const")])])
     kind = entry.get("type")
     if kind == "array":
-        return "a list of such tables" if "$ref" in entry["items"] else "a list of texts in quotes"
+        return _list_words(entry["items"])
     if kind in ("integer", "number"):
         low = f"above {entry['exclusiveMinimum']:g}" if "exclusiveMinimum" in entry else f"from {entry['minimum']:g}"
         return f"a {'whole ' if kind == 'integer' else ''}number {low} to {entry['maximum']:g}"
@@ -79,6 +82,14 @@ def _words(entry: dict[str, Any], tables: dict[str, Any]) -> str:
         return f'{{ "name" = {_words(entry["additionalProperties"], tables)} }}'
     simple = {"boolean": "true or false", "string": "a text in quotes"}
     return str(entry.get("description") or simple[str(kind)])
+
+
+def _list_words(items: dict[str, Any]) -> str:
+    if "$ref" in items:
+        return "a list of such tables"
+    if items.get("type") == "number":
+        return f"a list, each {_words(items, {})}"
+    return f"a list, each {items['description']}" if "description" in items else "a list of texts in quotes"
 
 
 def _either(words: list[str]) -> str:

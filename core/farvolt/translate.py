@@ -122,7 +122,7 @@ def _accepted(path: Path, raw: dict[str, Any]) -> str:
         path = path[:-1]
     if path[0] == "cases" and path[2:3] == ("loads",) and len(path) > 3:
         return "a share of what the load is rated for, a number from 0 to 1000"
-    if len(path) == 2 and path[0] != "plan":
+    if len(path) == 2 and path[0] not in plan.SINGLE:
         return schema.accepted(Plan, str(path[0]))
     model = _model_of(path, raw)
     return schema.accepted(model, str(path[-1])) if model else ""
@@ -170,6 +170,7 @@ def _where(path: Path, raw: dict[str, Any]) -> tuple[str, str]:
 _TABLES: dict[str, type[Entry]] = {
     "plan": plan.PlanInfo, "zones": plan.Zone, "routes": plan.Route, "points": plan.Point, "runs": plan.Run,
     "devices": plan.Device, "loads": plan.Load, "cases": plan.Case, "protection_types": OwnProtection,
+    "tolerances": plan.Tolerances, "site": plan.Site, "bank": plan.Bank, "days": plan.DayType,
 }  # fmt: skip
 _SOURCES: dict[str, type[Entry]] = {
     "battery": plan.Battery, "charger": plan.Charger, "solar": plan.Solar, "converter": plan.Converter,
@@ -178,7 +179,7 @@ _NESTED: dict[tuple[str, str], type[Entry]] = {
     ("runs", "protection"): Protection, ("runs", "protection_to"): Protection,
     ("runs", "return"): plan.ReturnConductor, ("loads", "surge"): plan.Surge,
     ("sources", "link"): plan.LinkCable, ("sources", "array"): plan.SolarArray,
-    ("protection_types", "band"): OpeningTime,
+    ("protection_types", "band"): OpeningTime, ("bank", "block"): plan.Block,
 }  # fmt: skip
 
 
@@ -192,10 +193,12 @@ def _model_of(path: Path, raw: dict[str, Any]) -> type[Entry] | None:
     table = str(path[0])
     if len(path) == 1:
         return Plan
+    if table in plan.SINGLE:
+        return plan.DischargeRate if "rates" in path[:-1] else _NESTED.get((table, str(path[1])), _TABLES[table])
     if len(path) > 3:
         if table == "cases":
             return plan.SourceState if path[2] == "sources" and len(path) > 4 else None
         return _NESTED.get((table, str(path[2])))
     if table == "sources":
         return _SOURCES.get(str(_value_at(raw, (*path[:2], "kind"))))
-    return _TABLES.get(table) if len(path) == 3 or table == "plan" else None
+    return _TABLES.get(table) if len(path) == 3 else None

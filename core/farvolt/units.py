@@ -1,6 +1,7 @@
 """Quantities with units: read from text, kept as the user wrote them, shown in metric and American units.
 
-Base units: metre, watt, ampere, volt, ohm, degree Celsius, ampere-hour, second; a percentage has base 1.
+Base units: metre, watt, ampere, volt, ohm, degree Celsius, ampere-hour, second, degree of angle; a percentage has
+base 1.
 """
 
 import difflib
@@ -23,6 +24,7 @@ DIMENSIONS: dict[str, dict[str, float]] = {
     "charge": {"Ah": 1.0, "mAh": 1e-3},
     "share": {"%": 0.01},
     "time": {"s": 1.0, "ms": 1e-3, "min": 60.0, "h": 3600.0},
+    "angle": {"deg": 1.0},
     "temperature": {"degC": 1.0, "degF": 1.0, "K": 1.0},
 }
 """Dimension to its units, each with its factor to the base unit (temperatures are converted apart)."""
@@ -36,12 +38,13 @@ EXAMPLES: dict[str, str] = {
     "charge": '"200 Ah"',
     "share": '"80 %"',
     "time": '"0.5 s"',
+    "angle": '"30 deg"',
     "temperature": '"30 degC" or "86 degF"',
 }
 """Dimension to what a message shows as accepted."""
 
 _SPELLINGS = {"Ω": "ohm", "mΩ": "mohm", "µΩ": "uohm", "μΩ": "uohm", "kΩ": "kohm", "µohm": "uohm", "μohm": "uohm"}
-_SPELLINGS |= {"°C": "degC", "°F": "degF", "℃": "degC", "℉": "degF"}
+_SPELLINGS |= {"°C": "degC", "°F": "degF", "℃": "degC", "℉": "degF", "°": "deg"}
 _PATTERN = re.compile(r"([+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?) ?(\S.*)?")
 _COMMA = re.compile(r"([+-]?[0-9]+),([0-9]+)(?![0-9,.])")
 
@@ -51,6 +54,7 @@ _MEANT = {
     "ohm": "ohm", "milliohm": "mohm", "amp hour": "Ah", "ampere hour": "Ah", "amp-hour": "Ah", "percent": "%",
     "per cent": "%", "sec": "s", "second": "s", "minute": "min", "hour": "h", "hr": "h", "c": "degC", "f": "degF",
     "celsius": "degC", "fahrenheit": "degF", "deg c": "degC", "deg f": "degF", "kelvin": "K",
+    "degree": "deg",
 }  # fmt: skip
 """What people write for a unit, in small letters and without a plural s: offered in a message, never taken."""
 
@@ -107,6 +111,11 @@ def number(value: float, digits: int = 3) -> str:
     return text.rstrip("0").rstrip(".") if "." in text else text
 
 
+def a(dimension: str) -> str:
+    """The dimension with its article: "a length", "an angle"."""
+    return f"{'an' if dimension[0] in 'aeiou' else 'a'} {dimension}"
+
+
 def both_lengths(length: Quantity) -> str:
     """A length as written, with the other system's beside it, for reading."""
     if length.text.endswith(("ft", "in")):
@@ -129,7 +138,7 @@ def _to_base(value: float, unit: str, factor: float) -> float:
 
 
 def _accepted(dimension: str) -> str:
-    return f"a {dimension} such as {EXAMPLES[dimension]} (units: {', '.join(DIMENSIONS[dimension])})"
+    return f"{a(dimension)} such as {EXAMPLES[dimension]} (units: {', '.join(DIMENSIONS[dimension])})"
 
 
 def _not_a_number(text: str, dimension: str) -> QuantityError:
