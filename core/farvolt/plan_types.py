@@ -102,7 +102,8 @@ def _limit(si: float, of: Quantity) -> str:
 
 
 def _schema(dimension: str) -> WithJsonSchema:
-    return WithJsonSchema({"type": "string", "description": f"{units.a(dimension)}, such as {units.EXAMPLES[dimension]}"})
+    words = f"{units.a(dimension)}, such as {units.EXAMPLES[dimension]}"
+    return WithJsonSchema({"type": "string", "description": words})
 
 
 def _read_size(value: Any) -> conductors.Size | None:
