@@ -169,7 +169,7 @@ def test_the_note_names_what_may_go_dark_together() -> None:
     main += 'protection = { type = "blade", rating = "15 A", distance = "0 m" }\n'
     text = plan_text("10 A", length="2 m", extra=main).replace('from = "bank"\nto = "end"', 'from = "bus"\nto = "end"')
     (one,) = found(text, SELECTIVITY)
-    assert (one.severity, one.subject, one.value) == ("note", "main", 1.0)
+    assert (one.severity, one.subject) == ("note", "main")
     assert '"feed"' in one.working[0]
 
 

@@ -33,7 +33,7 @@ name = "bank"
 kind = "battery"
 at = "bank"
 emf = "12.8 V"
-resistance = "5 mohm"
+resistance = "15 mohm"
 [[runs]]
 name = "feed"
 from = "bank"

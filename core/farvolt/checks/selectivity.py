@@ -80,7 +80,7 @@ def _of(context: Context, pairs: list[tuple[Guard, Guard]]) -> Iterator[Finding]
     upper = pairs[0][1]
     run = context.plan.runs[upper.run]
     yield run_finding(
-        "protection.selectivity", "note", run, float(len(lines)), None, None,
+        "protection.selectivity", "note", run, None, None, None,
         f"{label(run)}: its {upper.protection.rating} may open before {len(lines)} of the {len(pairs)} protections "
         "behind it",
         f"{PRACTICE}: bands of time and current that do not overlap",
