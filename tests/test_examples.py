@@ -16,12 +16,18 @@ VAN, CABIN = "instrument-repair-van", "bird-observatory-cabin"
 
 FAILS = {
     VAN: {("protection.missing", "bank gauge lead")},
-    CABIN: {("protection.over-conductor", "rotator feed"), ("protection.far-end", "rotator feed"), ("volts.low", "east camera")},
+    CABIN: {
+        ("protection.over-conductor", "rotator feed"),
+        ("protection.far-end", "rotator feed"),
+        ("volts.low", "east camera"),
+    },
 }
 WARNS = {
     VAN: {("drop.load", "fridge")},
     CABIN: {
-        (rule, load) for rule in ("drop.load", "drop.branch") for load in ("east camera", "east housing heater")
+        *((rule, load) for rule in ("drop.load", "drop.branch") for load in ("east camera", "east housing heater")),
+        ("protection.far-end", "east mast feed"),
+        ("protection.far-end", "microphone feed"),
     },
 }
 RUNS = {VAN: 27, CABIN: 40}
