@@ -15,7 +15,7 @@ ROOT = Path(__file__).parent.parent
 PACKAGES = {"farvolt_app": ROOT / "app", "farvolt": ROOT / "core", "farvolt_data": ROOT / "data"}
 """Package to its source root, upper layers first."""
 
-HEAVY = {"scipy", "pandas", "openpyxl", "streamlit", "altair", "tomlkit", "pyarrow"}
+HEAVY = {"scipy", "pandas", "openpyxl", "streamlit", "altair", "tomlkit", "pyarrow", "pvlib"}
 OF_THE_APP = {"streamlit", "click", "rich", "openpyxl", "pandas", "altair", "tomlkit"}
 
 
