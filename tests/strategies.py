@@ -179,8 +179,10 @@ def _roof_runs(chance: random.Random, wishes: Wishes, draft: Draft) -> None:
     if chance.random() < 0.5 * wishes.devices:
         end = "array switch"
         _device(chance, draft, end, "controller input")
+    on_chassis = any(run.get("return") == "chassis" for run in draft["runs"])
     for _ in range(chance.choice((1, 1, 2))):
-        _run(chance, draft, "roof box", end, "same")
+        back = "chassis" if on_chassis and chance.random() < 0.3 else "same"
+        _run(chance, draft, *(("roof box", end) if chance.random() < 0.7 else (end, "roof box")), back)
 
 
 def _double(chance: random.Random, draft: Draft) -> None:
