@@ -1,5 +1,7 @@
 """The nodal equations of one case: element laws, Kirchhoff's current law, and its Jacobian."""
 
+from functools import cached_property
+
 import numpy as np
 
 from farvolt.fed import Fed, first_diode
@@ -12,6 +14,9 @@ IMBALANCE_A = 1e-9
 
 _TRACE_S = 1e-9
 """Slope given to a source at its limit in the Jacobian alone; far below a blocking diode's leak."""
+
+HAIR_V = 1e-8
+"""Far below any drop that matters, far above rounding."""
 
 _EPSILON = float(np.finfo(float).eps)
 
@@ -77,9 +82,19 @@ class Equations:
             if port < first_diode(self.network):
                 mine = int(part[c.source_a[port]])
                 high[mine] = max(high.get(mine, 0.0), float(c.volts[port]))
-        for node in {node for (_, pole), node in self.network.nodes.items() if pole == FEED}:
+        for node in self._feeds:
             volts[node] = high.get(int(part[node]), 0.0)
         return volts
+
+    def inside(self, volts: Floats) -> Floats:
+        """A hair below: a source that idles at its very own voltage then conducts, and Newton sees its slope."""
+        lower = volts.copy()
+        lower[self._feeds] -= HAIR_V
+        return lower
+
+    @cached_property
+    def _feeds(self) -> list[int]:
+        return list({node for (_, pole), node in self.network.nodes.items() if pole == FEED})
 
     # Element laws -----------------------------------------------------------------------------------------
 

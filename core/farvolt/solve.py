@@ -60,7 +60,7 @@ def solve(network: Network, condition: Operating, factor_of_20: Floats, supply: 
     start = _newton(equations, equations.first_guess(), 0.0)
     if start is None:
         return _state(equations, equations.first_guess(), 0.0, None)
-    end = _newton(equations, start, 1.0, falling=True)
+    end = _newton(equations, equations.inside(start), 1.0, falling=True)
     if end is not None and equations.above_knees(end):
         return _state(equations, end, 1.0, None)
     volts, share = _climb(equations, start, 0.0, 1.0, _FIRST_STEP, _LEAST_STEP)
@@ -81,7 +81,7 @@ def _newton(equations: Equations, volts: Floats, share: float, *, falling: bool 
     """
     volts = volts.copy()
     unknown = equations.position >= 0
-    previous = np.inf
+    previous, entries, solution = np.inf, np.empty(0), None
     for _ in range(80):
         out = equations.residual(volts, share)
         done = equations.balanced(out, volts)
@@ -89,7 +89,12 @@ def _newton(equations: Equations, volts: Floats, share: float, *, falling: bool 
             return volts
         previous = np.abs(out[unknown]).max(initial=0.0) if done else np.inf
         try:
-            solution = factor(equations.size, *equations.jacobian(volts, share), symmetric=not equations.converters)
+            rows, columns, values = equations.jacobian(volts, share)
+            if solution is None or not np.array_equal(values, entries):
+                # Where every law is straight, the Jacobian stays what it was.
+                solution, entries = (
+                    factor(equations.size, rows, columns, values, symmetric=not equations.converters), values,
+                )  # fmt: skip
             if not solution.positive:
                 return None
             step = np.zeros_like(volts)
