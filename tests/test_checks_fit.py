@@ -5,7 +5,7 @@ from typing import Any
 
 import pytest
 
-from farvolt.checks.fit import known_stud
+from farvolt.lugs import known_stud
 from farvolt.conductors import parse_size
 from farvolt.plan import Plan
 from farvolt.tables import read

@@ -3,6 +3,7 @@
 FarvoltError
 ├── PlanError        a plan file that cannot be used; carries every fault found
 ├── RulebookError    a rulebook that cannot be read, or does not exist
+├── PriceListError   a price list that cannot be used; carries every fault found
 ├── DataError        a shipped table that contradicts itself
 ├── SaveError        a file that cannot be written, or changed on disk meanwhile
 └── QuantityError    a text that is not a quantity of the expected kind
@@ -59,6 +60,15 @@ class PlanError(FarvoltError):
 
 class RulebookError(FarvoltError):
     """A rulebook that does not exist or cannot be read."""
+
+
+class PriceListError(FarvoltError):
+    """A price list that cannot be used. `faults` holds what is wrong with it, by row."""
+
+    def __init__(self, faults: list[Fault], source: str = "") -> None:
+        self.faults = faults
+        head = f"{source}: " if source else ""
+        super().__init__("\n".join(f"{head}{fault}" for fault in faults))
 
 
 class DataError(FarvoltError):

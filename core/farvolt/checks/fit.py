@@ -2,46 +2,19 @@
 
 import difflib
 import math
-import re
 from collections.abc import Iterator
-from dataclasses import dataclass
 
 from farvolt.checks.registry import check, run_finding
 from farvolt.conductors import Size
 from farvolt.context import Context, label
+from farvolt.lugs import LUGS, STUDS, Lugs, known_stud
 from farvolt.network import return_size
 from farvolt.plan import Point, Run
 from farvolt.results import Finding
-from farvolt.tables import read
 from farvolt.units import number
-from farvolt_data import ROOT
 
 _TERMINALS = "the largest conductor that the terminals take, as the plan states it (largest_size)"
 _LUGS = "common practice: lugs and ring terminals usually stocked (provisional)"
-
-
-@dataclass(frozen=True, slots=True)
-class _Lugs:
-    """Studs that lugs are usually stocked for, for conductors up to an area."""
-
-    area_up_to_mm2: float
-    smallest: str
-    largest: str
-
-
-_STUDS = {row["stud"]: float(row["diameter_mm"]) for row in read(ROOT / "devices" / "studs.csv")}
-_ROWS = [
-    _Lugs(float(row["area_up_to_mm2"]), row["smallest_stud"], row["largest_stud"])
-    for row in read(ROOT / "devices" / "lugs.csv")
-]
-
-
-def known_stud(text: str) -> str | None:
-    """The one name of a stud size however it is spelt ("m8", "3/8", '3/8"', "no. 10"), or None."""
-    word = " ".join(text.lower().split())
-    word = re.sub(r'\s*("|\'\'|in\.?|inch|inches)$', "", word)
-    word = re.sub(r"^(no\.?|number)\s*", "#", word).replace(" ", "")
-    return next((name for name in _STUDS if name.lower().removesuffix(" in") == word), None)
 
 
 @check("conductor.fit", title="Cable sizes against the terminals and studs where they end")
@@ -71,8 +44,8 @@ def _end(run: Run, point: Point) -> Iterator[Finding]:
     if stud is None:
         return
     for size in dict.fromkeys((thickest, thinnest)):
-        lugs = next(row for row in _ROWS if size.area_mm2 <= row.area_up_to_mm2)
-        if _STUDS[stud] < _STUDS[lugs.smallest] or _STUDS[stud] > _STUDS[lugs.largest]:
+        lugs = next(row for row in LUGS if size.area_mm2 <= row.area_up_to_mm2)
+        if STUDS[stud] < STUDS[lugs.smallest] or STUDS[stud] > STUDS[lugs.largest]:
             yield _no_lug(run, point, size, stud, lugs)
 
 
@@ -86,25 +59,25 @@ def _too_thick(run: Run, point: Point, size: Size, largest: Size) -> Finding:
     )  # fmt: skip
 
 
-def _no_lug(run: Run, point: Point, size: Size, stud: str, lugs: _Lugs) -> Finding:
-    small = _STUDS[stud] < _STUDS[lugs.smallest]
-    fits = [row for row in _ROWS if _STUDS[row.smallest] <= _STUDS[stud] <= _STUDS[row.largest]]
+def _no_lug(run: Run, point: Point, size: Size, stud: str, lugs: Lugs) -> Finding:
+    small = STUDS[stud] < STUDS[lugs.smallest]
+    fits = [row for row in LUGS if STUDS[row.smallest] <= STUDS[stud] <= STUDS[row.largest]]
     limit = max((row.area_up_to_mm2 for row in fits if math.isfinite(row.area_up_to_mm2)), default=0.0)
     other = f"thinner cables in parallel, up to about {number(limit)} mm2 each" if small else "a thicker cable"
     bound = f"from {lugs.smallest} up" if small else f"up to {lugs.largest}"
     return run_finding(
-        "conductor.fit", "warn", run, _STUDS[stud], _STUDS[lugs.smallest if small else lugs.largest], "mm",
+        "conductor.fit", "warn", run, STUDS[stud], STUDS[lugs.smallest if small else lugs.largest], "mm",
         f'{label(run)}: lugs for {size.name} are not usually made for the {stud} stud at "{point.name}"', _LUGS,
-        (f"{size.name}: studs {bound} ({number(_STUDS[stud])} mm is {stud})",),
+        (f"{size.name}: studs {bound} ({number(STUDS[stud])} mm is {stud})",),
         f'a stud {bound} at "{point.name}", or {other}',
     )  # fmt: skip
 
 
 def _unknown(point: Point, stud: str) -> Finding:
-    near = difflib.get_close_matches(stud, _STUDS, n=1, cutoff=0.4)
+    near = difflib.get_close_matches(stud, STUDS, n=1, cutoff=0.4)
     hint = f'; did you mean "{near[0]}"?' if near else "."
     return Finding(
         "conductor.fit", "warn", point.name, "point", None, None, None, None,
         f'"{point.name}": "{stud}" is not a known stud size{hint} Lugs for it are not checked',
-        "the table of stud sizes", (f"Accepted: {', '.join(_STUDS)}",), "one of the sizes accepted",
+        "the table of stud sizes", (f"Accepted: {', '.join(STUDS)}",), "one of the sizes accepted",
     )  # fmt: skip
