@@ -26,7 +26,7 @@ class BatteryModel:
     emf_source: str
     resistance_source: str
     times: float = 1.0
-    """What cold and age have multiplied the resistance with."""
+    """What cold, age and low charge have multiplied the resistance with."""
 
     @property
     def resistance_is_estimated(self) -> bool:
@@ -109,6 +109,27 @@ def cold_times(chemistry: str | None, degC: float) -> float:
     return points[-1][1]
 
 
+@lru_cache
+def _charge_rows() -> dict[str, list[tuple[float, float]]]:
+    rows: dict[str, list[tuple[float, float]]] = {}
+    for row in read(ROOT / "batteries" / "resistance_charge.csv"):
+        point = (float(row["charge_percent"]) / 100, float(row["resistance_times"]))
+        rows.setdefault(row["chemistry"], []).append(point)
+    return {name: sorted(points) for name, points in rows.items()}
+
+
+def low_charge_times(chemistry: str | None, charge: float) -> float:
+    """Internal resistance at a state of charge 0..1 over that of a full battery; 1 without a chemistry."""
+    if chemistry is None:
+        return 1.0
+    points = _charge_rows()[chemistry]
+    charge = min(max(charge, points[0][0]), points[-1][0])
+    for (low, low_times), (high, high_times) in pairwise(points):
+        if charge <= high:
+            return low_times + (high_times - low_times) * (charge - low) / (high - low)
+    return points[-1][1]
+
+
 def aged_times(battery: Battery) -> float:
     """Internal resistance at the end of its life over that of new: as stated, else typical of the chemistry."""
     if battery.aged_times is not None:
@@ -128,10 +149,13 @@ def model(
     *,
     degC: float = REFERENCE_DEGC,
     aged: bool = False,
+    rises_at_low_charge: bool = False,
 ) -> BatteryModel:
     """One string of the battery at a state of charge 0..1 and a temperature; `emf_V` overrides its curve.
 
-    A stated resistance is that of a new battery at 25 °C, as in data sheets; a stated EMF is taken as it stands.
+    A stated resistance is that of a new battery at 25 °C, as in data sheets; a stated EMF is taken as it stands. Cases
+    state the charge of a moment and take the resistance as stated; over days, where the charge is worked out, it
+    `rises_at_low_charge`.
     """
     nominal_V = battery.nominal.si if battery.nominal else nominal_V
     stated = emf_V if emf_V is not None else battery.emf.si if battery.emf else None
@@ -143,6 +167,7 @@ def model(
         emf_source = f"rest voltage of {chemistry} at {charge:.0%} of charge, typical"
     resistance, source = _string_resistance(battery, nominal_V, emf)
     times = cold_times(battery.chemistry, degC) * (aged_times(battery) if aged else 1.0)
+    times *= low_charge_times(battery.chemistry, charge) if rises_at_low_charge else 1.0
     return BatteryModel(emf, resistance * times, emf_source, source, times)
 
 
