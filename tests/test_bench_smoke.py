@@ -4,8 +4,10 @@ import shutil
 
 import cold_start
 import file_to_findings
+import linear_100k
 import many_cases
 import network_and_solve
+import numpy as np
 import pytest
 from grid import grid
 
@@ -21,6 +23,13 @@ def test_network_and_solve() -> None:
     assert row["imbalance_A"] < 1e-9
     if shutil.which("ngspice"):
         assert row["difference_V"] < 1e-6
+
+
+def test_linear_solution() -> None:
+    rows = [linear_100k.measure(runs, compared=True) for runs in (100, 200)]
+    assert np.isfinite(linear_100k.exponent(rows))
+    if shutil.which("ngspice"):
+        assert max(row["difference_V"] for row in rows) < 1e-6
 
 
 def test_many_cases() -> None:

@@ -21,7 +21,11 @@ _CHUNK = 200_000
 """Node voltages at a time: the arrays of so many cases stay in the processor's cache."""
 
 FEWEST = 8
-"""Fewer cases are solved sooner one by one."""
+"""Fewer cases are solved sooner one by one; and so are fewer than a tenth of the ports, each of which costs a
+solution first."""
+
+_LARGEST = 20_000_000
+"""Nodes times ports, at most: what each port does to every node must fit in memory."""
 
 _LAWS = ("volts", "ohm", "low", "high", "power", "leak", "load_W", "load_A", "load_S")
 _STATES = ("branch_on", "source_on")
@@ -78,7 +82,7 @@ def solve_together(
     states: dict[int, State] = {}
     for group in _alike(conditions, supplies):
         first = conditions[group[0]]
-        if len(group) < FEWEST:
+        if len(group) < max(FEWEST, (len(first.volts) + len(first.load_a)) // 10):
             states |= {case: solve(network, conditions[case], factor_of_20, supplies[case]) for case in group}
             continue
         changes = {name: np.array([getattr(conditions[case], name) for case in group]) for name in _LAWS}
@@ -107,7 +111,8 @@ def solve_many(
         own = supply if supply is not None and base is condition else fed(network, base)
         laws = {name: values[rows].T for name, values in changes.items() if name in _LAWS and _differs(values)}
         laws |= {name: values[:1].T for name, values in changes.items() if name in _LAWS and name not in laws}
-        if not any(own.source_on[port] for port, *_ in base.converters):
+        coupled = any(own.source_on[port] for port, *_ in base.converters)
+        if not coupled and network.node_count * (own.source_on.sum() + own.load_on.sum()) <= _LARGEST:
             _together(network, base, factor_of_20, own, laws, rows, found)
         for case in rows[~found.solved[rows]]:
             one = {name: values[case] for name, values in changes.items() if name in _LAWS}

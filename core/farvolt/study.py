@@ -1,12 +1,10 @@
 """The study of a plan: file stages in order, from the plan to the numbers and the findings."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from functools import partial
 from pathlib import Path
 
-import numpy as np
-
-from farvolt import checks, interim, network, operating, protected, protection_choice, solve, temperatures
+from farvolt import checks, interim, many, network, operating, protected, protection_choice, solve, temperatures
 from farvolt.ampacity import Ampacity
 from farvolt.assumptions import assumptions
 from farvolt.conductors import Size
@@ -65,13 +63,13 @@ def build_context(plan: Plan, rulebook: Rulebook) -> Context:
     net = network.build(plan, rulebook)
     islands = operating.islands(net)
     together = temperatures.laid_together(plan)
-    cases = []
-    for case in plan.checked_cases:
-        ampacities = tuple(
-            temperatures.run_ampacity(plan, rulebook, run, case, together[run.name]) for run in plan.runs
-        )
-        condition = operating.operating(net, case, islands)
-        cases.append(CaseStudy(case, ampacities, _solutions(net, rulebook, condition, ampacities)))
+    ampacities = [
+        tuple(temperatures.run_ampacity(plan, rulebook, run, case, together[run.name]) for run in plan.runs)
+        for case in plan.checked_cases
+    ]
+    conditions = [operating.operating(net, case, islands) for case in plan.checked_cases]
+    solutions = _solutions(net, rulebook, conditions, ampacities)
+    cases = map(CaseStudy, plan.checked_cases, ampacities, solutions)
     return Context(
         plan,
         rulebook,
@@ -93,33 +91,46 @@ def _margin(one: CaseStudy) -> float | None:
 
 
 def _solutions(
-    net: Network, rulebook: Rulebook, condition: operating.Operating, ampacities: tuple[Ampacity | None, ...]
-) -> dict[Mode, Solution]:
-    """The case at each conductor temperature; equal temperatures are solved once."""
-    supply = solve.fed(net, condition)
-    done: list[Solution] = []
-
-    def at(wanted: Conductors) -> Solution:
-        same = next((one for one in done if np.array_equal(one.conductors.factor_of_20, wanted.factor_of_20)), None)
-        if same is None:
-            state = solve.solve(net, condition, wanted.factor_of_20, supply)
-            same = Solution(net, condition, supply, wanted, state)
-            done.append(same)
-        return Solution(net, condition, supply, wanted, same.state)
-
-    found: dict[Mode, Solution] = {}
+    net: Network,
+    rulebook: Rulebook,
+    conditions: Sequence[operating.Operating],
+    ampacities: Sequence[tuple[Ampacity | None, ...]],
+) -> list[dict[Mode, Solution]]:
+    """Every case at each conductor temperature. Cases at equal temperatures are solved together, and once."""
+    supplies = [solve.fed(net, condition) for condition in conditions]
+    alike: dict[bytes, list[tuple[int, Mode, Conductors]]] = {}
     for mode in MODES:
-        if mode == "plan" and net.plan.plan.conductor_temperature == "estimated":
-            amps = [one.amps if one else None for one in ampacities]
-
-            def currents(wanted: Conductors) -> Floats:
-                state = solve.solve(net, condition, wanted.factor_of_20, supply)
-                return Solution(net, condition, supply, wanted, state).largest_run_amps
-
-            found[mode] = at(temperatures.estimated(net.plan, rulebook, condition.case, currents, amps))
-        else:
-            found[mode] = at(temperatures.at(net.plan, rulebook, condition.case, mode))
+        for case, (condition, supply) in enumerate(zip(conditions, supplies, strict=True)):
+            wanted = _conductors(net, rulebook, condition, supply, ampacities[case], mode)
+            alike.setdefault(wanted.factor_of_20.tobytes(), []).append((case, mode, wanted))
+    found: list[dict[Mode, Solution]] = [{} for _ in conditions]
+    for group in alike.values():
+        cases = sorted({case for case, _, _ in group})
+        own, fed = [conditions[case] for case in cases], [supplies[case] for case in cases]
+        states = dict(zip(cases, many.solve_together(net, own, group[0][2].factor_of_20, fed), strict=True))
+        for case, mode, wanted in group:
+            found[case][mode] = Solution(net, conditions[case], supplies[case], wanted, states[case])
     return found
+
+
+def _conductors(
+    net: Network,
+    rulebook: Rulebook,
+    condition: operating.Operating,
+    supply: solve.Fed,
+    ampacities: tuple[Ampacity | None, ...],
+    mode: Mode,
+) -> Conductors:
+    """The conductor temperatures of a case in a mode; estimated ones are solved with the network."""
+    if mode != "plan" or net.plan.plan.conductor_temperature != "estimated":
+        return temperatures.at(net.plan, rulebook, condition.case, mode)
+
+    def currents(wanted: Conductors) -> Floats:
+        state = solve.solve(net, condition, wanted.factor_of_20, supply)
+        return Solution(net, condition, supply, wanted, state).largest_run_amps
+
+    amps = [one.amps if one else None for one in ampacities]
+    return temperatures.estimated(net.plan, rulebook, condition.case, currents, amps)
 
 
 def _resolve(plan: Plan, rulebook: Rulebook, sizes: Mapping[str, Size], case: int, mode: Mode) -> Solution:
