@@ -109,11 +109,13 @@ def open_pages(plan: str | None, port: int | None = None, address: str = "127.0.
 @click.option(
     "--working/--no-working", default=False, help="Show the working of each finding: formula, numbers, result."
 )
-def check(plan: str, as_json: bool, case_name: str | None, working: bool) -> None:
+@click.option("--tables", metavar="FOLDER", help="Write points, runs, loads and sources of all cases to FOLDER as CSV.")
+def check(plan: str, as_json: bool, case_name: str | None, working: bool, tables: str | None) -> None:
     """Solve PLAN in all its cases and check it: voltages, drops, ampacity, protection, slips.
 
     Prints the findings, then the worst voltage of each load and the largest current of each run. The exit code is
-    1 when anything fails.
+    1 when anything fails. With --tables the numbers of every case go to points.csv, runs.csv, loads.csv and
+    sources.csv as well; a file of such a name that is there already is kept as NAME.previous.
     """
     if as_json and (case_name is not None or working):
         raise click.UsageError("--json prints all cases and all workings; leave out --case and --working")
@@ -126,7 +128,19 @@ def check(plan: str, as_json: bool, case_name: str | None, working: bool) -> Non
         from farvolt_app import report_text
 
         report_text.show(found, case_name, working)
+    if tables is not None:
+        _write_tables(found, tables)
     sys.exit(FAILS if found.failing else 0)
+
+
+def _write_tables(found: "Study", folder: str) -> None:
+    """Write the numbers of all cases, and say what was there before."""
+    from farvolt_app import case_files
+    from farvolt_app.shown import CAUTION
+
+    kept = case_files.write(found, Path(folder))
+    before = f" Kept what was there before as {', '.join(f'{name}.previous' for name in kept)}." if kept else ""
+    click.echo(f"Wrote points.csv, runs.csv, loads.csv and sources.csv to {folder}.{before} {CAUTION}", err=True)
 
 
 @main.command()
