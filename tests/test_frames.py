@@ -8,9 +8,9 @@ import pytest
 from click.testing import CliRunner, Result
 
 from farvolt import examples, planfile
-from farvolt.frames import frames
 from farvolt.study import study
 from farvolt_app.cli import main
+from farvolt_app.frames import frames
 
 FORMULA = '=HYPERLINK("x")'
 

@@ -4,8 +4,8 @@ from pathlib import Path
 
 from farvolt import planfile
 from farvolt.errors import SaveError
-from farvolt.frames import frames
 from farvolt.results import Study
+from farvolt_app.frames import frames
 from farvolt_app.textsafe import csv_text
 
 
