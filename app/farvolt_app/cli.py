@@ -226,6 +226,37 @@ def protection(plan: str, run_name: str | None, output: str | None) -> None:
 
 @main.command()
 @click.argument("plan")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object for machines.")
+@click.option("--apply", "apply_it", is_flag=True, help="Write the sizes and protection into PLAN; comments are kept.")
+@click.option("--objective", type=click.Choice(["mass", "cost"]), help="Least metal, or least price (with --prices).")
+@click.option("--prices", help="Price list, a CSV file; the objective is then the price.")
+@click.option("--sizes", help='Sizes in stock, with commas: "4 mm2, 10 mm2"; all that are made unless given.')
+@click.option("--most-sizes", type=click.IntRange(1), help="The greatest number of different sizes to buy.")
+@click.option("--size-cost", type=click.FloatRange(0), default=0.0, help="What each different size costs on top.")
+@click.option("--parallel", type=click.IntRange(1, 8), default=1, help="Up to so many equal cables side by side.")
+@click.option("--ratings", is_flag=True, help="Choose the ratings of stated protection on these runs as well.")
+@click.option("--all", "all_runs", is_flag=True, help="Choose all runs anew, not only those without a size.")
+@click.option("--time-limit", type=click.FloatRange(0.1), default=60.0, show_default=True, help="Seconds to search.")
+def choose(
+    plan: str, as_json: bool, apply_it: bool, objective: str | None, prices: str | None, sizes: str | None,
+    most_sizes: int | None, size_cost: float, parallel: int, ratings: bool, all_runs: bool, time_limit: float,
+) -> None:  # fmt: skip
+    """Choose the cables of PLAN, all at once: the least copper or price with which every check passes.
+
+    Chosen are the runs without a size, with protection where they need it and state none. What is chosen has been held
+    against the exact solution and all checks; a bound says how much cheaper any other could be. Ctrl+C ends the search
+    with the best so far. The exit code is 1 when nothing passes.
+    """
+    from farvolt_app import choice_command
+
+    wishes = choice_command.wishes(
+        objective, prices, sizes, most_sizes, size_cost, parallel, ratings=ratings, every=all_runs, seconds=time_limit
+    )
+    sys.exit(0 if choice_command.run(plan, wishes, as_json=as_json, apply_it=apply_it) else FAILS)
+
+
+@main.command()
+@click.argument("plan")
 @click.option("--output", "-o", required=True, help="File to write: .xlsx or .csv; - writes CSV to standard output.")
 def schedule(plan: str, output: str) -> None:
     """Write the cable schedule of PLAN: cables, loads, protection, shopping totals, findings.

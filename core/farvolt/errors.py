@@ -71,6 +71,14 @@ class PriceListError(FarvoltError):
         super().__init__("\n".join(f"{head}{fault}" for fault in faults))
 
 
+class ChoiceError(FarvoltError):
+    """A choice that cannot be begun: nothing to choose, or nothing to choose from."""
+
+    def __init__(self, problem: str, accepted: str) -> None:
+        self.problem, self.accepted = problem, accepted
+        super().__init__(f"{problem}; accepted: {accepted}")
+
+
 class DataError(FarvoltError):
     """A shipped table that contradicts itself or lacks what it must hold."""
 

@@ -110,6 +110,12 @@ def _branch(solution: Solution, load: int, devices: dict[str, Device]) -> _Branc
     return _Branch(load, start, protected, tuple(feed[taken:]), tuple(step for step in way if step.pole == "return"))
 
 
+def branch_steps(solution: Solution, load: int) -> tuple[Step, ...]:
+    """The steps of a load's branch, feed and return; none where it is not fed."""
+    branch = _branch(solution, load, {device.name: device for device in solution.network.plan.devices})
+    return (*branch.feed, *branch.back(solution)) if branch is not None else ()
+
+
 def _finding(context: Context, found: list[tuple[float, int, _Branch]], remedies: Remedies) -> Finding:
     percent, case, branch = max(found, key=lambda one: one[0])
     solution = context.cases[case].solutions["basis"]

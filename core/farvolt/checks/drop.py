@@ -55,13 +55,13 @@ def drop_to_load(context: Context) -> Iterator[Finding]:
         limit = drop_class(context, load).limit_percent
         over = np.flatnonzero(table[:, load] > limit * (1 + 1e-9))
         if len(over):
-            in_service = [case for case in over if not _exceptional(context.cases[case].solutions["basis"], load)]
+            in_service = [case for case in over if not exceptional(context.cases[case].solutions["basis"], load)]
             first = np.array(in_service or over)
             worst = int(first[np.argmax(table[first, load])])
             yield _to_load(context, load, worst, over.tolist(), remedies)
 
 
-def _exceptional(solution: Solution, load: int) -> str:
+def exceptional(solution: Solution, load: int) -> str:
     """Why a case is none that a limit on drop means: a start, or a source that stands in for its island's batteries."""
     port, condition, sources = solution.references[load], solution.condition, solution.network.plan.sources
     if condition.case.surge:
@@ -83,15 +83,15 @@ def _to_load(context: Context, load: int, worst: int, over: Sequence[int], remed
         f'"{name}" loses {apart(value, rule.limit_percent)} % of {number(nominal)} V on the way; '
         f'{number(rule.limit_percent)} % is the limit of the class "{rule.name}"'
     )
-    exceptional = _exceptional(solution, load)
-    message += f"; {exceptional}" if exceptional else ""
+    special = exceptional(solution, load)
+    message += f"; {special}" if special else ""
     aim = Aim(
         load, "basis", worst, tuple(over), solution.way(load), lambda found: percent(found, load), rule.limit_percent,
         -100 / nominal, "%",
     )  # fmt: skip
     shown = tuple(working(one, solution, load))
     found = over_limit(context, "drop.load", aim, value, message, shown, remedies.for_load(aim))
-    return replace(found, severity="warn") if exceptional else found
+    return replace(found, severity="warn") if special else found
 
 
 def over_limit(

@@ -108,6 +108,13 @@ def _guards(context: Context, index: int, ways: list[Exposure], ampacity: float)
     return guards, excused
 
 
+def binding_guards(context: Context, index: int, ampacity: float) -> list[Guard]:
+    """The protections that a run of this ampacity depends on: none may be rated above what it may carry."""
+    if exempt(context, context.plan.runs[index]):
+        return []
+    return _guards(context, index, _ways(context, index, ampacity), ampacity)[0]
+
+
 def _excused(context: Context, run: Run, guard: Guard, limit: Limit) -> Finding:
     """A rating that nothing is made of, and why."""
     rule = context.rulebook.protection.exempt

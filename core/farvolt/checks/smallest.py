@@ -35,6 +35,17 @@ def minimum_size(context: Context) -> Iterator[Finding]:
         yield _in_sheath(context, by_sheath, rule, rule.outside_sheath_m)
 
 
+def small_allowed(context: Context, index: int, run: Run) -> bool:
+    """Whether the rulebook allows the sizes of `run`, which stands for the run at that place of the plan."""
+    rule, sizes = context.rulebook.minimum_size, [size for size in (run.size, return_size(run)) if size is not None]
+    if rule is None or not sizes or run.purpose == "bond":
+        return True
+    size = min(sizes, key=lambda one: one.area_mm2)
+    least = rule.least(size.system, sheathed(context.plan, run), run.material)
+    enough = size.area_mm2 >= least.area_mm2 * (1 - 1e-6)
+    return enough or any(not one.used_for and _holds(context, index, one) for one in rule.exempt)
+
+
 def _small(context: Context, index: int, size: Size, least: Size, rule: MinimumSize) -> Finding:
     """A fail, unless an exemption holds by what the plan tells: then a note. One that goes by use is only named."""
     run = context.plan.runs[index]
