@@ -5,7 +5,7 @@ Works on the plan alone, as a graph of its points with the devices as they stand
 
 from collections.abc import Iterable, Iterator, Set
 from dataclasses import dataclass
-from functools import lru_cache
+from functools import cached_property, lru_cache
 from typing import Literal
 
 from farvolt import units
@@ -80,6 +80,7 @@ class _Feeds:
             if isinstance(source, Converter):
                 self._join(source.from_point, source.at, source.name, one_way=True)
         self.every = frozenset(source.name for source in plan.sources)
+        self._islands: dict[str, Set[str]] = {}
 
     def _join(self, start: str, end: str, converter: str | None = None, *, one_way: bool = False) -> None:
         self._next.setdefault(start, []).append((end, converter))
@@ -102,18 +103,24 @@ class _Feeds:
         starts = [one.at for one in self._plan.sources if one.name in on and not isinstance(one, Converter)]
         return self.reached(starts, on)
 
-    def island(self, source: Source) -> set[str]:
+    def island(self, source: Source) -> Set[str]:
         """The points that a source feeds without passing a converter."""
-        return self.reached([source.at])
+        if source.at not in self._islands:
+            self._islands[source.at] = frozenset(self.reached([source.at]))
+        return self._islands[source.at]
 
     def nominal_V(self, point: str) -> float:
         """Nominal voltage at a point: the plan's on the reference source's island, else what a source there states."""
-        order = sorted(self._plan.sources, key=lambda one: one.name != self._plan.reference)
-        for source in order:
-            if (source.nominal is not None or source.name == self._plan.reference) and point in self.island(source):
-                own = None if source.name == self._plan.reference else source.nominal
-                return (own or self._plan.plan.nominal).si
-        return self._plan.plan.nominal.si
+        return self._nominals.get(point, self._plan.plan.nominal.si)
+
+    @cached_property
+    def _nominals(self) -> dict[str, float]:
+        plan, found = self._plan, dict[str, float]()
+        for source in sorted(plan.sources, key=lambda one: one.name != plan.reference):
+            if source.nominal is not None or source.name == plan.reference:
+                own = None if source.name == plan.reference else source.nominal
+                found = dict.fromkeys(self.island(source), (own or plan.plan.nominal).si) | found
+        return found
 
 
 def _loads(plan: Plan, names: Set[str]) -> Shares:
