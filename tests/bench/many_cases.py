@@ -90,8 +90,8 @@ def measure(built: Network, condition: Operating, changes: Changes) -> dict[str,
     alone_s = (time.perf_counter() - start) / len(sample)
     return {
         "runs": len(built.plan.runs), "loads": len(built.plan.loads), "cases": cases, "together": found.together.sum(),
-        "total_s": best, "processor_s": spent, "each_us": 1e6 * best / cases, "alone_us": 1e6 * alone_s, "difference_V": difference,
-        "imbalance_A": found.imbalance_A.max(),
+        "total_s": best, "processor_s": spent, "each_us": 1e6 * best / cases, "alone_us": 1e6 * alone_s,
+        "difference_V": difference, "imbalance_A": found.imbalance_A.max(),
     }  # fmt: skip
 
 
