@@ -257,6 +257,38 @@ def choose(
 
 @main.command()
 @click.argument("plan")
+@click.argument("readings")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object for machines.")
+@click.option("--as-read", is_flag=True, help="Take readings that look like slips as they stand.")
+def locate(plan: str, readings: str, as_json: bool, as_read: bool) -> None:
+    """Compare meter READINGS of the built installation with PLAN and find the bad joint.
+
+    READINGS is a CSV file, or a workbook with a sheet "Readings": from, from pole, to, to pole, volts; or run, pole,
+    amps; with case, loads, sources, devices of the state they were taken in. Prints suspects by probability, and what
+    to measure next. The exit code is 0 when all readings fit the plan, 1 when they do not.
+    """
+    from farvolt_app import locate_text, readings_file
+
+    read = _read(plan)
+    with _placed(read, plan), _progress("Comparing the readings with the plan"):
+        from farvolt import rulebook
+        from farvolt.installation import Installation
+        from farvolt.locate import locate as locate_in
+        from farvolt.next_reading import next_readings
+
+        sets = readings_file.read(readings, read.plan)
+        installation = Installation(read.plan, rulebook.load(read.plan.plan.rulebook, read.folder))
+        found = locate_in(installation, sets, as_read=as_read)
+        nexts = next_readings(found)
+    if as_json:
+        _print_whole(json.dumps(locate_text.as_object(found, nexts), ensure_ascii=False, allow_nan=False) + "\n")
+    else:
+        locate_text.show(found, nexts)
+    sys.exit(0 if found.fits else FAILS)
+
+
+@main.command()
+@click.argument("plan")
 @click.option("--output", "-o", required=True, help="File to write: .xlsx or .csv; - writes CSV to standard output.")
 def schedule(plan: str, output: str) -> None:
     """Write the cable schedule of PLAN: cables, loads, protection, shopping totals, findings.
