@@ -39,6 +39,7 @@ from farvolt.plan_types import (
     Name,
     Power,
     Rating,
+    Reserve,
     Resistance,
     Seconds,
     Share,
@@ -147,7 +148,7 @@ class Battery(Entry):
     """Energy out over energy in; typical of the chemistry unless stated."""
     self_discharge: Share | None = None
     """In a month at 20 °C; typical of the chemistry unless stated."""
-    least_charge: Share | None = None
+    least_charge: Reserve | None = None
     """State of charge below which it is not to be taken; typical of the chemistry unless stated."""
     min_charge_temperature: Temperature | None = None
     """Below which it must not be charged; as its chemistry asks unless stated."""

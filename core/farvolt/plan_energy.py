@@ -9,14 +9,15 @@ from pydantic import BeforeValidator, Field, WithJsonSchema, field_validator
 from farvolt import units
 from farvolt.plan_types import (
     Charge,
-    Current,
     DaySpan,
     DischargeHours,
+    Efficiency,
     Entry,
     Hours,
     Latitude,
     Longitude,
     Name,
+    Rating,
     Ratio,
     Share,
     Temperature,
@@ -141,7 +142,7 @@ class DischargeRate(Entry):
     """A line of a data sheet's table: a constant current that the block gives for so long."""
 
     hours: DischargeHours
-    current: Current
+    current: Rating
 
 
 class Block(Entry):
@@ -158,16 +159,16 @@ class Bank(Entry):
 
     autonomy: Annotated[float, Field(strict=True, gt=0, le=60, allow_inf_nan=False)] = 1.0
     """Days that it carries the loads alone."""
-    depth_of_discharge: Share | None = None
+    depth_of_discharge: Efficiency | None = None
     """At the end of those days; all above the battery's `least_charge` unless stated."""
-    daily_depth_of_discharge: Share | None = None
+    daily_depth_of_discharge: Efficiency | None = None
     """In one day, where its maker states one for the sake of its life."""
     ageing: Times = 1.25
     """Capacity when new over that at the end of its life."""
     margin: Times = 1.1
     """For what is not foreseen."""
     coldest: Temperature | None = None
-    """Lowest temperature of the battery itself; the plan's coldest, else the ambient where it stands, unless stated."""
+    """Lowest temperature of the battery itself; the ambient where it stands unless stated."""
     design_day: Name | None = None
     """The type of day it is sized for; the one that takes most unless stated."""
     block: Block | None = None

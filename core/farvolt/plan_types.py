@@ -206,6 +206,7 @@ AnyResistance = Annotated[
 ]
 Charge = Annotated[Quantity, BeforeValidator(_reader("charge", above=0, minimum=1e-3, maximum=1e7)), _schema("charge")]
 Share = Annotated[Quantity, BeforeValidator(_reader("share", minimum=0, maximum=1)), _schema("share")]
+Reserve = Annotated[Quantity, BeforeValidator(_reader("share", minimum=0, maximum=0.99)), _schema("share")]
 Efficiency = Annotated[Quantity, BeforeValidator(_reader("share", above=0, minimum=0.01, maximum=1)), _schema("share")]
 Duration = Annotated[Quantity, BeforeValidator(_reader("time", minimum=0, maximum=1e7)), _schema("time")]
 Latitude = Annotated[Quantity, BeforeValidator(_reader("angle", minimum=-90, maximum=90)), _schema("angle")]
