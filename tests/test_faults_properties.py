@@ -4,15 +4,18 @@ import random
 from itertools import pairwise
 from typing import Any
 
+import numpy as np
 import pytest
 from grid import grid
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from farvolt.faults import Faults
+from farvolt import shorts
+from farvolt.faults import Fault, Faults
 from farvolt.network import build
 from farvolt.plan import Plan
 from farvolt.rulebook import load
+from farvolt.spurs import spurs
 from strategies import ANYTHING, Wishes, plan_of, random_draft
 from wiring import bank, cable, fuse, lamp
 from wiring import plan_of as written
@@ -106,3 +109,37 @@ def test_a_large_plan_balances_everywhere() -> None:
     found = faults(Plan.model_validate(grid(300)))
     assert len(found.points) > 280
     assert all(one.certified for one in found.points.values())
+
+
+def test_spurs_are_what_hangs_by_single_conductors() -> None:
+    """0-1-2-3 with a ring 1-2-4 and a source at 0; 5 and 6 hang on 3 in a row, 7 on 5. Node 8 stands alone."""
+    a, b = np.array([0, 1, 2, 1, 3, 5, 5]), np.array([1, 2, 4, 4, 2, 3, 6])
+    a, b = np.append(a, 7), np.append(b, 5)
+    found = spurs(9, a, b, np.arange(1.0, 9.0), np.array([0]))
+    assert found.root.tolist() == [0, 1, 2, 2, 4, 2, 2, 2, 8]
+    assert found.ohm.tolist() == [0, 0, 0, 5, 0, 11, 18, 19, 0]
+    assert found.way(7) == [7, 5, 3]
+    assert found.beyond(np.array([4, 5, 6, 7]), 7).tolist() == [True, True, False, True]
+    assert [found.holds(end, 6) for end in (3, 5, 6, 7)] == [True, True, True, False]
+
+
+@settings(max_examples=60, deadline=None)
+@given(SEEDS)
+def test_a_short_in_a_spur_is_the_same_as_in_the_whole_network(seed: int) -> None:
+    """Against the same network of which every node is solved for, with its place and what each source gives."""
+    plan = plan_of(random_draft(random.Random(seed), ANYTHING))
+
+    def everything() -> list[Fault]:
+        found = faults(plan)
+        return [*found.points.values(), *found.devices.values(), *(one.fault for one in found.far_ends)]
+
+    quick = [(one.place, one.amps, dict(one.by_source), one.limited) for one in everything()]
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr(shorts, "spurs", lambda count, a, b, ohm, kept: spurs(count, a, b, ohm, np.arange(count)))
+        whole = [(one.place, one.amps, dict(one.by_source), one.limited) for one in everything()]
+    assert len(quick) == len(whole)
+    for one, other in zip(quick, whole, strict=True):
+        assert one[1] == pytest.approx(other[1], rel=1e-6, abs=1e-6)
+        if one[0] == other[0]:
+            assert one[2] == pytest.approx(other[2], rel=1e-6, abs=1e-5)
+            assert one[3] == other[3]

@@ -108,14 +108,10 @@ class FaultNetwork:
             return 0.0
         spot = found.place.feed
         if spot.branch != branch:
-            return abs(float(found.branch_A[branch]))
-        near, far = self.parts_A(found, spot)
+            return abs(found.in_branch(branch))
+        near, far = found.parts_A(spot)
         at_end = int(self.circuit.a[branch] if end == "from" else self.circuit.b[branch])
         return abs(near if at_end == spot.node else far)
-
-    def parts_A(self, found: Shorted, spot: Spot) -> tuple[float, float]:
-        """Current that arrives at a spot within a run from its `node` and from the other end."""
-        return found.parts_A(spot, int(self.circuit.a[spot.branch]) == spot.node)
 
 
 def coldest(network: Network, islands: Islands) -> list[FaultNetwork]:

@@ -26,10 +26,10 @@ def along(run: Run, end: str, metres: float) -> str:
     return f'in "{run.name}", {number(metres)} m from "{point}"'
 
 
-def by_source(net: FaultNetwork, found: Shorted) -> tuple[tuple[str, float], ...]:
-    """What each source delivers, the strings of a battery together; those that stand idle left out."""
+def by_source(net: FaultNetwork, found: Shorted, part: list[int]) -> tuple[tuple[str, float], ...]:
+    """What each source that takes part delivers, the strings of a battery together."""
     total: dict[str, float] = {}
-    for place in net.taking_part(found):
+    for place in part:
         name = net.sources[place].name
         total[name] = total.get(name, 0.0) + float(found.port_A[place])
     return tuple(total.items())
@@ -44,7 +44,7 @@ def working(net: FaultNetwork, found: Shorted, amps: float) -> tuple[str, ...]:
     line = _one_way(net, found, giving[0], amps) if len(giving) == 1 else None
     if line is not None:
         return (*sources, line)
-    parts = [f'"{name}" {number(given, 4)} A' for name, given in by_source(net, found)]
+    parts = [f'"{name}" {number(given, 4)} A' for name, given in by_source(net, found, net.taking_part(found))]
     through = f", of which {number(amps, 4)} A here" if abs(amps - abs(found.amps)) > _SAME * amps else ""
     return (*sources, f"From the network: {' + '.join(parts)}; short {number(abs(found.amps), 4)} A{through}")
 
@@ -81,7 +81,7 @@ def _part(net: FaultNetwork, found: Shorted, spot: Spot) -> tuple[float, float]:
     """Cable and fixed resistance of the part of a run that carries the whole current to a spot in it."""
     if spot.branch < 0:
         return 0.0, 0.0
-    near, far = (abs(part) for part in net.parts_A(found, spot))
+    near, far = (abs(part) for part in found.parts_A(spot))
     if near >= far:
         return spot.near_ohm - spot.near_fixed_ohm, spot.near_fixed_ohm
     fixed = float(net.fixed_ohm[spot.branch]) - spot.near_fixed_ohm

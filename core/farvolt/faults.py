@@ -7,9 +7,9 @@ open a device in time: one source alone, an aged battery, cold and at low charge
 or typical. An arc or a loose joint draws less than a bolted short.
 """
 
-from collections.abc import Hashable, Iterator
-from dataclasses import dataclass
-from functools import cached_property
+from collections.abc import Callable, Hashable, Iterator
+from dataclasses import dataclass, field
+from functools import cached_property, partial
 from typing import TypeVar
 
 import numpy as np
@@ -24,6 +24,9 @@ from farvolt.sections import Sections, Stretch, sections, stretches
 from farvolt.shorts import Place, Shorted
 
 _Key = TypeVar("_Key")
+
+_KEPT = 300
+"""Node voltages that are kept with a short to tell how it comes about."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,7 +45,13 @@ class Fault:
     certified: bool
     """Kirchhoff's current law was found to hold at every node."""
     imbalance_A: float
-    working: tuple[str, ...]
+    told: Callable[[], tuple[str, ...]] = field(repr=False, compare=False)
+    """Works out `working`: few faults are ever told of."""
+
+    @property
+    def working(self) -> tuple[str, ...]:
+        """How the current comes about, in lines that a person can redo."""
+        return self.told()
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,7 +93,7 @@ class Faults:
         for net in self._highest:
             shorts = list(self._at_devices(net))
             for (key, pole, _), found in zip(shorts, net.circuit.shorted([one[2] for one in shorts]), strict=True):
-                near, _ = net.parts_A(found, found.place.feed if pole == FEED else found.place.back)
+                near, _ = found.parts_A(found.place.feed if pole == FEED else found.place.back)
                 words = fault_working.at_device(self._network.plan.runs[key[0]], key[1])
                 _keep_larger(best, key, net, found, abs(near), words)
             self._at_points(net, best)
@@ -211,10 +220,18 @@ def _keep_larger(
 
 
 def _fault(net: FaultNetwork, found: Shorted, amps: float, place: str) -> Fault:
-    delivered = fault_working.by_source(net, found)
-    working = fault_working.working(net, found, amps)
-    giving = [place for place in net.taking_part(found) if found.port_A[place] > 0]
+    part = net.taking_part(found)
+    giving = [one for one in part if found.port_A[one] > 0]
+    told = partial(fault_working.working, net, found, amps)
+    if len(found.volts) > _KEPT:  # those of thousands of shorts are not kept: one is soon worked out again
+        told = partial(_told_again, net, found.place, amps)
     return Fault(
-        place, amps, delivered, any(net.sources[one].estimated for one in giving),
-        bool(giving) and all(found.limited[one] for one in giving), found.certified, found.imbalance_A, working,
+        place, amps, fault_working.by_source(net, found, part), any(net.sources[one].estimated for one in giving),
+        bool(giving) and all(found.limited[one] for one in giving), found.certified, found.imbalance_A,
+        told,
     )  # fmt: skip
+
+
+def _told_again(net: FaultNetwork, place: Place, amps: float) -> tuple[str, ...]:
+    (found,) = net.circuit.shorted([place])
+    return fault_working.working(net, found, amps)
