@@ -313,6 +313,36 @@ def schedule(plan: str, output: str) -> None:
     _write_beside(plan, output, data)
 
 
+_PAPER = click.option(
+    "--paper", type=click.Choice(["a4", "letter"]), default="a4", show_default=True, help="Paper of a PDF."
+)
+_UNITS = click.option(
+    "--units", type=click.Choice(["metric", "american"]), default="metric", show_default=True, help="Of lengths."
+)
+
+
+@main.command()
+@click.argument("plan")
+@click.option("--output", "-o", required=True, help="File to write: .svg, .png or .pdf.")
+@click.option("--case", "case_name", help="Name of the case; the one with the largest drop unless given.")
+@_PAPER
+@_UNITS
+def draw(plan: str, output: str, case_name: str | None, paper: str, units: str) -> None:
+    """Draw PLAN as a single-line diagram, with the voltages and currents of one case.
+
+    A PDF is made for paper: on one page where its letters stay legible, else in numbered parts that overlap, after a
+    page that shows where they lie. A file of that name that is there already is kept as NAME.previous.
+    """
+    from farvolt_app import paper_commands
+
+    suffix = paper_commands.suffix_of(output, (".svg", ".png", ".pdf"))
+    _refuse_plan(plan, output)
+    found = _studied(plan, margins=False)
+    with _progress("Drawing"):
+        data = paper_commands.drawing(found, suffix, case_name, paper, units)
+    _write_beside(plan, output, data)
+
+
 @main.command()
 @click.argument("file")
 def new(file: str) -> None:

@@ -1,0 +1,43 @@
+"""The commands `draw`, `report` and `labels`: what they are asked for, and the content of the file they write."""
+
+from datetime import date
+from pathlib import Path
+
+import click
+
+from farvolt.results import CaseResult, Study
+from farvolt_app.report_text import place
+
+
+def suffix_of(output: str, accepted: tuple[str, ...]) -> str:
+    """The suffix of an output; refuses any other than the accepted ones."""
+    suffix = Path(output).suffix.lower()
+    if suffix not in accepted:
+        told = ", ".join(accepted)
+        raise click.BadParameter(f'"{suffix or output}" is not written; accepted: {told}', param_hint="--output")
+    return suffix
+
+
+def drawing(study: Study, suffix: str, case_name: str | None, paper: str, units: str) -> bytes:
+    """The drawing of a case by its name, else of the one with the largest drop."""
+    from farvolt_app import drawing_file
+    from farvolt_app.paper import PAPERS
+
+    case = _case(study, case_name)
+    if suffix == ".pdf":
+        return drawing_file.pdf(study, case, PAPERS[paper], units, foot(study, date.today()))
+    picture = drawing_file.svg(study, case, units)
+    return drawing_file.png(picture) if suffix == ".png" else picture.encode()
+
+
+def _case(study: Study, name: str | None) -> CaseResult:
+    from farvolt_app import drawing_file
+
+    if name is None:
+        return drawing_file.worst_case(study)
+    return study.cases[place(name, [one.name for one in study.cases], "case")]
+
+
+def foot(study: Study, day: date) -> str:
+    """What stands at the foot of every page: the plan and the day."""
+    return f"{study.plan.plan.name} · {day.isoformat()}"
