@@ -55,7 +55,7 @@ def answer(circuit: Circuit, rise_s: float = 2.0) -> Answer:
     """
     end_s = 2 * rise_s
     ends = [*circuit.feeders, *circuit.drains, *(one.drain for one in circuit.couplings)]
-    start = _no_load(circuit)
+    start = no_load(circuit)
     rows = _run(circuit, [
         f"Vshare share 0 PWL(0 0 {rise_s!r} 1 {end_s!r} 1)",
         *(f"Cport{index} n{one.a} n{one.b} 100u" for index, one in enumerate(ends)),
@@ -66,7 +66,7 @@ def answer(circuit: Circuit, rise_s: float = 2.0) -> Answer:
 
 def operating_point(circuit: Circuit) -> dict[int, float] | None:
     """Node volts at once at full load, from a hint; None where it fails. Enough where a battery holds every part."""
-    hints = [f".nodeset v(n{node})={volts!r}" for node, volts in _no_load(circuit).items() if volts]
+    hints = [f".nodeset v(n{node})={volts!r}" for node, volts in no_load(circuit).items() if volts]
     rows = _run(circuit, ["Vshare share 0 1", *hints], "op")
     return _by_node(circuit, rows[-1]) if rows else None
 
@@ -155,7 +155,7 @@ def _drain(one: Drain, watts: str, number: int) -> str:
     return f"B{number} n{one.a} n{one.b} I=({u} >= {knee!r}) ? ({above}) : ({below})"
 
 
-def _no_load(circuit: Circuit) -> dict[int, float]:
+def no_load(circuit: Circuit) -> dict[int, float]:
     """Where to start: feeds at the highest voltage of what feeds them, with that source just inside its droop."""
     feeds = {node for (_, pole), node in circuit.pins.items() if pole == "+"} & circuit.live
     diodes = [one for one in circuit.feeders if one.leak_S]

@@ -4,7 +4,7 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
-from farvolt import readings
+from farvolt import reading_table
 from farvolt.errors import Fault
 from farvolt.plan import Plan
 from farvolt.readings import ReadingsError, ReadingSet
@@ -20,11 +20,12 @@ def read(path: str, plan: Plan) -> tuple[ReadingSet, ...]:
     if path == "-":
         import sys
 
-        return readings.from_text(sys.stdin.buffer.read().decode("utf-8-sig", errors="replace"), plan, "standard input")
+        text = sys.stdin.buffer.read().decode("utf-8-sig", errors="replace")
+        return reading_table.from_text(text, plan, "standard input")
     suffix = Path(path).suffix.lower()
     if suffix not in (".csv", ".xlsx", ".tsv", ".txt"):
         raise ReadingsError([Fault("", "", f'"{suffix or path}"', "is not read", ".csv, .xlsx")], path)
-    return _workbook(path, plan) if suffix == ".xlsx" else readings.read(Path(path), plan)
+    return _workbook(path, plan) if suffix == ".xlsx" else reading_table.read(Path(path), plan)
 
 
 def _workbook(path: str, plan: Plan) -> tuple[ReadingSet, ...]:
@@ -42,7 +43,7 @@ def _workbook(path: str, plan: Plan) -> tuple[ReadingSet, ...]:
     if SHEET not in book.sheetnames:
         given = ", ".join(f'"{name}"' for name in book.sheetnames)
         raise ReadingsError([Fault("", "", given, "there is no sheet of readings", f'a sheet "{SHEET}"')], path)
-    return readings.from_rows(list(_rows(book[SHEET])), plan, path)
+    return reading_table.from_rows(list(_rows(book[SHEET])), plan, path)
 
 
 def _rows(sheet: Any) -> Iterator[tuple[int, list[str]]]:

@@ -35,12 +35,13 @@ _MENDED = (
 
 def _alone(found: Measured, evidence: Evidence) -> Iterator[Fault]:
     """Readings that are far from the plan, or impossible, and near it once a sign or a factor of 1000 is mended."""
-    spread = np.sqrt(np.diag(evidence.covariance))
+    sound = np.sqrt(np.sum(evidence.sound**2, axis=1))
+    spread = np.hypot(sound, evidence.meter)
     for at, reading in enumerate(found.readings):
         planned, most = float(evidence.response.planned[at]), _most(found, at)
         impossible = abs(reading.value) - reading.limit > most
         if impossible or abs(reading.value - planned) > _FAR * spread[at]:
-            near = _near(reading, planned, float(spread[at]), impossible)
+            near = _near(reading, planned, float(sound[at]), impossible)
             if near is not None or impossible:
                 yield _fault(reading, planned, most, near, impossible)
 
@@ -54,15 +55,15 @@ def _most(found: Measured, at: int) -> float:
     return 1.3 * float(volts.sum())
 
 
-def _near(reading: Reading, planned: float, spread: float, impossible: bool) -> tuple[float, str] | None:
-    """What the reading may have been meant as, and why."""
+def _near(reading: Reading, planned: float, sound: float, impossible: bool) -> tuple[float, str] | None:
+    """What the reading may have been meant as, and why. `sound` is the standard deviation of sound parts."""
     for times, words in _MENDED:
         mended = times * reading.value
+        allowed = _NEAR * float(np.hypot(sound, abs(times) * reading.limit))
+        if impossible:
+            allowed += 0.5 * abs(planned)
         # A value of nothing, planned or read, tells no sign and no unit.
-        floor = _NEAR * spread if times == -1.0 else 0.1 * abs(planned) + 2 * spread
-        scaled = max(spread, abs(times) * reading.limit)
-        within = abs(mended - planned) <= (_NEAR * scaled if not impossible else 0.5 * abs(planned) + _NEAR * scaled)
-        if within and abs(planned) > spread and abs(mended) > min(floor, abs(planned) / 2):
+        if abs(mended - planned) <= allowed and abs(planned) > 2 * sound and abs(mended) > abs(planned) / 2:
             return mended, words
     return None
 
