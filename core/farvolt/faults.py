@@ -25,7 +25,7 @@ from farvolt.shorts import Place, Shorted
 
 _Key = TypeVar("_Key")
 
-_KEPT = 300
+_KEPT = 1000
 """Node voltages that are kept with a short to tell how it comes about."""
 
 

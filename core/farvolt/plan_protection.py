@@ -1,6 +1,7 @@
 """The tables of a plan that speak of protection: fuses and breakers on runs, and types of the plan's own."""
 
 from collections.abc import Mapping
+from functools import cached_property
 from typing import Literal
 
 from pydantic import PrivateAttr, field_validator, model_validator
@@ -42,7 +43,7 @@ class Protection(Entry):
     _own: ProtectionType | None = PrivateAttr(default=None)
     """Set by the plan, where `type` is one of its own."""
 
-    @property
+    @cached_property
     def kind(self) -> ProtectionType:
         """Its type. Raises QuantityError for a name that is neither shipped nor the plan's own."""
         return self._own or protection_type(self.type)
@@ -50,6 +51,7 @@ class Protection(Entry):
     def is_of(self, own: Mapping[str, ProtectionType]) -> None:
         """Let it know the plan's own types. For the plan alone, while it is being read."""
         self._own = own.get(self.type)
+        self.__dict__.pop("kind", None)
 
 
 class OpeningTime(Entry):

@@ -86,6 +86,7 @@ def limit(insulation_degC: float) -> Limit:
     return next((row for row in rows if insulation_degC <= row.up_to_degC), rows[-1])
 
 
+@lru_cache(maxsize=1000)
 def withstand(material: str, area_mm2: float, insulation_degC: float, parallel: int = 1) -> Withstand:
     """What the conductors of a run withstand: `area_mm2` is that of one of `parallel` equal ones.
 
