@@ -63,7 +63,7 @@ class Covering:
         return (self.per_cm or 0.0) * max(0, self.total_cm - held * self.step_cm)
 
     def sets(self, below: float) -> Iterator[tuple[int, ...]]:
-        """Sets of reels that hold the total length, with what is bought by the metre, by rising cost; the first of them."""
+        """Sets of reels that hold the total length, with what is bought by the metre: the first by cost."""
         if self.coarse:
             return
         cells = len(self._left) - 1

@@ -25,10 +25,12 @@ Counts = tuple[int, ...]
 LISTED_LIMIT = 1500
 """More patterns than these are not listed but generated."""
 
-_NODES = 300
+_NODES, _FEW_NODES = 300, 50
 _ROUNDS = 150
+_LENGTHS = 120
 _NEAR = 0.01
-"""Where patterns are too many to list, an answer this near its bound, as a share of the cost, is not sought further."""
+"""Where patterns are too many to list, an answer this near its bound, as a share of the cost, is not sought further.
+With more than `_LENGTHS` different lengths none is."""
 
 _UNIT = 1e-6
 """Costs are compared in whole millionths."""
@@ -77,10 +79,13 @@ class _Pattern:
 
 
 @lru_cache(maxsize=4096)
-def least_cost(lengths_cm: tuple[int, ...], offers: tuple[Offer, ...], per_cm: float | None) -> Answer:
+def least_cost(
+    lengths_cm: tuple[int, ...], offers: tuple[Offer, ...], per_cm: float | None, thorough: bool = True
+) -> Answer:
     """The cheapest reels for pieces of these lengths; each piece must fit a reel, or be bought by the metre.
 
-    `per_cm` is the cost of a centimetre cut to length, None where it is not sold so.
+    `per_cm` is the cost of a centimetre cut to length, None where it is not sold so. Not `thorough`, it leaves out
+    the search through patterns.
     """
     counted = Counter(lengths_cm)
     lengths = tuple(sorted(counted, reverse=True))
@@ -91,16 +96,20 @@ def least_cost(lengths_cm: tuple[int, ...], offers: tuple[Offer, ...], per_cm: f
     covering = Covering(problem.total_cm, offers, per_cm)
     filled = best_filled(sorted(lengths_cm), covering, _cost(start))
     start = start if filled is None else _as_patterns(problem, filled)
-    if _cost(start) <= _next_attainable(problem, covering.bound) + _UNIT:
+    if not thorough or _cost(start) <= _next_attainable(problem, covering.bound) + _UNIT:
         return _answer(problem, start, covering.bound)
     patterns = _listed(problem)
     if patterns is not None:
-        found, bound = _whole(problem, patterns)
-    elif covering.bound >= (1 - _NEAR) * _cost(start):
+        found, bound = _whole(problem, patterns, _NODES)
+    elif len(lengths) > _LENGTHS or covering.bound >= (1 - _NEAR) * _cost(start):
         return _answer(problem, start, covering.bound)
     else:
         patterns, bound = _generated(problem, start)
-        found = _whole(problem, patterns)[0] if _cost(start) > _next_attainable(problem, bound) + _UNIT else None
+        found = (
+            _whole(problem, patterns, _FEW_NODES)[0]
+            if _cost(start) > _next_attainable(problem, bound) + _UNIT
+            else None
+        )
     best = min([start, *([found] if found is not None else [])], key=_cost)
     return _answer(problem, best, max(bound, covering.bound))
 
@@ -214,7 +223,7 @@ def _matrix(patterns: Sequence[_Pattern]) -> NDArray[np.float64]:
     return np.array([one.counts for one in patterns], dtype=float).T
 
 
-def _whole(problem: _Problem, patterns: Sequence[_Pattern]) -> tuple[list[_Pattern] | None, float]:
+def _whole(problem: _Problem, patterns: Sequence[_Pattern], nodes: int) -> tuple[list[_Pattern] | None, float]:
     """The cheapest whole numbers of these patterns that hold all pieces, and a lower bound over these patterns."""
     from scipy.optimize import LinearConstraint, milp
 
@@ -222,7 +231,7 @@ def _whole(problem: _Problem, patterns: Sequence[_Pattern]) -> tuple[list[_Patte
     # Patterns may hold more of a length than there is: what is over is simply not cut.
     answer: Any = milp(
         costs, integrality=np.ones(len(patterns)), constraints=LinearConstraint(_matrix(patterns), problem.demand),
-        options={"node_limit": _NODES, "mip_rel_gap": 0.0},
+        options={"node_limit": nodes, "mip_rel_gap": 0.0},
     )  # fmt: skip
     bound = answer.mip_dual_bound or 0.0
     if answer.x is None:

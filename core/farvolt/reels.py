@@ -59,11 +59,13 @@ class Cutting:
         return None if self.too_long or len(known) < len(found) else sum(known)
 
 
-def cut(pieces: Sequence[Piece], reels: Sequence[Reel], per_m: float | None = None) -> Cutting:
+def cut(
+    pieces: Sequence[Piece], reels: Sequence[Reel], per_m: float | None = None, *, thorough: bool = True
+) -> Cutting:
     """The cheapest way to buy these pieces from reels on offer and, where `per_m` is a price, by the metre.
 
     With nothing on offer all is taken to be sold by the metre at a price not known; with reels whose prices are not
-    known the least length is bought.
+    known the least length is bought. `thorough` False spares the search for cheaper ones than a good start.
     """
     if not reels and per_m is None:
         return Cutting((_by_the_metre(pieces, None),) if pieces else ())
@@ -77,7 +79,7 @@ def cut(pieces: Sequence[Piece], reels: Sequence[Reel], per_m: float | None = No
     fitting = [one for one in pieces if per_m is not None or one.cut_cm <= longest]
     too_long = tuple(one for one in pieces if per_m is None and one.cut_cm > longest)
     per_cm = None if per_m is None else (max(per_m, 1e-6) if priced else 1.0) / 100
-    found = patterns.least_cost(tuple(sorted(one.cut_cm for one in fitting)), offers, per_cm)
+    found = patterns.least_cost(tuple(sorted(one.cut_cm for one in fitting)), offers, per_cm, thorough)
     waiting: defaultdict[int, list[Piece]] = defaultdict(list)
     for one in reversed(fitting):
         waiting[one.cut_cm].append(one)
