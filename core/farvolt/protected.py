@@ -4,8 +4,10 @@ And the same as curves of time over current, for a drawing on logarithmic axes.
 """
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from functools import cached_property
+from typing import overload
 
 from farvolt.checks.demand import Demands
 from farvolt.checks.far_end import opening, thinnest
@@ -82,18 +84,42 @@ class TimeCurrent:
     note: str
 
 
-def protections(context: Context) -> tuple[ProtectionResult, ...]:
+class Protections(Sequence[ProtectionResult]):
+    """Every protection of a plan, in the order of its runs; worked out when it is first looked at."""
+
+    def __init__(self, context: Context) -> None:
+        self._context = context
+
+    @cached_property
+    def _rows(self) -> tuple[ProtectionResult, ...]:
+        context = self._context
+        demands, behind = Demands(context), protected_by(context)
+        ends: dict[tuple[int, str], list[FarEnd]] = {}
+        for far in context.faults.far_ends:
+            ends.setdefault((far.stretch.guard.run, far.stretch.guard.protection.end), []).append(far)
+        found = []
+        for index, run in enumerate(context.plan.runs):
+            for place, one in enumerate(run.protections):
+                far_ends = ends.get((index, one.end), []) if one.pole == "feed" else []
+                found.append(_result(context, index, place, demands, behind[id(one)], far_ends))
+        return tuple(found)
+
+    @overload
+    def __getitem__(self, place: int) -> ProtectionResult: ...
+
+    @overload
+    def __getitem__(self, place: slice) -> Sequence[ProtectionResult]: ...
+
+    def __getitem__(self, place: int | slice) -> ProtectionResult | Sequence[ProtectionResult]:
+        return self._rows[place]
+
+    def __len__(self) -> int:
+        return sum(len(run.protections) for run in self._context.plan.runs)
+
+
+def protections(context: Context) -> Protections:
     """Every protection of a plan, in the order of its runs."""
-    demands, behind = Demands(context), protected_by(context)
-    ends: dict[tuple[int, str], list[FarEnd]] = {}
-    for far in context.faults.far_ends:
-        ends.setdefault((far.stretch.guard.run, far.stretch.guard.protection.end), []).append(far)
-    found = []
-    for index, run in enumerate(context.plan.runs):
-        for place, one in enumerate(run.protections):
-            far_ends = ends.get((index, one.end), []) if one.pole == "feed" else []
-            found.append(_result(context, index, place, demands, behind[id(one)], far_ends))
-    return tuple(found)
+    return Protections(context)
 
 
 def _result(
@@ -262,4 +288,4 @@ def _marks(context: Context, index: int, guard: Guard | None) -> Iterator[Mark]:
             yield Mark("least short, far", least.fault.amps)
 
 
-__all__ = ["Curve", "Mark", "ProtectionResult", "TimeCurrent", "protections", "time_current"]
+__all__ = ["Curve", "Mark", "ProtectionResult", "Protections", "TimeCurrent", "protections", "time_current"]

@@ -4,7 +4,7 @@ Quantities are SI numbers with full precision, or None where there is no answer 
 way). Rounding is for the views.
 """
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Literal
 
@@ -154,8 +154,8 @@ class Study:
     assumptions: tuple[str, ...]
     interim: Mapping[str, Size] = field(default_factory=dict)
     """Sizes taken for the time being for runs that state none."""
-    protections: tuple["ProtectionResult", ...] = ()
-    """Each protection beside its load, its cables and its fault currents."""
+    protections: Sequence["ProtectionResult"] = ()
+    """Each protection beside its load, its cables and its fault currents; worked out when it is looked at."""
     time_current: Callable[[str], "TimeCurrent"] | None = field(default=None, repr=False, compare=False)
     """The time-current picture of a run, by its name."""
 
