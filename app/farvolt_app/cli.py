@@ -344,6 +344,29 @@ def draw(plan: str, output: str, case_name: str | None, paper: str, units: str) 
 
 
 @main.command()
+@click.argument("plan")
+@click.option("--output", "-o", required=True, help="File to write: .pdf.")
+@click.option("--size", default="62x12mm", show_default=True, help="Width x height of a label: 62x12mm, 2.5x0.5in.")
+@click.option("--sheet", is_flag=True, help="As many labels as fit on sheets of paper, with lines to cut along.")
+@click.option("--paper", type=click.Choice(["a4", "letter"]), help="Paper of the sheets; implies --sheet.")
+def labels(plan: str, output: str, size: str, sheet: bool, paper: str | None) -> None:
+    """Write wire labels for PLAN: both ends and both poles of every run, each of several parallel cables.
+
+    A label names its run, from where to where, the end it goes to, size, colour and protection. Without --sheet each
+    is a page of its own, for label printers. A file of that name that is there already is kept as NAME.previous.
+    """
+    from farvolt_app import paper_commands
+
+    paper_commands.suffix_of(output, (".pdf",))
+    _refuse_plan(plan, output)
+    wanted = paper_commands.label_size(size)
+    found = _studied(plan, margins=False)
+    with _progress("Setting the labels"):
+        data = paper_commands.label_sheet(found, wanted, paper or ("a4" if sheet else None))
+    _write_beside(plan, output, data)
+
+
+@main.command()
 @click.argument("file")
 def new(file: str) -> None:
     """Write a commented starter plan to FILE; - writes it to standard output."""

@@ -2,11 +2,15 @@
 
 from datetime import date
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from farvolt.results import CaseResult, Study
 from farvolt_app.report_text import place
+
+if TYPE_CHECKING:
+    from farvolt_app.labels import LabelSize
 
 
 def suffix_of(output: str, accepted: tuple[str, ...]) -> str:
@@ -41,3 +45,22 @@ def _case(study: Study, name: str | None) -> CaseResult:
 def foot(study: Study, day: date) -> str:
     """What stands at the foot of every page: the plan and the day."""
     return f"{study.plan.plan.name} · {day.isoformat()}"
+
+
+def label_size(text: str) -> "LabelSize":
+    """The size of a label; refuses what is none."""
+    from farvolt.errors import FarvoltError
+    from farvolt_app import labels
+
+    try:
+        return labels.parse_size(text)
+    except FarvoltError as error:
+        raise click.BadParameter(str(error), param_hint="--size") from None
+
+
+def label_sheet(study: Study, size: "LabelSize", paper: str | None) -> bytes:
+    """Wire labels of a size, on a paper or one to a page."""
+    from farvolt_app import labels
+    from farvolt_app.paper import PAPERS
+
+    return labels.pdf(study, size, PAPERS[paper] if paper is not None else None)
