@@ -92,6 +92,17 @@ def test_an_array_loses_power_in_its_own_cable_and_in_the_controller() -> None:
     assert cable.return_A == pytest.approx(-10.0, abs=1e-6)
 
 
+def test_a_diode_in_the_line_of_an_array_costs_its_drop() -> None:
+    diode = (
+        '\n[[devices]]\nname = "blocking diode"\nkind = "diode"\nfrom = "far"\nto = "controller"\n'
+        'drop = "0.5 V"\nresistance = "10 mohm"\n'
+    )
+    found = solved(HEAD + BANK + MAIN + ROOF.replace('to = "controller"', 'to = "far"') + diode)
+    # 20 V - 10 A x (2 + 39.6 + 10) mohm - 0.5 V = 18.984 V at the controller.
+    roof = next(one for one in found.sources if one.name == "roof")
+    assert roof.input_W == pytest.approx(10 * 18.984, abs=1e-4)
+
+
 def test_modules_in_series_halve_the_current_and_quarter_the_loss() -> None:
     found = solved(HEAD + BANK + MAIN + ROOF.replace("series = 1", "series = 2"))
     roof = next(one for one in found.sources if one.name == "roof")

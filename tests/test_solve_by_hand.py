@@ -367,6 +367,46 @@ def test_a_chain_of_converters_draws_through_every_efficiency() -> None:
     assert found.source_amps["bank"] == pytest.approx(watts / found.volts("bank"), rel=1e-9)
 
 
+def test_an_array_behind_a_long_cable_charges_a_battery_while_nothing_else_draws() -> None:
+    """Its controller's power of 74.342 W is under what arrives of 23.83 V · 4.65 A: u = E/2 + sqrt(E²/4 + P·r)."""
+    array = '{ at = "roof", voc = "28.6 V", isc = "5.1 A", vmp = "23.83 V", imp = "4.65 A" }'
+    roof = 'sources sun: kind = "solar"; from = "input"; at = "bank"; power = "74.342 W"; ceiling = "28.988 V"'
+    tables = battery("bank", "bank", "24.981 V", "8 mohm"), roof + f"; array = {array}"
+    down = wire("down", "roof", "input", "500 mohm")
+    found = solved(plan_text(*tables, down, case('"sun" = { irradiance = "100 %" }'), nominal="24 V"))
+    assert found.state.solved
+    assert found.volts("bank") == pytest.approx(24.981 / 2 + math.sqrt(24.981**2 / 4 + 74.342 * 8e-3), abs=1e-9)
+
+
+def test_an_array_at_its_controller_charges_beside_a_charger_at_its_limit() -> None:
+    """23.6 A of the charger and what 105 W give: u = E' / 2 + sqrt(E'²/4 + P·r), with E' = 13 V + 23.6 A · 12 mohm."""
+    array = '{ at = "input", voc = "52 V", isc = "5 A", vmp = "43.478 V", imp = "4.57 A" }'
+    roof = 'sources sun: kind = "solar"; at = "bus"; power = "105 W"; ceiling = "14.025 V"'
+    sources = battery("bank", "bank", "13 V", "8 mohm"), charger("charger", "bus", "14.364 V", "23.6 A")
+    tables = *sources, roof + f"; array = {array}", wire("feed", "bank", "bus", "4 mohm")
+    found = solved(plan_text(*tables, case('"sun" = { irradiance = "100 %" }')))
+    half = (13 + 23.6 * 0.012) / 2
+    assert found.state.solved
+    assert found.volts("bus") == pytest.approx(half + math.sqrt(half**2 + 105 * 0.012), abs=1e-9)
+
+
+def test_converters_in_a_chain_that_draw_nothing_leave_a_charger_to_the_bank() -> None:
+    """12.2 A over 42 mohm from the bus down to 51.6 V: 52.1124 V, and each output at its own voltage."""
+    sources = battery("bank", "bank", "51.6 V", "10 mohm"), charger("charger", "bus", "58.4 V", "12.2 A")
+    chain = 'sources {0}: kind = "converter"; from = "{1}"; at = "{2}"; nominal = "{3}"; volts = "{3}"; amps = "{4}"; '
+    chain += 'efficiency = "84 %"'
+    steps = (("1", "bus", "A", "24 V", "5 A"), ("2", "B", "C", "12 V", "2.7 A"), ("3", "C", "D", "12 V", "0.8 A"))
+    wires = (
+        wire("feed", "bank", "bus", "2 mohm", "feed"), wire("back", "bank", "bus", "30 mohm", "return"),
+        wire("A to B", "A", "B", "10 mohm"), wire("C to E", "C", "E", "28 mohm"), wire("D to F", "D", "F", "10 mohm"),
+    )  # fmt: skip
+    converters = [chain.format(*step) for step in steps]
+    found = solved(plan_text(*sources, *converters, *wires, case('"bank" = "on"'), nominal="48 V"))
+    assert found.state.solved
+    assert found.volts("bus") == pytest.approx(51.6 + 12.2 * 0.042, abs=1e-9)
+    assert [found.volts(point) for point in "ABCDEF"] == pytest.approx([24, 24, 12, 12, 12, 12], abs=1e-9)
+
+
 # Sources that know one way only ----------------------------------------------------------------------------------
 
 

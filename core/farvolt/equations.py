@@ -45,6 +45,7 @@ class Equations:
         self.converters = [row for row in condition.converters if supply.source_on[row[0]]]
         unknown = live.copy()
         unknown[list(supply.grounds)] = False
+        self.fed_through = np.isin(self.sources, [port for port, *_ in self.converters])
         self.position = np.where(unknown, np.cumsum(unknown) - 1, -1)
         self.size = int(unknown.sum())
         self.scale = self._rounding()
@@ -56,7 +57,7 @@ class Equations:
         for port, array, load, amps in c.arrays:
             if self.supply.source_on[port]:
                 start, end = (c.source_a[array], c.source_b[array]), (c.load_a[load], c.load_b[load])
-                at_input_V = c.volts[array] - amps * (c.ohm[array] + _loop_ohm(network, c, ohm, start, end))
+                at_input_V = c.volts[array] - amps * c.ohm[array] - _way_V(network, c, ohm, start, end, amps)
                 efficiency = next(share for source, _, share, _ in c.converters if source == port)
                 power[port] = min(power[port], max(efficiency * at_input_V * amps, 0.0))
         return power
@@ -108,13 +109,21 @@ class Equations:
         floor = KNEE_SHARE * c.nominal[on]
         by_power = np.where(np.isfinite(power), power / np.maximum(u, floor), np.inf)
         high = np.minimum(c.high[on], by_power)
-        idle, limited = amps < low, amps > high
+        # At its own voltage, give or take rounding, a source is ready to deliver: it holds a part that draws nothing.
+        idle, limited = amps < low - 1e-12 * np.abs(c.volts[on]) / ohm, amps > high
         power_bound = limited & (by_power <= c.high[on]) & (u > floor)
         amps = np.clip(amps, low, high)
         with np.errstate(invalid="ignore"):
             slope = np.where(idle, 0.0, np.where(limited, np.where(power_bound, by_power / u, 0.0), slope))
         leak = c.leak[on]
         return u, amps - leak * u, slope + leak
+
+    def limit_volts(self, volts: Floats) -> Floats:
+        """Port voltage at which the droop of each working source reaches its limit."""
+        c, on = self.condition, self.sources
+        most = np.minimum(c.high[on], self.power[on] / np.maximum(self.source_volts(volts), KNEE_SHARE * c.nominal[on]))
+        limit: Floats = c.volts[on] - c.ohm[on] * most
+        return limit
 
     def load_law(self, volts: Floats, share: float) -> tuple[Floats, Floats, Floats]:
         """Port voltage, current drawn and its slope di/du of the working load ports, loads raised to `share`."""
@@ -233,13 +242,15 @@ class Equations:
         return not bool(np.any(demands & (u < c.knee[on])))
 
 
-def _loop_ohm(
-    network: Network, condition: Operating, ohm: Floats, one: tuple[int, int], other: tuple[int, int]
+def _way_V(
+    network: Network, condition: Operating, ohm: Floats, one: tuple[int, int], other: tuple[int, int], amps: float
 ) -> float:
-    """Resistance of the conductors between two ports, there and back: the drop of an ampere that enters at the feed
-    of `one`, leaves at that of `other` and comes back in the returns."""
-    on = condition.branch_on
-    a, b, siemens = network.a[on], network.b[on], 1 / ohm[on]
+    """What is lost between two ports, there and back, by a current that enters at the feed of `one`, leaves at that of
+    `other` and comes back in the returns: in the conductors, and in diodes on the way, which are taken to conduct."""
+    on, first = condition.branch_on, first_diode(network)
+    start, end = condition.source_b[first:], condition.source_a[first:]
+    a, b = np.concatenate([network.a[on], start]), np.concatenate([network.b[on], end])
+    siemens = np.concatenate([1 / ohm[on], 1 / condition.ohm[first:]])
     part = components(network.node_count, a, b)
     nodes = np.flatnonzero(np.isin(part, part[[*one, *other]]))
     place = np.full(network.node_count, -1)
@@ -251,9 +262,13 @@ def _loop_ohm(
     rows, columns = place[np.concatenate([a, b, a, b])], place[np.concatenate([a, b, b, a])]
     keep = (rows >= 0) & (columns >= 0)
     values = np.concatenate([siemens, siemens, -siemens, -siemens])[keep]
-    amps = np.zeros(network.node_count)
+    into = np.zeros(network.node_count)
     for node, sign in zip((*one, *other), (1.0, -1.0, -1.0, 1.0), strict=True):
-        amps[node] += sign
+        into[node] += sign * amps
+    # A diode's forward drop stands in series with its resistance: `volts` of its port is the drop, negative.
+    holds = condition.volts[first:] / condition.ohm[first:]
+    np.add.at(into, start, -holds)
+    np.add.at(into, end, holds)
     volts = np.zeros(network.node_count)
-    volts[known] = factor(len(known), rows[keep], columns[keep], values, symmetric=True).solve(amps[known])
+    volts[known] = factor(len(known), rows[keep], columns[keep], values, symmetric=True).solve(into[known])
     return float(volts[one[0]] - volts[one[1]] - volts[other[0]] + volts[other[1]])

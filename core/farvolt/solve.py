@@ -109,7 +109,8 @@ def _newton(equations: Equations, volts: Floats, share: float, *, falling: bool 
 
 
 def _step_length(equations: Equations, volts: Floats, step: Floats) -> float:
-    """Longest part of a step that passes no idle source's voltage and at most halves a load's."""
+    """Longest part of a step that passes no idle source's voltage, nor a converter's limit, and at most halves a
+    load's."""
     c, on, length = equations.condition, equations.sources, 1.0
     change = equations.source_volts(step)
     above = equations.source_volts(volts) - c.volts[on]
@@ -117,6 +118,11 @@ def _step_length(equations: Equations, volts: Floats, step: Floats) -> float:
     if joins.any():
         # Land just inside the law of the source that joins in first.
         length = min(length, float(np.min((above[joins] + 1e-9) / -change[joins])))
+    # Land where a converter's output reaches its limit: what its droop would make of its input beyond is out of reach.
+    limit = equations.source_volts(volts) - equations.limit_volts(volts)
+    passes = equations.fed_through & (limit > 1e-12 * np.abs(c.volts[on]) + 1e-15) & (limit + change < 0)
+    if passes.any():
+        length = min(length, float(np.min((limit[passes] + 1e-9) / -change[passes])))
     u, change = equations.load_volts(volts), equations.load_volts(step)
     halves = (change < -0.5 * u) & (u > c.knee[equations.loads])
     if halves.any():
