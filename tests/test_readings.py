@@ -10,6 +10,7 @@ from farvolt.locate import locate
 from farvolt.network import FEED, RETURN
 from farvolt.reading_table import from_rows, from_text
 from farvolt.readings import COLUMNS, ReadingsError
+from farvolt_app import readings_file
 
 VAN = planfile.parse(examples.text("instrument-repair-van"))
 HEAD = "set,case,loads,sources,devices,from,from pole,to,to pole,volts,run,pole,amps,accuracy,resolution\n"
@@ -195,8 +196,29 @@ def test_the_same_place_read_twice_must_agree() -> None:
 
 
 def test_a_table_on_the_disk_that_cannot_be_read_is_told(tmp_path: Path) -> None:
-    from farvolt.reading_table import read
-
-    for path in (tmp_path / "none.csv", tmp_path):
+    (folder := tmp_path / "folder.csv").mkdir()
+    for path in (tmp_path / "none.csv", folder):
         with pytest.raises(ReadingsError, match="cannot be read"):
-            read(path, VAN)
+            readings_file.read(str(path), VAN)
+
+
+def test_the_sheet_of_a_workbook_reads_as_the_same_table(tmp_path: Path) -> None:
+    from openpyxl import Workbook
+
+    book = Workbook()
+    sheet = book.active
+    assert sheet is not None
+    sheet.title = "Readings"
+    for cells in (["Readings of the van"], [], ["from", "to", "volts"], ["bank", None, 12.84], ["radio", None, 12.8]):
+        sheet.append(cells)
+    book.save(tmp_path / "taken.xlsx")
+    first, second = readings_file.read(str(tmp_path / "taken.xlsx"), VAN)[0].readings
+    assert (first.row, first.value, second.value) == (4, 12.84, 12.8)
+    assert second.limit == pytest.approx(0.005 * 12.8 + 0.02)
+
+
+@pytest.mark.parametrize(("name", "data"), [("a.xlsx", b"not a workbook"), ("a.csv", b"\xff\xfe\xfa"), ("a.ods", b"")])
+def test_a_file_of_another_kind_is_told(tmp_path: Path, name: str, data: bytes) -> None:
+    (tmp_path / name).write_bytes(data)
+    with pytest.raises(ReadingsError, match=r"workbook|UTF-8|accepted: \.csv, \.xlsx"):
+        readings_file.read(str(tmp_path / name), VAN)

@@ -19,6 +19,7 @@ from farvolt_app.report_text import open_console, table
 from farvolt_app.shown import CAUTION
 
 SUSPECTS_SHOWN = 12
+REMARKED = 4
 _UNSEEN_SHOWN = 6
 
 BASIS = (
@@ -92,7 +93,7 @@ def suspect_rows(located: Located) -> list[tuple[str, ...]]:
 
 def remarks(located: Located) -> list[str]:
     """Of the suspects that explain the readings: what lies there, how dangerous it is, what else it may be."""
-    return [line for one in located.named[:SUSPECTS_SHOWN] for line in _remarks(located, one)]
+    return [line for one in located.named[:REMARKED] for line in _remarks(located, one)]
 
 
 def _remarks(located: Located, one: Suspect) -> Iterator[str]:

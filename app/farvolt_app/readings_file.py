@@ -1,5 +1,6 @@
 """Readings from a file: CSV, or the sheet "Readings" of a workbook."""
 
+import io
 from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
@@ -12,38 +13,49 @@ from farvolt.readings import ReadingsError, ReadingSet
 SHEET = "Readings"
 
 
-def read(path: str, plan: Plan) -> tuple[ReadingSet, ...]:
-    """The readings of a file; its suffix says which kind it is, `-` is CSV from standard input.
+Rows = list[tuple[int, list[str]]]
 
-    Raises ReadingsError.
-    """
+
+def read(path: str, plan: Plan) -> tuple[ReadingSet, ...]:
+    """The readings of a file; `-` is CSV from standard input. Raises ReadingsError."""
     if path == "-":
         import sys
 
-        text = sys.stdin.buffer.read().decode("utf-8-sig", errors="replace")
-        return reading_table.from_text(text, plan, "standard input")
-    suffix = Path(path).suffix.lower()
-    if suffix not in (".csv", ".xlsx", ".tsv", ".txt"):
-        raise ReadingsError([Fault("", "", f'"{suffix or path}"', "is not read", ".csv, .xlsx")], path)
-    return _workbook(path, plan) if suffix == ".xlsx" else reading_table.read(Path(path), plan)
+        return reading_table.from_rows(rows_of("standard input.csv", sys.stdin.buffer.read()), plan, "standard input")
+    try:
+        data = Path(path).read_bytes()
+    except OSError as error:
+        raise ReadingsError([Fault("", "", "", f"cannot be read ({error.strerror})")], path) from None
+    return reading_table.from_rows(rows_of(path, data), plan, path)
 
 
-def _workbook(path: str, plan: Plan) -> tuple[ReadingSet, ...]:
+def rows_of(name: str, data: bytes) -> Rows:
+    """The numbered rows of a file's bytes; the suffix of its name says which kind it is. Raises ReadingsError."""
+    suffix = Path(name).suffix.lower()
+    if suffix == ".xlsx":
+        return _workbook(name, data)
+    if suffix not in (".csv", ".tsv", ".txt"):
+        raise ReadingsError([Fault("", "", f'"{suffix or name}"', "is not read", ".csv, .xlsx")], name)
+    try:
+        return reading_table.rows_of(data.decode("utf-8-sig"), name)
+    except UnicodeDecodeError:
+        raise ReadingsError([Fault("", "", "", "is not a text in UTF-8", "a CSV file in UTF-8")], name) from None
+
+
+def _workbook(name: str, data: bytes) -> Rows:
     from zipfile import BadZipFile
 
     from openpyxl import load_workbook
     from openpyxl.utils.exceptions import InvalidFileException
 
     try:
-        book = load_workbook(path, read_only=True, data_only=True)
-    except OSError as error:
-        raise ReadingsError([Fault("", "", "", f"cannot be read ({error.strerror or error})")], path) from None
-    except (BadZipFile, InvalidFileException, KeyError, ValueError):
-        raise ReadingsError([Fault("", "", "", "is not a workbook", "an .xlsx file")], path) from None
+        book = load_workbook(io.BytesIO(data), read_only=True, data_only=True)
+    except (BadZipFile, InvalidFileException, KeyError, ValueError, OSError):
+        raise ReadingsError([Fault("", "", "", "is not a workbook", "an .xlsx file")], name) from None
     if SHEET not in book.sheetnames:
-        given = ", ".join(f'"{name}"' for name in book.sheetnames)
-        raise ReadingsError([Fault("", "", given, "there is no sheet of readings", f'a sheet "{SHEET}"')], path)
-    return reading_table.from_rows(list(_rows(book[SHEET])), plan, path)
+        given = ", ".join(f'"{one}"' for one in book.sheetnames)
+        raise ReadingsError([Fault("", "", given, "there is no sheet of readings", f'a sheet "{SHEET}"')], name)
+    return list(_rows(book[SHEET]))
 
 
 def _rows(sheet: Any) -> Iterator[tuple[int, list[str]]]:

@@ -7,7 +7,7 @@ nobody states: see the constants below.
 """
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -25,6 +25,9 @@ Kind = Literal["joint", "cable", "load", "source volts", "source resistance"]
 
 LEAST_OHM, MOST_OHM = 2e-3, 2.0
 """A bad joint has between these many ohms more than planned; every order of magnitude is as likely."""
+
+LASTING_W = 50.0
+"""A joint that turns more than about this into heat does not last until it is measured (a judgement)."""
 
 SOUND_JOINTS_OHM = 0.3e-3
 """Two sound terminations of a conductor: up to about so much (common practice, from memory: provisional)."""
@@ -57,6 +60,8 @@ class Cause:
     pole: str = ""
     parts: tuple[str, ...] = ()
     branch: int = -1
+    prior: Floats | None = None
+    """Logarithm of how likely each of `values` is beside an even spread; even unless given."""
     at: int = -1
     """Place of the run, load or source in its table of the plan; -1 where it has none."""
 
@@ -90,7 +95,7 @@ def _cause(
     kind: Kind, name: str, words: str, atoms: Scaled, values: Floats, pole: str = "", parts: tuple[str, ...] = (),
     branch: int = -1, at: int = -1,
 ) -> Cause:  # fmt: skip
-    return Cause(kind, name, words, atoms, values, _WEIGHTS[kind], pole, parts, branch, at)
+    return Cause(kind, name, words, atoms, values, _WEIGHTS[kind], pole, parts, branch, at=at)
 
 
 def _places(network: Network) -> Iterator[Cause]:
@@ -164,6 +169,12 @@ def _sources(plan: Plan, network: Network, condition: Operating, atoms: Atoms) -
             inner = tuple((atoms.ohm(port), 1.0) for port in ports)
             words = f'inner resistance of "{source.name}"'
             yield _cause("source resistance", source.name, words, inner, _OHMS, at=at)
+
+
+def lasting(cause: Cause, heat_W: Floats) -> Cause:
+    """A bad joint with values that would soon burn out made unlikely; `heat_W` is over its values."""
+    prior = -np.log1p((heat_W / LASTING_W) ** 2)
+    return replace(cause, prior=prior - np.log(np.mean(np.exp(prior))))
 
 
 # Sound parts ---------------------------------------------------------------------------------------------------------

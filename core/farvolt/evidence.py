@@ -49,6 +49,7 @@ class Evidence:
         causes: Sequence[Cause],
     ) -> None:  # fmt: skip
         self.response, self.causes = response, causes
+        self.read, self.limits, self._sound = read, limits, sound
         self.off = read - response.planned
         """What was read less what the plan says."""
         columns = [sum((scale * response.gain[:, atom] for atom, scale in one), np.zeros(len(read))) * wide
@@ -58,6 +59,18 @@ class Evidence:
         self.covariance = np.diag(self.meter**2) + self.sound @ self.sound.T
         self.whitening = np.linalg.inv(np.linalg.cholesky(self.covariance))
         self._weight = sum(one.weight for one in causes)
+
+    def reread(self, at: int, value: float, limit: float) -> "Evidence":
+        """The same with one reading another."""
+        read, limits = self.read.copy(), self.limits.copy()
+        read[at], limits[at] = value, limit
+        return Evidence(self.response, read, limits, self._sound, self.causes)
+
+    def log_likelihood(self) -> float:
+        """Logarithm of how likely the readings are, whatever may be wrong: over all hypotheses, but for a constant."""
+        odds = np.array([one.log_odds for one in self.hypotheses()])
+        total = float(odds.max() + np.log(np.sum(np.exp(odds - odds.max()))))
+        return total - self.sound_misfit / 2 + float(np.linalg.slogdet(self.whitening)[1])
 
     def white(self, moved: Floats) -> Floats:
         """Movements over (…, reading), made independent and of unit variance."""
@@ -84,7 +97,7 @@ class Evidence:
         cause = self.causes[index]
         rest = self.off if beside is None else self.off - beside
         curve = self.white(self.moves(cause, cause.values))
-        fits = curve @ self.white(rest) - np.sum(curve**2, axis=1) / 2
+        fits = curve @ self.white(rest) - np.sum(curve**2, axis=1) / 2 + _prior(cause, cause.values)
         if beside is not None:
             fits += (np.sum(self.white(self.off) ** 2) - np.sum(self.white(rest) ** 2)) / 2
         best = int(np.argmax(fits))
@@ -99,12 +112,15 @@ class Evidence:
         one, other = self.causes[first], self.causes[second]
         rest = self.white(self.off if beside is None else self.off - beside)
         a, b = (self.white(self.moves(cause, cause.values[::_THIN])) for cause in (one, other))
-        fits = (a @ rest - np.sum(a**2, axis=1) / 2)[:, None] + (b @ rest - np.sum(b**2, axis=1) / 2)[None] - a @ b.T
+        alone = [moved @ rest - np.sum(moved**2, axis=1) / 2 + _prior(cause, cause.values[::_THIN])
+                 for moved, cause in ((a, one), (b, other))]  # fmt: skip
+        fits = alone[0][:, None] + alone[1][None] - a @ b.T
         at = np.unravel_index(int(np.argmax(fits)), fits.shape)
         values = np.array([one.values[::_THIN][at[0]], other.values[::_THIN][at[1]]])
         values, fit, slopes = self._refine((one, other), values, rest)
         if beside is not None:
             fit += float(np.sum(self.white(self.off) ** 2) - np.sum(rest**2)) / 2
+        fit += sum(float(_prior(cause, values[at : at + 1])[0]) for at, cause in enumerate((one, other)))
         average = fit + _laplace((one, other), values, slopes)
         weights = 2 * one.weight * other.weight / self._weight**2
         moved = self._together((one, other), values) + (0.0 if beside is None else beside)
@@ -181,6 +197,13 @@ class Evidence:
         ohms, _ = nnls(self.white(slopes).T, self.white(self.off), maxiter=30 * len(joints))
         order = np.argsort(-ohms)
         return [joints[at] for at in order[:6] if ohms[at] > 0]
+
+
+def _prior(cause: Cause, values: Floats) -> Floats:
+    """Logarithm of how likely some values of a cause are beside an even spread."""
+    if cause.prior is None:
+        return np.zeros(len(values))
+    return np.interp(values, cause.values, cause.prior)
 
 
 def _ends(values: Floats, at: float) -> tuple[float, float]:

@@ -6,7 +6,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from farvolt import interim, network, operating
-from farvolt.causes import Cause, Scaled, alphas, causes, sound_degC, sound_spread
+from farvolt.causes import Cause, Scaled, alphas, causes, lasting, sound_degC, sound_spread
 from farvolt.errors import FarvoltError
 from farvolt.evidence import Evidence
 from farvolt.network import Floats, Network
@@ -89,7 +89,13 @@ class Measured:
         """The readings held against all causes."""
         state = self.states[0]
         found = self.installation
-        return Evidence(self.response, self.read, self.limits, found.sound(state), found.causes(state))
+        each = [
+            lasting(cause, np.max([one.heat_W(cause.branch, cause.values) for one, _ in self.by_state], axis=0))
+            if cause.kind == "joint"
+            else cause
+            for cause in found.causes(state)
+        ]
+        return Evidence(self.response, self.read, self.limits, found.sound(state), each)
 
     def exact(self, values: dict[int, float]) -> Floats | None:
         """What would be read with atoms at given values, the networks solved; None where one gives way."""

@@ -180,11 +180,11 @@ def _suspects(
 def _suspect(found: Measured, cause: Cause, value: float, share: float, named: bool) -> Suspect:
     if cause.kind != "joint":
         return Suspect(cause, value, share, named, None, None, "", "")
-    atom = cause.atoms[0][0]
-    here = max(state.heat_W(atom, value) for state, _ in found.by_state)
+    ohm = np.array([value])
+    here = max(float(state.heat_W(cause.branch, ohm)[0]) for state, _ in found.by_state)
     worst, case = here, ""
     for state in found.installation.planned_states():
-        watts = state.heat_W(atom, value)
+        watts = float(state.heat_W(cause.branch, ohm)[0])
         if watts > worst:
             worst, case = watts, state.case.name
     return Suspect(cause, value, share, named, here, worst, case, danger(worst))

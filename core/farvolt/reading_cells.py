@@ -10,7 +10,6 @@ from farvolt.network import FEED, RETURN
 from farvolt.plan import CHASSIS, Plan
 from farvolt.readings import ACCURACY, POLE_WORDS, POLES, Pin, Reading
 
-
 _NUMBER = re.compile(r"\s*[+\-−]?(\d*)\.?(\d*)([eE][+-]?\d+)?")
 
 

@@ -14,6 +14,9 @@ from farvolt.units import number
 _FAR, _NEAR = 8.0, 4.0
 """A slip is offered where a reading is this many standard deviations off the plan, and within so many once mended."""
 
+_SLIP = 0.02
+"""Odds of a slip, before anything is compared: one reading in fifty, a judgement."""
+
 _DOUBTS = 2.0
 """Readings that close a loop contradict where their sum exceeds so many times what their meter allows."""
 
@@ -42,7 +45,7 @@ def _alone(found: Measured, evidence: Evidence) -> Iterator[Fault]:
         impossible = abs(reading.value) - reading.limit > most
         if impossible or abs(reading.value - planned) > _FAR * spread[at]:
             near = _near(reading, planned, float(sound[at]), impossible)
-            if near is not None or impossible:
+            if impossible or (near is not None and _likelier(evidence, at, near[0])):
                 yield _fault(reading, planned, most, near, impossible)
 
 
@@ -66,6 +69,13 @@ def _near(reading: Reading, planned: float, sound: float, impossible: bool) -> t
         if abs(mended - planned) <= allowed and abs(planned) > 2 * sound and abs(mended) > abs(planned) / 2:
             return mended, words
     return None
+
+
+def _likelier(evidence: Evidence, at: int, mended: float) -> bool:
+    """Whether a slip explains a reading better than anything that may be wrong with the installation."""
+    times = abs(mended / float(evidence.read[at]))
+    meant = evidence.reread(at, mended, times * float(evidence.limits[at]))
+    return meant.log_likelihood() + float(np.log(_SLIP * times)) > evidence.log_likelihood()
 
 
 def _fault(

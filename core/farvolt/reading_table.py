@@ -2,8 +2,7 @@
 
 import csv
 import io
-from collections.abc import Iterator, Sequence
-from pathlib import Path
+from collections.abc import Sequence
 
 from farvolt import reading_cells, reading_states
 from farvolt.errors import Fault
@@ -15,39 +14,28 @@ MOST_ROWS = 2_000
 
 
 def from_text(text: str, plan: Plan, source: str = "") -> tuple[ReadingSet, ...]:
-    """Readings of a CSV text: a heading row with names of `COLUMNS`, then a row for each reading; `#` begins a note.
+    """Readings of a CSV text. Raises ReadingsError."""
+    return from_rows(rows_of(text, source), plan, source)
 
-    Commas, semicolons or tabs part the columns. Raises ReadingsError.
+
+def rows_of(text: str, source: str = "") -> list[tuple[int, list[str]]]:
+    """The rows of a CSV text with their numbers: a heading row with names of `COLUMNS`, then one for each reading.
+
+    Commas, semicolons or tabs part the columns; `#` begins a note. Raises ReadingsError.
     """
     lines = ["" if line.lstrip().startswith("#") else line for line in text.lstrip("\ufeff").splitlines()]
     head = next((line for line in lines if line.strip()), "")
-    mark = max(",;\t", key=head.count)
+    reader = csv.reader(io.StringIO("\n".join(lines)), delimiter=max(",;\t", key=head.count))
+    found, before = [], 0
     try:
-        rows = [(line + 1, row) for line, row in _csv_rows("\n".join(lines), mark)]
+        for row in reader:
+            if any(cell.strip() for cell in row):
+                found.append((before + 1, row))
+            before = reader.line_num
     except csv.Error as error:
-        raise ReadingsError([Fault("", "", "", f"this is no table of readings ({error})", ", ".join(COLUMNS))],
-                            source) from None  # fmt: skip
-    return from_rows(rows, plan, source)
-
-
-def _csv_rows(text: str, mark: str) -> Iterator[tuple[int, list[str]]]:
-    reader = csv.reader(io.StringIO(text), delimiter=mark)
-    before = 0
-    for row in reader:
-        if any(cell.strip() for cell in row):
-            yield before, row
-        before = reader.line_num
-
-
-def read(path: Path, plan: Plan) -> tuple[ReadingSet, ...]:
-    """Readings of a CSV file. Raises ReadingsError."""
-    try:
-        text = path.read_bytes().decode("utf-8-sig")
-    except OSError as error:
-        raise ReadingsError([Fault("", "", "", f"cannot be read ({error.strerror})")], str(path)) from None
-    except UnicodeDecodeError:
-        raise ReadingsError([Fault("", "", "", "is not a text in UTF-8", "a CSV file in UTF-8")], str(path)) from None
-    return from_text(text, plan, str(path))
+        fault = Fault("", "", "", f"this is no table of readings ({error})", ", ".join(COLUMNS))
+        raise ReadingsError([fault], source) from None
+    return found
 
 
 def from_rows(rows: Sequence[tuple[int, Sequence[str]]], plan: Plan, source: str = "") -> tuple[ReadingSet, ...]:

@@ -215,11 +215,11 @@ class State:
         """The two nodes at which an atom acts."""
         return int(self._atoms[0][atom]), int(self._atoms[1][atom])
 
-    def heat_W(self, branch: int, ohm: float) -> float:
-        """Watts in `ohm` more in a branch, at the current that then flows."""
-        back = float(self._atoms[3][branch])
-        amps = float(self.solved.branch_A[branch]) / (1 + ohm * back)
-        return ohm * amps**2
+    def heat_W(self, branch: int, ohm: Floats) -> Floats:
+        """Watts in each of some ohms more in a branch, at the current that then flows."""
+        amps = self.solved.branch_A[branch] / (1 + ohm * self._atoms[3][branch])
+        heat: Floats = ohm * amps**2
+        return heat
 
     def changed(self, values: Mapping[int, float]) -> tuple[Network, Operating]:
         """Network and condition with atoms at given values."""

@@ -9,7 +9,9 @@ PAGES = (
     ("drawing_page.py", "Drawing", "drawing"),
     ("findings_page.py", "Findings", "findings"),
     ("protection_page.py", "Protection", "protection"),
+    ("bank_page.py", "Bank", "bank"),
     ("schedule_page.py", "Schedule", "schedule"),
+    ("readings_page.py", "Readings", "readings"),
 )
 
 
