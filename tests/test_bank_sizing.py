@@ -99,7 +99,7 @@ def test_the_worksheet_takes_the_largest_limit_not_their_product() -> None:
     assert found.capacity_Ah == pytest.approx(458.33, abs=0.01)
 
 
-# The duty-cycle method of IEEE 485 -------------------------------------------------------------------------------------
+# The duty-cycle method of IEEE 485 ------------------------------------------------------------------------------------
 
 
 def test_the_duty_cycle_of_ieee_485_by_hand() -> None:

@@ -196,13 +196,15 @@ def test_a_faulty_file_is_said_in_full_and_can_be_opened_all_the_same(page: AppT
     page.button(key="open_faulty").click().run()
     assert table(page, "What is wrong")["Line"].notna().all()
     assert "no results yet" in page.info[0].value
-    for script in ("drawing_page.py", "findings_page.py", "protection_page.py", "schedule_page.py"):
+    for script in ("drawing_page.py", "findings_page.py", "protection_page.py", "bank_page.py", "schedule_page.py"):
         page.switch_page(script).run()
         assert not page.exception
         assert "no results yet" in page.info[0].value
 
 
-@pytest.mark.parametrize("script", ["drawing_page.py", "findings_page.py", "protection_page.py", "schedule_page.py"])
+@pytest.mark.parametrize(
+    "script", ["drawing_page.py", "findings_page.py", "protection_page.py", "bank_page.py", "schedule_page.py"]
+)
 def test_every_page_shows_its_tables(page: AppTest, script: str) -> None:
     page.switch_page(script).run()
     assert not page.exception

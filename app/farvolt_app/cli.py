@@ -18,6 +18,8 @@ from farvolt import __version__
 from farvolt.errors import FarvoltError
 
 if TYPE_CHECKING:
+    from datetime import datetime
+
     from farvolt.planfile import PlanFile
     from farvolt.results import Study
 
@@ -285,6 +287,81 @@ def locate(plan: str, readings: str, as_json: bool, as_read: bool) -> None:
     else:
         locate_text.show(found, nexts)
     sys.exit(0 if found.fits else FAILS)
+
+
+@main.command()
+@click.argument("plan")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object for machines.")
+@click.option("--day", help="Type of day to show loads of; the one the bank is sized for unless given.")
+@click.option("--working/--no-working", default=False, help="Show the working of charging, time to full and fresh air.")
+@click.option("--output", "-o", help="Write the chart of what the day's energy goes into: .svg, .pdf or .png.")
+def bank(plan: str, as_json: bool, day: str | None, working: bool, output: str | None) -> None:
+    """Show the energy of a day in PLAN, how large a bank and array it takes, and how the bank is filled again.
+
+    Sizing follows IEEE 1013 and IEEE 485, every step with its working. The exit code is 1 when the bank fails a check.
+    """
+    from farvolt_app import bank_text, paper_commands
+
+    suffix = paper_commands.suffix_of(output, (".svg", ".pdf", ".png")) if output is not None else ""
+    found = _studied(plan, margins=False)
+    from farvolt.bank_study import as_object, bank_study
+
+    answer = bank_study(found)
+    shown = bank_text.day_of(answer, day)
+    if as_json:
+        _print_whole(json.dumps(as_object(answer), ensure_ascii=False, allow_nan=False) + "\n")
+    else:
+        bank_text.show(answer, shown, working=working)
+    if output is not None:
+        from farvolt_app import energy_chart
+
+        _write_beside(plan, output, energy_chart.written(shown, suffix))
+    sys.exit(FAILS if any(one.severity == "fail" for one in answer.findings) else 0)
+
+
+@main.command()
+@click.argument("plan")
+@click.option("--from", "start", type=click.DateTime(["%Y-%m-%d"]), help="First day; 1 December (south: June) unless given.")
+@click.option("--days", "count", default=14, show_default=True, help="How many days.")
+@click.option("--step", "step_min", default=60, show_default=True, help="Minutes of a step, 1 to 60.")
+@click.option("--start-charge", help='Charge of the banks at the start, such as "90 %"; as the plan says unless given.')
+@click.option("--low-charge", help='Count hours below this charge; the battery\'s least charge unless given.')
+@click.option("--irradiance", help="Sun from a table of your own: CSV with time, ghi (W/m²), and where known dni, dhi, "
+              "temp_air (°C), wind (m/s).")  # fmt: skip
+@click.option("--day", help="Take every day as this type of day of the plan.")
+@click.option("--ambient", help='Temperature of bank and air, such as "5 degC".')
+@click.option("--aged", is_flag=True, help="Take the banks as they are at the end of their life.")
+@click.option("--csv", "table", help="Write every step to this CSV file; - for standard output instead of the tables.")
+@click.option("--chart", help="Write the chart of charge, power and voltage: .svg, .pdf or .png.")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object for machines.")
+def days(
+    plan: str, start: "datetime | None", count: int, step_min: int, start_charge: str | None, low_charge: str | None,
+    irradiance: str | None, day: str | None, ambient: str | None, aged: bool, table: str | None, chart: str | None,
+    as_json: bool,
+) -> None:  # fmt: skip
+    """Work through days of PLAN step by step: sun, chargers, loads, charge, and what cuts out when.
+
+    Every step is solved on the plan's own cables. The exit code is 1 when some load is not served in full.
+    """
+    from farvolt_app import days_command, days_rows, paper_commands
+
+    suffix = paper_commands.suffix_of(chart, (".svg", ".pdf", ".png")) if chart is not None else ""
+    wishes = days_command.Wishes(start.date() if start else None, count, step_min, start_charge, low_charge, irradiance,
+                                 day, ambient, aged)  # fmt: skip
+    if table == "-" and as_json:
+        raise click.UsageError("--json and --csv - both print to standard output; leave one out")
+    for output in (one for one in (table, chart) if one is not None):
+        _refuse_plan(plan, output)
+    found = days_command.run(plan, wishes, as_json=as_json, quiet=table == "-")
+    if table == "-":
+        _print_whole(days_rows.to_csv(found))
+    elif table is not None:
+        _write_beside(plan, table, days_rows.to_csv(found).encode("utf-8-sig"))
+    if chart is not None:
+        from farvolt_app import days_chart
+
+        _write_beside(plan, chart, days_chart.written(found, suffix))
+    sys.exit(FAILS if found.unserved_Wh > 0 else 0)
 
 
 @main.command()

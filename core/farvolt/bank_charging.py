@@ -9,7 +9,7 @@ from farvolt.bank_sizing import Terms
 from farvolt.battery_figures import Figure
 from farvolt.energy import Budget
 from farvolt.network import Network
-from farvolt.plan import Battery, Charger, DayType, Solar
+from farvolt.plan import Battery, Charger, Converter, DayType, Solar
 from farvolt.units import number
 
 DEFAULT_RATIO = 0.75
@@ -50,7 +50,8 @@ class Limit:
     """All chargers together against what the bank takes."""
 
     amps: float
-    parts: tuple[str, ...]
+    parts: tuple[tuple[str, float], ...]
+    """Each source and its greatest current."""
     limit_A: Figure | None
     """Of the whole bank, as a range where only that is known."""
 
@@ -84,7 +85,7 @@ def charging(network: Network, budgets: tuple[Budget, ...], terms: Terms) -> Cha
     days = tuple(_balance(budget, day, mine, terms) for budget, day in zip(budgets, types, strict=True))
     sunny = [one for one in days if one.array_W is not None]
     worst = max(sunny, key=lambda one: one.array_W or 0.0, default=None)
-    return Charging(days, worst, limit(terms.battery, mine, terms.nominal_V), tuple(_all_to_full(mine, terms)))
+    return Charging(days, worst, limit(network, terms.battery, terms.nominal_V), tuple(_all_to_full(mine, terms)))
 
 
 def feeding(network: Network, battery: Battery) -> tuple[Charger | Solar, ...]:
@@ -149,11 +150,17 @@ def _gain(one: Charger | Solar, day: DayType | None, sun_h: float | None, nomina
                 f"{number(watt_hours, 4)} Wh")  # fmt: skip
 
 
-def limit(battery: Battery, mine: tuple[Charger | Solar, ...], nominal_V: float) -> Limit:
-    """All that can charge at once, against `max_charge` of all strings, else what is typical of the chemistry."""
-    parts = tuple(f'"{one.name}" {number(most_A(one, nominal_V))} A' for one in mine)
-    total = sum(most_A(one, nominal_V) for one in mine)
-    return Limit(total, parts, rate_limit(battery, "charge"))
+def limit(network: Network, battery: Battery, nominal_V: float) -> Limit:
+    """All that can charge at once, converters into its part of the plan too, against `max_charge` of all strings."""
+    of_node = operating.islands(network).of_node
+    home = of_node[network.feed(battery.at)]
+    parts = [(one.name, most_A(one, nominal_V)) for one in feeding(network, battery)]
+    parts += [
+        (one.name, one.amps.si)
+        for one in network.plan.sources
+        if isinstance(one, Converter) and of_node[network.feed(one.at)] == home != of_node[network.feed(one.from_point)]
+    ]
+    return Limit(sum(amps for _, amps in parts), tuple(parts), rate_limit(battery, "charge"))
 
 
 def rate_limit(battery: Battery, way: str) -> Figure | None:

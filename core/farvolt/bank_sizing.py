@@ -144,7 +144,7 @@ def peak_A(budget: Budget, nominal_V: float) -> float:
     """Largest lasting current of a day at the bank: what the times of day put together, with as much of the loads
     that are on at any time as two-column practice counts (the larger of the largest and a tenth of them)."""
     loose = [_bank_W(one) for one in budget.loads if not one.use.spans and one.use.hours > 0]
-    return (max(_timed_W(budget)) + max(max(loose, default=0.0), TENTH * sum(loose))) / nominal_V
+    return (max(_timed_W(budget, running=True)) + max(max(loose, default=0.0), TENTH * sum(loose))) / nominal_V
 
 
 def _bank_W(one: energy.LoadEnergy) -> float:
@@ -152,14 +152,15 @@ def _bank_W(one: energy.LoadEnergy) -> float:
     return one.watts * (one.bank_Wh / one.Wh if one.Wh else 1.0)
 
 
-def _timed_W(budget: Budget) -> list[float]:
-    """Over the minutes of a day: power from the bank of loads with times of day, at their duty, and all standby."""
+def _timed_W(budget: Budget, *, running: bool) -> list[float]:
+    """Over the minutes of a day: power from the bank of loads with times of day, and all standby; `running` together,
+    else at their duty."""
     idle_Wh = sum(one.standby_Wh for one in budget.loads) + sum(one.standby_Wh for one in budget.converters)
     found = [idle_Wh / 24] * DAY_MINUTES
     for one in budget.loads:
         for start, end in one.use.spans:
             for minute in range(start, end):
-                found[minute] += _bank_W(one) * one.duty
+                found[minute] += _bank_W(one) * (1.0 if running else one.duty)
     return found
 
 
@@ -168,7 +169,7 @@ def _duty(plan: Plan, budget: Budget, terms: Terms) -> Sized:
     may come at any moment."""
     loose = [one for one in budget.loads if not one.use.spans and one.use.hours > 0]
     average_W = sum(one.bank_Wh - one.standby_Wh for one in loose) / 24
-    day = [(watts + average_W) / terms.nominal_V for watts in _timed_W(budget)]
+    day = [(watts + average_W) / terms.nominal_V for watts in _timed_W(budget, running=False)]
     whole = max(1, math.ceil(plan.bank.autonomy))
     minutes = (day * whole)[: max(1, round(plan.bank.autonomy * DAY_MINUTES))]
     random = max((Period(_bank_W(one) / terms.nominal_V, min(one.use.hours, 1.0)) for one in loose),

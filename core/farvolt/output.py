@@ -15,7 +15,7 @@ _TABLES = ("points", "sources", "runs", "loads")
 
 def as_object(study: Study) -> dict[str, Any]:
     """The object that `farvolt check PLAN --json` prints."""
-    whole: dict[str, Any] = _plain(
+    whole: dict[str, Any] = plain(
         {
             "output": OUTPUT,
             "plan": study.plan.plan.name,
@@ -32,10 +32,10 @@ def _case(case: CaseResult) -> dict[str, Any]:
     return own | {name: [asdict(one) for one in getattr(case, name)] for name in _TABLES}
 
 
-def _plain(node: Any) -> Any:
+def plain(node: Any) -> Any:
     """Lists for tuples, and null for a number that JSON does not have."""
     if isinstance(node, dict):
-        return {key: _plain(one) for key, one in node.items()}
+        return {key: plain(one) for key, one in node.items()}
     if isinstance(node, list | tuple):
-        return [_plain(one) for one in node]
+        return [plain(one) for one in node]
     return None if isinstance(node, float) and not math.isfinite(node) else node

@@ -4,32 +4,16 @@ from collections.abc import Iterator
 
 from farvolt.checks.registry import check
 from farvolt.context import Context
-from farvolt.plan import Battery, Plan, Solar
-from farvolt.plan_types import Entry
+from farvolt.plan import Battery, Charger, Load, Plan, Solar
 from farvolt.results import Finding
 
-_UNUSED: dict[str, tuple[str, ...]] = {
-    "sources": ("max_discharge", "max_charge"),
-    "loads": ("hours_per_day", "schedule", "duty"),
-}
-
-_NOT_CHECKED = (
-    "the bank's rates of charge and discharge, its days of autonomy, charging when cold",
-)
+_NOT_CHECKED = ("fresh air and the risk of fire where batteries stand",)
 
 
 @check("plan.not-used-yet", title="Fields that are read and kept, but that nothing uses yet")
 def not_used(context: Context) -> Iterator[Finding]:
     """One note naming the fields of the plan that no calculation of this version uses."""
-    counts: dict[str, int] = {}
-    for table, names in _UNUSED.items():
-        entries: tuple[Entry, ...] = getattr(context.plan, table)
-        for entry in entries:
-            for name in entry.model_fields_set.intersection(names):
-                counts[f"{table}.{name}"] = counts.get(f"{table}.{name}", 0) + 1
-    for name, count in _conditional(context.plan).items():
-        if count:
-            counts[name] = count
+    counts = {name: count for name, count in _conditional(context.plan).items() if count}
     if counts:
         listed = ", ".join(f"{name} ({count})" for name, count in sorted(counts.items()))
         yield _note(
@@ -41,6 +25,7 @@ def not_used(context: Context) -> Iterator[Finding]:
 def _conditional(plan: Plan) -> dict[str, int]:
     """Fields that mean nothing beside what else their entry states, and how often that is so."""
     batteries = [source for source in plan.sources if isinstance(source, Battery)]
+    timed: list[Load | Charger] = [*plan.loads, *(one for one in plan.sources if isinstance(one, Charger))]
     fixed = {battery.name for battery in batteries if battery.emf is not None}
     placed = {battery.at for battery in batteries}
     placed |= {run.from_point if one.end == "from" else run.to_point for run in plan.runs for one in run.protections}
@@ -55,6 +40,9 @@ def _conditional(plan: Plan) -> dict[str, int]:
             if run.resistance is not None
         ),
         "take_off without link": sum("take_off" in one.model_fields_set and one.link is None for one in batteries),
+        "hours_per_day beside a schedule": sum(
+            bool(one.schedule) and one.hours_per_day is not None for one in timed
+        ),
         "recovery without cut_out": sum(one.recovery is not None and one.cut_out is None for one in plan.loads),
         "surge of loads that no case names, for volts and drop": sum(
             load.surge is not None and not any(load.name in case.surge for case in plan.checked_cases)
