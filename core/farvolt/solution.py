@@ -1,6 +1,7 @@
 """A solved case read back in the plan's own words: volts at points, currents in runs, drops of loads."""
 
 from collections import deque
+from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -239,16 +240,20 @@ class Solution:
     def _number(self, value: float) -> float | None:
         return float(value) if self.state.solved and np.isfinite(value) else None
 
-    def _points(self) -> list[PointResult]:
-        base = self._base_V
-        found = []
-        for name in self.network.plan.point_names:
-            feed = self.state.volts[self.network.feed(name)] - base
-            back = self.state.volts[self.network.ret(name)] - base
-            joined = self.supply.group[self.network.feed(name)] == self.supply.group[self.network.ret(name)]
-            volts = feed - back if joined else np.nan
-            found.append(PointResult(name, self._number(feed), self._number(back), self._number(volts)))
-        return found
+    def _numbers(self, values: Floats) -> list[float | None]:
+        """As `_number`, of many."""
+        if not self.state.solved:
+            return [None] * len(values)
+        finite = np.isfinite(values).tolist()
+        return [value if known else None for value, known in zip(values.tolist(), finite, strict=True)]
+
+    def _points(self) -> Iterator[PointResult]:
+        names, network, group = self.network.plan.point_names, self.network, self.supply.group
+        feed = np.array([network.feed(name) for name in names], dtype=np.int64)
+        back = np.array([network.ret(name) for name in names], dtype=np.int64)
+        feed_V, back_V = self.state.volts[feed] - self._base_V, self.state.volts[back] - self._base_V
+        volts = np.where(group[feed] == group[back], feed_V - back_V, np.nan)
+        return map(PointResult, names, self._numbers(feed_V), self._numbers(back_V), self._numbers(volts))
 
     @property
     def _base_V(self) -> float:
@@ -283,24 +288,21 @@ class Solution:
             )
         return found
 
-    def _runs(self, ampacities: list[float | None]) -> list[RunResult]:
-        feed_A, return_A = self.run_amps(FEED), self.run_amps(RETURN)
-        feed_at, return_at = self.run_branches
-        found = []
-        for index, run in enumerate(self.network.plan.runs):
-            feed_ohm = float(self.ohm[feed_at[index]]) if feed_at[index] >= 0 else None
-            return_ohm = float(self.ohm[return_at[index]]) if return_at[index] >= 0 else None
-            parts = [(feed_A[index], feed_ohm, 1.0), (return_A[index], return_ohm, -1.0)]
-            there = [(amps, ohm, sign) for amps, ohm, sign in parts if ohm is not None]
-            drop = sum(sign * amps * ohm for amps, ohm, sign in there) if there else np.nan
-            loss = sum(amps**2 * ohm for amps, ohm, _ in there) if there else np.nan
-            found.append(
-                RunResult(
-                    run.name, self._number(feed_A[index]), self._number(return_A[index]), feed_ohm, return_ohm,
-                    self._number(drop), self._number(loss), float(self.conductors.degC[index]), ampacities[index],
-                )
-            )  # fmt: skip
-        return found
+    def _runs(self, ampacities: list[float | None]) -> Iterator[RunResult]:
+        drop, loss = np.zeros((2, len(ampacities)))
+        amps, ohms = [], []
+        for pole, sign in ((FEED, 1.0), (RETURN, -1.0)):
+            places, through = self.run_branches[pole], self.run_amps(pole)
+            there, ohm = places >= 0, self.ohm[places] if len(self.ohm) else np.zeros(len(places))
+            drop += np.where(there, sign * through * ohm, 0.0)
+            loss += np.where(there, through**2 * ohm, 0.0)
+            amps.append(self._numbers(through))
+            ohms.append([value if known else None for value, known in zip(ohm.tolist(), there.tolist(), strict=True)])
+        none = (self.run_branches[FEED] < 0) & (self.run_branches[RETURN] < 0)
+        drop[none], loss[none] = np.nan, np.nan
+        names = [run.name for run in self.network.plan.runs]
+        degC = self.conductors.degC.tolist()
+        return map(RunResult, names, *amps, *ohms, self._numbers(drop), self._numbers(loss), degC, ampacities)
 
     def _strings(self) -> list[StringResult]:
         plan, first = self.network.plan, len(self.network.plan.sources)
@@ -329,19 +331,12 @@ class Solution:
             found.append(DeviceResult(device.name, self._number(amps), self._number(drop)))
         return found
 
-    def _loads(self) -> list[LoadResult]:
-        found = []
-        for index, load in enumerate(self.network.plan.loads):
-            volts, drop = self.load_volts[index], self.load_drop_V[index]
-            amps = self.state.drawn_A[index] if self.supply.load_on[index] else 0.0
-            percent = 100 * drop / self.load_nominal_V[index]
-            found.append(
-                LoadResult(
-                    load.name, self._number(volts), self._number(amps), self._number(np.nan_to_num(volts) * amps),
-                    self._number(drop), self._number(percent),
-                )
-            )  # fmt: skip
-        return found
+    def _loads(self) -> Iterator[LoadResult]:
+        names = [load.name for load in self.network.plan.loads]
+        on, volts, drop = self.supply.load_on[: len(names)], self.load_volts, self.load_drop_V
+        amps = np.where(on, self.state.drawn_A[: len(names)], 0.0)
+        values = volts, amps, np.nan_to_num(volts) * amps, drop, 100 * drop / self.load_nominal_V
+        return map(LoadResult, names, *map(self._numbers, values))
 
 
 __all__ = ["BOND", "Solution", "Step"]
