@@ -114,24 +114,6 @@ def test_a_case_that_gives_way_leaves_no_number_behind() -> None:
     assert rows[0]["Case"] == schedule.NO_NUMBER
 
 
-def test_purchases_list_every_kind_once(bench: Study) -> None:
-    """Feed and return of different sizes are bought apart; a colour of a return alone is the return's."""
-    kinds = {(one.size, one.colour) for one in schedule.purchases(schedule.cables(bench))}
-    assert kinds == {("6 mm2", "red"), ("10 mm2", "black"), (bench.interim["tap"].name, "red"), ("16 mm2", "green")}
-
-
-def test_a_measured_cable_is_bought_too_and_capitals_are_no_other_colour() -> None:
-    """Without a size the metres are still listed; "Red" and "red" are one."""
-    runs = [
-        cable("known", "bank", "a", "3 m", "4 mm2", colour="Red"), cable("like it", "a", "b", "3 m", "4 mm2"),
-        cable("measured", "bank", "c", "4 m", None, resistance="12 mohm"),
-    ]  # fmt: skip
-    found = schedule.purchases(schedule.cables(study(plan_of(runs))))
-    assert [(one.size, one.colour) for one in found] == [
-        ("", "black"), ("", "red"), ("4 mm2", "black"), ("4 mm2", "Red"),
-    ]  # fmt: skip
-
-
 def test_currents_that_flow_the_same_way_take_from_each_other() -> None:
     """Feeds and returns of a mesh close different rings. Kirchhoff: drop = I·R of the feed less I·R of the return."""
     runs = [

@@ -57,6 +57,22 @@ def test_every_metre_of_every_conductor_is_bought() -> None:
     assert lines(found, "wire label")[0].quantity == 2 * 6
 
 
+def test_a_measured_cable_is_bought_too_and_capitals_are_no_other_colour() -> None:
+    """Without a size the metres are still listed; "Red" and "red" are one; a free size is bought as the interim one."""
+    runs = [
+        cable("known", "bank", "a", "3 m", "4 mm2", colour="Red"), cable("like it", "a", "b", "3 m", "4 mm2"),
+        cable("measured", "bank", "c", "4 m", None, resistance="12 mohm"), cable("free", "c", "d", "1 m", None),
+    ]  # fmt: skip
+    found = study(plan_of(runs))
+    kinds = [(one.kind.size_name, one.kind.colour, one.needed_m) for one in shopping.of_study(found).cables]
+    free = found.interim["free"].name
+    assert kinds == [
+        ("", "black", 4), ("", "red", 4), (free, "black", 1), (free, "red", 1),
+        ("4 mm2", "black", 6), ("4 mm2", "Red", 6),
+    ]  # fmt: skip
+    assert lines(shopping.of_study(found), "cable by the metre")[0].size == "size not stated"
+
+
 def test_spare_is_added_to_every_piece() -> None:
     """10 % on 3.33 m is 3.663 m, cut at 3.67 m; needed stays what it is."""
     (red, black) = list_of(plan_of([cable("feed", "bank", "a", "3.33 m")]), spare=0.1).cables

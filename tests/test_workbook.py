@@ -6,6 +6,7 @@ import re
 import shutil
 import subprocess
 import zipfile
+from collections import defaultdict
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -16,18 +17,20 @@ from openpyxl.formula.translate import Translator
 from openpyxl.workbook import Workbook
 from openpyxl.worksheet.worksheet import Worksheet
 
-from farvolt import examples, planfile
+from farvolt import examples, planfile, price_file, shopping
 from farvolt.plan import Plan
 from farvolt.results import Study
+from farvolt.shopping import CablePiece, Wanted
 from farvolt.study import study
-from farvolt_app import schedule, workbook
+from farvolt_app import schedule, shopping_rows, workbook
 from farvolt_app.sheet_cables import LETTERS
+from farvolt_app.sheet_shopping import NEEDED, TO_BUY
 from farvolt_app.sheets import FIRST, HEADING_ROW
 from strategies import plan_of as drafted
 from strategies import random_draft
 from wiring import CLASS_5_OHM_PER_KM, cable, fuse, lamp, plan_of
 
-SHEETS = ["Cables", "Loads", "Protection", "Shopping", "Findings", "Assumptions", "Ways"]
+SHEETS = ["Cables", "Loads", "Protection", "Shopping", "Cut list", "Findings", "Assumptions", "Ways"]
 AT_20: dict[str, Any] = {"conductor_temperature": "20 degC"}
 RANDOM_PLANS = 12
 
@@ -149,7 +152,34 @@ def sorted_otherwise(book: Workbook) -> None:
         upside_down(book[title])
 
 
-EDITS = {"longer": longer, "recoloured": recoloured, "sorted": sorted_otherwise}
+def own_price(book: Workbook) -> None:
+    """A price of one's own for the labels."""
+    sheet = book["Shopping"]
+    row = column(sheet, "Item").index("wire label") + FIRST
+    sheet.cell(row, place(sheet, "Unit price (own currency)")).value = 0.25
+
+
+EDITS = {"longer": longer, "recoloured": recoloured, "sorted": sorted_otherwise, "own price": own_price}
+
+PRICED = {
+    "priced": Wanted(prices=price_file.example()),
+    "priced without spare": Wanted(0.0, price_file.example()),
+    "reels": Wanted(reels_m=(5.0, 25.0)),
+}
+"""Ways to make the shopping list of the van."""
+
+
+def needs(sheet: Worksheet) -> defaultdict[str, list[float]]:
+    """What is needed of each item, line by line."""
+    found: defaultdict[str, list[float]] = defaultdict(list)
+    for item, needed in zip(column(sheet, "Item"), column(sheet, NEEDED), strict=True):
+        found[item].append(needed)
+    return found
+
+
+def pieces(found: Study) -> list[CablePiece]:
+    """Every conductor that the shopping list has."""
+    return [piece for one in shopping.of_study(found).cables for piece in one.pieces]
 
 
 @pytest.fixture(scope="module")
@@ -164,6 +194,11 @@ def calculated(studies: dict[str, Study], tmp_path_factory: pytest.TempPathFacto
     folder = tmp_path_factory.mktemp("office")
     data = {name: workbook.to_bytes(one) for name, one in studies.items()}
     data |= {name: edited(change) for name, change in EDITS.items()}
+    van = studies["instrument-repair-van"]
+    data |= {name: workbook.to_bytes(van, wanted) for name, wanted in PRICED.items()}
+    cuts = opened(data["priced"])
+    upside_down(cuts["Cut list"])
+    data["sorted cuts"] = saved(cuts)
     data["sorted van"] = edited(sorted_otherwise, "instrument-repair-van")
     files = {name: folder / f"{number}.xlsx" for number, name in enumerate(data)}
     for name, file in files.items():
@@ -205,10 +240,12 @@ class TestCalculated:
     def test_shopping_adds_up(self, name: str, studies: dict[str, Study], calculated: dict[str, Workbook]) -> None:
         """Metres by kind sum to all conductors, pieces to all protection; nothing is left out or counted twice."""
         sheet = calculated[name]["Shopping"]
-        rows = list(zip(column(sheet, "Unit"), column(sheet, "Needed"), strict=True))
-        metres, pieces = (sum(need for unit, need in rows if unit == wanted) for wanted in ("m", "pieces"))
-        assert metres == pytest.approx(sum(one.total_m for one in schedule.cables(studies[name])), abs=1e-6)
-        assert pieces == len(schedule.protections(studies[name]))
+        needed = needs(sheet)
+        links_m = sum(one.conductor.length_m for one in pieces(studies[name]) if one.conductor.run is None)
+        metres = sum(one.total_m for one in schedule.cables(studies[name])) + links_m
+        assert sum(needed["cable"]) == pytest.approx(metres, abs=1e-6)
+        guards = schedule.protections(studies[name])
+        assert sum(needed["fuse"] + needed["breaker"]) == len(guards)
         assert sheet["F3"].value == 0
 
     @pytest.mark.parametrize("name", PLANS)
@@ -233,8 +270,7 @@ class TestCalculated:
         lines = schedule.loads(again, cables)
         assert column(book["Loads"], "Drop (V)") == pytest.approx([one.drop_V for one in lines], abs=1e-6)
         assert column(book["Cables"], "Drop (V)") == pytest.approx([one.drop_V for one in cables], abs=1e-6)
-        units, needed = column(book["Shopping"], "Unit"), column(book["Shopping"], "Needed")
-        metres = [need for unit, need in zip(units, needed, strict=True) if unit == "m"]
+        metres = needs(book["Shopping"])["cable"]
         assert sum(metres) == pytest.approx(sum(one.total_m for one in cables), abs=1e-6)
         assert sum(metres) == pytest.approx(2 * 12.5 + 2 * 5 + 2 + 4)
 
@@ -245,6 +281,26 @@ class TestCalculated:
                 moved, kept = (by_name(calculated[one][title], name, "Drop (V)") for one in (after, before))
                 assert list(moved) == list(reversed(kept))
                 assert moved == pytest.approx(kept, abs=1e-9)
+
+    def test_the_total_is_that_of_the_list_and_follows_a_price(
+        self, studies: dict[str, Study], calculated: dict[str, Workbook]
+    ) -> None:
+        """Sums of quantity times price; a price of one's own written in, 4 labels at 0.25 each, is in the total."""
+        for name, wanted in PRICED.items():
+            bill = shopping.of_study(studies["instrument-repair-van"], wanted)
+            sheet = calculated[name]["Shopping"]
+            assert sheet["M2"].value == pytest.approx(bill.total, abs=1e-6)
+            assert sheet["M3"].value == bill.without_price
+        assert calculated["own price"]["Shopping"]["M2"].value == pytest.approx(0.25 * 2 * 6)
+        assert calculated["tree"]["Shopping"]["M2"].value == 0
+
+    def test_cuts_leave_what_the_list_says(self, studies: dict[str, Study], calculated: dict[str, Workbook]) -> None:
+        """Reel by reel; the last cut leaves the offcut, and a sorted sheet says the same of each cut."""
+        bill = shopping.of_study(studies["instrument-repair-van"], PRICED["priced"])
+        expected = [cut.left_m for cut in shopping_rows.cuts(bill)]
+        assert any(left > 0 for left in expected)
+        for name, values in (("priced", expected), ("sorted cuts", expected[::-1])):
+            assert column(calculated[name]["Cut list"], "Left on it (m)") == pytest.approx(values, abs=1e-6)
 
     def test_a_colour_out_of_the_list_is_not_lost_unseen(self, calculated: dict[str, Workbook]) -> None:
         """5 m of return were black and are yellow: no row counts them, and the sheet says so."""
@@ -309,7 +365,8 @@ def test_drops_totals_and_percentages_are_formulas(van: bytes) -> None:
         "Cables": ("Length one way (ft)", "All conductors (m)", "Drop (V)", "Drop (%)", "Loss (W)", "Used (%)"),
         "Loads": ("Drop (V)", "Drop (%)", "Load (V)"),
         "Protection": ("Used (%)",),
-        "Shopping": ("Needed", "With spare"),
+        "Shopping": (TO_BUY,),
+        "Cut list": ("Cut to (ft)", "Left on it (m)"),
         "Ways": ("Drop (V)",),
     }.items():
         for heading in headings:
@@ -388,7 +445,7 @@ def test_a_free_size_is_to_be_chosen_and_counted() -> None:
     book = opened(workbook.to_bytes(found))
     name = found.interim["lead"].name.replace("mm2", "mm²")
     assert column(book["Cables"], "Size") == [f"{name}, to be chosen"]
-    assert column(book["Shopping"], "Size or rating") == [name, name]
+    assert column(book["Shopping"], "Size or rating")[:2] == [name, name]
 
 
 def test_a_plan_of_nothing_but_a_bank_has_all_sheets() -> None:

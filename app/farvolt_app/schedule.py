@@ -1,4 +1,4 @@
-"""The cable schedule as rows: a study's cables, loads, protection and purchases, for a table, a CSV or a workbook.
+"""The cable schedule as rows: a study's cables, loads and protection, for a table, a CSV or a workbook.
 
 Full precision; text as in the plan. What a run is bought as (lengths, sizes, colours) stands beside what it is
 solved as (resistances, currents of the case where its drop is largest). In the CSV, text that a spreadsheet would
@@ -12,15 +12,12 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
-from farvolt import conductors, network
+from farvolt import cable_kinds, conductors, network
 from farvolt.conductors import Size, other_system
 from farvolt.plan import Protection, Run
 from farvolt.results import CaseResult, RunResult, Step, Study
 from farvolt.units import feet
 from farvolt_app.textsafe import csv_text
-
-COLOURS = {"feed": "red", "return": "black"}
-"""Colour by polarity where the plan states none (common practice; yellow for the return is common in small craft)."""
 
 NO_NUMBER = "no answer: the case gives way, or it is not fed"
 OFF = "off in every case"
@@ -49,6 +46,7 @@ class Cable:
     feed: Conductor
     back: Conductor
     parallel: int
+    strand: str
     insulation_degC: float
     protection: str
     nominal_V: float
@@ -90,14 +88,13 @@ def _cable(study: Study, index: int, run: Run) -> Cable:
     sign = -1.0 if (result.drop_V or 0.0) < 0 else 1.0
     feed_A = None if result.feed_A is None else sign * result.feed_A
     back_A = None if result.return_A is None else -sign * result.return_A
-    # A colour that the plan states is that of the feed, unless the run is a return alone.
-    stated = (None, run.colour) if run.conducts == "return" else (run.colour, None)
-    colours = stated[0] or COLOURS["feed"], stated[1] or COLOURS["return"]
+    colours = cable_kinds.colours(run, study.rulebook)
     return Cable(
         run=run,
         feed=_conductor(sized, "feed", feed_m, sized.size, colours[0], result.feed_ohm, feed_A),
         back=_conductor(sized, "return", back_m, network.return_size(sized), colours[1], result.return_ohm, back_A),
         parallel=run.parallel,
+        strand=network.strand(run, study.rulebook),
         insulation_degC=network.insulation_degC(run, study.rulebook),
         protection="; ".join(_protection_text(run, one) for one in run.protections),
         nominal_V=study.nominal_V.get(run.to_point, study.plan.plan.nominal.si),
@@ -241,31 +238,6 @@ def _largest(study: Study, index: int, pole: str) -> float | None:
 
 def _most(*values: float | None) -> float | None:
     return max((value for value in values if value is not None), default=None)
-
-
-@dataclass(frozen=True, slots=True)
-class Purchase:
-    """One kind of cable to buy; `size` is empty where the plan states a measured resistance alone."""
-
-    size: str
-    material: str
-    insulation_degC: float
-    colour: str
-    kg_per_m: float | None
-
-
-def purchases(found: Sequence[Cable]) -> list[Purchase]:
-    """What the cables are bought as: each kind that occurs, thinnest first. Capitals make no other colour."""
-    kinds: dict[tuple[Any, ...], Purchase] = {}
-    for cable in found:
-        for one in (cable.feed, cable.back):
-            if one.length_m:
-                area, name = (one.size.area_mm2, one.size.name) if one.size else (0.0, "")
-                key = (area, name, cable.run.material, cable.insulation_degC, one.colour.casefold())
-                mass = conductors.mass_kg_per_m(one.size, cable.run.material) if one.size else None
-                bought = Purchase(name, cable.run.material, cable.insulation_degC, one.colour, mass)
-                kinds.setdefault(key, bought)
-    return [kinds[key] for key in sorted(kinds)]
 
 
 def size_text(cable: Cable) -> str:

@@ -29,7 +29,8 @@ COLUMNS = (
     Column("Return colour", 9, input=True), Column("Protection", 27), Column("Design current (A)", 9, "0.00"),
     Column("Ampacity (A)", 9.5, "0.0"), Column("Used (%)", 7.5, "0"), Column("Drop (V)", 8, "0.000"),
     Column("Drop (%)", 7.5, "0.00"), Column("Loss (W)", 7.5, "0.00"), Column("Mark", 11),
-    Column("Case of the drop", 30, printed=False), Column("Nominal (V)", 9, "0.0", printed=False),
+    Column("Strand", 10, printed=False), Column("Case of the drop", 30, printed=False),
+    Column("Nominal (V)", 9, "0.0", printed=False),
     Column("Conductor (°C)", 10, "0.0", printed=False), Column("Current in other cases (A)", 11, "0.00", printed=False),
     Column("Feed size", 11, printed=False), Column("Feed length (m)", 9, "0.00", printed=False),
     Column("Feed current (A)", 9, "0.00", input=True, printed=False),
@@ -100,7 +101,7 @@ def _row(cable: Cable, number: int) -> list[Any]:
         of("=100*[Drop (V)]/[Nominal (V)]", solved),
         of("=([Feed current (A)]^2*[Feed in all (mΩ)]+[Return current (A)]^2*[Return in all (mΩ)])/1000", solved),
         of(f'=IF([Design current (A)]>[Ampacity (A)],"{OVER}","")', rated) or ("" if solved else "no answer"),
-        cable.case, cable.nominal_V, cable.conductor_degC, _elsewhere(cable),
+        cable.strand, cable.case, cable.nominal_V, cable.conductor_degC, _elsewhere(cable),
         *_pole(cable.feed, "Feed", row, run.length.si), *_pole(cable.back, "Return", row, run.length.si),
     ]  # fmt: skip
 

@@ -12,27 +12,29 @@ from typing import Any, BinaryIO
 from openpyxl import Workbook
 from openpyxl.worksheet.worksheet import Worksheet
 
+from farvolt import cable_kinds, shopping
 from farvolt.planfile import write_whole
 from farvolt.results import Study
-from farvolt_app import schedule, sheet_cables
-from farvolt_app.schedule import Cable, LoadLine, ProtectionLine, Purchase
-from farvolt_app.sheet_cables import FOOT_M, HELD, OVER, live, of_number, pretty, size_key
-from farvolt_app.sheets import FIRST, Column, Formula, Header, fill, letters, mark_where, setting
+from farvolt.shopping import Wanted
+from farvolt_app import schedule, sheet_cables, sheet_shopping
+from farvolt_app.schedule import LoadLine, ProtectionLine
+from farvolt_app.sheet_cables import FOOT_M, HELD, OVER, live, of_number, pretty
+from farvolt_app.sheets import FIRST, Column, Formula, Header, fill, letters, mark_where
 from farvolt_app.shown import CAUTION, SEVERITIES
 from farvolt_app.textsafe import cell_text
 
 
-def write(study: Study, path: Path | BinaryIO) -> None:
+def write(study: Study, path: Path | BinaryIO, wanted: Wanted | None = None) -> None:
     """Write the workbook to a file, whole or not at all, or to a stream. Raises OSError."""
-    data = to_bytes(study)
+    data = to_bytes(study, wanted)
     if isinstance(path, Path):
         write_whole(path, data)
     else:
         path.write(data)
 
 
-def to_bytes(study: Study) -> bytes:
-    """The whole workbook as a file's content."""
+def to_bytes(study: Study, wanted: Wanted | None = None) -> bytes:
+    """The whole workbook as a file's content; `wanted` says how its shopping list is to be made."""
     book = Workbook()
     book.remove(book.active)
     plan = study.plan.plan.name
@@ -43,7 +45,9 @@ def to_bytes(study: Study) -> bytes:
     sheet_cables.write(book.create_sheet(sheet_cables.TITLE), plan, found, note)
     _loads(book.create_sheet("Loads"), plan, lines, note)
     _protection(book.create_sheet("Protection"), plan, guards, note)
-    _shopping(book.create_sheet("Shopping"), plan, found, guards)
+    bill = shopping.of_study(study, wanted)
+    sheet_shopping.write_list(book.create_sheet("Shopping"), plan, bill, found, guards, _P)
+    sheet_shopping.write_cuts(book.create_sheet("Cut list"), plan, bill)
     _findings(book.create_sheet("Findings"), plan, study)
     _assumptions(book.create_sheet("Assumptions"), plan, study)
     _ways(book.create_sheet("Ways"), plan, lines, len(found))
@@ -170,65 +174,6 @@ def _protection_row(line: ProtectionLine, number: int) -> list[Any]:
     ]  # fmt: skip
 
 
-SHOPPING = (
-    Column("Item", 31), Column("Size or rating", 15), Column("Material or type", 22),
-    Column("Insulation (°C)", 11, "0"), Column("Colour", 12), Column("Needed", 11, "0.00"),
-    Column("With spare", 11, "0.00"), Column("Unit", 8), Column("With spare (ft)", 11, "0.0"),
-    Column("Metal (kg)", 11, "0.000"),
-)  # fmt: skip
-_S = letters(SHOPPING)
-_SPARE = "$F$2"
-
-
-def _shopping(sheet: Worksheet, plan: str, found: Sequence[Cable], guards: Sequence[ProtectionLine]) -> None:
-    rows = [_cable_total(kind, FIRST + place, len(found)) for place, kind in enumerate(schedule.purchases(found))]
-    pieces = sorted({(line.protection.type, line.protection.rating.si) for line in guards})
-    rows += [_piece_total(one, FIRST + len(rows) + place, len(guards)) for place, one in enumerate(pieces)]
-    fill(sheet, Header(plan, "shopping", "Totals of the sheets Cables and Protection. No prices."), SHOPPING, rows)
-    for row in range(FIRST + len(rows) - len(pieces), FIRST + len(rows)):
-        for heading in ("Needed", "With spare"):
-            sheet[f"{_S[heading]}{row}"].number_format = "0"
-    setting(sheet, "E2", "Spare on cable:", "F2", 0.1, "0 %")
-    last = FIRST + max(len(rows), 1) - 1
-    all_m = sheet_cables.column("All conductors (m)", len(found))
-    counted = f'SUMIFS($F${FIRST}:$F${last},$H${FIRST}:$H${last},"m")'
-    missing = Formula(f"=ROUND(SUM({all_m})-{counted},6)")
-    setting(sheet, "E3", "Cable in no row below, after a change of colour (m):", "F3", missing, "0.00")
-
-
-def _cable_total(kind: Purchase, row: int, cables: int) -> list[Any]:
-    """Length of one kind of cable: the feed conductors of that size and colour, and the return conductors."""
-
-    def cells(heading: str) -> str:
-        return sheet_cables.column(heading, cables)
-
-    # SUMPRODUCT compares text as it is; SUMIFS would read * and > in a colour as its own signs.
-    kinds = f"({cells('Material')}=[Material or type])*({cells('Insulation (°C)')}=[Insulation (°C)])"
-    poles = "+".join(
-        f"({cells(f'{pole} size')}=[Size or rating])*({cells(f'{pole} colour')}=[Colour])*{cells(f'{pole} length (m)')}"
-        for pole in ("Feed", "Return")
-    )
-    mass = f"=[With spare]*{kind.kg_per_m:.9g}" if kind.kg_per_m is not None else None
-    return [
-        "cable", size_key(kind.size), kind.material, kind.insulation_degC, kind.colour,
-        live(_S, row, f"=SUMPRODUCT({kinds}*{cells('Parallel')}*({poles}))"),
-        live(_S, row, f"=[Needed]*(1+{_SPARE})"), "m", live(_S, row, f"=[With spare]/{FOOT_M}"),
-        live(_S, row, mass) if mass else None,
-    ]  # fmt: skip
-
-
-def _piece_total(piece: tuple[str, float], row: int, guards: int) -> list[Any]:
-    kind, rating = piece
-    types, ratings = (
-        f"Protection!${_P[heading]}${FIRST}:${_P[heading]}${FIRST + guards - 1}" for heading in ("Type", "Rating (A)")
-    )
-    total = f"=SUMPRODUCT(({types}=[Material or type])*({ratings}={rating:.12g}))"
-    return [
-        "fuse or breaker, with holder", f"{rating:g} A", kind, None, "", live(_S, row, total),
-        live(_S, row, "=[Needed]"), "pieces", None, None,
-    ]  # fmt: skip
-
-
 FINDINGS = (
     Column("Severity", 11), Column("Rule", 22), Column("Subject", 20), Column("Case", 22), Column("Message", 46),
     Column("Value", 9, "0.000"), Column("Limit", 9, "0.000"), Column("Unit", 7), Column("Remedy", 36),
@@ -252,11 +197,12 @@ def _findings(sheet: Worksheet, plan: str, study: Study) -> None:
 def _assumptions(sheet: Worksheet, plan: str, study: Study) -> None:
     book, info = study.rulebook, study.plan.plan
     not_held = _not_held(study)
+    colours = cable_kinds.default_colours(book.name)
     rows = [
         ["Caution", CAUTION],
         ["Caution", "Fuse every cable at its source, work with the bank disconnected, and cover its terminals."],
-        ["Caution", "Colours are a default from common practice (red feed, black return; in small craft yellow is "
-                    "common for the return). Change them to what your code asks for."],
+        ["Caution", f"Colours where the plan states none: {colours[0]} feed, {colours[1]} return ({colours[2]}; "
+                    "provisional). Change them to what your code asks for."],
         ["Caution", "~ marks the nearest gauge, which may be thinner. In its place take the next thicker one, or "
                     "change the size in the plan and check again."],
         *([["Caution", not_held]] if not_held else []),
