@@ -321,7 +321,8 @@ def bank(plan: str, as_json: bool, day: str | None, working: bool, output: str |
 
 @main.command()
 @click.argument("plan")
-@click.option("--from", "start", type=click.DateTime(["%Y-%m-%d"]), help="First day; 1 December (south: June) unless given.")
+@click.option("--from", "start", type=click.DateTime(["%Y-%m-%d"]),
+              help="First day; 1 December (south: June) unless given.")  # fmt: skip
 @click.option("--days", "count", default=14, show_default=True, help="How many days.")
 @click.option("--step", "step_min", default=60, show_default=True, help="Minutes of a step, 1 to 60.")
 @click.option("--start-charge", help='Charge of the banks at the start, such as "90 %"; as the plan says unless given.')
@@ -423,6 +424,28 @@ def draw(plan: str, output: str, case_name: str | None, paper: str, units: str) 
 @main.command()
 @click.argument("plan")
 @click.option("--output", "-o", required=True, help="File to write: .pdf.")
+@_PAPER
+@_UNITS
+def report(plan: str, output: str, paper: str, units: str) -> None:
+    """Write everything about PLAN into one PDF to hand over, legible in black and white.
+
+    Cover and summary, drawing, cable schedule, shopping and cut lists, protection with time-current charts of runs that
+    have findings, loads, bank, findings with their working, assumptions and sources. A file of that name that is there
+    already is kept as NAME.previous.
+    """
+    from farvolt_app import paper_commands
+
+    paper_commands.suffix_of(output, (".pdf",))
+    _refuse_plan(plan, output)
+    found = _studied(plan, margins=False)
+    with _progress("Writing the report"):
+        data = paper_commands.report(found, paper, units)
+    _write_beside(plan, output, data)
+
+
+@main.command()
+@click.argument("plan")
+@click.option("--output", "-o", required=True, help="File to write: .pdf.")
 @click.option("--size", default="62x12mm", show_default=True, help="Width x height of a label: 62x12mm, 2.5x0.5in.")
 @click.option("--sheet", is_flag=True, help="As many labels as fit on sheets of paper, with lines to cut along.")
 @click.option("--paper", type=click.Choice(["a4", "letter"]), help="Paper of the sheets; implies --sheet.")
@@ -445,15 +468,45 @@ def labels(plan: str, output: str, size: str, sheet: bool, paper: str | None) ->
 
 @main.command()
 @click.argument("file")
-def new(file: str) -> None:
-    """Write a commented starter plan to FILE; - writes it to standard output."""
+@click.option("--load", "loads", multiple=True, metavar="APPLIANCE=LENGTH",
+              help="An appliance and its cable's length one way, such as \"water pump=3 m\"; again for each.")
+@click.option("--name", default="My plan", show_default=True, help="Name of the plan.")
+@click.option("--volts", type=click.Choice(["12", "24", "48"]), default="12", show_default=True, help="System voltage.")
+@click.option("--rulebook", default="leisure-vehicle-eu", show_default=True, help="Limits to hold the plan against.")
+@click.option("--chemistry", default="lfp", show_default=True, help="Of the battery: lfp, agm, gel, flooded, nmc.")
+@click.option("--capacity", default="100 Ah", show_default=True, help="Of the battery bank.")
+@click.option("--short-circuit", default="", help="Short-circuit current of the battery, from its data sheet.")
+@click.option("--bank-length", default="1 m", show_default=True, help="Cable from the battery to the fuse block.")
+@click.option("--alternator", default="", help="Current of the charger at the alternator, such as \"30 A\".")
+@click.option("--mains", default="", help="Current of the mains charger, such as \"20 A\".")
+@click.option("--solar", default="", help="Power of the solar modules, such as \"200 W\".")
+def new(file: str, loads: tuple[str, ...], **answers: str) -> None:
+    """Write a plan to start from to FILE; - writes it to standard output.
+
+    Without --load it is a short commented plan. With it, once for each appliance, a complete first plan with cables and
+    fuses chosen. The appliances known are listed when one is not.
+    """
     from farvolt import examples, planfile
 
+    text = _guided(loads, answers) if loads else examples.starter_text()
     if file == planfile.STDIN:
-        _print_whole(examples.starter_text())
+        _print_whole(text)
         return
-    planfile.save(Path(file), examples.starter_text(), expected=None)
+    planfile.save(Path(file), text, expected=None)
     click.echo(f"Wrote {file}. Next: farvolt check {file}", err=True)
+
+
+def _guided(loads: tuple[str, ...], given: dict[str, str]) -> str:
+    from farvolt.first_plan import Answers, Wanted, first_plan
+
+    wanted = []
+    for one in loads:
+        appliance, equals, length = one.partition("=")
+        if not equals:
+            raise click.BadParameter(f'"{one}" has no length; accepted: "water pump=3 m"', param_hint="--load")
+        wanted.append(Wanted(appliance.strip(), length.strip()))
+    volts, length = int(given.pop("volts")), given.pop("bank_length")
+    return first_plan(Answers(nominal_V=volts, bank_distance=length, loads=tuple(wanted), **given))
 
 
 @main.command("examples")

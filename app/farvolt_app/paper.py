@@ -39,6 +39,9 @@ NO_GLYPH = "□"
 """Stands for a letter that the typeface lacks: it has Latin, Greek, Cyrillic, Armenian, Hebrew and Arabic."""
 
 _FILES = ("DejaVuSansCondensed.ttf", "DejaVuSansCondensed-Bold.ttf")
+_PAGES = "\ue000" * 4
+"""Stands for the number of pages until they are all there: of private use, so `clean` never leaves one in a text."""
+
 _POINT_MM = 25.4 / 72
 _LEADING = 1.28
 
@@ -68,6 +71,7 @@ class Document(FPDF):
         self.paper, self.foot = paper, clean(foot)
         for style, name in zip(("", "B"), _FILES, strict=True):
             self.add_font(FACE, style, FONTS / name)
+        self.alias_nb_pages(_PAGES)
         self.set_auto_page_break(False)
         self.set_margin(MARGIN_MM)
         self.c_margin = 0.0
@@ -108,7 +112,7 @@ class Document(FPDF):
         # Never shaped: the library puts the number of pages in afterwards.
         self.set_font(FACE, "", 8)
         self.set_xy(self.w - MARGIN_MM - 30, y)
-        self.cell(30, 4, f"page {self.page_no()} of {{nb}}", align="R")
+        self.cell(30, 4, f"page {self.page_no()} of {_PAGES}", align="R")
 
     # Text ------------------------------------------------------------------------------------------------------------
 

@@ -47,6 +47,14 @@ def foot(study: Study, day: date) -> str:
     return f"{study.plan.plan.name} · {day.isoformat()}"
 
 
+def report(study: Study, paper: str, units: str) -> bytes:
+    """The report, of today."""
+    from farvolt_app import report_file
+    from farvolt_app.paper import PAPERS
+
+    return report_file.pdf(study, PAPERS[paper], "american" if units == "american" else "metric", date.today())
+
+
 def label_size(text: str) -> "LabelSize":
     """The size of a label; refuses what is none."""
     from farvolt.errors import FarvoltError

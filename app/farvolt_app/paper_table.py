@@ -6,10 +6,10 @@ from typing import Literal
 
 from farvolt_app.paper import MARGIN_MM, Document, line_mm
 
-MOST_LINES = 9
+MOST_LINES = 6
 """Lines of one cell; what is longer ends with an ellipsis, so that one name cannot fill a page."""
 
-_PAD_MM = 0.9
+_PAD_MM = 1.1
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,8 +8,8 @@ from farvolt.units import number
 ROLES: dict[str, tuple[str, list[int]]] = {
     "opens at the latest": ("#b3261e", []),
     "opens at the earliest": ("#b3261e", [6, 3]),
-    "upstream at the latest": ("#3c5aa6", []),
-    "upstream at the earliest": ("#3c5aa6", [6, 3]),
+    "upstream at the latest": ("#3c5aa6", [16, 3]),
+    "upstream at the earliest": ("#3c5aa6", [6, 3, 1, 3, 1, 3]),
     "cable": ("#2b2b2b", [2, 2]),
     "load": ("#2e7d32", [10, 3, 2, 3]),
 }
@@ -48,7 +48,7 @@ def chart(picture: TimeCurrent) -> Chart:
     words = alt.Chart(marks).mark_text(angle=270, align="left", dx=6, dy=-6, color="#6b4f00").encode(
         x="amps:Q", y=alt.value(HEIGHT_PX), text="name:N"
     )  # fmt: skip
-    title = alt.Title(f"Time over current: {picture.title}", subtitle=picture.note, anchor="start")
+    title = alt.Title(f"Time over current: {picture.title}", subtitle=picture.note, anchor="start", limit=WIDTH_PX)
     return alt.layer(drawn, rules, words).properties(width=WIDTH_PX, height=HEIGHT_PX, title=title)
 
 
