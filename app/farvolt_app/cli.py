@@ -16,6 +16,7 @@ import click
 
 from farvolt import __version__
 from farvolt.errors import FarvoltError
+from farvolt_app import shopping_command
 
 if TYPE_CHECKING:
     from datetime import datetime
@@ -464,6 +465,10 @@ def labels(plan: str, output: str, size: str, sheet: bool, paper: str | None) ->
     with _progress("Setting the labels"):
         data = paper_commands.label_sheet(found, wanted, paper or ("a4" if sheet else None))
     _write_beside(plan, output, data)
+
+
+main.add_command(shopping_command.shopping)
+main.add_command(shopping_command.prices)
 
 
 @main.command()

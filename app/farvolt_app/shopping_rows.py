@@ -8,13 +8,20 @@ import csv
 import io
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any
 
+from farvolt import price_file, units
 from farvolt.cable_kinds import CableKind
-from farvolt.shopping import NO_PRICE, Bill, CablePiece
+from farvolt.errors import FarvoltError, QuantityError
+from farvolt.integrity import plain, shorten
+from farvolt.results import Study
+from farvolt.shopping import NO_PRICE, Bill, CablePiece, Wanted
 from farvolt.units import feet, number
 from farvolt.upsizing import Hint
 from farvolt_app.textsafe import csv_text
+
+MOST_SPARE = 1.0
 
 MEASURE = "Measure the way before you cut: a piece is never joined."
 
@@ -40,6 +47,27 @@ class Cut:
     piece: CablePiece
     left_m: float
     """What is then left on the reel."""
+
+
+def wanted(prices: str | None, spare: str, reels: Sequence[str] = (), *, example: bool = False) -> Wanted:
+    """How to buy, from what a person wrote: a path, a share, lengths. Raises FarvoltError."""
+    listed = price_file.example() if example else price_file.read(Path(prices)) if prices is not None else None
+    lengths = tuple(sorted({_quantity(one, "length", "the length of a reel", 0.1, 10_000) for one in reels}))
+    return Wanted(_quantity(spare, "share", "the spare", 0, MOST_SPARE), listed, lengths)
+
+
+def _quantity(text: str, dimension: str, what: str, least: float, most: float) -> float:
+    try:
+        value = units.parse(text, dimension).si
+    except QuantityError as error:
+        near = f"; did you mean {error.nearest}?" if error.nearest else ""
+        raise FarvoltError(
+            f'{what}: "{plain(shorten(text))}" {error.problem}; accepted: {error.accepted}{near}'
+        ) from None
+    if not least <= value <= most:
+        limits = "0 % to 100 %" if dimension == "share" else f"{least:g} m to {most:g} m"
+        raise FarvoltError(f'{what}: "{plain(shorten(text))}" is out of range; accepted: {limits}')
+    return value
 
 
 def cuts(bill: Bill) -> list[Cut]:
@@ -117,6 +145,12 @@ def total_text(bill: Bill) -> str:
         return "No price list is given, so there are no prices."
     lacking = f"; {bill.without_price} lines have no price" if bill.without_price else ""
     return f"Total {bill.total:.2f} {prices.currency}{lacking}. {prices.about}"
+
+
+def to_choose(study: Study) -> str:
+    """Which runs are on the list in a size that is not chosen yet, or nothing."""
+    names = ", ".join(f'"{name}"' for name in study.interim)
+    return f"Still to be chosen, and listed in the size taken meanwhile: {names}." if names else ""
 
 
 def hint_text(hint: Hint, currency: str) -> str:

@@ -208,7 +208,7 @@ def _protection_lines(plan: Plan, prices: PriceList | None) -> Iterator[Line]:
                 1,
                 "pieces",
                 price,
-                "one of each type and rating (common practice)",
+                "one of each type, common practice",
             )
     for (holder, name, amps), count in sorted(held.items()):
         price = prices.holder(name, amps) if prices is not None else None

@@ -11,6 +11,7 @@ from itertools import pairwise
 from farvolt.conductors import Size
 from farvolt.interim import with_sizes
 from farvolt.plan import Plan, ReturnConductor, Run
+from farvolt.results import Study
 from farvolt.rulebook import Rulebook
 from farvolt.shopping import Bill, bill
 
@@ -26,6 +27,11 @@ class Hint:
     present: Size
     size: Size
     saves: float
+
+
+def of_study(study: Study, present: Bill) -> list[Hint]:
+    """The hints for a study's plan, with the interim sizes of runs that state none."""
+    return hints(with_sizes(study.plan, study.interim), study.rulebook, present)
 
 
 def hints(plan: Plan, rulebook: Rulebook, present: Bill) -> list[Hint]:
