@@ -38,6 +38,17 @@ def test_every_field_of_the_file_has_its_column(sheet: Sheet) -> None:
     assert shown_fields == in_file
 
 
+@pytest.mark.parametrize(
+    ("table", "shown", "in_text"),
+    [(plan.Site, columns.SITE, {"clearness"}), (plan.Bank, columns.BANK, set())],
+    ids=["site", "bank"],
+)
+def test_tables_that_are_there_once_have_a_setting_for_each_field(
+    table: type[plan.Entry], shown: tuple[columns.Column, ...], in_text: set[str]
+) -> None:
+    assert {column.path[0] for column in shown} == set(table.model_fields) - in_text
+
+
 @pytest.mark.parametrize("sheet", columns.SHEETS, ids=lambda sheet: sheet.id)
 def test_every_column_has_a_hint_and_a_heading_of_its_own(sheet: Sheet) -> None:
     labels = [column.label for column in sheet.columns]

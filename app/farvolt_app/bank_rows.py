@@ -65,7 +65,7 @@ def charging_rows(study: BankStudy) -> list[Cells]:
         {
             "Day": one.day,
             "Needed (Wh)": one.needed_Wh,
-            "Gained (Wh)": one.gained_Wh,
+            "Can give (Wh)": one.gained_Wh,
             "Left (Wh)": one.gained_Wh - one.needed_Wh,
             "Array that covers it (W)": one.array_W,
             "Sources": "; ".join(f"{gain.source}: {gain.working}" for gain in one.gains) or "none runs",
@@ -100,7 +100,8 @@ def answer(study: BankStudy) -> list[str]:
     if sizing.days is not None:
         found.append(f"The bank of the plan lasts {number(sizing.days)} such days at the end of its life.")
     if charging.worst is not None:
-        found.append(f'The array must have {number(charging.worst.array_W or 0.0)} W for "{charging.worst.day}".')
+        array = number(charging.worst.array_W or 0.0)
+        found.append(f'Beside the chargers, an array of {array} W covers "{charging.worst.day}" by itself.')
     limit = charging.limit.limit_A
     if limit is not None:
         span = f"{number(limit.low)} to " if limit.low != limit.high else ""

@@ -345,3 +345,25 @@ POINTS = Sheet(
 
 SHEETS = (RUNS, LOADS, BATTERIES, CHARGERS, SOLAR, CONVERTERS, DEVICES, ZONES, ROUTES, POINTS)
 """All tables but the cases, in the order of the editor."""
+
+SITE = (
+    _field("latitude", "Latitude", "North of the equator; south is negative: 55.2 deg."),
+    _field("longitude", "Longitude", "East of Greenwich; west is negative: -3.5 deg."),
+    _field("time_zone", "Time zone", "By its name: Europe/Oslo."),
+    _field("albedo", "Albedo", "Share of light that the ground throws back; 20 % unless stated."),
+)
+"""The settings of the table `site`; its monthly clearness is a list, left to the text."""
+
+BANK = (
+    _field("autonomy", "Days of autonomy", "Days that the bank carries the loads alone: 2.", "number"),
+    _field("depth_of_discharge", "Depth of discharge", "At the end of those days; typical unless stated: 50 %."),
+    _field("daily_depth_of_discharge", "Daily depth", "Depth in one day, where its maker states one: 20 %."),
+    _field("ageing", "Ageing", "Capacity when new over that at the end of its life; 1.25 unless stated.", "number"),
+    _field("margin", "Margin", "For what is not foreseen; 1.1 unless stated.", "number"),
+    _field("coldest", "Coldest bank", "Lowest temperature of the battery itself: 5 degC."),
+    _field("design_day", "Design day", "Type of day it is sized for; the one that takes most unless stated.",
+           names_of="days"),
+    _field("block.nominal", "Block", "Nominal voltage of the block to build it of: 6 V."),
+    _field("block.capacity", "Block capacity", "Capacity of that block: 225 Ah."),
+)  # fmt: skip
+"""The settings of the table `bank`; a block's discharge table is left to the text."""
