@@ -255,5 +255,5 @@ def test_air_for_a_lead_bank(chemistry: str, cells: int, capacity: float, chargi
 
 
 def test_minutes_are_joined_to_periods() -> None:
-    assert duty_cycle.joined([1.0] * 30 + [2.0] * 30) == (Period(1.0, 0.5), Period(2.0, 0.5))
-    assert duty_cycle.joined([1.0]) == (Period(1.0, 1 / 60),)
+    assert duty_cycle.joined(np.repeat([1.0, 2.0], 30)) == (Period(1.0, 0.5), Period(2.0, 0.5))
+    assert duty_cycle.joined(np.ones(1)) == (Period(1.0, 1 / 60),)

@@ -8,12 +8,14 @@ loses in charging enters the charging, not its capacity: capacity is rated by wh
 import math
 from dataclasses import dataclass
 
+import numpy as np
+
 from farvolt import batteries, battery_figures, energy, operating
 from farvolt.battery_figures import Figure
 from farvolt.duty_cycle import Period, RateFactor, Sized, by_peukert, by_table, joined, sized
 from farvolt.energy import Budget
 from farvolt.feeders import TENTH
-from farvolt.network import Network
+from farvolt.network import Floats, Network
 from farvolt.plan import Battery, Block, Plan
 from farvolt.plan_types import DAY_MINUTES
 from farvolt.units import number
@@ -144,7 +146,7 @@ def peak_A(budget: Budget, nominal_V: float) -> float:
     """Largest lasting current of a day at the bank: what the times of day put together, with as much of the loads
     that are on at any time as two-column practice counts (the larger of the largest and a tenth of them)."""
     loose = [_bank_W(one) for one in budget.loads if not one.use.spans and one.use.hours > 0]
-    return (max(_timed_W(budget, running=True)) + max(max(loose, default=0.0), TENTH * sum(loose))) / nominal_V
+    return (float(_timed_W(budget, running=True).max()) + max(max(loose, default=0.0), TENTH * sum(loose))) / nominal_V
 
 
 def _bank_W(one: energy.LoadEnergy) -> float:
@@ -152,15 +154,14 @@ def _bank_W(one: energy.LoadEnergy) -> float:
     return one.watts * (one.bank_Wh / one.Wh if one.Wh else 1.0)
 
 
-def _timed_W(budget: Budget, *, running: bool) -> list[float]:
+def _timed_W(budget: Budget, *, running: bool) -> Floats:
     """Over the minutes of a day: power from the bank of loads with times of day, and all standby; `running` together,
     else at their duty."""
     idle_Wh = sum(one.standby_Wh for one in budget.loads) + sum(one.standby_Wh for one in budget.converters)
-    found = [idle_Wh / 24] * DAY_MINUTES
+    found = np.full(DAY_MINUTES, idle_Wh / 24)
     for one in budget.loads:
         for start, end in one.use.spans:
-            for minute in range(start, end):
-                found[minute] += _bank_W(one) * (1.0 if running else one.duty)
+            found[start:end] += _bank_W(one) * (1.0 if running else one.duty)
     return found
 
 
@@ -169,9 +170,9 @@ def _duty(plan: Plan, budget: Budget, terms: Terms) -> Sized:
     may come at any moment."""
     loose = [one for one in budget.loads if not one.use.spans and one.use.hours > 0]
     average_W = sum(one.bank_Wh - one.standby_Wh for one in loose) / 24
-    day = [(watts + average_W) / terms.nominal_V for watts in _timed_W(budget, running=False)]
+    day = (_timed_W(budget, running=False) + average_W) / terms.nominal_V
     whole = max(1, math.ceil(plan.bank.autonomy))
-    minutes = (day * whole)[: max(1, round(plan.bank.autonomy * DAY_MINUTES))]
+    minutes = np.tile(day, whole)[: max(1, round(plan.bank.autonomy * DAY_MINUTES))]
     random = max((Period(_bank_W(one) / terms.nominal_V, min(one.use.hours, 1.0)) for one in loose),
                  key=lambda period: period.current_A, default=None)  # fmt: skip
     return sized(joined(minutes), terms.factor, random)
@@ -225,8 +226,6 @@ def _adjusted(plan: Plan, terms: Terms, daily_Ah: float, lasting: float) -> list
 def rate_times(terms: Terms, capacity_Ah: float, current_A: float) -> tuple[float, float]:
     """What discharge at a current takes off the rated capacity, as a factor to raise it by, and the hours that the
     capacity lasts at it; 1 where it lasts for the rated hours or longer."""
-    import numpy as np
-
     if current_A <= 0:
         return 1.0, math.inf
     hours = capacity_Ah / current_A

@@ -91,7 +91,7 @@ def sized(periods: Sequence[Period], factor: RateFactor, random: Period | None =
     return Sized(tuple(found), extra)
 
 
-def joined(minutes_A: Sequence[float]) -> tuple[Period, ...]:
+def joined(minutes_A: Floats) -> tuple[Period, ...]:
     """A course of one value for each minute as periods of unchanging current."""
-    cuts = [0, *(place for place in range(1, len(minutes_A)) if minutes_A[place] != minutes_A[place - 1])]
-    return tuple(Period(minutes_A[start], (end - start) / 60) for start, end in pairwise([*cuts, len(minutes_A)]))
+    cuts = [0, *(np.flatnonzero(np.diff(minutes_A)) + 1).tolist(), len(minutes_A)]
+    return tuple(Period(float(minutes_A[start]), (end - start) / 60) for start, end in pairwise(cuts))
