@@ -46,9 +46,10 @@ def stock(text: str) -> tuple[Size, ...]:
     return tuple(found)
 
 
-def run(path: str, wanted: Wishes, *, as_json: bool, apply_it: bool) -> bool:
+def run(path: str, wanted: Wishes, *, as_json: bool, apply_it: bool, with_curve: bool) -> bool:
     """Choose, print and, if asked for, write into the plan; whether a choice was found."""
     from farvolt import planfile, rulebook
+    from farvolt.choice_curve import curve
     from farvolt.choose import choose
     from farvolt_app import choice_edits, choice_text
 
@@ -62,6 +63,9 @@ def run(path: str, wanted: Wishes, *, as_json: bool, apply_it: bool) -> bool:
         click.echo(json.dumps(choice_text.as_object(found), ensure_ascii=False, allow_nan=False))
     else:
         choice_text.show(found)
+    if with_curve and not as_json:
+        with _progress() as report:
+            choice_text.show_curve(curve(read.plan, book, wanted, report), wanted.unit)
     if apply_it and found.picked is not None and read.path is not None:
         planfile.save(read.path, choice_edits.applied(read.text, found), expected=planfile.stamp(read.text))
         click.echo(f"Wrote {path}. Next: farvolt check {path}", err=True)

@@ -1,8 +1,11 @@
 """A choice of cables as text on a terminal, and as an object for machines."""
 
+from collections.abc import Iterable
 from typing import Any
 
 from farvolt.choice_compared import Column, compared
+from farvolt.choice_conflict import conflict
+from farvolt.choice_curve import Point
 from farvolt.choice_options import Option
 from farvolt.choice_why import Why, why
 from farvolt.choose import Choice
@@ -19,11 +22,28 @@ def show(choice: Choice) -> None:
     """Print the choice, what it is compared with, and why each run has its size."""
     out = open_console()
     out.print(verdict(choice), markup=False)
+    found = conflict(choice)
+    if found is not None:
+        out.print("\nCannot be met together:", markup=False)
+        for line in found.limits:
+            out.print(f"- {line}", markup=False)
+        out.print("What would open it:", markup=False)
+        for line in found.openings or ("none of the changes that were tried",):
+            out.print(f"- {line}", markup=False)
     if choice.picked is not None:
         table(out, "Cables chosen", RUNS, [run_row(choice, one) for one in why(choice)])
     table(out, "Compared", COMPARED, [column_row(one) for one in compared(choice)])
     for rule, subject in sorted(choice.aside):
         out.print(f'Not for cable to cure: {rule} of "{subject}"', markup=False)
+
+
+def show_curve(points: Iterable[Point], unit: str) -> None:
+    """Print what tighter and looser limits of drop cost, each as it is found."""
+    out = open_console()
+    out.print("\nWhat the limits of drop cost (times those of the rulebook)", markup=False)
+    for one in points:
+        cost = f"{number(one.cost, 4)} {unit}" if one.cost is not None else "nothing passes"
+        out.print(f"x {number(one.factor):5} {cost}", markup=False)
 
 
 def verdict(choice: Choice) -> str:
@@ -82,7 +102,7 @@ def column_row(one: Column) -> tuple[str, ...]:
 
 def as_object(choice: Choice) -> dict[str, Any]:
     """The choice for machines: SI numbers or null."""
-    reasons = {one.run: one for one in why(choice)}
+    reasons, found = {one.run: one for one in why(choice)}, conflict(choice)
     return {
         "choice": 1,
         "plan": choice.plan.plan.name,
@@ -100,6 +120,7 @@ def as_object(choice: Choice) -> dict[str, Any]:
              "worst_drop_percent": one.worst_drop_percent, "lost_kWh_per_year": one.lost_kWh_per_year}
             for one in compared(choice)
         ],
+        "conflict": None if found is None else {"limits": list(found.limits), "openings": list(found.openings)},
         "not_for_cable_to_cure": [{"rule": rule, "subject": subject} for rule, subject in sorted(choice.aside)],
     }  # fmt: skip
 

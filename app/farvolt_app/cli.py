@@ -239,10 +239,12 @@ def protection(plan: str, run_name: str | None, output: str | None) -> None:
 @click.option("--parallel", type=click.IntRange(1, 8), default=1, help="Up to so many equal cables side by side.")
 @click.option("--ratings", is_flag=True, help="Choose the ratings of stated protection on these runs as well.")
 @click.option("--all", "all_runs", is_flag=True, help="Choose all runs anew, not only those without a size.")
+@click.option("--curve", "with_curve", is_flag=True, help="Show what tighter and looser limits of drop would cost.")
 @click.option("--time-limit", type=click.FloatRange(0.1), default=60.0, show_default=True, help="Seconds to search.")
 def choose(
     plan: str, as_json: bool, apply_it: bool, objective: str | None, prices: str | None, sizes: str | None,
-    most_sizes: int | None, size_cost: float, parallel: int, ratings: bool, all_runs: bool, time_limit: float,
+    most_sizes: int | None, size_cost: float, parallel: int, ratings: bool, all_runs: bool, with_curve: bool,
+    time_limit: float,
 ) -> None:  # fmt: skip
     """Choose the cables of PLAN, all at once: the least copper or price with which every check passes.
 
@@ -255,7 +257,7 @@ def choose(
     wishes = choice_command.wishes(
         objective, prices, sizes, most_sizes, size_cost, parallel, ratings=ratings, every=all_runs, seconds=time_limit
     )
-    sys.exit(0 if choice_command.run(plan, wishes, as_json=as_json, apply_it=apply_it) else FAILS)
+    sys.exit(0 if choice_command.run(plan, wishes, as_json=as_json, apply_it=apply_it, with_curve=with_curve) else FAILS)
 
 
 @main.command()

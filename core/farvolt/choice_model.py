@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 
-from farvolt.choice_limits import Row
+from farvolt.choice_limits import Carried, Row, Shared
 from farvolt.choice_options import Option, Options
 from farvolt.network import Floats
 
@@ -53,29 +53,58 @@ class Model:
         """The cheapest choice within the model's rows and `extra`, and within a cost, to a share of its cost."""
         from scipy.optimize import Bounds, LinearConstraint, milp
 
+        costs, low, high, arrays, shared = self._programme(extra)
+        if np.isfinite(below):
+            arrays.add(dict(enumerate(costs.tolist())), -np.inf, below)
+        matrix, least, most = arrays.matrix(len(costs))
+        whole = np.array([1.0] * (len(costs) - shared) + [0.0] * shared)
+        found = milp(
+            costs, integrality=whole, bounds=Bounds(low, high), constraints=LinearConstraint(matrix, least, most),
+            options={"mip_rel_gap": gap, "time_limit": max(time_limit_s, 0.05), "presolve": True},
+        )  # fmt: skip
+        return self._answer(found, self.every)
+
+    def relaxed(self, extra: Sequence[Row]) -> tuple[float, Floats]:
+        """The optimum where options may be taken in parts, and by how much taking each whole would raise it."""
+        from scipy.optimize import linprog
+
+        costs, low, high, arrays, _ = self._programme(extra)
+        matrix, least, most = arrays.matrix(len(costs))
+        equal = least == most
+        above = np.isfinite(least) & ~equal
+        upper = np.isfinite(most) & ~equal
+        from scipy.sparse import vstack
+
+        found = linprog(
+            costs, A_ub=vstack([matrix[upper], -matrix[above]]), b_ub=np.concatenate([most[upper], -least[above]]),
+            A_eq=matrix[equal], b_eq=most[equal], bounds=np.column_stack([low, high]), method="highs",
+        )  # fmt: skip
+        if found.x is None:
+            return np.inf, np.zeros(len(self.every))
+        reduced: Floats = found.lower.marginals[: len(self.every)]
+        return float(found.fun), reduced
+
+    def _programme(self, extra: Sequence[Row]) -> tuple[Floats, Floats, Floats, "_Arrays", int]:
+        """Costs and ranges of all variables, the rows, and how many of the variables, the last ones, are no choices."""
         every, arrays = self.every, _Arrays(len(self.every))
         self._one_each(arrays)
         names = self._sizes(arrays)
+        count = len(every) + len(names)
+        shared: dict[Shared | Carried, int] = {}
         for row in (*self.rows, *extra):
-            if _binds(row, self.options, every):
-                arrays.add(row.coefficients, -np.inf, row.most)
-        costs = np.array([one.cost for one in every] + [self.size_cost] * len(names))
-        if np.isfinite(below):
-            arrays.add(dict(enumerate(costs.tolist())), -np.inf, below)
-        high = np.array([float(np.isfinite(one.cost)) for one in every] + [1.0] * len(names))
-        low = np.array([0.0] * len(every) + [float(name in self.present) for name in names])
-        matrix, least, most = arrays.matrix(len(costs))
-        found = milp(
-            np.where(np.isfinite(costs), costs, 0.0), integrality=np.ones(len(costs)), bounds=Bounds(low, high),
-            constraints=LinearConstraint(matrix, least, most),
-            options={"mip_rel_gap": gap, "time_limit": max(time_limit_s, 0.05), "presolve": True},
-        )  # fmt: skip
-        return self._answer(found, every)
+            if row.shared or _binds(row, self.options, every):
+                more = {shared.setdefault(key, count + len(shared)): value for key, value in row.shared.items()}
+                arrays.add({**row.coefficients, **more}, -np.inf, row.most)
+        costs = np.array([one.cost for one in every] + [self.size_cost] * len(names) + [0.0] * len(shared))
+        sold = [float(np.isfinite(one.cost)) for one in every]
+        high = np.array([*sold, *([1.0] * len(names)), *([np.inf] * len(shared))])
+        low = np.array([0.0] * len(every) + [float(name in self.present) for name in names] + [0.0] * len(shared))
+        return np.where(np.isfinite(costs), costs, 0.0), low, high, arrays, len(shared)
 
     def _one_each(self, arrays: "_Arrays") -> None:
         place = 0
         for options in self.options.by_run.values():
-            arrays.add({place + step: 1.0 for step in range(len(options))}, 1.0, 1.0)
+            arrays.add({place + step: 1.0 for step in range(len(options))}, 1.0, 1.0, exact=True)
             place += len(options)
 
     def _sizes(self, arrays: "_Arrays") -> list[str]:
@@ -112,7 +141,7 @@ class _Arrays:
         self._low: list[float] = []
         self._high: list[float] = []
 
-    def add(self, coefficients: dict[int, float], low: float, high: float) -> None:
+    def add(self, coefficients: dict[int, float], low: float, high: float, *, exact: bool = False) -> None:
         """One more row. Each is scaled to its largest coefficient: volts and kilograms differ by orders."""
         scale = max((abs(value) for value in coefficients.values() if np.isfinite(value)), default=0.0) or 1.0
         for place, value in coefficients.items():
@@ -121,7 +150,7 @@ class _Arrays:
                 self._at.append(place)
                 self._values.append(value / scale)
         self._low.append(low / scale)
-        self._high.append(high / scale + _SLACK)
+        self._high.append(high / scale + (0.0 if exact else _SLACK))
 
     def matrix(self, columns: int) -> tuple[Any, Floats, Floats]:
         """The matrix with its limits below and above."""

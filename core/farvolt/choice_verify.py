@@ -9,6 +9,7 @@ from collections import deque
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from functools import cached_property
+from typing import cast
 
 from farvolt import checks
 from farvolt.checks.far_end import opening
@@ -16,7 +17,7 @@ from farvolt.checks.let_through import near_faults
 from farvolt.choice_limits import Limit, Row, excess_V, limits
 from farvolt.choice_options import Option, Options
 from farvolt.context import Context
-from farvolt.network import FEED, RETURN
+from farvolt.network import FEED, RETURN, Network
 from farvolt.results import Finding
 
 RULES = (
@@ -28,6 +29,10 @@ RULES = (
 """Rules on which the choice has a bearing, beside those on volts."""
 
 _ALLOWED_V = 1e-9
+
+_MORE = 1.05
+
+_TREES: dict[object, object] = {}
 
 Failure = tuple[str, str]
 """A rule and its subject."""
@@ -111,10 +116,13 @@ class Cuts:
             found = opening(context, far, far.stretch.guard.protection)
             if found is None or found.in_time or not found.damaging or rule is None or rule.severity != "fail":
                 continue
-            way = runs_on_way(context, far.stretch.source, found.run)
-            guard = far.stretch.guard.run
-            yield self._row("protection.far-end", [*((run, _thicker) for run in way), (guard, _less_rating)],
-                            verdict.options)  # fmt: skip
+            way = [run for run in runs_on_way(context, far.stretch.source, found.run) if run != found.run]
+            kind, larger = far.stretch.guard.protection.kind, _MORE * far.fault.amps
+            # Whether a larger fault current does less harm: it opens the protection so much sooner.
+            sooner = kind.opens_within_s(larger, found.rating_A) * _MORE**2 < found.opens_s
+            upstream = _thicker if sooner else _thinner
+            better = [(found.run, _thicker), (far.stretch.guard.run, _less_rating), *((run, upstream) for run in way)]
+            yield self._row("protection.far-end", better, verdict.options)
 
     def _near(self, verdict: Verdict) -> Iterator[Row | None]:
         context = verdict.context
@@ -143,7 +151,8 @@ class Cuts:
                 if is_better(option, now[run]):
                     coefficients[place] = -1.0
         mine = any(run in self.options.by_run for run, _ in better)
-        return Row(coefficients, -1.0, text=rule) if mine else None
+        proven = rule not in ("protection.far-end", "protection.let-through")  # harm may rise and fall with the current
+        return Row(coefficients, -1.0, text=rule, proven=proven) if mine else None
 
 
 Better = Callable[[Option, Option], bool]
@@ -170,7 +179,7 @@ def runs_on_way(context: Context, source: int, run: int) -> list[int]:
     network, entry = context.network, context.plan.runs[run]
     at, found = context.plan.sources[source].at, dict[int, None]()
     for pole, node in ((FEED, network.feed), (RETURN, network.ret)):
-        parents = _parents(context, node(at), pole)
+        parents = _tree(network, node(at), pole)
         ends = [node(name) for name in (entry.from_point, entry.to_point) if (name, pole) in network.nodes]
         ways = sorted((_back(parents, node(at), end) for end in ends), key=len)
         found |= dict.fromkeys(ways[-1] if ways else [])
@@ -178,9 +187,19 @@ def runs_on_way(context: Context, source: int, run: int) -> list[int]:
     return list(found)
 
 
-def _parents(context: Context, start: int, pole: int) -> dict[int, tuple[int, int]]:
+def _tree(network: Network, start: int, pole: int) -> Mapping[int, tuple[int, int]]:
+    """The tree of `_grown`, kept for the network asked about last: many runs are asked about in turn."""
+    if _TREES.get("of") is not network:
+        _TREES.clear()
+        _TREES["of"] = network
+    found = _TREES.get((start, pole))
+    if found is None:
+        found = _TREES[start, pole] = _grown(network, start, pole)
+    return cast(Mapping[int, tuple[int, int]], found)
+
+
+def _grown(network: Network, start: int, pole: int) -> dict[int, tuple[int, int]]:
     """Breadth-first tree of one pole: node to (run or -1, node before)."""
-    network = context.network
     at: dict[int, list[tuple[int, int]]] = {}
     for a, b, run, of in zip(network.a.tolist(), network.b.tolist(), network.run.tolist(), network.pole.tolist(),
                              strict=True):  # fmt: skip

@@ -11,6 +11,8 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 
 from farvolt import interim, study
+from farvolt.choice_bounds import Sharper, kept_only, worth
+from farvolt.choice_faults import FaultRows
 from farvolt.choice_limits import Currents, Limit, Row, Rows, limits
 from farvolt.choice_model import Answer, Model, links
 from farvolt.choice_options import (
@@ -34,6 +36,7 @@ from farvolt.rulebook import Rulebook
 from farvolt.temperatures import Mode
 
 _ROUNDS = 25
+_INTERRUPTING = "protection.interrupting"
 _OVER = 1.001
 """A limit that the exact solution breaks is tightened by this much more than it is broken by."""
 
@@ -99,6 +102,8 @@ class Problem:
     rows: Rows
     cuts: Cuts
     aside: frozenset[Failure]
+    learnt: list[Row] = field(default_factory=list)
+    """Cuts from what the checks found."""
     tighter: dict[tuple[str, int, int], float] = field(default_factory=dict)
     """By rule, load and case: volts by which a limit is held tighter in the model, as the exact solution asks."""
 
@@ -112,11 +117,11 @@ class Problem:
 
     def bound_rows(self) -> list[Row]:
         """Limits that every passing choice keeps, at the least currents."""
-        return [row for row in self._rows(self.best, tree=True) if row.proven]
+        return [row for row in (*self._rows(self.best, tree=True), *self.learnt) if row.proven]
 
     def holding_rows(self, context: Context) -> list[Row]:
         """All limits at the currents of a solved choice."""
-        return list(self._rows(context, tree=False))
+        return [*self._rows(context, tree=False), *self.learnt]
 
     def _rows(self, context: Context, *, tree: bool) -> list[Row]:
         currents: dict[tuple[int, Mode], Currents] = {}
@@ -136,13 +141,23 @@ class Problem:
     def _tighter(self, limit: Limit) -> float:
         return self.tighter.get((limit.rule, limit.load, limit.case), 0.0)
 
-    def learn(self, verdict: Verdict) -> bool:
-        """Put into the model what failed; False where nothing new could be learnt."""
-        for limit, volts in verdict.excess.items():
+    def without(self, rule: str) -> bool:
+        """Take a rule out of the model and out of the verdicts; False where the model had no row of it."""
+        kept = [row for row in self.model.rows if row.text != rule]
+        changed, self.model.rows = len(kept) < len(self.model.rows), kept
+        self.aside |= {(rule, run.name) for run in self.plan.runs} if changed else set()
+        return changed
+
+    def learn(self, verdict: Verdict, *, tighten: bool) -> bool:
+        """Put into the model what failed; False where nothing new could be learnt.
+
+        Limits are tightened only for a choice made at currents close to its own: others come out at new currents.
+        """
+        for limit, volts in verdict.excess.items() if tighten else ():
             key = limit.rule, limit.load, limit.case
             self.tighter[key] = self.tighter.get(key, 0.0) + _OVER * volts + 1e-7
         cuts = self.cuts.of(verdict)
-        self.model.rows += cuts
+        self.learnt += cuts
         return bool(verdict.excess) or bool(cuts)
 
 
@@ -163,8 +178,11 @@ def prepare(plan: Plan, rulebook: Rulebook, wishes: Wishes) -> Problem:
         for guard in guards_to_choose(best, index, places):
             behind.setdefault(guard.run, []).append(index)
     fixed = frozenset(run.size.name for i, run in enumerate(plan.runs) if run.size is not None and i not in runs)
-    model = Model(options, links(options, behind), wishes.most_sizes, wishes.size_cost, fixed)
-    problem = Problem(plan, rulebook, wishes, runs, options, best, model, Rows(options), Cuts(options), frozenset())
+    rows = Rows(options)
+    some = all(options.by_run.values())
+    faults = list(FaultRows(best, options, rows.places, frozenset(places)).rows()) if some else []
+    model = Model(options, [*links(options, behind), *faults], wishes.most_sizes, wishes.size_cost, fixed)
+    problem = Problem(plan, rulebook, wishes, runs, options, best, model, rows, Cuts(options), frozenset())
     problem.aside = _aside(problem)
     return problem
 
@@ -239,38 +257,39 @@ class _Search:
         names = {one.size.name for one in picked.values()} | self.problem.model.present
         return most is None or len(names) <= most
 
-    def _keep(self, picked: Mapping[int, Option], verdict: Verdict, cost: float) -> None:
-        if cost < self.cost:
+    def _keep(self, picked: Mapping[int, Option], verdict: Verdict, cost: float) -> bool:
+        """Keep a choice that passes where it is the best so far; whether it is."""
+        better = cost < self.cost
+        if better:
             self.picked, self.verdict, self.cost = picked, verdict, cost
+        return better
 
     def run(self) -> None:
         """Turn by turn until proven, or no better choice turns up."""
         problem = self.problem
-        if not all(problem.options.by_run.values()):
-            self.impossible, self.ended = True, "impossible"
-            return
-        answer = self._bound()
-        if answer.impossible:
+        answer = self._bound() if all(problem.options.by_run.values()) else None
+        if answer is not None and answer.impossible and problem.without(_INTERRUPTING):
+            answer = self._bound()
+        if answer is None or answer.impossible:
             self.impossible, self.ended = True, "impossible"
             return
         picked: Mapping[int, Option] | None = answer.picked
-        for _ in range(_ROUNDS):
-            self.rounds += 1
-            if picked is None:
-                break
-            verdict = problem.verdict(picked)
-            if verdict.holds:
-                self._keep(picked, verdict, problem.model.cost_of(dict(picked)))
-                self._tell("Checked a choice that passes")
-            elif not problem.learn(verdict):
-                break
-            if self._done():
-                return
-            before, picked = picked, self._holding(verdict)
-            if picked == before and verdict.holds:
-                break
-        if self.left_s <= 0:
-            self.ended = "time"
+        while picked is not None and self.rounds < _ROUNDS and not self._done():
+            picked = self._turn(picked)
+        self._done()
+
+    def _turn(self, picked: Mapping[int, Option]) -> Mapping[int, Option] | None:
+        """Ask about a choice; the next one to ask about, or None where there is none."""
+        self.rounds += 1
+        verdict = self.problem.verdict(picked)
+        if not verdict.holds:
+            learnt = self.problem.learn(verdict, tighten=self.rounds > 1)
+            return self._holding(verdict) if learnt else None
+        better = self._keep(picked, verdict, self.problem.model.cost_of(dict(picked)))
+        self._tell("Checked a choice that passes")
+        if self._done() or not (better or self.rounds == 1):
+            return None
+        return self._sharper()
 
     def _done(self) -> bool:
         if self.cost < float("inf") and 1 - self.bound / max(self.cost, 1e-12) <= self.problem.wishes.gap:
@@ -287,14 +306,26 @@ class _Search:
         self.bound = max(self.bound, answer.bound)
         return answer
 
+    def _sharper(self) -> Mapping[int, Option] | None:
+        """A bound that counts on the choice known, and the choice that it comes from, which may pass as well."""
+        problem, verdict = self.problem, self.verdict
+        assert verdict is not None
+        self._tell("Looking for a sharper bound")
+        rows = problem.bound_rows()
+        kept = worth(problem.model, rows, self.cost)
+        sharper = Sharper(problem.rows, problem.best, verdict.context, kept, problem.wishes.drop_factor)
+        every = [*rows, *kept_only(problem.options, kept, problem.rows.places), *sharper.every()]
+        target = self.cost * (1 - problem.wishes.gap)
+        answer = problem.model.solve(every, problem.wishes.gap / 2, self.left_s, below=target)
+        # Nothing costs so little: then none is cheaper than that.
+        self.bound = max(self.bound, target if answer.impossible else min(answer.bound, target))
+        return answer.picked
+
     def _holding(self, verdict: Verdict) -> Mapping[int, Option] | None:
         """The cheapest choice at the currents of the last one, held to what was learnt."""
         self._tell("Looking for the cheapest choice")
         rows = self.problem.holding_rows(verdict.context)
-        answer = self.problem.model.solve(rows, self.problem.wishes.gap / 4, self.left_s)
-        if answer.impossible and self.picked is None:
-            self.impossible, self.ended = True, "impossible"
-        return answer.picked
+        return self.problem.model.solve(rows, self.problem.wishes.gap / 4, self.left_s).picked
 
     def _tell(self, doing: str) -> None:
         cost = self.cost if self.cost < float("inf") else None
@@ -307,9 +338,14 @@ class _Search:
         return Choice(
             problem.plan, problem.wishes, problem.options, problem.runs, self.picked, self.verdict,
             self.cost if found else None, min(self.bound, self.cost), all(one.proven for one in every),
-            self.impossible, self.ended, self.run_by_run, self.run_by_run_cost, problem.aside,
+            self.impossible, self.ended, self.run_by_run, self.run_by_run_cost, self._left_failing(),
             time.monotonic() - self.begun, self.rounds, problem,
         )  # fmt: skip
+
+    def _left_failing(self) -> frozenset[Failure]:
+        """What fails in the choice, or run by run where there is none, and is not for a choice to cure."""
+        shown = self.verdict or self.run_by_run
+        return failures(shown.context) & self.problem.aside if self.problem.aside else frozenset()
 
 
 def with_free(plan: Plan, runs: list[int]) -> Plan:
