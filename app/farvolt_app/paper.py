@@ -4,6 +4,7 @@ import unicodedata
 from collections.abc import Callable, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
+from datetime import date
 from functools import lru_cache
 from pathlib import Path
 from typing import TYPE_CHECKING, Literal
@@ -61,6 +62,11 @@ def _letters() -> frozenset[int]:
     from fontTools.ttLib import TTFont
 
     return frozenset.intersection(*(frozenset(TTFont(FONTS / name, lazy=True).getBestCmap()) for name in _FILES))
+
+
+def foot(plan: str, day: date) -> str:
+    """What stands at the foot of every page: the plan's name and the day."""
+    return f"{plan} · {day.isoformat()}"
 
 
 class Document(FPDF):

@@ -25,11 +25,11 @@ def suffix_of(output: str, accepted: tuple[str, ...]) -> str:
 def drawing(study: Study, suffix: str, case_name: str | None, paper: str, units: str) -> bytes:
     """The drawing of a case by its name, else of the one with the largest drop."""
     from farvolt_app import drawing_file
-    from farvolt_app.paper import PAPERS
+    from farvolt_app.paper import PAPERS, foot
 
     case = _case(study, case_name)
     if suffix == ".pdf":
-        return drawing_file.pdf(study, case, PAPERS[paper], units, foot(study, date.today()))
+        return drawing_file.pdf(study, case, PAPERS[paper], units, foot(study.plan.plan.name, date.today()))
     picture = drawing_file.svg(study, case, units)
     return drawing_file.png(picture) if suffix == ".png" else picture.encode()
 
@@ -40,11 +40,6 @@ def _case(study: Study, name: str | None) -> CaseResult:
     if name is None:
         return drawing_file.worst_case(study)
     return study.cases[place(name, [one.name for one in study.cases], "case")]
-
-
-def foot(study: Study, day: date) -> str:
-    """What stands at the foot of every page: the plan and the day."""
-    return f"{study.plan.plan.name} · {day.isoformat()}"
 
 
 def report(study: Study, paper: str, units: str) -> bytes:

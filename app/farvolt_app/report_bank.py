@@ -16,20 +16,14 @@ BATTERIES = (
     Column("Strings", 12, "R"), Column("Largest out A", 18, "R"), Column("May give", 16, "R"),
     Column("Largest in A", 18, "R"), Column("May take", 16, "R"),
 )  # fmt: skip
-LOADS = (
-    Column("Load", 48), Column("Power (W)", 15, "R"), Column("Hours", 14, "R"), Column("When", 34),
-    Column("Duty (%)", 13, "R"), Column("Energy (Wh)", 18, "R"), Column("At the bank (Wh)", 18, "R"),
-)  # fmt: skip
-STEPS = (Column("Step", 44), Column("Ah", 14, "R"), Column("Working", 82), Column("Basis", 42))
-CHARGING = (
-    Column("Day", 30), Column("Needed (Wh)", 18, "R"), Column("Gained (Wh)", 18, "R"), Column("Left (Wh)", 18, "R"),
-    Column("Array that covers it (W)", 22, "R"), Column("Sources", 76),
-)  # fmt: skip
+_WIDE = {"Working": 82.0, "Sources": 70.0, "Step": 44.0, "Basis": 42.0, "Load": 40.0}
+_TEXT, _NUMBER = 28.0, 15.0
+"""Shares of the width by what a column holds; the rows themselves say which columns there are."""
 
 
 def bank(document: Document, study: Study) -> None:
     """The part of the report on the bank; a plan without a battery says so."""
-    document.open_page()
+    document.open_page("landscape")
     document.heading("Bank")
     batteries = [_battery(study, one) for one in study.plan.sources if isinstance(one, Battery)]
     if not batteries:
@@ -43,7 +37,7 @@ def bank(document: Document, study: Study) -> None:
         return
     for budget in used:
         document.heading(f"Energy of a day: {budget.day}", 1)
-        _table(document, LOADS, [row for row in bank_rows.load_rows(budget) if row["Energy (Wh)"]])
+        _table(document, bank_rows.load_rows(budget))
         total = f"In all {cell(budget.bank.Wh)} Wh, {cell(budget.bank.Ah)} Ah at {cell(budget.bank.nominal_V)} V."
         document.paragraph(total, 9, bold=True)
         document.points(budget.left_out, 8)
@@ -62,17 +56,21 @@ def _battery(study: Study, one: Battery) -> tuple[str, ...]:
 def _size_and_charging(document: Document, found: BankStudy) -> None:
     document.heading("Size and charging", 1)
     document.points(bank_rows.answer(found))
-    _table(document, STEPS, bank_rows.step_rows(found))
-    _table(document, CHARGING, bank_rows.charging_rows(found))
+    _table(document, bank_rows.step_rows(found))
+    _table(document, bank_rows.charging_rows(found))
     for title, lines in bank_rows.workings(found):
         document.heading(title, 1, keep_mm=12)
         document.points(lines, 8)
 
 
-def _table(document: Document, columns: Sequence[Column], rows: Sequence[Cells]) -> None:
-    """Rows by the headings of their columns, numbers rounded for reading."""
-    cells = [
-        tuple(value if isinstance(value := row[column.heading], str) else cell(value) for column in columns)
-        for row in rows
+def _table(document: Document, rows: Sequence[Cells]) -> None:
+    """Rows as they are, under their own headings; numbers rounded for reading."""
+    if not rows:
+        return
+    texts = {name for row in rows for name, value in row.items() if isinstance(value, str)}
+    columns = [
+        Column(name, _WIDE.get(name, _TEXT if name in texts else _NUMBER), "L" if name in texts else "R")
+        for name in rows[0]
     ]
-    table(document, columns, cells, size=7.5)
+    table(document, columns, [[one if isinstance(one, str) else cell(one) for one in row.values()] for row in rows],
+          size=7.5)  # fmt: skip

@@ -8,7 +8,7 @@ from farvolt.results import Finding, Study
 from farvolt.units import number
 from farvolt_app import drawing_file, report_bank, report_findings, report_tables, schedule, shown
 from farvolt_app.graft import Graft, graft
-from farvolt_app.paper import MARGIN_MM, Document, Paper, line_mm
+from farvolt_app.paper import MARGIN_MM, Document, Paper, foot, line_mm
 from farvolt_app.paper_table import Column, table
 from farvolt_app.report_tables import Units
 
@@ -21,7 +21,7 @@ Told = Callable[[float, str], None]
 
 def pdf(study: Study, paper: Paper, units: Units, day: date, told: Told = lambda share, what: None) -> bytes:
     """The whole report as the content of a file."""
-    document = Document(paper, f"{study.plan.plan.name} · {day.isoformat()}")
+    document = Document(paper, foot(study.plan.plan.name, day))
     document.set_title(study.plan.plan.name)
     grafts: list[Graft] = []
     told(0.05, "cover and summary")

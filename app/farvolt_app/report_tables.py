@@ -28,9 +28,9 @@ def cell(value: float | None, digits: int = 3) -> str:
 
 CABLES = (
     Column("Label", 13), Column("Run", 28), Column("From", 23), Column("To", 23), Column("One way", 13, "R"),
-    Column("Cond. in all", 14, "R"), Column("Size", 22), Column("Side by side", 10, "R"), Column("Colours", 17),
-    Column("Insul. °C", 10, "R"), Column("Protection", 29), Column("Current A", 13, "R"),
-    Column("May carry A", 12, "R"), Column("Drop V", 12, "R"), Column("Drop %", 10, "R"), Column("Findings", 29),
+    Column("Cond. in all", 14, "R"), Column("Size", 26), Column("Side by side", 10, "R"), Column("Colours", 17),
+    Column("Insul. °C", 11, "R"), Column("Protection", 29), Column("Most A", 11, "R"),
+    Column("May carry A", 12, "R"), Column("Drop V", 12, "R"), Column("Drop %", 10, "R"), Column("Findings", 27),
 )  # fmt: skip
 
 
@@ -39,8 +39,9 @@ def cables(document: Document, study: Study, found: Sequence[Cable], units: Unit
     document.open_page("landscape")
     document.heading("Cable schedule")
     document.paragraph(
-        "Current: the largest in any case. Drop: of the run alone, both conductors, in the case where it is largest, "
-        "at the plan's conductor temperature. ~ marks the nearest size of the other system, which may be thinner.", 8.5,
+        "Most A: the largest current in any case. Drop: of the run alone, both conductors, in the case where it is "
+        "largest, at the plan's conductor temperature. ~ marks the nearest size of the other system, which may be "
+        "thinner.", 8.5,
     )  # fmt: skip
     marks = {row["Run"]: _marked(row["Findings"]) for row in shown.run_rows(study, None)}
     table(document, CABLES, [_cable(one, marks[one.run.name], units) for one in found], size=7,
@@ -128,7 +129,7 @@ def _line(row: dict[str, Any], units: Units) -> tuple[str, ...]:
 
 PROTECTION = (
     Column("Label", 14), Column("Run", 32), Column("Protection", 32), Column("End", 14), Column("Load A", 14, "R"),
-    Column("Cable allows A", 15, "R"), Column("Highest fault A", 16, "R"), Column("Interrupts A", 16, "R"),
+    Column("Cable allows A", 15, "R"), Column("Highest fault A", 16, "R"), Column("Interrupts A", 18, "R"),
     Column("Least fault A", 15, "R"), Column("Opens within s", 15, "R"), Column("Cable stands s", 15, "R"),
     Column("Least fault is", 40), Column("Findings", 34),
 )  # fmt: skip

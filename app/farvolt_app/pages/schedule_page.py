@@ -6,7 +6,7 @@ import streamlit as st
 
 from farvolt.results import Study
 from farvolt_app import schedule, shown, workbook
-from farvolt_app.pages import buying, results
+from farvolt_app.pages import buying, papers, results
 from farvolt_app.shown import plain
 
 EXCEL = "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet"
@@ -25,6 +25,7 @@ def show(study: Study) -> None:
         )  # fmt: skip
     results.table(schedule.rows(study), "schedule", "Cable schedule", tall=True)
     buying.show(study)
+    papers.show(study)
     st.caption(plain(shown.CAUTION))
 
 
