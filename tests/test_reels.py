@@ -188,3 +188,14 @@ def test_lengths_are_cut_to_the_next_full_centimetre_and_reels_not_stretched() -
     assert Piece(1.1 * 11, "").cut_cm == 1210
     assert len(cut(named(*[1.101] * 27), [Reel(30.48, 25.0)]).reels) == 1
     assert len(cut(named(*[1.101] * 28), [Reel(30.48, 25.0)]).reels) == 2
+
+
+@settings(max_examples=60, deadline=None)
+@given(PROBLEMS)
+def test_together_never_costs_more_than_one_by_one(
+    problem: tuple[tuple[int, ...], tuple[Offer, ...], float | None],
+) -> None:
+    """Run by run, each piece bought for itself, is one of the ways."""
+    held, offers, per_cm = problem
+    alone = sum(least_cost((one,), offers, per_cm).cost for one in held)
+    assert least_cost(held, offers, per_cm).cost <= alone + 1e-9

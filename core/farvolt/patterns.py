@@ -22,7 +22,7 @@ from farvolt.filling import Covering, Offer, ReelSet, best_filled
 Counts = tuple[int, ...]
 """How many pieces of each length a pattern has."""
 
-LISTED_LIMIT = 1500
+LISTED_LIMIT = 300
 """More patterns than these are not listed but generated."""
 
 _NODES, _FEW_NODES = 300, 50
