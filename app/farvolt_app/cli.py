@@ -257,7 +257,8 @@ def choose(
     wishes = choice_command.wishes(
         objective, prices, sizes, most_sizes, size_cost, parallel, ratings=ratings, every=all_runs, seconds=time_limit
     )
-    sys.exit(0 if choice_command.run(plan, wishes, as_json=as_json, apply_it=apply_it, with_curve=with_curve) else FAILS)
+    found = choice_command.run(plan, wishes, as_json=as_json, apply_it=apply_it, with_curve=with_curve)
+    sys.exit(0 if found else FAILS)
 
 
 @main.command()

@@ -12,7 +12,7 @@ import numpy as np
 from farvolt import network, operating, solve, temperatures
 from farvolt.conductors import Size, made_sizes, resistance_20_ohm_per_m
 from farvolt.network import conductor_lengths_m, strand
-from farvolt.plan import Plan, Run
+from farvolt.plan import Case, Plan, Run
 from farvolt.rulebook import Rulebook
 from farvolt.sections import sheathed
 from farvolt.solution import Solution
@@ -49,10 +49,20 @@ def with_sizes(plan: Plan, chosen: Mapping[str, Size]) -> Plan:
     return plan.model_copy(update={"runs": runs})
 
 
+def _lasting(plan: Plan) -> list[Case]:
+    """The cases without their starts, which last too short to size a cable for; each once."""
+    found: list[Case] = []
+    for case in plan.checked_cases:
+        after = case.model_copy(update={"surge": ()})
+        if not any(one.model_copy(update={"name": after.name}) == after for one in found):
+            found.append(after)
+    return found
+
+
 def _solutions(plan: Plan, rulebook: Rulebook, mode: Mode) -> list[Solution]:
     net = network.build(plan, rulebook)
     found = []
-    for case in plan.checked_cases:
+    for case in _lasting(plan):
         condition = operating.operating(net, case)
         supply = solve.fed(net, condition)
         wanted = temperatures.at(plan, rulebook, case, mode)

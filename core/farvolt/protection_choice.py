@@ -31,7 +31,7 @@ RULES = (
 SPARE = 1.25
 """Times its load that a protection is rated at where there is a choice (common practice)."""
 
-_ROUNDS = 12
+_ROUNDS = 30
 _SIZES = 4
 """How many larger sizes are tried to open a window."""
 
@@ -81,11 +81,19 @@ class Choice:
         assert failed is not None
         self.blocking |= dict.fromkeys(rules)
         self.tried += 1
+        if _OF_TYPE.intersection(rules):
+            self.offers[self.tried :] = [one for one in self.offers[self.tried :] if one.kind != failed.kind]
         while (offer := self.offer) is not None and offer.kind == failed.kind and offer.size == failed.size:
             higher = offer.rating_A > failed.rating_A
-            if not (_OF_TYPE.intersection(rules) or (_WANT_LESS if higher else _WANT_MORE).intersection(rules)):
+            if not (_WANT_LESS if higher else _WANT_MORE).intersection(rules):
                 break
             self.tried += 1
+
+    @property
+    def stand_in(self) -> Offer | None:
+        """What stands here while the other places are tried: the offer, or the last that failed, so that nobody else is
+        blamed for a place without protection."""
+        return self.offer or (self.offers[-1] if self.offers else None)
 
 
 _OF_TYPE = {"protection.interrupting", "protection.voltage-rating"}
@@ -99,15 +107,16 @@ def choices(context: Context, places: Iterable[Place]) -> list[Choice]:
     found = [Choice(place, list(_offers(context, place, demands))) for place in places]
     for _ in range(_ROUNDS):
         standing = [one for one in found if one.offer is not None]
-        failed = _failed(context, standing) if standing else {}
-        if not failed:
+        failed = _failed(context, found) if standing else {}
+        open_ones = [one for one in standing if one.place in failed]
+        if not open_ones:
             return found
-        for one in standing:
-            if one.place in failed:
-                one.fails(failed[one.place])
-    for one in found:
-        if one.place in failed:
-            one.tried = len(one.offers)  # none was shown to pass within the rounds
+        # A protection is blamed for the runs that depend on it only once those have found their own.
+        mine = [one for one in open_ones if failed[one.place].own]
+        for one in mine or open_ones:
+            one.fails(failed[one.place].rules)
+    for one in open_ones:
+        one.tried = len(one.offers)  # none was shown to pass within the rounds
     return found
 
 
@@ -122,7 +131,7 @@ def fitting(context: Context, place: Place, kinds: Iterable[ProtectionType]) -> 
         while (offer := choice.offer) is not None:
             failed = _failed(context, [choice])
             if failed:
-                choice.fails(failed[place])
+                choice.fails(failed[place].rules)
             else:
                 passing.append(offer.rating_A)
                 choice.tried += 1
@@ -137,13 +146,16 @@ def with_remedies(context: Context, findings: tuple[Finding, ...]) -> tuple[Find
         return findings
     places: dict[Place, None] = {}
     for finding in findings:
-        places |= dict.fromkeys(_places(context, finding))
+        if finding.rule != "protection.let-through" or finding.severity == "fail":
+            places |= dict.fromkeys(_places(context, finding))
     offers = {one.place: one for one in choices(context, places)}
     return tuple(_with_remedy(context, finding, offers) for finding in findings)
 
 
 def _with_remedy(context: Context, finding: Finding, offers: dict[Place, Choice]) -> Finding:
-    texts = [_text(context, offers[place], finding) for place in _places(context, finding)]
+    texts = [_text(context, offers[place], finding) for place in _places(context, finding) if place in offers]
+    if finding.rule == "protection.let-through" and finding.severity != "fail":
+        return finding
     said = "; ".join(dict.fromkeys(filter(None, texts)))
     if not said:
         return finding
@@ -192,15 +204,18 @@ def _offers(context: Context, place: Place, demands: Demands) -> Iterator[Offer]
     most = limit_for(context, run, amps).amps if amps is not None else 0.0
     kinds = [present.kind] if present is not None else []
     kinds += [kind for kind in _kinds(context.plan) if present is None or kind != present.kind]
-    for kind in kinds:
-        yield from (Offer(kind, rating) for rating in _between(kind, demand, most))
+    here = [Offer(kind, rating) for kind in kinds for rating in _between(kind, demand, most)]
+    if present is None:
+        # Of any type: the lowest rating with a quarter in hand comes first.
+        here.sort(key=lambda one: (one.rating_A < SPARE * demand, one.rating_A))
+    yield from here
     if run.size is None or exempt(context, run):
         return
     for size in larger_sizes(run.size)[:_SIZES]:
         thicker = _resized(run, size)
         found = run_ampacity(context.plan, context.rulebook, thicker, None, context.together[run.name])
         limit = limit_for(context, thicker, found.amps).amps if found is not None and found.amps is not None else 0.0
-        for kind in kinds[:1]:
+        for kind in kinds if present is None else kinds[:1]:
             yield from (Offer(kind, rating, size) for rating in _between(kind, demand, limit))
 
 
@@ -220,17 +235,27 @@ def _present(run: Run, place: Place) -> Protection | None:
     return min(found, key=lambda one: one.rating.si, default=None)
 
 
-def _failed(context: Context, tried: list[Choice]) -> dict[Place, list[str]]:
-    """The places whose offers do not pass, all of them put in at once, with the rules that they break."""
+@dataclass(slots=True)
+class _Failure:
+    """Rules that an offer breaks, and whether on its own run."""
+
+    rules: list[str] = field(default_factory=list)
+    own: bool = False
+
+
+def _failed(context: Context, tried: list[Choice]) -> dict[Place, _Failure]:
+    """The places whose offers do not pass, all of them put in at once."""
     changed = _changed(context, tried)
-    broken: dict[Place, list[str]] = {}
+    broken: dict[Place, _Failure] = {}
     mine = {one.place for one in tried}
     for finding in checks.run_some(changed, RULES):
         if finding.severity == "note" or "not verified" in finding.message:
             continue
         for place in _places(changed, finding):
             if place in mine:
-                broken.setdefault(place, []).append(finding.rule)
+                failure = broken.setdefault(place, _Failure())
+                failure.rules.append(finding.rule)
+                failure.own |= finding.subject == changed.plan.runs[place.run].name
     return broken
 
 
@@ -239,8 +264,9 @@ def _changed(context: Context, tried: list[Choice]) -> Context:
     runs = list(context.plan.runs)
     resized: list[int] = []
     for one in tried:
-        offer = one.offer
-        assert offer is not None
+        offer = one.stand_in
+        if offer is None:
+            continue
         run = runs[one.place.run]
         if offer.size is not None:
             run = _resized(run, offer.size)

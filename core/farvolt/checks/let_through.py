@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from farvolt.checks.far_end import thinnest
 from farvolt.checks.registry import check, run_finding
 from farvolt.checks.ways import PRACTICE, ampacity_A, exempt, limited_A
-from farvolt.context import Context, basis_text, label
+from farvolt.context import Context, basis_text, label, larger_sizes
 from farvolt.plan import Protection
 from farvolt.results import Finding
 from farvolt.sections import Guard
@@ -123,5 +123,18 @@ def _finding(context: Context, one: NearFault) -> Finding:
          f"{number(one.amps, 4)} A in a rating of {number(quickest.rating.si)} A: "
          f"{number(joule, 4) if math.isfinite(joule) else 'not stated'} A2s ({kind.times_basis})",
          *one.stands.working),
-        None,
+        _remedy(context, one, joule),
     )  # fmt: skip
+
+
+def _remedy(context: Context, one: NearFault, joule: float) -> str:
+    """A cable that stands it, or a fuse that limits the current."""
+    run = context.plan.runs[one.run]
+    stands = (
+        size
+        for size in (larger_sizes(run.size) if run.size else [])
+        if thinnest(context, run.model_copy(update={"size": size, "return_path": "same"})).joule_A2s >= joule
+    )
+    size = next(stands, None)
+    thicker = f"{label(run)}: {size.name} stands that; or " if size is not None else ""
+    return f"{thicker}a fuse that limits the current, upstream or in its place, with its maker's let-through"
