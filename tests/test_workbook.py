@@ -246,7 +246,7 @@ class TestCalculated:
         assert sum(needed["cable"]) == pytest.approx(metres, abs=1e-6)
         guards = schedule.protections(studies[name])
         assert sum(needed["fuse"] + needed["breaker"]) == len(guards)
-        assert sheet["F3"].value == 0
+        assert sheet["K3"].value == 0
 
     @pytest.mark.parametrize("name", PLANS)
     def test_no_cell_is_an_error(self, name: str, calculated: dict[str, Workbook]) -> None:
@@ -305,7 +305,7 @@ class TestCalculated:
     def test_a_colour_out_of_the_list_is_not_lost_unseen(self, calculated: dict[str, Workbook]) -> None:
         """5 m of return were black and are yellow: no row counts them, and the sheet says so."""
         sheet = calculated["recoloured"]["Shopping"]
-        assert sheet["F3"].value == pytest.approx(5.0)
+        assert sheet["K3"].value == pytest.approx(5.0)
 
     def test_marks_say_what_is_over(self, calculated: dict[str, Workbook]) -> None:
         """The loads marked are those whose percentage is above their limit: in words, not by colour alone."""

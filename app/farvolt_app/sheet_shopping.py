@@ -18,14 +18,14 @@ from farvolt_app.sheets import FIRST, Column, Formula, Header, fill, letters, se
 NEEDED, TO_BUY = "Needed (m or number)", "To buy (m or number)"
 UNIT_PRICE, PRICE = "Unit price", "Price"
 
-_SPARE = "$F$2"
+_SPARE = "$K$2"
 _UNIT_AT, _PRICE_AT = 8, 12
 """Places of the unit and of the price in a row."""
 
 
 def _columns(currency: str) -> tuple[Column, ...]:
     return (
-        Column("Item", 27), Column("Size or rating", 15), Column("Material or type", 22), Column("Strand", 10),
+        Column("Item", 27), Column("Size or rating", 15), Column("Material or type", 27), Column("Strand", 10),
         Column("Insulation (°C)", 10, "0"), Column("Colour", 11), Column(NEEDED, 10, "0.00"),
         Column(TO_BUY, 10, "0.00"), Column("Unit", 8), Column("To buy (ft)", 9, "0.0"),
         Column("Metal (kg)", 9, "0.000"), Column(f"{UNIT_PRICE}{currency}", 10, "0.00", input=True),
@@ -48,7 +48,7 @@ def write_list(
     rows = [_cable_row(one, FIRST + place, len(found), metres) for place, one in enumerate(bill.cables)]
     for line in bought:
         rows.append(_line_row(line, FIRST + len(rows), len(guards), protection))
-    about = "Metres of cable and numbers of fuses follow the sheets Cables and Protection; reels and cuts do not."
+    about = "Metres and fuses follow the sheets Cables and Protection; reels and cuts do not."
     note = prices.about if prices is not None else "No price list: unit prices of your own may be written in."
     currency = f" ({prices.currency})" if prices is not None else " (own currency)"
     fill(sheet, Header(plan, "shopping", about, note), _columns(currency), rows)
@@ -65,15 +65,15 @@ def _settings(sheet: Worksheet, bill: Bill, rows: Sequence[Sequence[Any]], cable
     def cells(heading: str) -> str:
         return f"${_S[heading]}${FIRST}:${_S[heading]}${last}"
 
-    setting(sheet, "E2", "Spare on cable:", "F2", bill.wanted.spare, "0 %")
+    setting(sheet, "J2", "Spare on cable:", "K2", bill.wanted.spare, "0 %")
     links_m = sum(_links_m(one) for one in bill.cables)
     every_m = f"SUM({sheet_cables.column('All conductors (m)', cables)})+{links_m:.9g}"
     counted = f'SUMIFS({cells(NEEDED)},{cells("Item")},"cable")'
-    setting(sheet, "E3", "Cable in no row below, after a change of colour (m):", "F3",
+    setting(sheet, "J3", "Cable in no row below, after a change of colour (m):", "K3",
             Formula(f"=ROUND({every_m}-{counted},6)"), "0.00")  # fmt: skip
     setting(sheet, "L2", "Total:", "M2", Formula(f"=SUM({cells(PRICE)})"), "0.00")
     to_price = sum(row[_PRICE_AT] is not None for row in rows)
-    setting(sheet, "L3", "Lines without a price:", "M3", Formula(f"={to_price}-COUNT({cells(PRICE)})"), "0")
+    setting(sheet, "L3", "No price:", "M3", Formula(f"={to_price}-COUNT({cells(PRICE)})"), "0")
 
 
 def _links_m(one: CableBought) -> float:
@@ -139,8 +139,8 @@ def _counted(line: Line, row: int, guards: int, protection: Mapping[str, str]) -
 CUTS = (
     Column("Cut no.", 6, "0"), Column("Reel no.", 6, "0"), Column("Cut from", 24), Column("Size", 11),
     Column("Material", 10), Column("Strand", 10), Column("Insulation (°C)", 10, "0"), Column("Colour", 10),
-    Column("Reel (m)", 9, "0.00"), Column("Label", 12), Column("Run or battery", 22), Column("From", 17),
-    Column("To", 17), Column("Pole", 8), Column("Cut to (m)", 9, "0.00"), Column("Cut to (ft)", 9, "0.0"),
+    Column("Reel (m)", 9, "0.00"), Column("Label", 12), Column("Run or battery", 24), Column("From", 20),
+    Column("To", 20), Column("Pole", 8), Column("Cut to (m)", 9, "0.00"), Column("Cut to (ft)", 9, "0.0"),
     Column("Left on it (m)", 9, "0.00"),
 )  # fmt: skip
 _C = letters(CUTS)
