@@ -89,6 +89,21 @@ class Page:
 
     def type_into(self, heading: str, row: int, text: str) -> None:
         """Type into a cell of the editor that is shown, as from the keyboard, and commit it."""
+        self._open(heading, row)
+        field = self.tab.locator(".gdg-input, .gdg-style textarea, #portal textarea").first
+        field.wait_for()
+        field.fill(text)
+        self.tab.keyboard.press("Enter")
+
+    def choose_in(self, heading: str, row: int, text: str) -> None:
+        """Choose from the list that a cell of the editor opens, by the keyboard."""
+        self._open(heading, row)
+        field = self.tab.locator("#portal input").first
+        field.wait_for()
+        self.tab.keyboard.type(text)
+        self.tab.keyboard.press("Enter")
+
+    def _open(self, heading: str, row: int) -> None:
         editor = self.tab.locator("[data-testid=stDataFrame]").first
         # The editor is drawn after the results are there, on a busy machine well after.
         editor.locator("th", has_text=re.compile(f"^{heading}$")).first.wait_for(state="attached")
@@ -106,10 +121,6 @@ class Page:
                 self.tab.keyboard.press(key)
                 self.tab.wait_for_timeout(30)
         self.tab.keyboard.press("Enter")
-        field = self.tab.locator(".gdg-input, .gdg-style textarea, #portal textarea").first
-        field.wait_for()
-        field.fill(text)
-        self.tab.keyboard.press("Enter")
 
     def wait_until(self, what: Any) -> None:
         """Wait until the page shows what is expected, or fail."""
@@ -122,7 +133,11 @@ class Page:
 
     def press(self, name: str) -> None:
         """Press a button by its words."""
-        self.tab.get_by_role("button", name=name, exact=True).click()
+        self.button(name).click()
+
+    def button(self, name: str) -> Any:
+        """A button by its words, which the keys of its shortcut may follow."""
+        return self.tab.get_by_role("button", name=re.compile(rf"^{name}( Shortcut .*)?$"))
 
     def download(self, name: str) -> bytes:
         """What a download button hands over."""
@@ -156,7 +171,7 @@ def test_one_edit_after_another_and_a_wrong_one_lose_nothing(browser: Any, addre
     assert page.tab.get_by_text("cannot be used yet").is_visible()
     assert page.cells("What is wrong")[0][:3] == ['runs "fridge feed"', "size", '"six"']
     texts = [page.download("Download plan")]
-    while page.tab.get_by_role("button", name="Undo", exact=True).is_enabled():
+    while page.button("Undo").is_enabled():
         page.press("Undo")
         page.wait_until(lambda: page.download("Download plan") != texts[-1])
         texts.append(page.download("Download plan"))
@@ -242,3 +257,41 @@ def test_the_pages_answer_on_this_machine_only(address: str) -> None:
     assert address.startswith("http://127.0.0.1:")
     with opener.open(address, timeout=20) as answer:
         assert answer.status == 200
+
+
+def test_undo_and_redo_by_the_keyboard(browser: Any, address: str) -> None:
+    page = Page(browser, address)
+    before = page.fridge_volts()
+    page.type_into("Length", FRIDGE_FEED, "9 m")
+    page.wait_until(lambda: page.fridge_volts() < before)
+    after = page.fridge_volts()
+    page.tab.keyboard.press("Control+z")
+    page.wait_until(lambda: page.fridge_volts() == before)
+    page.tab.keyboard.press("Control+y")
+    page.wait_until(lambda: page.fridge_volts() == after)
+
+
+def test_a_point_is_chosen_from_a_list_that_a_new_one_was_added_to(browser: Any, address: str) -> None:
+    page = Page(browser, address)
+    page.cells("From point")
+    page.press("New point")
+    page.tab.get_by_role("textbox", name="Name of the point").fill("awning")
+    page.tab.keyboard.press("Enter")
+    page.tab.get_by_role("textbox", name="Name of the point").wait_for(state="hidden")
+    page.choose_in("To point", FRIDGE_FEED, "awning")
+    page.wait_until(lambda: 'to = "awning"' in page.download("Download plan").decode())
+    assert edits.read(page.download("Download plan").decode())["runs"][FRIDGE_FEED]["to"] == "awning"
+
+
+def test_undo_while_a_text_is_typed_is_the_texts_own(browser: Any, address: str) -> None:
+    page = Page(browser, address)
+    before = page.fridge_volts()
+    page.type_into("Length", FRIDGE_FEED, "9 m")
+    page.wait_until(lambda: page.fridge_volts() < before)
+    page.press("Paste rows")
+    field = page.tab.get_by_role("textbox", name="Rows copied from a spreadsheet")
+    field.click()
+    page.tab.keyboard.type("x")
+    page.tab.keyboard.press("Control+z")
+    page.tab.wait_for_timeout(1500)
+    assert 'length = "9 m"' in page.download("Download plan").decode()

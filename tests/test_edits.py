@@ -30,13 +30,13 @@ def test_one_field_changes_one_line() -> None:
 
 
 def test_a_comment_behind_a_value_stays() -> None:
-    after = apply(VAN, [Set("sources", 0, ("resistance",), "12 mohm")])
-    assert 'resistance = "12 mohm"          # cells, links' in after
+    after = apply(VAN, [Set("sources", 0, ("resistance",), "15 mohm")])
+    assert 'resistance = "15 mohm"         # cells, links' in after
 
 
 def test_a_field_within_a_field() -> None:
-    after = apply(VAN, [Set("runs", 0, ("protection", "rating"), "100 A")])
-    assert read(after)["runs"][0]["protection"]["rating"] == "100 A"
+    after = apply(VAN, [Set("runs", 0, ("protection", "rating"), "80 A")])
+    assert read(after)["runs"][0]["protection"]["rating"] == "80 A"
     assert len(changed_lines(VAN, after)) == 2
 
 
@@ -230,3 +230,42 @@ def test_blocks_put_together_are_the_text(text: str) -> None:
 
 def test_no_step_no_change() -> None:
     assert edits.apply(VAN, []) == VAN
+
+
+def test_two_entries_change_places_with_the_comments_right_above_them() -> None:
+    text = (
+        'format = 1\n\n# Runs of the van\n\n# to the galley\n[[runs]]\nname = "a"\n\n'
+        '# to the bed\n[[runs]]\nname = "b"  # long\n\n[[loads]]\nname = "lamp"\n'
+    )
+    swapped = (
+        'format = 1\n\n# Runs of the van\n\n# to the bed\n[[runs]]\nname = "b"  # long\n\n'
+        '# to the galley\n[[runs]]\nname = "a"\n\n[[loads]]\nname = "lamp"\n'
+    )
+    assert apply(text, [edits.Swap("runs", 0, 1)]) == swapped
+    assert apply(swapped, [edits.Swap("runs", 1, 0)]) == text
+
+
+@pytest.mark.parametrize("text", ALL_TEXTS)
+@pytest.mark.parametrize("table", ["runs", "sources", "loads", "zones", "cases"])
+def test_a_swap_made_twice_is_none_and_moves_only_the_two(text: str, table: str) -> None:
+    before = read(text).get(table, [])
+    keys = list(before) if isinstance(before, dict) else list(range(len(before)))
+    if len(keys) < 2:
+        return
+    step = edits.Swap(table, keys[-1], keys[0])
+    once = apply(text, [step])
+    after = read(once)[table]
+    order = list(after) if isinstance(after, dict) else [row["name"] for row in after]
+    expected = list(before) if isinstance(before, dict) else [row["name"] for row in before]
+    expected[0], expected[-1] = expected[-1], expected[0]
+    assert order == expected
+    assert sorted(once.splitlines()) == sorted(text.splitlines())
+    again = step if isinstance(before, list) else edits.Swap(table, keys[0], keys[-1])
+    assert read(apply(once, [again])) == read(text)
+
+
+def test_entries_that_have_no_block_of_their_own_change_places_too() -> None:
+    text = 'format = 1\nloads = [{ name = "a", at = "x" }, { name = "b", at = "y" }]\n'
+    assert [row["name"] for row in read(apply(text, [edits.Swap("loads", 0, 1)]))["loads"]] == ["b", "a"]
+    with pytest.raises(FarvoltError, match="no entry"):
+        apply(text, [edits.Swap("loads", 0, 2)])

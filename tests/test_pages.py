@@ -9,7 +9,7 @@ import pytest
 from streamlit.testing.v1 import AppTest
 
 from farvolt import examples, planfile
-from farvolt_app import columns, edits
+from farvolt_app import columns, edits, tables
 from farvolt_app.edits import Set
 from farvolt_app.server import ENTRY, PLAN_VARIABLE
 
@@ -202,6 +202,18 @@ def test_a_faulty_file_is_said_in_full_and_can_be_opened_all_the_same(page: AppT
         assert "no results yet" in page.info[0].value
 
 
+def test_the_guided_start_makes_a_plan_to_go_on_with(page: AppTest) -> None:
+    page.switch_page("start_page.py").run()
+    assert not page.exception
+    page.text_input[[one.label for one in page.text_input].index("Name of the plan")].set_value("Cottage on wheels")
+    page.button[[one.label for one in page.button].index("Make the plan")].click().run()
+    assert not page.exception
+    draft = page.session_state["draft"]
+    assert draft.plan.plan.name == "Cottage on wheels"
+    assert draft.plan.loads[0].name == "compressor fridge"
+    assert not [one for one in draft.results.findings if one.rule == "protection.missing" and one.severity == "fail"]
+
+
 @pytest.mark.parametrize(
     "script", ["drawing_page.py", "findings_page.py", "protection_page.py", "bank_page.py", "schedule_page.py"]
 )
@@ -263,3 +275,113 @@ def test_text_from_a_plan_is_only_text(page: AppTest) -> None:
         kept_as_text = "\n".join(str(one.value) for one in page.text)
         for markup in ("<img", ":red[", "`c`", "](http", ":material/", "~~s", "**b**"):
             assert not re.search(r"(?<!\\)" + re.escape(markup), shown.replace(kept_as_text, ""))
+
+
+def test_the_bank_is_sized_anew_when_a_setting_of_it_changes(page: AppTest) -> None:
+    choose(page, "Settings")
+    field = next(one for one in page.text_input if one.label == "Days of autonomy")
+    assert field.value == "1"
+    field.set_value("3").run()
+    assert not page.exception
+    assert page.session_state["draft"].results.plan.bank.autonomy == 3
+    page.switch_page("bank_page.py").run()
+    assert not page.exception
+    assert any(one.label.startswith("**FAIL**") and "the plan asks for 3" in one.label for one in page.expander)
+
+
+def arrange(at: AppTest, row: int, button: str) -> AppTest:
+    """Press a button for one entry of the table shown."""
+    box = next(one for one in at.selectbox if str(one.key).startswith("arranged-"))
+    box.set_value(row).run()
+    at.button(key=button).click().run()
+    assert not at.exception
+    return at
+
+
+def names_in(at: AppTest, table: str) -> list[str]:
+    """The names of a table's entries as the draft's text holds them."""
+    return [row["name"] for row in edits.read(at.session_state["draft"].text)[table]]
+
+
+def test_an_entry_is_moved_up_and_down_and_duplicated_under_a_name_counted_on(page: AppTest) -> None:
+    before = names_in(page, "runs")
+    arrange(page, 2, "move_up")
+    assert names_in(page, "runs")[:3] == [before[0], before[2], before[1]]
+    page.button(key="move_down").click().run()  # the entry stays chosen where it went
+    assert names_in(page, "runs") == before
+    choose(page, "Loads")
+    arrange(page, names_in(page, "loads").index("ceiling lamp 1"), "duplicate_entry")
+    loads = names_in(page, "loads")
+    assert loads[loads.index("ceiling lamp 1") + 1] == next(
+        f"ceiling lamp {n}" for n in range(2, 99) if f"ceiling lamp {n}" not in names_in(started(), "loads")
+    )
+    choose(page, "Chargers")
+    box = next(one for one in page.selectbox if one.key == "arranged-chargers")
+    assert len(box.options) == len(page.data_editor[0].value)
+
+
+def test_the_first_entry_cannot_go_up_nor_the_last_down(page: AppTest) -> None:
+    choose(page, "Batteries")
+    assert page.button(key="move_up").disabled
+    assert page.button(key="move_down").disabled
+
+
+def test_points_are_offered_and_a_new_one_joins_them(page: AppTest) -> None:
+    offered = edits.read(VAN)
+    assert page.toggle(key="choose_points").value is True
+    page.text_input(key="new_point").set_value("awning").run()
+    assert not page.exception
+    assert page.session_state["new_points"] == ("awning",)
+    assert "awning" not in tables.points(offered)
+    page.toggle(key="choose_points").set_value(False).run()
+    assert not [one for one in page.text_input if one.key == "new_point"]
+
+
+def test_rows_copied_from_a_spreadsheet_are_added(page: AppTest) -> None:
+    head, row = "Name\tFrom point\tTo point\tLength\tSize", "awning feed\tmain bus\tawning\t3 m\t4 mm2"
+    page.text_area(key="pasted").set_value(f"{head}\n{row}")
+    page.button(key="add_pasted").click().run()
+    assert not page.exception
+    assert page.info[0].value == r"One row added\."
+    added = edits.read(page.session_state["draft"].text)["runs"][-1]
+    assert added == {"name": "awning feed", "from": "main bus", "to": "awning", "length": "3 m", "size": "4 mm2"}
+    page.text_area(key="pasted").set_value("Name\tFrom point\tLenght\nx\ty\tz")
+    page.button(key="add_pasted").click().run()
+    assert "Lenght" in page.info[0].value
+    assert "Length" in page.info[0].value
+    assert len(names_in(page, "runs")) == len(edits.read(VAN)["runs"]) + 1
+
+
+def test_edits_are_not_lost_unasked_when_another_plan_is_opened(page: AppTest) -> None:
+    page.button(key="open-bird-observatory-cabin").click().run()
+    assert not page.warning  # nothing was edited
+    write(page, page.session_state["draft"].text + "\n# mine\n")
+    page.button(key="open-instrument-repair-van").click().run()
+    assert "not saved" in page.warning[0].value
+    assert page.session_state["draft"].text.endswith("# mine\n")
+    page.button(key="keep_editing").click().run()
+    assert not page.warning
+    page.button(key="open-instrument-repair-van").click().run()
+    page.button(key="open_waiting").click().run()
+    assert page.session_state["draft"].text == VAN
+    assert not page.warning
+
+
+def test_autosave_writes_each_valid_change_and_keeps_what_was_there_before(page: AppTest, tmp_path: Path) -> None:
+    file = tmp_path / "plan.toml"
+    first = examples.starter_text()
+    file.write_text(first)
+    open_file(page, str(file))
+    next(one for one in page.toggle if str(one.key).startswith("autosave")).set_value(True).run()
+    for name in ("One", "Two"):
+        write(page, first.replace('"My plan"', f'"{name}"'))
+        assert planfile.read(file).plan.plan.name == name
+    write(page, "faulty")
+    assert planfile.read(file).plan.plan.name == "Two"
+    assert (tmp_path / "plan.toml.previous").read_text() == first
+    file.write_text("somebody else's")
+    write(page, first)
+    assert "Autosave is off now" in page.info[0].value
+    assert file.read_text() == "somebody else's"
+    assert page.session_state["draft"].text == first
+    assert not page.session_state["draft"].autosave

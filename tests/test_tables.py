@@ -117,7 +117,7 @@ def test_a_zone_is_renamed_with_its_other_edits() -> None:
 def test_of_several_protections_the_first_is_edited_and_the_rest_is_mentioned() -> None:
     both = [{"type": "blade", "rating": "10 A"}, {"type": "blade", "rating": "5 A", "end": "to"}]
     text = VAN.replace(
-        'protection = { type = "cartridge", rating = "125 A", distance = "0.1 m" }',
+        'protection = { type = "cartridge", rating = "100 A", distance = "0.1 m" }',
         'protection = [{ type = "blade", rating = "10 A" }, { type = "blade", rating = "5 A", end = "to" }]',
     )
     assert edits.read(text)["runs"][0]["protection"] == both

@@ -19,7 +19,7 @@ UNDO_LIMIT = 200
 
 @dataclass(frozen=True, slots=True)
 class Draft:
-    """A plan being edited. `path` is its file, if it has one, and `stamp` that of the text last read or saved there."""
+    """A plan being edited. `path` is its file, if it has one, and `stamp` that of the text last opened or saved."""
 
     text: str
     valid_text: str | None
@@ -32,6 +32,10 @@ class Draft:
     redo_texts: tuple[str, ...] = ()
     path: Path | None = None
     stamp: str | None = None
+    autosave: bool = False
+    """Whether every valid change is written to `path` at once."""
+    autosaved: bool = False
+    """Whether that happened since the plan was opened: its file's previous version is the one from before."""
 
     @property
     def plan(self) -> Plan | None:
@@ -40,7 +44,7 @@ class Draft:
 
     @property
     def saved(self) -> bool:
-        """Whether the text is the one in its file."""
+        """Whether the text is the one that was opened or saved last."""
         return self.stamp is not None and planfile.stamp(self.text) == self.stamp
 
     def edit(self, text: str) -> "Draft":
@@ -70,9 +74,19 @@ class Draft:
         if not path.parent.is_dir():
             raise SaveError(f"{path}: there is no folder {path.parent}; nothing was written")
         planfile.save(path, self.text, expected=self.stamp if own else None)
-        saved = replace(self, path=path, stamp=planfile.stamp(self.text))
+        saved = replace(self, path=path, stamp=planfile.stamp(self.text), autosave=self.autosave and own)
         # A rulebook of the user's own is looked for beside the file, so another folder may change the results.
         return saved if own else saved._with(self.text)
+
+    def autosave_now(self) -> "Draft":
+        """Write a valid change to its file, where autosave is on; NAME.previous stays what was there at the start.
+
+        Raises SaveError when the file is another one by now, or cannot be written.
+        """
+        if not self.autosave or self.path is None or self.faults or self.saved:
+            return self
+        planfile.save(self.path, self.text, expected=self.stamp, keep_previous=not self.autosaved)
+        return replace(self, stamp=planfile.stamp(self.text), autosaved=True)
 
     def _with(self, text: str) -> "Draft":
         results, faults = examine(text, self.path)
@@ -81,10 +95,10 @@ class Draft:
         return replace(self, text=text, valid_text=text, results=results, faults=())
 
 
-def begin(text: str, path: Path | None = None) -> Draft:
-    """A draft of a text, valid or not; `path` is the file that it was read from."""
+def begin(text: str, path: Path | None = None, *, new: bool = False) -> Draft:
+    """A draft of a text, valid or not; `path` is the file that it was read from. A `new` text is nowhere else yet."""
     results, faults = examine(text, path)
-    stamp = planfile.stamp(text) if path else None
+    stamp = None if new else planfile.stamp(text)
     return Draft(text, text if results else None, results, faults, path=path, stamp=stamp)
 
 

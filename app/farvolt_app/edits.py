@@ -64,7 +64,16 @@ class Remove:
     entry: Entry
 
 
-Step = Set | RenameKey | Add | Duplicate | Remove
+@dataclass(frozen=True, slots=True)
+class Swap:
+    """Let two entries of a table change places; the comments right above each go with it."""
+
+    table: str
+    entry: Entry
+    other: Entry
+
+
+Step = Set | RenameKey | Add | Duplicate | Remove | Swap
 
 
 def read(text: str) -> dict[str, Any]:
@@ -160,9 +169,11 @@ def _list(value: Any) -> list[Any]:
 
 def _means(text: str, expected: dict[str, Any]) -> bool:
     try:
-        return tomllib.loads(text) == expected
+        found = tomllib.loads(text)
     except tomllib.TOMLDecodeError:
         return False
+    # Equal tables may still stand in another order, which is all that a swap of named ones changes.
+    return found == expected and all(_names(found, table) == _names(expected, table) for table in NAMED)
 
 
 # What a step does to tables: plain ones, to know what is meant, or tomlkit's, to write it.
@@ -187,8 +198,25 @@ def _perform(tables: Any, step: Step, *, whole: bool) -> None:
             fields["name"] = step.name
         place = step.entry + 1 if isinstance(step.entry, int) else None
         _insert(tables, step.table, fields, step.name, place)
+    elif isinstance(step, Swap):
+        _swap(tables, step)
     else:
         _insert(tables, step.table, step.fields, step.name, None)
+
+
+def _swap(tables: Any, step: Swap) -> None:
+    one, other = (_entry_of(tables, step.table, key) for key in (step.entry, step.other))
+    holder = tables[step.table]
+    if isinstance(step.entry, int) and isinstance(step.other, int):
+        holder[step.entry], holder[step.other] = copy.deepcopy(other), copy.deepcopy(one)
+        return
+    keys = list(holder)
+    first, second = keys.index(step.entry), keys.index(step.other)
+    keys[first], keys[second] = keys[second], keys[first]
+    fields = dict(holder)
+    for key in keys:
+        del holder[key]
+        holder[key] = fields[key]
 
 
 def _insert(tables: Any, table: str, fields: dict[str, Any], name: str | None, place: int | None) -> None:
@@ -315,6 +343,12 @@ def _by_blocks(text: str, steps: Sequence[Step]) -> str | None:
         if isinstance(step, Add):
             _append(blocks, step)
             continue
+        if isinstance(step, Swap):
+            swapped = _swapped(blocks, step)
+            if swapped is None:
+                return None
+            blocks = split(swapped)
+            continue
         key: Entry = step.path[0] if isinstance(step, RenameKey) and step.table in NAMED else step.entry
         span = group(blocks, step.table, key)
         if span is None:
@@ -323,6 +357,31 @@ def _by_blocks(text: str, steps: Sequence[Step]) -> str | None:
         blocks[span] = split(_in_block(core, step) + tail)
     changed = "".join(block.text for block in blocks)
     return re.sub(r"\r?\n", "\r\n", changed) if "\r\n" in text else changed
+
+
+def _swapped(blocks: list[Block], step: Swap) -> str | None:
+    """The text with two entries in each other's place; None where one of them has no block of its own."""
+    found = [group(blocks, step.table, entry) for entry in (step.entry, step.other)]
+    spans = sorted((span for span in found if span is not None), key=lambda span: int(span.start))
+    if len(spans) < 2 or spans[0].stop > spans[1].start:
+        return None
+    texts = [block.text for block in blocks]
+    one, one_tail = core_and_tail("".join(texts[spans[0]]))
+    other, other_tail = core_and_tail("".join(texts[spans[1]]))
+    before, above_one = _introduction("".join(texts[: spans[0].start]))
+    between, above_other = _introduction(one_tail + "".join(texts[spans[0].stop : spans[1].start]))
+    after = other_tail + "".join(texts[spans[1].stop :])
+    return before + above_other + other + between + above_one + one + after
+
+
+def _introduction(text: str) -> tuple[str, str]:
+    """A text, and apart the comment lines at its very end: they stand right above the entry that follows."""
+    lines = text.split("\n")
+    kept = len(lines) - 1
+    while kept and lines[kept - 1].lstrip().startswith("#"):
+        kept -= 1
+    above = lines[kept:]
+    return "\n".join(lines[:kept]) + ("\n" if kept else ""), "\n".join(above)
 
 
 def _in_block(core: str, step: Set | RenameKey | Duplicate | Remove) -> str:

@@ -32,7 +32,8 @@ def keep(name: str, draft: Draft) -> None:
     if file is None:
         return
     path = str(draft.path) if draft.path else None
-    kept = {"text": draft.text, "valid_text": draft.valid_text, "path": path, "stamp": draft.stamp}
+    kept = {"text": draft.text, "valid_text": draft.valid_text, "path": path, "stamp": draft.stamp,
+            "autosave": draft.autosave, "autosaved": draft.autosaved}  # fmt: skip
     with contextlib.suppress(OSError):
         planfile.write_whole(file, json.dumps(kept).encode())
 
@@ -48,7 +49,10 @@ def kept(name: str) -> Draft | None:
         return None
     path = Path(found["path"]) if found["path"] else None
     first = drafts.begin(found["valid_text"] or found["text"], path)
-    return replace(first.edit(found["text"]), undo_texts=(), stamp=found["stamp"])
+    return replace(
+        first.edit(found["text"]), undo_texts=(), stamp=found["stamp"], autosave=found["autosave"] is True,
+        autosaved=found["autosaved"] is True,
+    )  # fmt: skip
 
 
 def _file(name: str) -> Path | None:

@@ -4,10 +4,13 @@ A cell holds the text as it was written. What is typed is kept even where it mak
 lost; the fault is then the plan's to name.
 """
 
+import csv
 import re
 from collections.abc import Mapping, Sequence
 from typing import Any
 
+from farvolt import integrity
+from farvolt.errors import FarvoltError
 from farvolt.plan import NAMED
 from farvolt_app import edits
 from farvolt_app.blocks import Entry
@@ -64,12 +67,31 @@ def choices(raw: Raw, column: Column, classes: Sequence[str]) -> tuple[str, ...]
     return column.choices
 
 
+POINT_FIELDS = ("from", "to", "at", "array.at")
+"""The columns that name a point."""
+
+
+def points(raw: Raw) -> list[str]:
+    """Every point that the plan names anywhere, in the order of the alphabet."""
+    named = [_entry(row).get("name") for row in _list(raw, "points")]
+    for table in ("runs", "devices", "loads", "sources"):
+        for row in _list(raw, table):
+            entry = _entry(row)
+            named += [entry.get("from"), entry.get("to"), entry.get("at"), _entry(entry.get("array")).get("at")]
+    return sorted({name for name in named if isinstance(name, str) and name.strip()}, key=str.casefold)
+
+
+def neighbours(raw: Raw, sheet: Sheet, row: int) -> tuple[Entry, Entry]:
+    """The entries above and below a row of a sheet, None where it is the first or the last."""
+    shown = keys(raw, sheet)
+    return shown[row - 1] if row > 0 else None, shown[row + 1] if row + 1 < len(shown) else None
+
+
 def hidden_protection(raw: Raw) -> list[str]:
     """The runs with more protection at hand than the table of runs has columns for."""
-    runs = raw.get("runs")
     return [
         str(_entry(run).get("name", ""))
-        for run in (runs if isinstance(runs, list) else [])
+        for run in _list(raw, "runs")
         if isinstance(_entry(run).get("protection"), list) and len(run["protection"]) > 1
     ]
 
@@ -94,7 +116,42 @@ def steps(raw: Raw, sheet: Sheet, delta: Delta) -> list[Step]:
                 found.append(Set(sheet.table, key, _path(entry, by_id[name]), typed(value, by_id[name])))
     found += renames
     found += [Remove(sheet.table, shown[row]) for row in deleted]
-    return found + _added(raw, sheet, by_id, delta.get("added_rows", ()))
+    return found + additions(raw, sheet, delta.get("added_rows", ()))
+
+
+def pasted(text: str, sheet: Sheet, shown: Sequence[Column]) -> list[Row]:
+    """Rows copied from a spreadsheet, or CSV; their first may be headings, else they are in the order shown.
+
+    Raises FarvoltError for a row with more cells than there are columns.
+    """
+    delimiter = "\t" if "\t" in text else max(";,", key=text.count)
+    lines = [row for row in csv.reader(text.strip("\n").splitlines(), delimiter=delimiter) if any(map(str.strip, row))]
+    named = [heading(sheet, cell) for cell in lines[0]] if lines else []
+    if sum(one is not None for one in named) * 2 > len(named):
+        unknown = [cell for cell, one in zip(lines[0], named, strict=True) if one is None and cell.strip()]
+        if unknown:
+            raise FarvoltError(f'"{unknown[0].strip()}" is no column here{_nearest_heading(sheet, unknown[0])}')
+        order, lines = named, lines[1:]
+    else:
+        order = list(shown)
+    for number, row in enumerate(lines, start=1):
+        if len(row) > len(order):
+            raise FarvoltError(f"row {number} has {len(row)} cells; accepted: up to {len(order)}, in the order "
+                               f"{', '.join(one.label for one in order if one)}")  # fmt: skip
+    return [
+        {one.id: cell.strip() for one, cell in zip(order, row, strict=False) if one and cell.strip()} for row in lines
+    ]
+
+
+def heading(sheet: Sheet, text: str) -> Column | None:
+    """The column that a heading means: its label or its field's name, in any case; None where it is none."""
+    wanted = " ".join(text.split()).casefold()
+    return next((one for one in sheet.columns if wanted in (one.label.casefold(), one.id.casefold())), None)
+
+
+def _nearest_heading(sheet: Sheet, text: str) -> str:
+    near = integrity.nearest(text.strip(), [one.label for one in sheet.columns])
+    return f"; did you mean {near}?" if near else f"; accepted: {', '.join(one.label for one in sheet.columns)}"
 
 
 def renames(sheet: Sheet, delta: Delta) -> bool:
@@ -117,17 +174,21 @@ def typed(value: Any, column: Column) -> Any:
 
 
 def free_name(raw: Raw, table: str, name: str) -> str:
-    """`name`, or the first of "name 2", "name 3", … that no entry of the table has."""
+    """`name`, or the first that no entry of the table has when its number is counted on: "pump 2" after "pump"."""
     found = raw.get(table, ())
     taken = set(found) if isinstance(found, dict) else {_entry(row).get("name") for row in found}
-    number, tried = 1, name
+    counted = re.fullmatch(r"(.*\S)( )(\d{1,6})", name)
+    stem, number = (counted[1], int(counted[3])) if counted else (name, 1)
+    tried = name
     while tried in taken:
         number += 1
-        tried = f"{name} {number}"
+        tried = f"{stem} {number}"
     return tried
 
 
-def _added(raw: Raw, sheet: Sheet, by_id: dict[str, Column], added: Sequence[Mapping[str, Any]]) -> list[Step]:
+def additions(raw: Raw, sheet: Sheet, added: Sequence[Mapping[str, Any]]) -> list[Step]:
+    """The steps that add rows of cells, by the columns' identifiers, at the end of a sheet."""
+    by_id = {column.id: column for column in sheet.columns}
     found: list[Step] = []
     taken = {sheet.table: dict.fromkeys(raw.get(sheet.table, ()))} if sheet.table in NAMED else {}
     for cells in added:
@@ -154,6 +215,11 @@ def _put(fields: dict[str, Any], path: tuple[str, ...], value: Any) -> None:
         fields[part] = inner if isinstance(inner, dict) else {}
         fields = fields[part]
     fields[path[-1]] = value
+
+
+def _list(raw: Raw, table: str) -> list[Any]:
+    found = raw.get(table)
+    return found if isinstance(found, list) else []
 
 
 def _entry(row: Any) -> dict[str, Any]:

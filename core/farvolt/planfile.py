@@ -115,8 +115,8 @@ def stamp(text: str) -> str:
     return hashlib.sha256(text.encode()).hexdigest()
 
 
-def save(path: Path, text: str, *, expected: str | None) -> None:
-    """Write a plan file whole or not at all, keeping the previous version as NAME.previous beside it.
+def save(path: Path, text: str, *, expected: str | None, keep_previous: bool = True) -> None:
+    """Write a plan file whole or not at all, keeping the previous version as NAME.previous beside it (if asked to).
 
     `expected` is the stamp of the text that was read (None: the file must not exist yet). Raises SaveError when
     the file on disk is another one by now, or cannot be written. A link is followed, not replaced.
@@ -129,7 +129,7 @@ def save(path: Path, text: str, *, expected: str | None) -> None:
         if present is not None and not _is(present, expected):
             problem = "the file changed on disk since it was read"
             raise SaveError(f"{path}: {problem}; nothing was written. Save under another name, or open it again.")
-        if present is not None:
+        if present is not None and keep_previous:
             write_whole(target.with_name(target.name + ".previous"), present)
         write_whole(target, text.encode())
     except OSError as error:

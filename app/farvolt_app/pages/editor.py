@@ -12,7 +12,7 @@ from farvolt_app import case_grid, columns, edits, tables
 from farvolt_app.blocks import Entry
 from farvolt_app.columns import Column, Sheet
 from farvolt_app.edits import Step
-from farvolt_app.pages import state
+from farvolt_app.pages import once_settings, state
 from farvolt_app.shown import plain
 
 SETTINGS, CASES, TEXT = "Settings", "Cases", "Text"
@@ -63,10 +63,10 @@ def _apply_to_draft(making: Making, *, keep_editors: bool = False) -> None:
 
 def _sheet(raw: tables.Raw, sheet: Sheet) -> None:
     st.caption(sheet.hint + " Hover over a heading for its meaning; the last, empty row adds an entry.")
-    everything = st.session_state.get("everything", False)
+    everything, offered = st.session_state.get("everything", False), st.session_state.get("choose_points", True)
     shown = tables.columns(raw, sheet, everything=everything)
     frame = pd.DataFrame(tables.rows(raw, sheet), columns=[column.id for column in shown], dtype=object)
-    key = state.editor_key(f"{sheet.id}{everything}")
+    key = state.editor_key(f"{sheet.id}{everything}{offered}")
     classes = _classes()
     st.data_editor(
         frame,
@@ -75,7 +75,7 @@ def _sheet(raw: tables.Raw, sheet: Sheet) -> None:
         hide_index=True,
         placeholder="",
         height=min(MOST_PX, HEAD_PX + ROW_PX * (len(frame) + 1) + 2),
-        column_config={column.id: _config(raw, column, frame, classes) for column in shown},
+        column_config={column.id: _config(raw, column, frame, classes, offered) for column in shown},
         on_change=_commit,
         args=(sheet, key),
         alt=f"Table of {sheet.title.lower()}, to edit",
@@ -85,7 +85,14 @@ def _sheet(raw: tables.Raw, sheet: Sheet) -> None:
         st.caption(plain(f"More protection than shown here, under {TEXT}: {', '.join(more)}."))
     with st.container(horizontal=True, vertical_alignment="center"):
         st.toggle("Show all fields", key="everything", on_change=state.show_anew, persist_state="session")
-        _duplicate(sheet)
+        if any(column.id in tables.POINT_FIELDS for column in shown):
+            st.toggle("Choose points", True, key="choose_points", on_change=state.show_anew, persist_state="session",
+                      help="On: points are chosen from a list, which New point adds to. Off: they are typed, and a "
+                           "point exists by being named.")  # fmt: skip
+            if offered:
+                _new_point()
+        _paste(sheet, everything)
+        _arrange(sheet)
 
 
 def _commit(sheet: Sheet, key: str) -> None:
@@ -96,8 +103,12 @@ def _commit(sheet: Sheet, key: str) -> None:
     )
 
 
-def _config(raw: tables.Raw, column: Column, frame: pd.DataFrame, classes: Sequence[str]) -> Any:
+def _config(
+    raw: tables.Raw, column: Column, frame: pd.DataFrame, classes: Sequence[str], choose_points: bool
+) -> Any:
     offered = tables.choices(raw, column, classes)
+    if choose_points and column.id in tables.POINT_FIELDS:
+        offered = (*tables.points(raw), *st.session_state.get("new_points", ()))
     # A pinned column looks as if it could not be changed, so the name is pinned only where it would scroll away.
     pinned = column.id == "name" and len(frame.columns) > MOST_UNPINNED
     if not offered:
@@ -113,14 +124,65 @@ def _classes() -> tuple[str, ...]:
     return tuple(results.rulebook.classes) if results else ()
 
 
-def _duplicate(sheet: Sheet) -> None:
+def _new_point() -> None:
+    with st.popover("New point", key="adding_point", on_change="rerun"):
+        st.text_input("Name of the point", key="new_point", on_change=_add_point, placeholder="such as galley",
+                      help="It is offered in the table then, and part of the plan once a row names it.")  # fmt: skip
+
+
+def _add_point() -> None:
+    name = str(st.session_state["new_point"]).strip()
+    if name:
+        st.session_state["new_points"] = (*st.session_state.get("new_points", ()), name)
+        st.session_state["new_point"], st.session_state["adding_point"] = "", False
+        state.show_anew()
+
+
+def _paste(sheet: Sheet, everything: bool) -> None:
+    with st.popover("Paste rows", key="pasting", on_change="rerun"):
+        st.text_area("Rows copied from a spreadsheet", key="pasted", height=160,
+                     help="With a row of headings as in the table, or in the order of its columns. New points and "
+                          "other names are taken as they stand.")  # fmt: skip
+        st.button("Add rows", on_click=_add_pasted, args=(sheet, everything), key="add_pasted")
+
+
+def _add_pasted(sheet: Sheet, everything: bool) -> None:
+    text = state.draft().text
+    try:
+        raw = edits.read(text)
+        rows = tables.pasted(str(st.session_state["pasted"]), sheet, tables.columns(raw, sheet, everything=everything))
+        changed = edits.apply(text, tables.additions(raw, sheet, rows))
+    except FarvoltError as error:
+        state.say(f"Nothing was added: {error}")
+        return
+    st.session_state["pasted"], st.session_state["pasting"] = "", False
+    state.say(f"{len(rows)} rows added." if len(rows) != 1 else "One row added.")
+    state.put(state.draft().edit(changed))
+
+
+def _arrange(sheet: Sheet) -> None:
+    """Buttons for one entry: a table has none for its rows."""
     raw = edits.read(state.draft().text)
-    names = {str(row["name"]): key for row, key in zip(tables.rows(raw, sheet), tables.keys(raw, sheet), strict=True)}
+    names = [str(row["name"]) for row in tables.rows(raw, sheet)]
     if not names:
         return
-    with st.popover("Duplicate an entry"):
-        chosen = str(st.selectbox("Entry", list(names), key=state.editor_key("duplicate")))
-        st.button("Duplicate", on_click=_copy, args=(sheet.table, names.get(chosen), chosen), key="duplicate_entry")
+    with st.popover("Move or duplicate"):
+        key = f"arranged-{sheet.id}"
+        if st.session_state.get(key, 0) >= len(names):
+            st.session_state[key] = len(names) - 1
+        row = int(st.selectbox("Entry", range(len(names)), format_func=names.__getitem__, key=key))
+        entry, (above, below) = tables.keys(raw, sheet)[row], tables.neighbours(raw, sheet, row)
+        with st.container(horizontal=True):
+            st.button("Up", on_click=_move, args=(sheet.table, entry, above, key, row - 1), disabled=above is None,
+                      icon=":material/arrow_upward:", key="move_up")  # fmt: skip
+            st.button("Down", on_click=_move, args=(sheet.table, entry, below, key, row + 1), disabled=below is None,
+                      icon=":material/arrow_downward:", key="move_down")  # fmt: skip
+            st.button("Duplicate", on_click=_copy, args=(sheet.table, entry, names[row]), key="duplicate_entry")
+
+
+def _move(table: str, entry: Entry, other: Entry, key: str, row: int) -> None:
+    _apply_to_draft(lambda raw: [edits.Swap(table, entry, other)])
+    st.session_state[key] = row
 
 
 def _copy(table: str, entry: Entry, name: str) -> None:
@@ -229,6 +291,7 @@ def _settings(raw: tables.Raw) -> None:
         )
         _setting(given, "conductor_temperature", "Conductor temperature", hint, words)
     _setting(given, "notes", "Notes", "For people; nothing is calculated from it.")
+    once_settings.show(raw)
 
 
 def _setting(given: tables.Raw, field: str, label: str, hint: str, options: Sequence[str] = ()) -> None:

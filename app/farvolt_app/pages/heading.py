@@ -1,18 +1,18 @@
 """The heading of every page: which plan this is, open, undo, save, and what is wrong with the draft."""
 
+from dataclasses import replace
 from pathlib import Path
 
 import streamlit as st
 
-from farvolt import examples
-from farvolt.errors import FarvoltError, PlanError
-from farvolt_app import draft as drafts
+from farvolt.errors import FarvoltError
 from farvolt_app import shown
 from farvolt_app.draft import Draft
-from farvolt_app.pages import state
+from farvolt_app.pages import keyboard, opening, state
 from farvolt_app.shown import plain
 
-OWN_TEXT = "Starter plan"
+SAVING = "saving"
+"""Key of the popover Save; it closes when the file was written."""
 
 
 def show() -> None:
@@ -21,11 +21,13 @@ def show() -> None:
     name = draft.plan.plan.name if draft.plan else "Plan with faults"
     with st.container(horizontal=True, vertical_alignment="center"):
         st.subheader(plain(name), anchor=False, width="stretch")
-        with st.popover("Open"):
-            _open()
-        st.button("Undo", on_click=_undo, disabled=not draft.undo_texts, help="Take the last edit back.", key="undo")
-        st.button("Redo", on_click=_redo, disabled=not draft.redo_texts, help="Make it again.", key="redo")
-        with st.popover("Save"):
+        with st.popover("Open", key=opening.POPOVER, on_change="rerun"):
+            opening.show()
+        st.button("Undo", on_click=_undo, disabled=not draft.undo_texts, help="Take the last edit back.", key="undo",
+                  shortcut="Mod+Z")  # fmt: skip
+        st.button("Redo", on_click=_redo, disabled=not draft.redo_texts, help="Make it again.", key="redo",
+                  shortcut="Mod+Y")  # fmt: skip
+        with st.popover("Save", key=SAVING, on_change="rerun"):
             _save(draft)
         st.download_button(
             "Download plan", draft.text, _file_name(draft), "text/plain", on_click="ignore", key="download_plan",
@@ -33,43 +35,7 @@ def show() -> None:
         )  # fmt: skip
     st.caption(plain(_whereabouts(draft)))
     _messages(draft)
-
-
-def _open() -> None:
-    titles = {examples.title(name): name for name in examples.names()}
-    st.markdown("**An example** (all are invented) or a small plan to start from")
-    for title, name in [*titles.items(), (OWN_TEXT, "")]:
-        st.button(plain(title), on_click=_open_example, args=(name,), key=f"open-{name}", width="stretch")
-    st.markdown("**A plan file** on this machine")
-    st.text_input("Path of the file", key="path", placeholder="/home/me/my-van.toml")
-    st.button("Open file", on_click=_open_file, key="open_file")
-    if state.draft().undo_texts and not state.draft().saved:
-        st.caption("Opening another plan leaves this one's unsaved edits behind.")
-
-
-def _open_example(name: str) -> None:
-    state.put(drafts.begin(examples.text(name) if name else examples.starter_text()))
-
-
-def _open_file() -> None:
-    path = str(st.session_state.get("path", "")).strip().strip("\"'")
-    if not path:
-        state.say("No file was named: write its path, such as /home/me/my-van.toml.")
-        return
-    try:
-        opened = drafts.open_file(Path(path).expanduser())
-    except FarvoltError as error:
-        state.say(str(error))
-        return
-    if opened.faults:
-        state.say(str(PlanError(list(opened.faults), path)))
-        st.session_state["faulty"] = opened
-        return
-    state.put(opened)
-
-
-def _open_faulty() -> None:
-    state.put(st.session_state.pop("faulty"))
+    keyboard.show()
 
 
 def _undo() -> None:
@@ -81,7 +47,14 @@ def _redo() -> None:
 
 
 def _save(draft: Draft) -> None:
-    st.text_input("Path of the file", str(draft.path or _file_name(draft)), key=state.editor_key("save_path"))
+    if draft.path is not None:
+        # Its key is another one whenever a draft is taken, so that it shows what the draft says.
+        key = state.editor_key("autosave")
+        st.toggle("Autosave", draft.autosave, key=key, on_change=_set_autosave, args=(key,),
+                  help="Writes every change without faults to the plan's own file at once. The file as it was before "
+                       "is kept beside it, with .previous added to its name.")  # fmt: skip
+    st.text_input("Path of the file", str(draft.path or _file_name(draft)), key=state.editor_key("save_path"),
+                  help="Another path saves it as another file, and goes on with that.")  # fmt: skip
     st.button("Save file", on_click=_save_file, key="save_file")
     st.caption("What was in the file before is kept beside it, with .previous added to its name.")
 
@@ -91,8 +64,13 @@ def _save_file() -> None:
     try:
         state.put(state.draft().save(path), keep_editors=True)
         state.say(f"Saved as {path.absolute()}.")
-    except FarvoltError as error:
+        st.session_state[SAVING] = False
+    except (FarvoltError, RuntimeError) as error:  # the home folder of a user who does not exist
         state.say(str(error))
+
+
+def _set_autosave(key: str) -> None:
+    state.put(replace(state.draft(), autosave=bool(st.session_state[key])), keep_editors=True)
 
 
 def _file_name(draft: Draft) -> str:
@@ -108,17 +86,15 @@ def _whereabouts(draft: Draft) -> str:
         return "Change any cell under Plan: results, drawing and findings follow. Open has a starter plan for your own."
     if draft.path is None:
         return "Not saved in a file yet."
-    return f"{draft.path}: {'saved' if draft.saved else 'with edits that are not saved'}."
+    autosave = " Every change is saved at once." if draft.autosave else ""
+    return f"{draft.path}: {'saved' if draft.saved else 'with edits that are not saved'}.{autosave}"
 
 
 def _messages(draft: Draft) -> None:
     message = state.said()
     if message:
         st.info(plain_lines(message))
-    if "faulty" in st.session_state:
-        st.button("Open it all the same, to mend it here", on_click=_open_faulty, key="open_faulty")
-        if not message:
-            del st.session_state["faulty"]
+    opening.questions()
 
 
 def faults() -> None:

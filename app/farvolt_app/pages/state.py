@@ -1,6 +1,7 @@
 """What a browser session keeps: its draft, and the text its table editors were shown. No other session sees it."""
 
 import os
+from dataclasses import replace
 from pathlib import Path
 
 import streamlit as st
@@ -50,6 +51,11 @@ def draft() -> Draft:
 
 def put(changed: Draft, *, keep_editors: bool = False) -> None:
     """Take another draft; the table editors start anew from its text, unless they are what changed it."""
+    try:
+        changed = changed.autosave_now()
+    except FarvoltError as error:
+        changed = replace(changed, autosave=False)
+        say(f"Autosave is off now. {error}")
     st.session_state["draft"] = changed
     keep.keep(st.session_state["kept_as"], changed)
     if not keep_editors:
