@@ -89,6 +89,7 @@ def test_every_run_load_and_finding_is_in_it(tmp_path: Path) -> None:
             )
     for line in found.assumptions:
         assert joined(line) in whole
+    assert "letters that the typeface of this report lacks" not in whole
 
 
 @needs_poppler
@@ -125,6 +126,7 @@ def test_names_of_any_kind_are_text_and_stay_on_the_page(tmp_path: Path) -> None
     for text in ("<script>alert(1)</script>", "=HYPERLINK(1)", "<b>fridge</b> &amp; *x* {nb}", f"{NO_GLYPH * 3} □"):
         assert text in joined(whole)
     assert HEBREW.split()[0] in whole
+    assert "letters that the typeface of this report lacks" in joined(whole)
     boxes = read(data, tmp_path, "-bbox")
     for page in boxes.split("<page ")[1:]:
         width, height = (float(page.split(f'{name}="')[1].split('"')[0]) for name in ("width", "height"))
@@ -208,6 +210,12 @@ class TestPaper:
             lines = document.lines(text, 40, 9)
             assert all(document.width_mm(line, 9) <= 40 for line in lines)
             assert "".join(lines).replace(" ", "") == text.replace(" ", "")
+
+    def test_a_long_word_is_broken_at_its_joints_where_it_has_some(self) -> None:
+        document = Document(PAPERS["a4"])
+        width = document.width_mm("protection.interr", 9)
+        assert document.lines("protection.interrupting", width, 9) == ["protection.", "interrupting"]
+        assert document.lines("a.interruptinglyyy", document.width_mm("a.interruptingl", 9), 9)[0] != "a."
 
     def test_a_fitted_text_ends_with_an_ellipsis_only_where_it_is_cut(self) -> None:
         document = Document(PAPERS["a4"])

@@ -75,9 +75,13 @@ class Document(FPDF):
     def __init__(self, paper: Paper, foot: str = "") -> None:
         super().__init__(format=(paper.width_mm, paper.height_mm))
         self.paper, self.foot = paper, clean(foot)
+        self.lacking = False
+        """Whether some letter so far is one that the typeface does not have."""
         for style, name in zip(("", "B"), _FILES, strict=True):
             self.add_font(FACE, style, FONTS / name)
         self.alias_nb_pages(_PAGES)
+        self.set_creator("Farvolt")
+        self.set_lang("en")
         self.set_auto_page_break(False)
         self.set_margin(MARGIN_MM)
         self.c_margin = 0.0
@@ -155,7 +159,7 @@ class Document(FPDF):
 
     def fitted(self, text: str, width_mm: float, size: float, *, bold: bool = False) -> str:
         """`text` on one line, cut with an ellipsis where it is too wide."""
-        text = clean(text)
+        text = self._cleaned(text)
         if self.width_mm(text, size, bold=bold) <= width_mm:
             return text
         return _cut(text, width_mm - self.width_mm("…", size, bold=bold),
@@ -163,7 +167,7 @@ class Document(FPDF):
 
     def lines(self, text: str, width_mm: float, size: float, *, bold: bool = False) -> list[str]:
         """`text` wrapped to a width, broken between words, and within a word that is wider than all of it."""
-        whole = clean(text)
+        whole = self._cleaned(text)
         words = (whole if len(whole) <= 10 * LONGEST_WORD else whole[: 10 * LONGEST_WORD] + "…").split(" ")
         found, line, used = [], "", 0.0
         space = self._widths(" ", bold) * size
@@ -175,12 +179,17 @@ class Document(FPDF):
             if line:
                 found.append(line)
             while wide > width_mm and len(word) > 1:
-                part = _cut(word, width_mm, lambda one: self._widths(one, bold) * size) or word[0]
+                part = _at_a_joint(_cut(word, width_mm, lambda one: self._widths(one, bold) * size) or word[0])
                 found.append(part)
                 word = word[len(part) :]
                 wide = self.width_mm(word, size, bold=bold)
             line, used = word, wide
         return [*found, line] if line or not found else found
+
+    def _cleaned(self, text: str) -> str:
+        shown = clean(text)
+        self.lacking = self.lacking or NO_GLYPH in shown
+        return shown
 
     def paragraph(
         self, text: str, size: float = 10, *, bold: bool = False, indent_mm: float = 0.0, after_mm: float = 1.5
@@ -213,6 +222,12 @@ class Document(FPDF):
 def line_mm(size: float) -> float:
     """Height of a line of text of so many points."""
     return size * _POINT_MM * _LEADING
+
+
+def _at_a_joint(part: str) -> str:
+    """The start of a word up to its last joint, where that is not too near its beginning."""
+    joint = max(part.rfind(one) for one in ".-/_,;:") + 1
+    return part[:joint] if joint > len(part) / 3 else part
 
 
 def _cut(text: str, width_mm: float, wide: Callable[[str], float]) -> str:

@@ -5,7 +5,7 @@ from collections.abc import Iterator
 from farvolt.results import Finding, Study
 from farvolt_app import shown
 from farvolt_app.graft import MM_POINTS, Graft
-from farvolt_app.paper import MARGIN_MM, Document, line_mm
+from farvolt_app.paper import MARGIN_MM, NO_GLYPH, Document, line_mm
 from farvolt_app.sheet_cables import pretty
 
 MOST_CHARTS = 4
@@ -121,5 +121,7 @@ def assumptions(document: Document, study: Study) -> None:
     document.points((
         shown.CAUTION,
         "Fuse every cable at its source, work with the bank disconnected, and cover its terminals.",
+        *([f"Some names hold letters that the typeface of this report lacks; {NO_GLYPH} stands for each. The drawing, "
+           "the workbook and the plan itself have them."] if document.lacking else []),
         "A calculation shows what would happen in the installation as planned: measure what has been built.",
     ))  # fmt: skip
