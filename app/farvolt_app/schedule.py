@@ -15,6 +15,7 @@ from typing import Any
 from farvolt import cable_kinds, conductors, network
 from farvolt.conductors import Size, other_system
 from farvolt.plan import Protection, Run
+from farvolt.protected import ProtectionResult
 from farvolt.results import CaseResult, RunResult, Step, Study
 from farvolt.units import feet
 from farvolt_app.textsafe import csv_text
@@ -217,14 +218,16 @@ class ProtectionLine:
     protection: Protection
     amps: float | None
     ampacity_A: float | None
+    faults: ProtectionResult
+    """Its fault currents and times."""
 
 
 def protections(study: Study) -> list[ProtectionLine]:
-    """Every fuse and breaker, with the largest current through it in any case."""
+    """Every fuse and breaker, with the largest current through it in any case, and in a fault."""
+    placed = [(index, run, one) for index, run in enumerate(study.plan.runs) for one in run.protections]
     return [
-        ProtectionLine(run, one, _largest(study, index, one.pole), _least_ampacity(study, index))
-        for index, run in enumerate(study.plan.runs)
-        for one in run.protections
+        ProtectionLine(run, one, _largest(study, index, one.pole), _least_ampacity(study, index), faults)
+        for (index, run, one), faults in zip(placed, study.protections, strict=True)
     ]
 
 

@@ -5,6 +5,7 @@ Currents are held while lengths are edited, which is right for small changes; th
 """
 
 import io
+import math
 from collections.abc import Sequence
 from pathlib import Path
 from typing import Any, BinaryIO
@@ -140,7 +141,9 @@ PROTECTION = (
     Column("No.", 5, "0"), Column("Label", 8), Column("Run", 24), Column("At", 18), Column("End", 7), Column("Pole", 8),
     Column("Type", 20), Column("Rating (A)", 9, "0.0", input=True), Column("From the end (m)", 9, "0.00"),
     Column("From the end (ft)", 9, "0.0"), Column("Largest current (A)", 10, "0.00"), Column("Used (%)", 8, "0"),
-    Column("Ampacity of the cable (A)", 11, "0.0"), Column("Rating over ampacity (%)", 11, "0"), Column("Mark", 17),
+    Column("Ampacity of the cable (A)", 11, "0.0"), Column("Rating over ampacity (%)", 11, "0"),
+    Column("Highest fault (A)", 9, "0"), Column("Interrupts (A)", 9, "0"), Column("Least fault (A)", 9, "0"),
+    Column("Opens within (s)", 9, "0.00"), Column("Cable stands (s)", 9, "0.00"), Column("Mark", 17),
 )  # fmt: skip
 _P = letters(PROTECTION)
 
@@ -148,7 +151,9 @@ _P = letters(PROTECTION)
 def _protection(sheet: Worksheet, plan: str, guards: Sequence[ProtectionLine], note: str) -> None:
     about = (
         "Every fuse and breaker, with the largest current through it and the least ampacity of its cable over all "
-        "cases. The findings judge whole sections of cable by the rulebook."
+        "cases, and the fault currents of bolted shorts: the highest at the device, the least at the far end that is "
+        "worst off, with the time to open and the time the cable stands. The findings judge whole sections of cable by "
+        "the rulebook, with their working."
     )
     rows = [_protection_row(line, number) for number, line in enumerate(guards, start=1)]
     fill(sheet, Header(plan, "protection", about, note), PROTECTION, rows)
@@ -161,15 +166,19 @@ def _protection_row(line: ProtectionLine, number: int) -> list[Any]:
     def of(formula: str, wanted: bool) -> Formula | None:
         return live(_P, FIRST + number - 1, formula) if wanted else None
 
-    carries, rated = line.amps is not None, bool(line.ampacity_A)
+    carries, rated, fault = line.amps is not None, bool(line.ampacity_A), line.faults
+    clears = fault.highest_A is not None and fault.interrupts_A is not None
+    opens = fault.opens_s if fault.opens_s is not None and math.isfinite(fault.opens_s) else None
     marks = [f'IF([Largest current (A)]>[Rating (A)],"{OVER} ","")'] if carries else []
     marks += ['IF([Rating (A)]>[Ampacity of the cable (A)],"! above cable","")'] if line.ampacity_A is not None else []
+    marks += ['IF([Highest fault (A)]>[Interrupts (A)],"! INTERRUPTS","")'] if clears else []
     return [
         number, run.label or "", run.name, run.from_point if one.end == "from" else run.to_point, one.end, one.pole,
         one.type, one.rating.si, one.distance.si if one.distance else None,
         of(f"=[From the end (m)]/{FOOT_M}", one.distance is not None), line.amps,
         of("=100*[Largest current (A)]/[Rating (A)]", carries), line.ampacity_A,
         of("=100*[Rating (A)]/[Ampacity of the cable (A)]", rated),
+        fault.highest_A, fault.interrupts_A, fault.lowest_A, opens, fault.allowed_s,
         of("=" + "&".join(marks), bool(marks)) or "no answer",
     ]  # fmt: skip
 
