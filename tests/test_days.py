@@ -7,9 +7,10 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from farvolt import day_course, day_setup, days, planfile, solve
+from farvolt import day_course, day_settle, day_setup, days, examples, planfile, solve
 from farvolt.day_bank import MONTH_H
 from farvolt.day_course import Course, Period
+from farvolt.day_network import Laws, StepNetwork
 from farvolt.day_setup import Start
 from farvolt.days import Outcome
 from farvolt.errors import FarvoltError
@@ -219,13 +220,8 @@ def test_finer_steps_draw_near_to_one_answer() -> None:
     assert errors[2] < 2e-4
 
 
-def van(period: Period, extra: str = "", charge: float | None = None) -> Outcome:
-    from farvolt import examples
-
-    text = examples.text("instrument-repair-van")
-    if "[site]" not in text:
-        text = text.replace('amps = "40 A"\n', 'amps = "40 A"\nhours_per_day = 1.5\n') + SITE
-    ready = day_setup.prepare(planfile.parse(text + extra))
+def example(name: str, period: Period, charge: float | None = None) -> Outcome:
+    ready = day_setup.prepare(planfile.parse(examples.text(name)))
     return days.simulate(ready, day_course.course(ready.plan, period), Start(charge))
 
 
@@ -238,37 +234,35 @@ clearness = [0.3, 0.34, 0.4, 0.44, 0.45, 0.46, 0.46, 0.45, 0.43, 0.38, 0.33, 0.2
 """
 
 
-@pytest.mark.parametrize("step", [60, 15])
-def test_every_step_of_the_van_is_what_the_solver_gives(step: int) -> None:
+@pytest.mark.parametrize(("name", "step"), [("instrument-repair-van", 60), ("instrument-repair-van", 15),
+                                            ("bird-observatory-cabin", 60)])  # fmt: skip
+def test_every_step_of_an_example_is_what_the_solver_gives(name: str, step: int) -> None:
     """Each kept part of a step is solved again by `solve.solve`, from zero load, with the laws as they stood."""
-    from farvolt import day_network
-
     seen: list[float] = []
-    settle = day_network.StepNetwork.settle
 
-    def again(self: day_network.StepNetwork, laws: day_network.Laws, *rest: object) -> day_network.Settled:
-        found = settle(self, laws, *rest)  # type: ignore[arg-type]
+    def again(network: StepNetwork, laws: Laws, *rest: object) -> day_settle.Settled:
+        found = day_settle.settle(network, laws, *rest)  # type: ignore[arg-type]
         if len(seen) < 60:
             condition = replace(
-                self.condition, volts=laws.volts.copy(), ohm=laws.ohm.copy(), low=laws.low.copy(),
+                network.condition, volts=laws.volts.copy(), ohm=laws.ohm.copy(), low=laws.low.copy(),
                 high=laws.high.copy(), power=laws.power.copy(), load_W=laws.watts.copy(), load_A=laws.amps.copy(),
                 load_S=laws.siemens.copy(),
             )  # fmt: skip
-            state = solve.solve(self.network, condition, self.factor_of_20, self.supply)
+            state = solve.solve(network.network, condition, network.factor_of_20, network.supply)
             assert state.solved == found.solved
-            u = state.volts[self.ports.a] - state.volts[self.ports.b]
+            u = state.volts[network.ports.a] - state.volts[network.ports.b]
             seen.append(float(np.abs(u - found.u).max()))
         return found
 
     with pytest.MonkeyPatch.context() as patch:
-        patch.setattr(day_network.StepNetwork, "settle", again)
-        assert_balanced(van(Period(dt.date(2027, 4, 1), 2, step), charge=0.6))
+        patch.setattr(days, "settle", again)
+        assert_balanced(example(name, Period(dt.date(2027, 4, 1), 2, step), charge=0.6))
     assert len(seen) >= 40
     assert max(seen) < 1e-8
 
 
 def test_the_van_through_dark_days() -> None:
-    found = van(Period(dt.date(2027, 12, 1), 5, 60), charge=0.1)
+    found = example("instrument-repair-van", Period(dt.date(2027, 12, 1), 5, 60), charge=0.1)
     assert found.off.sum() > 0
     assert found.cut_hours[0] > 0
     assert_balanced(found)
@@ -323,3 +317,32 @@ def test_days_need_a_bank_with_a_capacity() -> None:
         day_setup.prepare(planfile.parse(HEAD + CHARGER + RUN + load()))
     with pytest.raises(FarvoltError, match='sources "bank", capacity: days need it'):
         day_setup.prepare(planfile.parse(HEAD + BANK.replace('capacity = "100 Ah"\n', "") + RUN + load()))
+
+
+SUN = """\
+[[sources]]
+name = "roof"
+kind = "solar"
+at = "bank"
+power = "100 W"
+ceiling = "14.4 V"
+"""
+
+
+@pytest.mark.parametrize("watts", [20.0, 26.0, 39.0, 41.0, 60.0])
+def test_a_full_bank_helps_a_sun_that_falls_short(watts: float) -> None:
+    # 40 W at a full bank: what the sun lacks comes from the bank, near its rest voltage; what is too much it leaves.
+    text = BANK.replace('emf = "12 V"', 'chemistry = "agm"') + 'self_discharge = "0 %"\n' + SUN + RUN
+    text += load('power = "40 W"\ncontinuous = true')
+    ready = day_setup.prepare(planfile.parse(HEAD + text))
+    course = day_course.course(ready.plan, Period(dt.date(2027, 3, 1), 1))
+    sources = np.zeros((24, 2))
+    sources[6:18, 1] = watts / 100
+    found = days.simulate(ready, replace(course, sources=sources), Start(1.0))
+    assert found.off.sum() == 0
+    first = found.sums.source_Wh[6, 1]
+    assert first == pytest.approx(min(watts, first), rel=1e-9)
+    if watts < 40:
+        assert first == pytest.approx(watts, rel=1e-9)
+        assert found.sums.bank_V[17, 0] < 12.9
+    assert_balanced(found)

@@ -12,7 +12,8 @@ import numpy as np
 from farvolt import batteries, battery_figures
 from farvolt.day_bank import BankUnit
 from farvolt.day_course import Course
-from farvolt.day_network import Laws, Settled, StepNetwork
+from farvolt.day_network import Laws, StepNetwork
+from farvolt.day_settle import Settled
 from farvolt.day_setup import Ready
 from farvolt.day_supply import movable
 from farvolt.equations import Equations

@@ -13,6 +13,9 @@ from farvolt.irradiance_file import IrradianceTable
 from farvolt.network import Floats
 from farvolt.plan import Plan, Solar
 
+NEEDS_PLACE = "the sun over it needs a place; accepted: a plan with [site] latitude, longitude and time_zone"
+"""What is said of a table of irradiance without a site."""
+
 
 @dataclass(frozen=True)
 class Sky:
@@ -37,8 +40,7 @@ def sunlight(plan: Plan, sky: Sky, sources: Floats, notes: list[str]) -> Floats 
     panels = [(index, one) for index, one in enumerate(plan.sources) if isinstance(one, Solar)]
     site = place(plan)
     if sky.table is not None and site is None:
-        raise FarvoltError(f'{sky.table.name}: the sun over it needs a place; accepted: a plan with [site] latitude, '
-                           'longitude and time_zone')  # fmt: skip
+        raise FarvoltError(f"{sky.table.name}: {NEEDS_PLACE}")
     if not panels:
         return sky.table.over(sky.edges_s)[0].get("temp_air") if sky.table is not None else None
     half_s = float(sky.edges_s[1] - sky.edges_s[0]) / 2

@@ -5,7 +5,8 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from farvolt.day_bank import BankPart
-from farvolt.day_network import Settled, StepNetwork, certificate
+from farvolt.day_network import StepNetwork, certificate
+from farvolt.day_settle import Settled
 from farvolt.network import Floats, Network
 from farvolt.plan import Charger, Converter, Plan, Solar
 

@@ -20,8 +20,9 @@ from farvolt import day_setup
 from farvolt.day_bank import EMPTY, BankPart, BankUnit
 from farvolt.day_charging import Charging
 from farvolt.day_course import Course
-from farvolt.day_network import Settled, StepNetwork
+from farvolt.day_network import StepNetwork
 from farvolt.day_record import Record, Sums
+from farvolt.day_settle import Settled, settle
 from farvolt.day_setup import Ready, Start
 from farvolt.day_supply import Supply
 from farvolt.network import Floats
@@ -141,11 +142,11 @@ class _Run:
         """The step with every load off that lets go, and which are silent; None where nothing holds."""
         self.charging.set(self.laws, step, hours)
         wanted, silent = self.wanted[step], without | (self.off & self.wanted[step])
-        start = self.last[1] if self.last is not None and self.last[0] is network else None
+        start = self._before(network)
         while True:
             self._ask(step, silent)
             name = (self.demand_names[step], silent.tobytes()) if silent.any() else self.demand_names[step]
-            settled = network.settle(self.laws, self.banks, self.degC[step], hours, name, start)
+            settled = settle(network, self.laws, self.banks, self.degC[step], hours, name, start)
             if settled.solved:
                 index = self._lets_go(network, settled, wanted & ~silent)
                 if index is None:
@@ -157,6 +158,13 @@ class _Run:
                 if index is None:
                     return None, silent
             silent[index] = True
+
+    def _before(self, network: StepNetwork) -> Floats | None:
+        """Voltages of the step before at the ports of a network."""
+        if self.last is None:
+            return None
+        before, u = self.last
+        return u if before is network else before.known(u)[network.everywhere]
 
     def _ask(self, step: int, silent: np.ndarray) -> None:
         """Put in what the loads ask for."""
