@@ -62,8 +62,8 @@ def verdict(located: Located) -> list[str]:
     lines = [f"The readings do not fit the plan (sound: {percent(located.sound_probability)})."]
     evidence, first = located.evidence, located.explanations[0]
     lines.append(f"First suspect: {together(evidence, first)} ({percent(first.probability)}).")
-    if len(located.explanations) > 1 and not located.unique:
-        others = "; ".join(together(evidence, one) for one in located.explanations[1:SUSPECTS_SHOWN])
+    if located.others and not located.unique:
+        others = "; ".join(together(evidence, one) for one in located.others[:SUSPECTS_SHOWN])
         lines.append(f"These readings cannot tell it apart from: {others}.")
     if not located.explained:
         lines.append(

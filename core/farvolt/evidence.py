@@ -24,6 +24,7 @@ STRONG = 20.0
 
 _SINGLES, _PAIRED = 14, 10
 _THIN = 5
+_NEAR = 3.0
 
 
 @dataclass(frozen=True)
@@ -59,6 +60,7 @@ class Evidence:
         self.covariance = np.diag(self.meter**2) + self.sound @ self.sound.T
         self.whitening = np.linalg.inv(np.linalg.cholesky(self.covariance))
         self._weight = sum(one.weight for one in causes)
+        self._curves: dict[int, Floats] = {}
 
     def reread(self, at: int, value: float, limit: float) -> "Evidence":
         """The same with one reading another."""
@@ -83,6 +85,13 @@ class Evidence:
             np.zeros((len(values), len(self.off))),
         )
 
+    def curve(self, index: int) -> Floats:
+        """How the readings move with a cause over its values, made independent."""
+        if index not in self._curves:
+            cause = self.causes[index]
+            self._curves[index] = self.white(self.moves(cause, cause.values))
+        return self._curves[index]
+
     @property
     def sound_misfit(self) -> float:
         """Squared distance of the readings from the plan, in standard deviations: chi-squared if all is sound."""
@@ -96,7 +105,7 @@ class Evidence:
         """One cause, averaged over its values. `beside` are movements that the linear response leaves out."""
         cause = self.causes[index]
         rest = self.off if beside is None else self.off - beside
-        curve = self.white(self.moves(cause, cause.values))
+        curve = self.curve(index)
         fits = curve @ self.white(rest) - np.sum(curve**2, axis=1) / 2 + _prior(cause, cause.values)
         if beside is not None:
             fits += (np.sum(self.white(self.off) ** 2) - np.sum(self.white(rest) ** 2)) / 2
@@ -107,17 +116,17 @@ class Evidence:
         moved = self.moves(cause, np.array([value]))[0] + (0.0 if beside is None else beside)
         return Hypothesis((index,), (value,), odds, moved)
 
-    def pair(self, first: int, second: int, beside: Floats | None = None) -> Hypothesis:
-        """Two causes together, their movements added."""
+    def pair(self, first: int, second: int, beside: Floats | None = None, worth: float = -np.inf) -> Hypothesis:
+        """Two causes together, their movements added. Far below `worth`, a log likelihood ratio, no care is taken."""
         one, other = self.causes[first], self.causes[second]
         rest = self.white(self.off if beside is None else self.off - beside)
-        a, b = (self.white(self.moves(cause, cause.values[::_THIN])) for cause in (one, other))
+        a, b = self.curve(first)[::_THIN], self.curve(second)[::_THIN]
         alone = [moved @ rest - np.sum(moved**2, axis=1) / 2 + _prior(cause, cause.values[::_THIN])
                  for moved, cause in ((a, one), (b, other))]  # fmt: skip
         fits = alone[0][:, None] + alone[1][None] - a @ b.T
         at = np.unravel_index(int(np.argmax(fits)), fits.shape)
         values = np.array([one.values[::_THIN][at[0]], other.values[::_THIN][at[1]]])
-        values, fit, slopes = self._refine((one, other), values, rest)
+        values, fit, slopes = self._refine((one, other), values, rest, float(fits[at]) > worth - _NEAR)
         if beside is not None:
             fit += float(np.sum(self.white(self.off) ** 2) - np.sum(rest**2)) / 2
         fit += sum(float(_prior(cause, values[at : at + 1])[0]) for at, cause in enumerate((one, other)))
@@ -137,10 +146,12 @@ class Evidence:
         moved: Floats = np.sum([self.moves(one, values[at : at + 1])[0] for at, one in enumerate(causes)], axis=0)
         return moved
 
-    def _refine(self, causes: tuple[Cause, Cause], values: Floats, rest: Floats) -> tuple[Floats, float, Floats]:
+    def _refine(
+        self, causes: tuple[Cause, Cause], values: Floats, rest: Floats, careful: bool
+    ) -> tuple[Floats, float, Floats]:
         """Gauss and Newton's method on two values: the values, the log likelihood ratio, and the slopes there."""
         fit, slopes = -np.inf, np.zeros((len(rest), 2))
-        for _ in range(5):
+        for _ in range(5 if careful else 1):
             moved = self.white(self._together(causes, values))
             now = float(moved @ rest - moved @ moved / 2)
             steps = 1e-4 * np.abs(values)
@@ -159,15 +170,17 @@ class Evidence:
     def hypotheses(self) -> list[Hypothesis]:
         """Sound, every cause alone and the likely pairs, by falling odds."""
         singles = [self.single(index) for index in self._that_matter()]
-        found = [self.sound_only(), *singles, *(self.pair(*both) for both in self._pairs(singles))]
+        best = max((one.log_odds for one in singles), default=0.0)
+        pairs = (self.pair(*both, worth=best) for both in self._pairs(singles))
+        found = [self.sound_only(), *singles, *pairs]
         return probable(found)
 
     def _that_matter(self) -> list[int]:
         """Causes that can move a reading at all."""
         return [
             at
-            for at, cause in enumerate(self.causes)
-            if np.abs(self.white(self.moves(cause, cause.values[[0, -1]]))).max(initial=0.0) > 0.1
+            for at in range(len(self.causes))
+            if np.abs(self.curve(at)[[0, -1]]).max(initial=0.0) > 0.1
         ]
 
     def _pairs(self, singles: Sequence[Hypothesis]) -> Iterator[tuple[int, int]]:

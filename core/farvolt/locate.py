@@ -13,10 +13,10 @@ from farvolt.network import Floats
 from farvolt.reading_slips import refuse_slips
 from farvolt.readings import Reading, ReadingSet
 
-ALARM = 0.05
+ALARM = 0.2
 """Readings are said not to fit the plan where a sound installation is less probable than this."""
 
-_EXACT = 10
+_EXACT = 6
 _VISIBLE = 4.0
 """A fault that moves the readings by so many standard deviations is seen nearly always."""
 
@@ -76,10 +76,22 @@ class Located:
 
     @property
     def unique(self) -> bool:
-        """Whether the explanations that are left agree on what is bad: a battery's charge and a load's demand, which
-        come and go, count where nothing else is."""
-        lasting = {frozenset(_lasting(self.evidence, one)) for one in self.explanations}
-        return not self.fits and (len(self.explanations) == 1 or (len(lasting) == 1 and lasting != {frozenset()}))
+        """Whether all explanations that are left hold what is bad in the first: a battery's charge and a load's
+        demand, which come and go, count where nothing else is bad."""
+        if self.fits or not self.explanations:
+            return False
+        first = self.explanations[0]
+        core = _lasting(self.evidence, first) or set(first.causes)
+        return all(core <= set(one.causes) for one in self.explanations)
+
+    @property
+    def others(self) -> tuple[Hypothesis, ...]:
+        """The explanations that are not told apart from the first, without those that only add to a likelier one."""
+        found: list[Hypothesis] = []
+        for one in self.explanations:
+            if not any(set(before.causes) <= set(one.causes) for before in found):
+                found.append(one)
+        return tuple(found[1:])
 
     @property
     def named(self) -> tuple[Suspect, ...]:
@@ -112,8 +124,8 @@ def locate(installation: Installation, sets: Sequence[ReadingSet], *, as_read: b
     )
 
 
-def _lasting(evidence: Evidence, one: Hypothesis) -> list[int]:
-    return [index for index in one.causes if evidence.causes[index].kind not in ("load", "source volts")]
+def _lasting(evidence: Evidence, one: Hypothesis) -> set[int]:
+    return {index for index in one.causes if evidence.causes[index].kind not in ("load", "source volts")}
 
 
 def atoms_at(evidence: Evidence, one: Hypothesis) -> dict[int, float]:
@@ -127,7 +139,7 @@ def atoms_at(evidence: Evidence, one: Hypothesis) -> dict[int, float]:
 
 def _exact(found: Measured, evidence: Evidence, hypotheses: list[Hypothesis]) -> list[Hypothesis]:
     """The leading hypotheses fitted anew at the network itself, and all of them by their new odds."""
-    leading = [one for one in hypotheses[:_EXACT] if one.causes and one.probability > 1e-3]
+    leading = [one for one in hypotheses[:_EXACT] if one.causes and one.probability > 5e-3]
     done = {one.causes: _exactly(found, evidence, one) for one in leading}
     return probable([done.get(one.causes, one) for one in hypotheses])
 

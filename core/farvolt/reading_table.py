@@ -81,14 +81,18 @@ def _heading_faults(row: tuple[int, Sequence[str]]) -> list[Fault]:
     return found
 
 
+def _named(table: list[tuple[int, dict[str, str]]]) -> bool:
+    return any(row.get("set") for _, row in table)
+
+
 def _sets(
     table: list[tuple[int, dict[str, str]]], plan: Plan, faults: list[Fault]
 ) -> list[ReadingSet]:
-    """The sets in order of appearance; a row that names none belongs to the one before it."""
+    """The sets in order of appearance; a row that names none belongs to the one before it, or to that of its case."""
     groups: dict[str, list[tuple[int, dict[str, str]]]] = {}
-    name = "1"
+    name = ""
     for number, row in table:
-        name = row.get("set") or name
+        name = row.get("set") or (name if not row.get("case") or _named(table) else f"case {row['case']}")
         groups.setdefault(name, []).append((number, row))
     digit = reading_cells.digits(table)
     found = []
