@@ -385,3 +385,22 @@ def test_autosave_writes_each_valid_change_and_keeps_what_was_there_before(page:
     assert file.read_text() == "somebody else's"
     assert page.session_state["draft"].text == first
     assert not page.session_state["draft"].autosave
+
+
+def test_plans_stand_side_by_side_with_what_differs(page: AppTest, tmp_path: Path) -> None:
+    file = tmp_path / "other.toml"
+    file.write_text(examples.starter_text())
+    write(page, longer("9 m"))
+    page.switch_page("compare_page.py").run()
+    assert not page.exception
+    assert "Choose one or more plans" in page.info[0].value
+    box = page.multiselect(key="compared")
+    box.set_value(["this plan before its edits", str(file)]).run()
+    assert not page.exception
+    figures = page.dataframe[0].value
+    assert figures["Plan"].tolist() == ["this plan", "this plan before its edits", str(file)]
+    changed = table(page, "Change").iloc[0]
+    assert (changed["Name"], changed["Field"], changed["Before"], changed["After"]) == (
+        "fridge feed", "length", "6.5 m", "9 m")  # fmt: skip
+    page.multiselect(key="compared").set_value([str(tmp_path / "none.toml")]).run()
+    assert "no such file" in page.warning[0].value

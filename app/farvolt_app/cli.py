@@ -517,6 +517,27 @@ def _guided(loads: tuple[str, ...], given: dict[str, str]) -> str:
     return first_plan(Answers(nominal_V=volts, bank_distance=length, loads=tuple(wanted), **given))
 
 
+@main.command()
+@click.argument("plan")
+@click.argument("other")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object for machines.")
+def compare(plan: str, other: str, as_json: bool) -> None:
+    """Compare PLAN with OTHER: what differs, the volts of each load, findings that come and go, metal of the cables.
+
+    PLAN is the one before, OTHER the one after. Entries are matched by name, quantities compared by value.
+    """
+    before, after = _studied(plan, margins=False), _studied(other, margins=False)
+    from farvolt import differences
+    from farvolt_app import compare_text
+
+    found = differences.compare(before, after)
+    if as_json:
+        answer = compare_text.as_object(found, before.plan.plan.name, after.plan.plan.name)
+        _print_whole(json.dumps(answer, ensure_ascii=False, allow_nan=False) + "\n")
+    else:
+        compare_text.show(found, plan, other)
+
+
 @main.command("examples")
 @click.argument("name", required=False)
 @click.option("--output", "-o", help="File to copy it to; NAME.toml here unless given, - for output.")

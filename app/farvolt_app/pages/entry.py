@@ -6,12 +6,14 @@ from farvolt_app.pages import heading, state
 
 PAGES = (
     ("plan_page.py", "Plan", "plan"),
+    ("start_page.py", "Guided start", "start"),
     ("drawing_page.py", "Drawing", "drawing"),
     ("findings_page.py", "Findings", "findings"),
     ("protection_page.py", "Protection", "protection"),
     ("bank_page.py", "Bank", "bank"),
     ("schedule_page.py", "Schedule", "schedule"),
     ("readings_page.py", "Readings", "readings"),
+    ("compare_page.py", "Compare", "compare"),
 )
 
 
