@@ -6,7 +6,6 @@ from farvolt.results import Finding, Study
 from farvolt_app import shown
 from farvolt_app.graft import MM_POINTS, Graft
 from farvolt_app.paper import MARGIN_MM, NO_GLYPH, Document, line_mm
-from farvolt_app.sheet_cables import pretty
 
 MOST_CHARTS = 4
 """Charts of time over current; the page "Protection" and the command `protection` draw any run's."""
@@ -73,7 +72,7 @@ def findings(document: Document, study: Study) -> None:
 def _finding(document: Document, one: Finding) -> None:
     parts = [(one.message, 9.0, one.severity == "fail")]
     parts += [(f"Case: {one.case}", 8.0, False)] if one.case else []
-    parts += [(pretty(line), 8.0, False) for line in one.working]
+    parts += [(line, 8.0, False) for line in one.working]
     parts += [(f"Basis: {one.basis}", 8.0, False)]
     parts += [(f"Remedy: {one.remedy}", 8.0, True)] if one.remedy else []
     width = document.across_mm - _MARK_MM
@@ -121,7 +120,7 @@ def assumptions(document: Document, study: Study) -> None:
     document.points((
         shown.CAUTION,
         "Fuse every cable at its source, work with the bank disconnected, and cover its terminals.",
-        *([f"Some names hold letters that the typeface of this report lacks; {NO_GLYPH} stands for each. The drawing, "
-           "the workbook and the plan itself have them."] if document.lacking else []),
+        *([f"Some names hold letters that the typeface of this report lacks; {NO_GLYPH} stands for each. The "
+           "workbook and the plan itself have them."] if document.lacking else []),
         "A calculation shows what would happen in the installation as planned: measure what has been built.",
     ))  # fmt: skip
