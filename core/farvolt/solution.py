@@ -70,19 +70,28 @@ class Solution:
 
     @cached_property
     def references(self) -> tuple[int | None, ...]:
-        """For every load, the source its drop is counted from: the working reference source of its island."""
+        """For every load, the source its drop is counted from: the working reference source of its island.
+
+        Where the load hangs on another source alone, such as one that an open switch in the return has cut off with
+        it, that one counts: there is no way through conductors from the other.
+        """
         c, plan = self.condition, self.network.plan
         sources = plan.sources
         order = sorted(
             range(len(sources)), key=lambda i: (sources[i].name != plan.reference, sources[i].kind != "battery")
         )
-        best: dict[tuple[int, int], int] = {}
+        island, group, part = c.islands.of_node, self.supply.group, self.supply.part
+        best: dict[tuple[int, ...], int] = {}
         for port in order:
-            node = c.source_a[port]
+            a, b = c.source_a[port], c.source_b[port]
             if self.working(port):
-                best.setdefault((int(c.islands.of_node[node]), int(self.supply.group[node])), port)
-        keys = [(int(c.islands.of_node[node]), int(self.supply.group[node])) for node in c.load_a[: len(plan.loads)]]
-        return tuple(best.get(key) for key in keys)
+                best.setdefault((int(island[a]), int(part[a]), int(part[b])), port)
+                best.setdefault((int(island[a]), int(group[a])), port)
+        found = []
+        for a, b in zip(c.load_a[: len(plan.loads)], c.load_b[: len(plan.loads)], strict=True):
+            anywhere = best.get((int(island[a]), int(group[a])))
+            found.append(best.get((int(island[a]), int(part[a]), int(part[b])), anywhere))
+        return tuple(found)
 
     def working(self, source: int) -> bool:
         """Whether a source, or any of its strings, is on and part of the fed network."""
