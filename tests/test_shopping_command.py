@@ -20,8 +20,8 @@ ODD = ["=HYPERLINK(1)", "@radio", "+1-2", "-pump", "<b>bold</b>", "\x1b[31mred"]
 
 
 def run(*arguments: str | Path) -> Result:
-    """The command in this process."""
-    return CliRunner().invoke(main, [str(one) for one in arguments])
+    """The command in this process, on a terminal wide enough to fold no cell."""
+    return CliRunner(env={"COLUMNS": "220"}).invoke(main, [str(one) for one in arguments])
 
 
 @pytest.fixture
@@ -75,6 +75,7 @@ def test_files_are_written_beside_what_was_there(van: Path, tmp_path: Path) -> N
     assert (tmp_path / "list.csv.previous").read_text() == "older"
     listed, cut = table(target.read_text(encoding="utf-8")), table(cuts.read_text(encoding="utf-8"))
     assert all(row["Price list"].startswith("Invented") for row in listed if row["Price"])
+    assert {row["Note"].split(";")[0] for row in listed if not row["Price"]} == {"no price"}
     assert sum(float(row["Cut to (m)"]) for row in cut) > 60
     assert run("shopping", van, "--prices", "example", "-o", book).exit_code == 0
     assert "Invented" in openpyxl.load_workbook(book)["Shopping"]["A3"].value

@@ -9,7 +9,7 @@ from typing import Any
 
 from openpyxl.worksheet.worksheet import Worksheet
 
-from farvolt.shopping import Bill, CableBought, Line
+from farvolt.shopping import NO_PRICE, Bill, CableBought, Line
 from farvolt_app import sheet_cables, shopping_rows
 from farvolt_app.schedule import Cable, ProtectionLine
 from farvolt_app.sheet_cables import FOOT_M, live, pretty, size_key
@@ -47,7 +47,7 @@ def write_list(
     bought = [line for line in bill.lines if not (metres and line.item.startswith("cable"))]
     rows = [_cable_row(one, FIRST + place, len(found), metres) for place, one in enumerate(bill.cables)]
     for line in bought:
-        rows.append(_line_row(line, FIRST + len(rows), len(guards), protection))
+        rows.append(_line_row(line, FIRST + len(rows), len(guards), protection, NO_PRICE if prices else ""))
     about = "Metres and fuses follow the sheets Cables and Protection; reels and cuts do not."
     note = prices.about if prices is not None else "No price list: unit prices of your own may be written in."
     currency = f" ({prices.currency})" if prices is not None else " (own currency)"
@@ -106,15 +106,15 @@ def _cable_row(one: CableBought, row: int, cables: int, to_price: bool) -> list[
         live(_S, row, f"=SUMPRODUCT({kinds}*{cells('Parallel')}*({poles})){links}"),
         live(_S, row, f"=[{NEEDED}]*(1+{_SPARE})"), "m", live(_S, row, f"=[{TO_BUY}]/{FOOT_M}"),
         live(_S, row, f"=[{TO_BUY}]*{kind.kg_per_m:.9g}") if kind.kg_per_m is not None else None,
-        None, _price(row) if to_price else None, "" if to_price else "bought as listed below",
+        None, _price(row, "") if to_price else None, "" if to_price else "bought as listed below",
     ]  # fmt: skip
 
 
-def _price(row: int) -> Formula:
-    return live(_S, row, f'=IF([{UNIT_PRICE}]="","",[{TO_BUY}]*[{UNIT_PRICE}])')
+def _price(row: int, missing: str) -> Formula:
+    return live(_S, row, f'=IF([{UNIT_PRICE}]="","{missing}",[{TO_BUY}]*[{UNIT_PRICE}])')
 
 
-def _line_row(line: Line, row: int, guards: int, protection: Mapping[str, str]) -> list[Any]:
+def _line_row(line: Line, row: int, guards: int, protection: Mapping[str, str], missing: str) -> list[Any]:
     """Any other line: fuses and breakers counted on the sheet Protection, the rest as the list has it."""
     needed: Any = None if line.item.startswith("cable") else line.quantity
     if line.item in ("fuse", "breaker"):
@@ -122,8 +122,8 @@ def _line_row(line: Line, row: int, guards: int, protection: Mapping[str, str]) 
     return [
         line.item, pretty(line.size), pretty(line.kind), "", None, line.colour, needed,
         live(_S, row, f"=[{NEEDED}]") if needed is not None else line.quantity, line.unit,
-        live(_S, row, f"=[{TO_BUY}]/{FOOT_M}") if line.unit == "m" else None, None, line.unit_price, _price(row),
-        line.note,
+        live(_S, row, f"=[{TO_BUY}]/{FOOT_M}") if line.unit == "m" else None, None, line.unit_price,
+        _price(row, missing), line.note,
     ]  # fmt: skip
 
 

@@ -15,8 +15,9 @@ from farvolt import price_file, units
 from farvolt.cable_kinds import CableKind
 from farvolt.errors import FarvoltError, QuantityError
 from farvolt.integrity import plain, shorten
+from farvolt.prices import PriceList
 from farvolt.results import Study
-from farvolt.shopping import NO_PRICE, Bill, CablePiece, Wanted
+from farvolt.shopping import NO_PRICE, Bill, CablePiece, Line, Wanted
 from farvolt.units import feet, number
 from farvolt.upsizing import Hint
 from farvolt_app.textsafe import csv_text
@@ -93,17 +94,19 @@ def _cuts(bill: Bill) -> Iterator[Cut]:
 
 
 def list_rows(bill: Bill) -> list[dict[str, Any]]:
-    """The shopping list; a line without a price has none in its columns."""
-    prices = bill.wanted.prices
-    return [
-        dict(zip(LIST_HEADINGS, (
-            line.item, line.size, line.kind, line.colour, line.quantity, line.unit,
-            feet(line.quantity) if line.unit == "m" else None, line.unit_price, line.price,
-            prices.currency if prices and line.price is not None else "",
-            prices.about if prices and line.price is not None else "" if prices is None else NO_PRICE, line.note,
-        ), strict=True))
-        for line in bill.lines
-    ]  # fmt: skip
+    """The shopping list; where prices are given, a line without one says so in its note."""
+    return [dict(zip(LIST_HEADINGS, _list_row(line, bill.wanted.prices), strict=True)) for line in bill.lines]
+
+
+def _list_row(line: Line, prices: PriceList | None) -> tuple[Any, ...]:
+    priced = prices if line.price is not None else None
+    lacking = NO_PRICE if prices is not None and priced is None else ""
+    return (
+        line.item, line.size, line.kind, line.colour, line.quantity, line.unit,
+        feet(line.quantity) if line.unit == "m" else None, line.unit_price, line.price,
+        priced.currency if priced else "", priced.about if priced else "",
+        "; ".join(filter(None, (lacking, line.note))),
+    )  # fmt: skip
 
 
 def cut_rows(bill: Bill) -> list[dict[str, Any]]:

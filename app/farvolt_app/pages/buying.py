@@ -29,10 +29,10 @@ def show(study: Study) -> None:
     bill, hints = _worked_out(study, how)
     if study.interim:
         st.warning(plain(shopping_rows.to_choose(study)))
-    results.table(
-        [_without_source(row) for row in shopping_rows.list_rows(bill)], "shopping", "Shopping list", tall=True
-    )
     st.markdown(f"**{plain(shopping_rows.total_text(bill))}**")
+    results.table(
+        [_in_short(row, bill) for row in shopping_rows.list_rows(bill)], "shopping", "Shopping list", tall=True
+    )
     if hints and how.prices is not None:
         with st.expander("Where a thicker size costs less"):
             st.markdown("\n".join(f"- {plain(shopping_rows.hint_text(hint, how.prices.currency))}" for hint in hints))
@@ -94,9 +94,10 @@ def _worked_out(study: Study, how: Wanted) -> tuple[Bill, list[Hint]]:
     return before[2], before[3]
 
 
-def _without_source(row: dict[str, Any]) -> dict[str, Any]:
-    """A row without what the line under the table says once for all."""
-    return {name: value for name, value in row.items() if name != "Price list"}
+def _in_short(row: dict[str, Any], bill: Bill) -> dict[str, Any]:
+    """A row without what the line above the table says once for all, and without prices where there are none."""
+    left_out = {"Price list", "Currency"} | (set() if bill.wanted.prices is not None else {"Unit price", "Price"})
+    return {name: value for name, value in row.items() if name not in left_out}
 
 
 def _downloads(study: Study, bill: Bill) -> None:

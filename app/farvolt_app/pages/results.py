@@ -14,10 +14,11 @@ EMPTY = "There are no results yet: the plan has faults that keep it from being c
 FORMATS = {
     "Volts (V)": "%.2f", "Feed (V)": "%.3f", "Return (V)": "%.3f", "Drop (V)": "%.3f", "Drop (%)": "%.2f",
     "Current (A)": "%.2f", "May carry (A)": "%.1f", "Loss (W)": "%.2f", "Power (W)": "%.1f", "Sources (W)": "%.1f",
-    "Loads (W)": "%.1f", "Lost in the wiring (W)": "%.2f",
+    "Loads (W)": "%.1f", "Lost in the wiring (W)": "%.2f", "Unit price": "%.2f", "Price": "%.2f",
+    "Quantity (ft)": "%.1f", "Reel (m)": "%.2f", "Cut to (m)": "%.2f", "Cut to (ft)": "%.1f", "Left on it (m)": "%.2f",
 }  # fmt: skip
 TALL_PX = 760
-WIDTHS = {"Findings": 150, "What": 520, "Case": 220}
+WIDTHS = {"Findings": 150, "What": 520, "Case": 220, "Note": 320}
 """Columns of text that would else be cut short or take all the room, in pixels."""
 
 
