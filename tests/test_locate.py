@@ -147,7 +147,8 @@ def test_a_low_battery_shows_without_load() -> None:
 
 def test_a_battery_with_more_inner_resistance_shows_under_load_alone() -> None:
     """60 mohm more at 9 A take 0.54 V; at rest nothing is missing."""
-    found = said(f"None,bank,,,,12.60\nBoth,bank,,,,{12.6 - 9 * 0.070:.2f}\nLeft alone,bank,,,,{12.6 - 5 * 0.070:.2f}\n")
+    rows = f"None,bank,,,,12.60\nBoth,bank,,,,{12.6 - 9 * 0.070:.2f}\nLeft alone,bank,,,,{12.6 - 5 * 0.070:.2f}\n"
+    found = said(rows)
     assert first(found).kind == "source resistance"
     assert found.suspects[0].value == pytest.approx(0.060, rel=0.25)
 
@@ -166,7 +167,8 @@ def test_two_bad_joints_are_named_together() -> None:
 
 def test_joints_in_series_are_named_as_not_told_apart_and_a_reading_proposed() -> None:
     """From the lamp alone nothing tells the feed of its lead from the return: the proposed reading does."""
-    found = said(f"Both,bank,,,,12.51\nBoth,left lamp,,,,{at_left(1.0):.2f}\nBoth,block,,,,{12.51 - 2 * FEEDER_V:.2f}\n")
+    rows = f"Both,bank,,,,12.51\nBoth,left lamp,,,,{at_left(1.0):.2f}\nBoth,block,,,,{12.51 - 2 * FEEDER_V:.2f}\n"
+    found = said(rows)
     named = {(one.cause.kind, one.cause.name, one.cause.pole) for one in found.named}
     assert {("joint", "left", "feed"), ("joint", "left", "return")} <= named
     assert not found.unique
@@ -224,18 +226,18 @@ def test_the_response_is_that_of_the_network_solved_anew() -> None:
 
 def test_one_bad_joint_is_first_or_in_the_named_group() -> None:
     """A seeded part of `bench/locate.py`: in at least 95 of 100 of those that the readings can show."""
-    found = [one for one in bench.along(24, 1) if one.visible]
-    assert len(found) >= 6
+    found = [one for one in bench.along(20, 1) if one.visible]
+    assert len(found) >= 5
     hits = sum(one.rank in ("first", "group") for one in found)
     assert hits >= 0.95 * len(found)
 
 
 def test_a_sound_installation_raises_no_alarm() -> None:
-    assert [one.rank for one in bench.along(20, 0) if one.rank != "fits"] == []
+    assert [one.rank for one in bench.along(12, 0) if one.rank != "fits"] == []
 
 
 def test_proposed_readings_leave_one_place() -> None:
-    found = [one for one in bench.proposed(8) if one.visible]
+    found = [one for one in bench.proposed(6) if one.visible]
     assert found
     assert sum(one.unique and one.rank == "first" for one in found) >= 0.8 * len(found)
 
