@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from farvolt import units
 from farvolt.errors import Fault, QuantityError
 from farvolt.integrity import nearest, shorten
+from farvolt.meter import percent_and_digits
 from farvolt.network import FEED, RETURN
 from farvolt.plan import CHASSIS, Plan
 from farvolt.readings import ACCURACY, POLE_WORDS, POLES, Pin, Reading
@@ -93,25 +94,14 @@ def _resolution(place: str, text: str, column: str, faults: list[Fault]) -> floa
     return found
 
 
-_ACCURACY = re.compile(r"[±+\-/ ]*(?:([\d.]+) ?%)?\s*\+?\s*(?:([\d.]+) ?(?:digits?|counts?|d|dgt))?", re.IGNORECASE)
-
-
 def _limit(place: str, text: str, value: float, step: float, faults: list[Fault]) -> float:
     """What a reading may be off by: percent of it and digits of `step` each."""
-    found = _ACCURACY.fullmatch(text.strip())
-    numbers = [_number(one) for one in found.groups()] if found else []
-    if not numbers or None in numbers or (numbers == [0.0, 0.0] and step > 0):
+    found = percent_and_digits(text)
+    if found is None or (found == (0.0, 0.0) and step > 0):
         faults.append(Fault(place, "accuracy", f'"{shorten(text)}"', "is no accuracy of a meter", f'"{ACCURACY}"'))
         return 1.0
-    percent, digits = (one or 0.0 for one in numbers)
+    percent, digits = found
     return max(percent / 100 * abs(value) + digits * step, 1e-9)
-
-
-def _number(text: str | None) -> float | None:
-    try:
-        return float(text or 0.0)
-    except ValueError:
-        return None
 
 
 def _ends(place: str, row: Mapping[str, str], plan: Plan, faults: list[Fault]) -> tuple[Pin | None, Pin | None]:

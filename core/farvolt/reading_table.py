@@ -95,11 +95,17 @@ def _sets(
         name = row.get("set") or (name if not row.get("case") or _named(table) else f"case {row['case']}")
         groups.setdefault(name, []).append((number, row))
     digit = reading_cells.digits(table)
+    filled = any(_is_filled(row) for _, row in table)
     found = []
     for name, rows in groups.items():
         case = reading_states.case_of(name, rows, plan, faults)
-        each = (reading_cells.reading(number, row, plan, digit, faults) for number, row in rows)
+        taken = [(number, row) for number, row in rows if _is_filled(row) or not filled]
+        each = (reading_cells.reading(number, row, plan, digit, faults) for number, row in taken)
         readings = tuple(one for one in each if one is not None)
         times = tuple(row["time"] for _, row in rows if row.get("time"))
         found.append(ReadingSet(name, case, readings, times))
     return found
+
+
+def _is_filled(row: dict[str, str]) -> bool:
+    return bool(row.get("volts") or row.get("amps"))
