@@ -3,6 +3,7 @@
 import shutil
 
 import cold_start
+import days as days_of_the_van
 import file_to_findings
 import linear_100k
 import many_cases
@@ -47,3 +48,9 @@ def test_file_to_findings() -> None:
 def test_cold_start(capsys: pytest.CaptureFixture[str]) -> None:
     cold_start.main(1)
     assert "farvolt check" in capsys.readouterr().out
+
+
+def test_days() -> None:
+    for row in days_of_the_van.rows(1, 1).values():
+        assert row["uncertified"] == 0
+        assert row["energy_error"] < 1e-9

@@ -6,7 +6,7 @@ its power, and a charger with hours but no times runs in one block of the mornin
 
 import datetime as dt
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -58,6 +58,13 @@ class Course:
     def hours(self) -> float:
         """Length of a step."""
         return float(self.edges_s[1] - self.edges_s[0]) / 3600
+
+    def first(self, steps: int) -> "Course":
+        """The first steps alone."""
+        return replace(
+            self, edges_s=self.edges_s[: steps + 1], loads=self.loads[:steps], idle=self.idle[:steps],
+            sources=self.sources[:steps], bank_degC=self.bank_degC[:steps],
+        )  # fmt: skip
 
     def clock(self, step: int) -> dt.datetime:
         """When a step begins, on the clock of the site."""

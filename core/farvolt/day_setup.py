@@ -15,7 +15,7 @@ from farvolt.errors import FarvoltError
 from farvolt.network import Floats, Network
 from farvolt.operating import Operating, operating, rated
 from farvolt.plan import Battery, Case, Plan
-from farvolt.rulebook import load
+from farvolt.rulebook import Rulebook, load
 
 
 @dataclass(frozen=True)
@@ -47,8 +47,12 @@ def prepare(plan: Plan, folder: Path | None = None) -> Ready:
             raise FarvoltError(f'sources "{one.name}", capacity: days need it; accepted: such as capacity = "200 Ah"')
     rulebook = load(plan.plan.rulebook, folder)
     plan = interim.with_sizes(plan, interim.sizes(plan, rulebook))
-    network = networks.build(plan, rulebook)
-    case = Case(name="days")
+    return of_network(networks.build(plan, rulebook), rulebook)
+
+
+def of_network(network: Network, rulebook: Rulebook) -> Ready:
+    """A network made ready, whose batteries have capacities and whose runs have sizes."""
+    plan, case = network.plan, Case(name="days")
     condition = operating(network, case)
     mode = temperatures.at(plan, rulebook, case, "plan" if plan.plan.conductor_temperature != "estimated" else "basis")
     nominal = np.array([condition.islands.nominal(network.feed(one.at)) for one in plan.loads], dtype=float)

@@ -11,6 +11,7 @@ PAGES = (
     ("findings_page.py", "Findings", "findings"),
     ("protection_page.py", "Protection", "protection"),
     ("bank_page.py", "Bank", "bank"),
+    ("days_page.py", "Days", "days"),
     ("schedule_page.py", "Schedule", "schedule"),
     ("readings_page.py", "Readings", "readings"),
     ("compare_page.py", "Compare", "compare"),
