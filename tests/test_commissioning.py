@@ -2,12 +2,12 @@
 
 import pytest
 
-from farvolt import meter, planfile, reading_table, test_sheet
+from farvolt import commissioning, meter, planfile, reading_table
+from farvolt.commissioning import TORQUE_NM, Sheet, insulation_test
 from farvolt.errors import FarvoltError
 from farvolt.lugs import STUDS
 from farvolt.network import FEED, RETURN
 from farvolt.study import prepared
-from farvolt.test_sheet import TORQUE_NM, Sheet, insulation_test
 
 PLAN = """\
 format = 1
@@ -52,7 +52,7 @@ METER = meter.parse("0.5 % + 2 digits")
 
 
 def made(text: str = PLAN, **asked: object) -> Sheet:
-    return test_sheet.sheet_of(prepared(planfile.parse(text)), METER, **asked)  # type: ignore[arg-type]
+    return commissioning.sheet_of(prepared(planfile.parse(text)), METER, **asked)  # type: ignore[arg-type]
 
 
 def test_millivolts_of_a_run_by_hand() -> None:

@@ -152,7 +152,7 @@ def sheet_of(context: Context, meter: Meter, case_name: str | None = None, amps:
 
 def insulation_test(nominal_V: float) -> InsulationTest:
     """The test for a nominal voltage (IEC 60364-6, provisional)."""
-    rows = read(ROOT / "devices" / "insulation_test.csv")
+    rows = read(ROOT / "devices" / "insulation.csv")
     row = next((one for one in rows if nominal_V <= float(one["nominal_up_to_V"])), rows[-1])
     return InsulationTest(float(row["test_V"]), float(row["least_Mohm"]), row["source"])
 
