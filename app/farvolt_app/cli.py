@@ -384,14 +384,15 @@ def schedule(plan: str, output: str) -> None:
     if output != planfile.STDIN and suffix not in (".xlsx", ".csv"):
         raise click.BadParameter(f'"{suffix or output}" is not written; accepted: .xlsx, .csv', param_hint="--output")
     _refuse_plan(plan, output)
-    found = _studied(plan, margins=False)
+    read = _read(plan)
+    found = _studied_of(read, plan, margins=False)
     from farvolt_app import schedule as rows
     from farvolt_app import workbook
 
     if output == planfile.STDIN:
         _print_whole(rows.to_csv(found))
         return
-    data = workbook.to_bytes(found) if suffix == ".xlsx" else rows.to_csv(found).encode("utf-8-sig")
+    data = workbook.to_bytes(found, text=read.text) if suffix == ".xlsx" else rows.to_csv(found).encode("utf-8-sig")
     _write_beside(plan, output, data)
 
 
@@ -538,6 +539,23 @@ def compare(plan: str, other: str, as_json: bool) -> None:
         compare_text.show(found, plan, other)
 
 
+@main.command("import")
+@click.argument("workbook", required=False)
+@click.option("--output", "-o", required=True, help="File to write: the plan, .toml; with --template, .xlsx.")
+@click.option("--template", is_flag=True, help="Write a workbook to fill in, with an example row on each sheet.")
+def import_workbook(workbook: str | None, output: str, template: bool) -> None:
+    """Read a plan from a WORKBOOK: the template filled in, or an exported cable schedule; - writes to output.
+
+    What is wrong is told by sheet, row and column, and nothing is written then. Formulas are not calculated, macros and
+    links are not looked at. An exported workbook gives back its plan with the lengths changed on its sheet Cables.
+    """
+    from farvolt_app import import_command
+
+    if template == (workbook is not None):
+        raise click.UsageError("name a workbook to read, or ask for one to fill in with --template")
+    import_command.run(workbook, output)
+
+
 @main.command("examples")
 @click.argument("name", required=False)
 @click.option("--output", "-o", help="File to copy it to; NAME.toml here unless given, - for output.")
@@ -583,9 +601,12 @@ def schema() -> None:
 
 def _studied(path: str, *, margins: bool) -> "Study":
     """The study of a plan file, with each case's margin where it is shown: margins take longest."""
+    return _studied_of(_read(path), path, margins=margins)
+
+
+def _studied_of(read: "PlanFile", path: str, *, margins: bool) -> "Study":
     from farvolt.study import study
 
-    read = _read(path)
     with _placed(read, path), _progress("Solving and checking"):
         return study(read.plan, read.folder, margins=margins)
 

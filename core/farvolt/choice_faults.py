@@ -41,6 +41,8 @@ class FaultRows:
     """The plan with every run to choose at its thickest."""
     options: Options
     places: dict[int, list[int]]
+    aside: frozenset[tuple[str, str]] = frozenset()
+    """What no choice cures: rule and run."""
     seats: Collection[int] = ()
     """Runs whose own protection is to be chosen."""
     _windows: dict[tuple[object, ...], tuple[float, float] | None] = field(default_factory=dict)
@@ -61,7 +63,8 @@ class FaultRows:
         network = self.context.network
         lowest = {one.source: one.volts for one in fault_sources(network, islands(network), "lowest")}
         for far in self.context.faults.far_ends:
-            yield from self._far_end(far, lowest[far.stretch.source], factors)
+            if ("protection.far-end", self.context.plan.runs[far.stretch.guard.run].name) not in self.aside:
+                yield from self._far_end(far, lowest[far.stretch.source], factors)
 
     def _interrupting(self) -> Iterator[Row]:
         """For each device a resistance before it that holds the highest fault current within its rating.
@@ -75,7 +78,8 @@ class FaultRows:
             run = plan.runs[index]
             one = run.protections[which]
             rating = one.interrupting.si if one.interrupting else one.kind.interrupting_at(plan.plan.nominal.si)
-            if index in self.seats or rating is None or fault.amps <= rating:
+            out = index in self.seats or ("protection.interrupting", run.name) in self.aside
+            if out or rating is None or fault.amps <= rating:
                 continue
             along = (one.distance.si if one.distance else 0.0) / run.length.si
             fixed_ohm, ohm = volts / fault.amps, dict[int, float]()

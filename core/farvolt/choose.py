@@ -179,11 +179,11 @@ def prepare(plan: Plan, rulebook: Rulebook, wishes: Wishes) -> Problem:
             behind.setdefault(guard.run, []).append(index)
     fixed = frozenset(run.size.name for i, run in enumerate(plan.runs) if run.size is not None and i not in runs)
     rows = Rows(options)
-    some = all(options.by_run.values())
-    faults = list(FaultRows(best, options, rows.places, frozenset(places)).rows()) if some else []
-    model = Model(options, [*links(options, behind), *faults], wishes.most_sizes, wishes.size_cost, fixed)
+    model = Model(options, links(options, behind), wishes.most_sizes, wishes.size_cost, fixed)
     problem = Problem(plan, rulebook, wishes, runs, options, best, model, rows, Cuts(options), frozenset())
-    problem.aside = _aside(problem)
+    if all(options.by_run.values()):
+        problem.aside = _aside(problem)
+        model.rows += FaultRows(best, options, rows.places, problem.aside, frozenset(places)).rows()
     return problem
 
 
@@ -197,14 +197,12 @@ def _thickest(plan: Plan, index: int, sizes: tuple[Size, ...]) -> Size:
 def _aside(problem: Problem) -> frozenset[Failure]:
     """What fails with the thinnest options and with the thickest, at the lowest and at the highest ratings."""
     by_run = problem.options.by_run
-    if not all(by_run.values()):
-        return frozenset()
     thinnest = {run: min(mine, key=lambda one: (one.area_mm2, one.rating_A or 0.0)) for run, mine in by_run.items()}
     found = failures(problem.built(thinnest))
     if not found:
         return found
     thickest = {run: max(mine, key=lambda one: (one.area_mm2, -(one.rating_A or 0.0))) for run, mine in by_run.items()}
-    return found & failures(problem.built(thickest)) if found else found
+    return found & failures(problem.built(thickest))
 
 
 def choose(plan: Plan, rulebook: Rulebook, wishes: Wishes, report: Report = lambda progress: None) -> Choice:
