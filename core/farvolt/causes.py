@@ -95,7 +95,9 @@ def _cause(
     kind: Kind, name: str, words: str, atoms: Scaled, values: Floats, pole: str = "", parts: tuple[str, ...] = (),
     branch: int = -1, at: int = -1,
 ) -> Cause:  # fmt: skip
-    return Cause(kind, name, words, atoms, values, _WEIGHTS[kind], pole, parts, branch, at=at)
+    # The farther a cable or a load is from what is planned, the less likely: a lead of twice its length is rare.
+    far = _evened(-np.abs(values)) if kind in ("cable", "load") else None
+    return Cause(kind, name, words, atoms, values, _WEIGHTS[kind], pole, parts, branch, far, at)
 
 
 def _places(network: Network) -> Iterator[Cause]:
@@ -173,8 +175,13 @@ def _sources(plan: Plan, network: Network, condition: Operating, atoms: Atoms) -
 
 def lasting(cause: Cause, heat_W: Floats) -> Cause:
     """A bad joint with values that would soon burn out made unlikely; `heat_W` is over its values."""
-    prior = -np.log1p((heat_W / LASTING_W) ** 2)
-    return replace(cause, prior=prior - np.log(np.mean(np.exp(prior))))
+    return replace(cause, prior=_evened(-np.log1p((heat_W / LASTING_W) ** 2)))
+
+
+def _evened(logs: Floats) -> Floats:
+    """Logarithms of odds over the values of a cause, moved so that the odds are 1 on average."""
+    evened: Floats = logs - np.log(np.mean(np.exp(logs)))
+    return evened
 
 
 # Sound parts ---------------------------------------------------------------------------------------------------------

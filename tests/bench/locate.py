@@ -84,8 +84,8 @@ class Trial:
         """What the tool says."""
         return locate(self.installation, self.sets())
 
-    def visible(self, fault: BadJoint) -> bool:
-        """Whether a fault moves the readings enough to be told from a sound installation, in truth."""
+    def strength(self, fault: BadJoint) -> float:
+        """By how many standard deviations of the meter and the tolerances a fault in truth moves the readings."""
         found = measured(self.installation, self.sets())
         without = self.built.with_joints(*(one for one in self.faults if one is not fault))
         moved = []
@@ -93,7 +93,7 @@ class Trial:
             ends = (reading.start or ("", 0), reading.end or ("", 0))
             pair = self.built.true_V(state.case, *ends), without.true_V(state.case, *ends)
             moved.append(0.0 if None in pair else float(pair[0] or 0.0) - float(pair[1] or 0.0))
-        return float(np.linalg.norm(found.evidence().white(np.array(moved)))) >= SEEN
+        return float(np.linalg.norm(found.evidence().white(np.array(moved))))
 
 
 def trial(kind: str, seed: int, faults: int) -> Trial | None:
@@ -213,8 +213,9 @@ def read_along(made: Trial, count: int) -> bool:
 
 @dataclass(frozen=True)
 class Outcome:
-    """One trial. `rank` of the worst placed true joint that is visible: "first", "group", "unnamed", or "fits" where
-    the readings were said to fit the plan. `visible`: how many of the faults were."""
+    """One trial. `rank` is of the worst placed true joint that is visible: "first", "group" or "unnamed", or "fits"
+    where the readings were said to fit the plan. `visible`: how many of the faults were. `stated` is the probability
+    that the first suspect was given."""
 
     kind: str
     seed: int
@@ -225,11 +226,14 @@ class Outcome:
     stated: float
     readings: int
     unique: bool
+    strength: float
+    """Of the weakest fault that is visible; of the strongest where none is."""
 
 
 def outcome(made: Trial) -> Outcome:
     """Compare what the tool says with the truth."""
-    seen = [fault for fault in made.faults if made.visible(fault)]
+    strengths = [made.strength(fault) for fault in made.faults]
+    seen = [fault for fault, strength in zip(made.faults, strengths, strict=True) if strength >= SEEN]
     found = made.located()
     first = {_key(found, index) for index in found.explanations[0].causes} if found.explanations else set()
     named = {_key(found, index) for one in found.explanations for index in one.causes}
@@ -240,10 +244,10 @@ def outcome(made: Trial) -> Outcome:
         rank = "first"
     else:
         rank = "group" if all(one in named for one in true) else "unnamed"
-    share = sum(one.probability for one in found.suspects if (one.cause.name, one.cause.pole) in
-                {(fault.name, fault.pole) for fault in made.faults} and one.cause.kind == "joint")  # fmt: skip
+    share = found.suspects[0].probability if found.suspects else 0.0
     return Outcome(made.kind, made.seed, len(made.faults), len(seen), rank, len(found.explanations), share,
-                   len(made.taken), found.unique)  # fmt: skip
+                   len(made.taken), found.unique,
+                   min((one for one in strengths if one >= SEEN), default=max(strengths, default=0.0)))  # fmt: skip
 
 
 Key = tuple[str, str, str]
@@ -284,7 +288,8 @@ def _judged(one: Trial) -> Outcome:
         return outcome(one)
     except FarvoltError as error:
         print(f"    {one.kind} {one.seed}: {error}")
-        return Outcome(one.kind, one.seed, len(one.faults), len(one.faults), "refused", 0, 0.0, len(one.taken), False)
+        return Outcome(one.kind, one.seed, len(one.faults), len(one.faults), "refused", 0, 0.0, len(one.taken), False,
+                       math.inf)  # fmt: skip
 
 
 def proposed(count: int) -> list[Outcome]:
@@ -334,6 +339,18 @@ def tell(title: str, found: Sequence[Outcome]) -> None:
         print(f"  {kind:24} visible {len(seen):4}: first or in group {percent(hits, len(seen))}, first "
               f"{percent(first, len(seen))}; median group {size:g}; not visible {len(blind):4}: not misled "
               f"{percent(quiet, len(blind))}")  # fmt: skip
+    for least, most in ((SEEN, 5.0), (5.0, 8.0), (8.0, math.inf)):
+        band = [one for one in found if one.visible and least <= one.strength < most]
+        hits = sum(one.rank in ("first", "group") for one in band)
+        print(f"  moved by {least:g} to {most:g} deviations: {len(band):4}: first or in group "
+              f"{percent(hits, len(band))}")  # fmt: skip
+    for least, most in ((0.0, 0.5), (0.5, 0.8), (0.8, 0.95), (0.95, 1.01)):
+        band = [one for one in found if one.faults == 1 and one.rank != "fits" and least <= one.stated < most]
+        true = sum(one.rank == "first" for one in band)
+        if band:
+            print(f"  first suspect stated at {100 * least:.0f} to {100 * min(most, 1):.0f} %, on average "
+                  f"{100 * statistics.mean(one.stated for one in band):.0f} %: true in {percent(true, len(band))} of "
+                  f"{len(band)}")  # fmt: skip
     missed = [(one.kind, one.seed, one.rank) for one in found if one.visible and one.rank not in ("first", "group")]
     if missed:
         print(f"  missed: {missed[:20]}")
