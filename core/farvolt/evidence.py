@@ -179,8 +179,8 @@ class Evidence:
         """Causes that can move a reading at all."""
         return [
             at
-            for at in range(len(self.causes))
-            if np.abs(self.curve(at)[[0, -1]]).max(initial=0.0) > 0.1
+            for at, cause in enumerate(self.causes)
+            if np.abs(self.white(self.moves(cause, cause.values[[0, -1]]))).max(initial=0.0) > 0.1
         ]
 
     def _pairs(self, singles: Sequence[Hypothesis]) -> Iterator[tuple[int, int]]:
