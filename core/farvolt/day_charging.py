@@ -49,8 +49,10 @@ class Charging:
         self.banks = banks
         self.running = course.sources > 0
         self._sources = movable(ready)
-        self._volts = ready.condition.volts[: len(ready.plan.sources)] + _compensation(ready, course)
-        self._high, self._power = _limits(ready, course)
+        volts = ready.condition.volts[: len(ready.plan.sources)] + _compensation(ready, course)
+        self._volts = volts[:, self._sources]
+        high, power = _limits(ready, course)
+        self._high, self._power = high[:, self._sources], power[:, self._sources]
         self._degC = course.bank_degC.tolist()
         self._tail_A = sum(one.tail_A for one in banks)
         self._stages = [
@@ -62,8 +64,7 @@ class Charging:
     def set(self, laws: Laws, step: int, hours: float) -> None:
         """Put in the laws of a step: chargers at their voltage, banks with the room that they have."""
         mine = self._sources
-        laws.high[mine], laws.power[mine] = self._high[step, mine], self._power[step, mine]
-        laws.volts[mine] = self._volts[step, mine]
+        laws.high[mine], laws.power[mine], laws.volts[mine] = self._high[step], self._power[step], self._volts[step]
         for stage in self._stages:
             if stage.floating:
                 laws.volts[stage.source] -= stage.fall_V

@@ -21,6 +21,7 @@ _STEADY = 1.5e-14
 """A step has settled when no port moves by more than this share of the highest voltage."""
 
 _HAIR_V = 1e-9
+_NO_LIMIT = float("inf")
 
 
 @dataclass(slots=True)
@@ -140,14 +141,14 @@ class _Step:
         A source that leapt from one end to the other lies between them: it is taken as straight there.
         """
         delivered, sides = [], []
+        volts, per_ohm, low, high, power = self.volts, self.per_ohm, self.low, self.high, self.power
         for k, u in enumerate(us):
-            amps = (self.volts[k] - u) * self.per_ohm[k]
-            most = self.high[k]
-            if self.power[k] < np.inf:
-                most = min(most, self.power[k] / max(u, self.network.floor[k]))
-            side = 1 if amps > most else -1 if amps < self.low[k] else 0
+            amps, most = (volts[k] - u) * per_ohm[k], high[k]
+            if power[k] != _NO_LIMIT:
+                most = min(most, power[k] / max(u, self.network.floor[k]))
+            side = 1 if amps > most else -1 if amps < low[k] else 0
             if side and (before is None or before[k] != -side):
-                amps = most if side > 0 else self.low[k]
+                amps = most if side > 0 else low[k]
             else:
                 side = 0
             delivered.append(amps)

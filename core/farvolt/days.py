@@ -89,6 +89,7 @@ class _Run:
         self.laws = day_setup.laws(ready, course, self.banks)
         self.degC = course.bank_degC.tolist()
         self.last: tuple[StepNetwork, Floats] | None = None
+        self.trend: Floats | None = None
         self.off_share = np.zeros((len(course), len(plan.loads)))
         self.times_off = np.zeros(len(plan.loads), dtype=int)
         self.cut_hours, self.cold_hours = np.zeros((2, len(self.banks)))
@@ -129,6 +130,7 @@ class _Run:
             self.unsolved += 1
             return self._rest(step, hours, self.wanted[step])
         self._count(step, hours, silent)
+        self.trend = settled.u - self.last[1] if self.last is not None and self.last[0] is network else None
         self.last = (network, settled.u)
         self.record.keep(step, hours, network, settled, self._charge(step, network, settled, hours))
         if self.off.any():
@@ -142,7 +144,7 @@ class _Run:
         """The step with every load off that lets go, and which are silent; None where nothing holds."""
         self.charging.set(self.laws, step, hours)
         wanted, silent = self.wanted[step], without | (self.off & self.wanted[step])
-        start = self._before(network)
+        start = self._before(step, network)
         while True:
             self._ask(step, silent)
             name = (self.demand_names[step], silent.tobytes()) if silent.any() else self.demand_names[step]
@@ -159,12 +161,16 @@ class _Run:
                     return None, silent
             silent[index] = True
 
-    def _before(self, network: StepNetwork) -> Floats | None:
-        """Voltages of the step before at the ports of a network."""
+    def _before(self, step: int, network: StepNetwork) -> Floats | None:
+        """Voltages at the ports of a network after the step before; as they went on, where nothing else changes."""
         if self.last is None:
             return None
         before, u = self.last
-        return u if before is network else before.known(u)[network.everywhere]
+        if before is not network:
+            return before.known(u)[network.everywhere]
+        names = self.demand_names
+        alike = self.trend is not None and step > 1 and names[step] == names[step - 1] == names[step - 2]
+        return u + self.trend if alike and self.trend is not None else u
 
     def _ask(self, step: int, silent: np.ndarray) -> None:
         """Put in what the loads ask for."""
