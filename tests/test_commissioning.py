@@ -7,6 +7,7 @@ from farvolt.commissioning import TORQUE_NM, Sheet, insulation_test
 from farvolt.errors import FarvoltError
 from farvolt.lugs import STUDS
 from farvolt.network import FEED, RETURN
+from farvolt.readings import ReadingsError
 from farvolt.study import prepared
 
 PLAN = """\
@@ -156,3 +157,9 @@ def test_rows_left_open_on_a_sheet_to_fill_in_are_passed_over() -> None:
     plan = planfile.parse(PLAN)
     (one,) = reading_table.from_text("from,to,volts,run,amps\nbank,,12.7,,\nlamp,,,,\n,,,main,\n", plan)
     assert [reading.row for reading in one.readings] == [2]
+
+
+def test_a_sheet_with_nothing_filled_in_is_told_once() -> None:
+    with pytest.raises(ReadingsError) as told:
+        reading_table.from_text("from,volts\nbank,\nlamp,\n", planfile.parse(PLAN))
+    assert [fault.place for fault in told.value.faults] == ["row 2"]

@@ -16,7 +16,7 @@ import click
 
 from farvolt import __version__
 from farvolt.errors import FarvoltError
-from farvolt_app import shopping_command
+from farvolt_app import commissioning_command, shopping_command
 
 if TYPE_CHECKING:
     from datetime import datetime
@@ -473,6 +473,7 @@ def labels(plan: str, output: str, size: str, sheet: bool, paper: str | None) ->
 
 main.add_command(shopping_command.shopping)
 main.add_command(shopping_command.prices)
+main.add_command(commissioning_command.write_sheet)
 
 
 @main.command()

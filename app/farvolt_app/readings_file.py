@@ -9,6 +9,7 @@ from farvolt import reading_table
 from farvolt.errors import Fault
 from farvolt.plan import Plan
 from farvolt.readings import ReadingsError, ReadingSet
+from farvolt_app.textsafe import from_csv_text
 
 SHEET = "Readings"
 
@@ -37,9 +38,10 @@ def rows_of(name: str, data: bytes) -> Rows:
     if suffix not in (".csv", ".tsv", ".txt"):
         raise ReadingsError([Fault("", "", f'"{suffix or name}"', "is not read", ".csv, .xlsx")], name)
     try:
-        return reading_table.rows_of(data.decode("utf-8-sig"), name)
+        rows = reading_table.rows_of(data.decode("utf-8-sig"), name)
     except UnicodeDecodeError:
         raise ReadingsError([Fault("", "", "", "is not a text in UTF-8", "a CSV file in UTF-8")], name) from None
+    return [(number, [from_csv_text(cell) for cell in row]) for number, row in rows]
 
 
 def _workbook(name: str, data: bytes) -> Rows:

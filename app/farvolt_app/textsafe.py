@@ -26,3 +26,8 @@ def cell_text(text: str) -> str:
 def csv_text(text: str) -> str:
     """Text for a CSV cell: with an apostrophe before what a spreadsheet would calculate."""
     return f"'{text}" if begins_like_formula(text) else text
+
+
+def from_csv_text(cell: str) -> str:
+    """What `csv_text` was given."""
+    return cell[1:] if cell.startswith("'") and begins_like_formula(cell[1:]) else cell

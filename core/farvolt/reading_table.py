@@ -99,7 +99,7 @@ def _sets(
     found = []
     for name, rows in groups.items():
         case = reading_states.case_of(name, rows, plan, faults)
-        taken = [(number, row) for number, row in rows if _is_filled(row) or not filled]
+        taken = [one for one in rows if _is_filled(one[1])] if filled else rows[:1]
         each = (reading_cells.reading(number, row, plan, digit, faults) for number, row in taken)
         readings = tuple(one for one in each if one is not None)
         times = tuple(row["time"] for _, row in rows if row.get("time"))
