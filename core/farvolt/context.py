@@ -12,6 +12,7 @@ from farvolt.plan import Case, Plan, Run
 from farvolt.rulebook import Basis, Rulebook
 from farvolt.sections import Sections, sections
 from farvolt.solution import Solution
+from farvolt.started import Starts, starts
 from farvolt.temperatures import Mode
 
 Resolve = Callable[[Mapping[str, Size], int, Mode], Solution]
@@ -49,6 +50,8 @@ class Context:
     solve_case: SolveCase
     interim: Mapping[str, Size]
     """Sizes taken for the runs that state none; `plan` has them filled in."""
+    base: "Context | None" = None
+    """What this one was made from by trying other protection or cables; its currents are taken to stay as they are."""
 
     @cached_property
     def _run_places(self) -> dict[str, int]:
@@ -76,6 +79,25 @@ class Context:
             min((one for one in several if one), key=lambda one: -1.0 if one.amps is None else one.amps, default=None)
             for several in per_run
         )
+
+    @cached_property
+    def lasting(self) -> tuple[Solution, ...]:
+        """Every case with hot conductors as it lasts: a case with a start counts as after it."""
+        if self.base is not None:
+            return self.base.lasting
+        found = []
+        for one in self.cases:
+            after = one.case.model_copy(update={"surge": ()}) if one.case.surge else None
+            found.append(self.solve_case(after, "hot") if after is not None else one.solutions["hot"])
+        return tuple(found)
+
+    @cached_property
+    def starts(self) -> Starts:
+        """The starts of loads, solved once."""
+        if self.base is not None:
+            return self.base.starts
+        solved = [(one.case, one.solutions["hot"]) for one in self.cases]
+        return starts(self.network, self.rulebook, solved, alone=self.remedies_are_exact)
 
     @property
     def remedies_are_exact(self) -> bool:

@@ -5,12 +5,15 @@ is offered has therefore passed them. Where nothing passes, the offer says what 
 opens the window.
 """
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass, field, replace
+from functools import partial
 
 from farvolt import checks, network
 from farvolt.checks.demand import Demands
+from farvolt.checks.interrupting import Interrupts, devices
 from farvolt.checks.rating import limit_for
+from farvolt.checks.voltage import highest_V
 from farvolt.checks.ways import ampacity_A, exempt
 from farvolt.conductors import Size
 from farvolt.context import CaseStudy, Context, label, larger_sizes
@@ -32,6 +35,11 @@ SPARE = 1.25
 """Times its load that a protection is rated at where there is a choice (common practice)."""
 
 _ROUNDS = 30
+"""How often all places are tried together, at most; fewer times in larger plans."""
+
+_RUNS_TRIED = 1500
+"""Runs times rounds: what the search may take of a page's time."""
+
 _SIZES = 4
 """How many larger sizes are tried to open a window."""
 
@@ -68,6 +76,10 @@ class Choice:
     tried: int = 0
     blocking: dict[str, None] = field(default_factory=dict)
     """Rules that the offers tried so far did not pass, in that order."""
+    unfinished: bool = False
+    """The rounds ended before an offer was shown to pass."""
+    fallen: Offer | None = None
+    """An offer of a type that was ruled out."""
 
     @property
     def offer(self) -> Offer | None:
@@ -82,18 +94,27 @@ class Choice:
         self.blocking |= dict.fromkeys(rules)
         self.tried += 1
         if _OF_TYPE.intersection(rules):
-            self.offers[self.tried :] = [one for one in self.offers[self.tried :] if one.kind != failed.kind]
+            self.drop(lambda kind: kind == failed.kind)
         while (offer := self.offer) is not None and offer.kind == failed.kind and offer.size == failed.size:
             higher = offer.rating_A > failed.rating_A
             if not (_WANT_LESS if higher else _WANT_MORE).intersection(rules):
                 break
             self.tried += 1
 
+    def drop(self, unfit: Callable[[ProtectionType], bool]) -> bool:
+        """Leave out the offers still to be tried that are of an unfit type; whether there were any."""
+        ahead = self.offers[self.tried :]
+        kept = [one for one in ahead if not unfit(one.kind)]
+        if len(kept) < len(ahead):
+            self.fallen = self.fallen or ahead[-1]
+            self.offers[self.tried :] = kept
+        return len(kept) < len(ahead)
+
     @property
     def stand_in(self) -> Offer | None:
         """What stands here while the other places are tried: the offer, or the last that failed, so that nobody else is
         blamed for a place without protection."""
-        return self.offer or (self.offers[-1] if self.offers else None)
+        return self.offer or (self.offers[-1] if self.offers else self.fallen)
 
 
 _OF_TYPE = {"protection.interrupting", "protection.voltage-rating"}
@@ -105,9 +126,14 @@ def choices(context: Context, places: Iterable[Place]) -> list[Choice]:
     """For each place the first of its offers that passes, all tried together; see `Choice.offer`."""
     demands = Demands(context)
     found = [Choice(place, list(_offers(context, place, demands))) for place in places]
-    for _ in range(_ROUNDS):
+    _made_for_the_volts(context, found)
+    open_ones: list[Choice] = []
+    for turn in range(min(_ROUNDS, max(2, _RUNS_TRIED // max(1, len(context.plan.runs))))):
         standing = [one for one in found if one.offer is not None]
-        failed = _failed(context, found) if standing else {}
+        if not standing:
+            return found
+        changed = _changed(context, found)
+        failed = _failed(changed, found)
         open_ones = [one for one in standing if one.place in failed]
         if not open_ones:
             return found
@@ -115,9 +141,37 @@ def choices(context: Context, places: Iterable[Place]) -> list[Choice]:
         mine = [one for one in open_ones if failed[one.place].own]
         for one in mine or open_ones:
             one.fails(failed[one.place].rules)
+        if turn == 0:
+            _strong_enough(changed, open_ones)
     for one in open_ones:
-        one.tried = len(one.offers)  # none was shown to pass within the rounds
+        one.tried, one.unfinished = len(one.offers), one.offer is not None
     return found
+
+
+def _made_for_the_volts(context: Context, found: list[Choice]) -> None:
+    """Leave out types that are made for less than the voltage: no trial is needed to see that they do not pass."""
+    volts = highest_V(context)
+    for one in found:
+        if one.drop(partial(_made_for_less, volts[one.place.run])):
+            one.blocking["protection.voltage-rating"] = None
+
+
+def _made_for_less(volts: float, kind: ProtectionType) -> bool:
+    return kind.volts < volts
+
+
+def _strong_enough(changed: Context, found: list[Choice]) -> None:
+    """Leave out types that do not interrupt the fault currents, once a trial has shown these."""
+    needed = {Place(one.index, one.one.end): one for one in devices(changed) if one.one.pole == "feed"}
+    for one in found:
+        place = needed.get(one.place)
+        if place is not None and one.drop(partial(_too_weak, place)):
+            one.blocking["protection.interrupting"] = None
+
+
+def _too_weak(place: Interrupts, kind: ProtectionType) -> bool:
+    rating_A = kind.interrupting_at(place.system_V)
+    return rating_A is not None and rating_A < place.needed_A * (1 - 1e-9)
 
 
 def fitting(context: Context, place: Place, kinds: Iterable[ProtectionType]) -> dict[str, tuple[float, ...]]:
@@ -129,7 +183,7 @@ def fitting(context: Context, place: Place, kinds: Iterable[ProtectionType]) -> 
     for kind in kinds:
         choice, passing = Choice(place, [Offer(kind, rating) for rating in sorted(_between(kind, demand, most))]), []
         while (offer := choice.offer) is not None:
-            failed = _failed(context, [choice])
+            failed = _failed(_changed(context, [choice]), [choice])
             if failed:
                 choice.fails(failed[place].rules)
             else:
@@ -174,7 +228,10 @@ def _text(context: Context, choice: Choice, finding: Finding) -> str:
     if offer is None:
         if finding.rule == "protection.missing" or not choice.blocking:
             return ""
-        return f"no standard rating passes here{on} ({', '.join(choice.blocking)} in the way)"
+        blocking = f"({', '.join(choice.blocking)} in the way)"
+        if choice.unfinished:
+            return f"none of the ratings tried in the time there is passes here{on} {blocking}"
+        return f"no standard rating passes here{on} {blocking}"
     missing = ' in the feed at "' + at + '"' if finding.rule == "protection.missing" else ""
     return f"{offer.text}{missing}{on}: passes all checks of protection"
 
@@ -243,16 +300,17 @@ class _Failure:
     own: bool = False
 
 
-def _failed(context: Context, tried: list[Choice]) -> dict[Place, _Failure]:
-    """The places whose offers do not pass, all of them put in at once."""
-    changed = _changed(context, tried)
+def _failed(changed: Context, tried: list[Choice]) -> dict[Place, _Failure]:
+    """The places whose offers do not pass, in a context that has them all in place."""
     broken: dict[Place, _Failure] = {}
     mine = {one.place for one in tried}
+    # A finding names a run, not which of its ends: told apart where a type at one end is no fault of the other.
+    weak = {Place(one.index, one.one.end) for one in devices(changed) if one.too_weak}
     for finding in checks.run_some(changed, RULES):
         if finding.severity == "note" or "not verified" in finding.message:
             continue
         for place in _places(changed, finding):
-            if place in mine:
+            if place in mine and (finding.rule != "protection.interrupting" or place in weak):
                 failure = broken.setdefault(place, _Failure())
                 failure.rules.append(finding.rule)
                 failure.own |= finding.subject == changed.plan.runs[place.run].name
@@ -272,9 +330,9 @@ def _changed(context: Context, tried: list[Choice]) -> Context:
             run = _resized(run, offer.size)
             resized.append(one.place.run)
         runs[one.place.run] = _with_protection(context, run, one.place, offer)
-    plan = context.plan.model_copy(update={"runs": tuple(runs)})
+    plan = context.plan.model_copy(update={"runs": tuple(runs), "cases": context.plan.checked_cases})
     cases = tuple(_reampacity(context, plan, case, resized) for case in context.cases)
-    return replace(context, plan=plan, network=network.build(plan, context.rulebook), cases=cases)
+    return replace(context, plan=plan, network=network.build(plan, context.rulebook), cases=cases, base=context)
 
 
 def _reampacity(context: Context, plan: Plan, one: CaseStudy, resized: list[int]) -> CaseStudy:

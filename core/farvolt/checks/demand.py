@@ -6,7 +6,6 @@ import numpy as np
 
 from farvolt.context import Context
 from farvolt.network import FEED, RETURN, Floats
-from farvolt.solution import Solution
 
 
 class Demands:
@@ -21,17 +20,9 @@ class Demands:
         self.factor = rule.factor if rule else 1.0
 
     @cached_property
-    def _solutions(self) -> list[Solution]:
-        found = []
-        for one in self._context.cases:
-            after = one.case.model_copy(update={"surge": ()})
-            found.append(self._context.solve_case(after, "hot") if one.case.surge else one.solutions["hot"])
-        return found
-
-    @cached_property
     def amps(self) -> Floats:
         """Current in A; 0 in a case that gives way."""
-        found = [[one.run_amps(pole) * one.state.solved for one in self._solutions] for pole in (FEED, RETURN)]
+        found = [[one.run_amps(pole) * one.state.solved for one in self._context.lasting] for pole in (FEED, RETURN)]
         amps: Floats = np.nan_to_num(np.abs(np.array(found)))
         return amps
 
@@ -39,7 +30,7 @@ class Demands:
     def continuous(self) -> Floats:
         """The part of it that goes to continuous loads: as their share in all loads beyond."""
         shares = []
-        for one in self._solutions:
+        for one in self._context.lasting:
             every, lasting = one.feed_demand
             shares.append(np.divide(lasting, every, out=np.zeros_like(every), where=every > 0))
         found: Floats = self.amps * np.array(shares)

@@ -25,7 +25,7 @@ SCOPE = (
 
 
 @dataclass(frozen=True, slots=True)
-class _Device:
+class Interrupts:
     """One protection with what it may have to interrupt, and what it can."""
 
     index: int
@@ -41,7 +41,13 @@ class _Device:
 
     @property
     def needed_A(self) -> float:
+        """The largest current that it may have to interrupt, or that the rulebook asks for."""
         return max(self.fault.amps, self.least_A)
+
+    @property
+    def too_weak(self) -> bool:
+        """Whether it is known to interrupt less."""
+        return self.rating_A is not None and self.rating_A < self.needed_A * (1 - 1e-9)
 
     @property
     def name(self) -> str:
@@ -52,22 +58,23 @@ class _Device:
 @check(RULE, title="Interrupting rating of each protection against the highest fault current", reads=())
 def interrupting(context: Context) -> Iterator[Finding]:
     """Protection that a bolted short would overcome; once for each battery, what its estimate leaves unverified."""
-    unverified: dict[str, list[_Device]] = {}
-    for device in _devices(context):
+    unverified: dict[str, list[Interrupts]] = {}
+    for device in devices(context):
         if device.rating_A is None:
             yield _unknown(device)
-        elif device.rating_A < device.needed_A * (1 - 1e-9):
+        elif device.too_weak:
             yield _failing(context, device)
         elif not device.fault.certified:
             yield _unsolved(device)
         elif device.fault.estimated:
             unverified.setdefault(_estimated(context, device.fault), []).append(device)
-    for battery, devices in unverified.items():
-        yield _not_verified(battery, devices)
+    for battery, several in unverified.items():
+        yield _not_verified(battery, several)
     yield from _beyond_the_table(context)
 
 
-def _devices(context: Context) -> Iterator[_Device]:
+def devices(context: Context) -> Iterator[Interrupts]:
+    """Every protection that a fault current reaches."""
     islands = context.cases[0].solutions["plan"].condition.islands
     for (index, which), fault in sorted(context.faults.devices.items()):
         run = context.plan.runs[index]
@@ -76,7 +83,7 @@ def _devices(context: Context) -> Iterator[_Device]:
         system_V = islands.nominal(context.network.feed(feeds[0])) if feeds else context.plan.plan.nominal.si
         rating = one.interrupting.si if one.interrupting else one.kind.interrupting_at(system_V)
         least, least_A, bank_Ah = _asked(context, index, one, system_V)
-        yield _Device(index, run, one, fault, system_V, rating, least, least_A, bank_Ah)
+        yield Interrupts(index, run, one, fault, system_V, rating, least, least_A, bank_Ah)
 
 
 def _asked(
@@ -100,7 +107,7 @@ def _capacity_Ah(context: Context, source: int) -> float:
     return battery.capacity.si * battery.strings if battery.capacity else 0.0
 
 
-def _failing(context: Context, device: _Device) -> Finding:
+def _failing(context: Context, device: Interrupts) -> Finding:
     assert device.rating_A is not None
     needed, rating = device.needed_A, device.rating_A
     shown, volts = apart(needed, rating, 4), f"{number(device.system_V)} V"
@@ -128,7 +135,7 @@ def _basis(one: Protection) -> str:
     return f"{PRACTICE}; the rating is typical of its type: {one.kind.basis}{provisional}"
 
 
-def _remedy(context: Context, device: _Device) -> str:
+def _remedy(context: Context, device: Interrupts) -> str:
     known = [*context.plan.own_types.values(), *(protection_type(name) for name in protection_type_names())]
     enough = [one for one in known if (one.interrupting_at(device.system_V) or 0.0) >= device.needed_A]
     fitting = [one for one in enough if device.one.rating.si in one.ratings_A] or enough
@@ -145,7 +152,7 @@ def _interrupts(one: ProtectionType, system_V: float) -> str:
     return number(one.interrupting_at(system_V) or 0.0, 4)
 
 
-def _unknown(device: _Device) -> Finding:
+def _unknown(device: Interrupts) -> Finding:
     volts = number(device.system_V)
     return run_finding(
         RULE, "warn", device.run, device.fault.amps, None, "A",
@@ -156,7 +163,7 @@ def _unknown(device: _Device) -> Finding:
     )  # fmt: skip
 
 
-def _unsolved(device: _Device) -> Finding:
+def _unsolved(device: Interrupts) -> Finding:
     return run_finding(
         RULE, "warn", device.run, None, device.rating_A, "A",
         f"{label(device.run)}: not verified what {device.name} has to interrupt: its fault current was not found to "
@@ -176,7 +183,7 @@ def _estimated(context: Context, fault: Fault) -> str:
     return next(name for name, _ in fault.by_source if name in batteries - stated)
 
 
-def _not_verified(battery: str, devices: list[_Device]) -> Finding:
+def _not_verified(battery: str, devices: list[Interrupts]) -> Finding:
     worst = max(devices, key=lambda one: one.needed_A / (one.rating_A or 1.0))
     count = f"{len(devices)} fuses and breakers" if len(devices) > 1 else "one fuse or breaker"
     lines = tuple(

@@ -12,6 +12,7 @@ from farvolt.context import Context, label
 from farvolt.network import FEED, RETURN, Floats
 from farvolt.plan import Case, Load, Protection
 from farvolt.results import Finding
+from farvolt.started import MOST
 from farvolt.units import number
 
 ASSUMED_S = 1.0
@@ -76,39 +77,24 @@ def starts(context: Context) -> Iterator[Finding]:
 
 
 def _starts(context: Context) -> Iterator[_Start]:
-    """Every start that a case asks for, and of small plans that of each load alone in every case it is on in."""
+    """Every start that was solved, with the current of each run."""
     surging = [load for load in context.plan.loads if load.surge is not None]
-    solved = [(one.case, one.solutions["hot"]) for one in context.cases if one.case.surge]
-    if context.remedies_are_exact:
-        known = [_unnamed(case) for case, _ in solved]
-        for one in (each.case for each in context.cases if not each.case.surge):
-            alone = [_with_start(one, load) for load in surging if one.share(load.name) > 0]
-            solved += [(case, context.solve_case(case, "hot")) for case in alone if _unnamed(case) not in known]
-    for case, solution in solved:
+    for case, solution in context.starts.solved:
         if solution.state.solved:
             loads = tuple(load for load in surging if load.name in case.surge)
             yield _Start(case, loads, (abs(solution.run_amps(FEED)), abs(solution.run_amps(RETURN))))
 
 
-def _with_start(case: Case, load: Load) -> Case:
-    return case.model_copy(update={"surge": (load.name,)})
-
-
-def _unnamed(case: Case) -> Case:
-    """The case for comparison: two of other names may ask for the same."""
-    return case.model_copy(update={"name": "", "notes": ""})
-
-
 def _not_tried(context: Context) -> Iterator[Finding]:
-    """Of a large plan: the starts that no case asks for."""
-    asked = {name for one in context.cases for name in one.case.surge}
-    left = [load.name for load in context.plan.loads if load.surge is not None and load.name not in asked]
-    if left and not context.remedies_are_exact:
+    """Of a large plan, or one with very many starts: those that no case asks for, where they were left out."""
+    left = context.starts.left_out
+    if left:
         names = ", ".join(f'"{name}"' for name in left[:8]) + (", …" if len(left) > 8 else "")
+        large = "more than 300 runs" if not context.remedies_are_exact else f"more than {MOST} starts in its cases"
         yield Finding(
             "protection.under-load", "note", context.plan.plan.name, "plan", None, None, None, None,
             f"Not checked against opening times: the start of {names}, which no case asks for",
-            "what this version does in a plan of more than 300 runs", (), "a case with surge naming them",
+            f"what this version does in a plan of {large}", (), "a case with surge naming them",
         )  # fmt: skip
 
 

@@ -98,9 +98,8 @@ def _own_V(source: Source) -> float | None:
     return source.ceiling.si if isinstance(source, Solar) else source.volts.si
 
 
-@check("protection.voltage-rating", title="Voltage rating of each protection against the highest voltage of its system")
-def voltage_rating(context: Context) -> Iterator[Finding]:
-    """Protection made for less than the highest voltage that any source of its system holds."""
+def highest_V(context: Context) -> list[float]:
+    """Over runs: the highest voltage that any source of its system holds; 0 where protection in it is not judged."""
     islands = context.cases[0].solutions["plan"].condition.islands
     highest: dict[int, float] = {}
     for one in context.cases:
@@ -109,20 +108,26 @@ def voltage_rating(context: Context) -> Iterator[Finding]:
             island = int(islands.of_node[context.network.feed(source.at)])
             volts = max(float(condition.volts[port]), _own_V(source) or 0.0)
             highest[island] = max(highest.get(island, 0.0), volts)
-    for run in context.plan.runs:
-        island = int(islands.of_node[context.network.feed(run.from_point)]) if run.conducts != "return" else -1
+    feeds = [context.network.feed(run.from_point) if run.conducts != "return" else -1 for run in context.plan.runs]
+    return [highest.get(int(islands.of_node[node]), 0.0) if node >= 0 else 0.0 for node in feeds]
+
+
+@check("protection.voltage-rating", title="Voltage rating of each protection against the highest voltage of its system")
+def voltage_rating(context: Context) -> Iterator[Finding]:
+    """Protection made for less than the highest voltage that any source of its system holds."""
+    for run, highest in zip(context.plan.runs, highest_V(context), strict=True):
         for guard in run.protections:
             kind = guard.kind
             rated = guard.volts.si if guard.volts else kind.volts
-            if rated >= highest.get(island, 0.0):
+            if rated >= highest:
                 continue
             said = "stated" if guard.volts else f"typical of its type; {kind.basis}"
             basis = "common practice: protection clears no fault above its rated voltage"
             yield run_finding(
-                "protection.voltage-rating", "fail" if guard.volts else "warn", run, highest[island], rated, "V",
+                "protection.voltage-rating", "fail" if guard.volts else "warn", run, highest, rated, "V",
                 f"{label(run)}: its {guard.rating} {guard.type} is made for {number(rated)} V ({said}); "
-                f"its system reaches {number(highest[island])} V",
+                f"its system reaches {number(highest)} V",
                 basis if guard.volts or not kind.provisional else f"{basis} (the type's rating is provisional)",
-                (f"{number(highest[island])} V > {number(rated)} V",),
+                (f"{number(highest)} V > {number(rated)} V",),
                 "protection of a type made for this voltage; state volts from its data sheet if this one is",
             )  # fmt: skip
