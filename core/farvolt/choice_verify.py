@@ -14,7 +14,7 @@ from typing import cast
 from farvolt import checks
 from farvolt.checks.far_end import opening
 from farvolt.checks.let_through import near_faults
-from farvolt.choice_limits import Limit, Row, excess_V, limits
+from farvolt.choice_limits import Currents, Limit, Row, Rows, excess_V, limits
 from farvolt.choice_options import Option, Options
 from farvolt.context import Context
 from farvolt.network import FEED, RETURN, Network
@@ -31,6 +31,10 @@ RULES = (
 _ALLOWED_V = 1e-9
 
 _MORE = 1.05
+
+_OTHERWISE = ("protection.far-end", "protection.let-through", "conductor.ampacity")
+"""Rules that other changes may cure too: harm may rise and fall with the fault current, and a current falls where the
+voltage rises."""
 
 _TREES: dict[object, object] = {}
 
@@ -85,10 +89,8 @@ def failures(context: Context) -> frozenset[Failure]:
 class Cuts:
     """Makes cuts of what fails, for some options."""
 
-    def __init__(self, options: Options) -> None:
-        self.options = options
-        places = iter(range(len(options.every)))
-        self.places = {run: [next(places) for _ in mine] for run, mine in options.by_run.items()}
+    def __init__(self, rows: Rows) -> None:
+        self.rows, self.options, self.places = rows, rows.options, rows.places
 
     def of(self, verdict: Verdict) -> list[Row]:
         """A cut for each check that fails, as far as the choice has a bearing on it."""
@@ -104,7 +106,7 @@ class Cuts:
             if one.rule == "protection.interrupting":
                 found.append(self._thinner_before(verdict, context, run))
             elif one.rule == "protection.under-load":
-                found.append(self._row(one.rule, [(run, _more_rating)], verdict.options))
+                found.append(self._less_current(verdict, one, run))
             elif one.rule not in ("protection.far-end", "protection.let-through"):
                 found.append(self._row(one.rule, [(run, _thicker), (run, _less_rating)], verdict.options))
         return [one for one in found if one is not None]
@@ -133,6 +135,35 @@ class Cuts:
             better = [(one.run, _thicker), (one.guard.run, _less_rating), *((run, _thinner) for run in before)]
             yield self._row("protection.let-through", better, verdict.options)
 
+    def _less_current(self, verdict: Verdict, finding: Finding, run: int) -> Row | None:
+        """What brings a current down to a rating: a higher rating, or less drop on the way of those that draw it.
+
+        A load of constant power draws P/u, so P/u² less for each volt that it sees more.
+        """
+        context = verdict.context
+        case = next((one for one in context.cases if one.name == finding.case), None)
+        if case is None or finding.value is None or finding.limit is None or not finding.value > finding.limit:
+            return None
+        solution = case.solutions["hot"]
+        currents, coefficients, now_A = Currents.of(solution), dict[int, float](), 0.0
+        taken = {place for mine, one in verdict.options.items() for place in self._place_of(mine, one)}
+        name = context.plan.runs[run].name
+        for load in currents.beyond.get(("run", name, "feed"), {}):
+            slope = float(solution.condition.load_W[load] / solution.load_volts[load] ** 2)
+            for place, volts in self.rows.drop(load, solution, currents)[0].items():
+                coefficients[place] = coefficients.get(place, 0.0) + slope * volts
+                now_A += slope * volts if place in taken else 0.0
+        over_A = finding.value - finding.limit
+        for place, one in zip(self.places.get(run, []), self.options.by_run.get(run, []), strict=True):
+            if one.rating_A is not None and one.rating_A >= finding.value:
+                coefficients[place] = coefficients.get(place, 0.0) - now_A - over_A
+        most = now_A - _MORE * over_A
+        return Row(coefficients, most, text=finding.rule, proven=False) if coefficients else None
+
+    def _place_of(self, run: int, option: Option) -> list[int]:
+        pairs = zip(self.places.get(run, []), self.options.by_run.get(run, []), strict=True)
+        return [place for place, one in pairs if one is option]
+
     def _thinner_before(self, verdict: Verdict, context: Context, run: int) -> Row | None:
         before = [(other, _thinner) for other in self._before(context, run)]
         return self._row("protection.interrupting", before, verdict.options) if run >= 0 else None
@@ -151,7 +182,7 @@ class Cuts:
                 if is_better(option, now[run]):
                     coefficients[place] = -1.0
         mine = any(run in self.options.by_run for run, _ in better)
-        proven = rule not in ("protection.far-end", "protection.let-through")  # harm may rise and fall with the current
+        proven = rule not in _OTHERWISE
         return Row(coefficients, -1.0, text=rule, proven=proven) if mine else None
 
 
@@ -168,10 +199,6 @@ def _thinner(one: Option, now: Option) -> bool:
 
 def _less_rating(one: Option, now: Option) -> bool:
     return one.rating_A is not None and now.rating_A is not None and one.rating_A < now.rating_A
-
-
-def _more_rating(one: Option, now: Option) -> bool:
-    return one.rating_A is not None and now.rating_A is not None and one.rating_A > now.rating_A
 
 
 def runs_on_way(context: Context, source: int, run: int) -> list[int]:

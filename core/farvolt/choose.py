@@ -180,7 +180,7 @@ def prepare(plan: Plan, rulebook: Rulebook, wishes: Wishes) -> Problem:
     fixed = frozenset(run.size.name for i, run in enumerate(plan.runs) if run.size is not None and i not in runs)
     rows = Rows(options)
     model = Model(options, links(options, behind), wishes.most_sizes, wishes.size_cost, fixed)
-    problem = Problem(plan, rulebook, wishes, runs, options, best, model, rows, Cuts(options), frozenset())
+    problem = Problem(plan, rulebook, wishes, runs, options, best, model, rows, Cuts(rows), frozenset())
     if all(options.by_run.values()):
         problem.aside = _aside(problem)
         model.rows += FaultRows(best, options, rows.places, problem.aside, frozenset(places)).rows()

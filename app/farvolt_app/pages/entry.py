@@ -10,6 +10,7 @@ PAGES = (
     ("drawing_page.py", "Drawing", "drawing"),
     ("findings_page.py", "Findings", "findings"),
     ("protection_page.py", "Protection", "protection"),
+    ("choice_page.py", "Cable choice", "choice"),
     ("bank_page.py", "Bank", "bank"),
     ("days_page.py", "Days", "days"),
     ("schedule_page.py", "Schedule", "schedule"),
