@@ -186,3 +186,57 @@ def test_a_longer_cable_never_mends_a_far_end(rating: str, kind: str, length: fl
     short, far = ([one.value or math.inf for one in found(text, FAR_END)] for text in texts)
     if short and far:
         assert far[0] >= short[0] * (1 - 1e-9)
+
+
+def test_a_return_conductor_of_its_own_is_held_to_the_fault_as_well() -> None:
+    """1 m of 6 mm2 out and 1 m of 1 mm2 back as runs apart come to what they come to in one run.
+
+    The 1 mm2 withstands (115 x 1)² = 13,200 A2s (IEC 60364-4-43 Table 43A); some 340 A for up to 1 s are far more.
+    """
+    text = plan_text("10 A", kind="thermal breaker", length="1 m", size="6 mm2")
+    one_run = text.replace('size = "6 mm2"\n', 'size = "6 mm2"\nreturn = { size = "1 mm2" }\n')
+    back = '[[runs]]\nname = "back"\nfrom = "bank"\nto = "end"\nlength = "1 m"\nsize = "1 mm2"\n'
+    back += 'insulation = "70 degC"\nstrand = "flexible"\ncarries = "return"\n'
+    apart = plan_text("10 A", kind="thermal breaker", length="1 m", size="6 mm2", extra=back)
+    apart = apart.replace('size = "6 mm2"\n', 'size = "6 mm2"\ncarries = "feed"\n')
+    (together,) = found(one_run, FAR_END)
+    (other,) = found(apart, FAR_END)
+    assert '"back"' in other.message
+    assert (other.severity, other.value) == (together.severity, together.value) == ("fail", 1.0)
+    assert other.limit == pytest.approx(together.limit, rel=1e-6)
+    assert found(apart.replace('size = "1 mm2"', 'size = "10 mm2"'), FAR_END) == []
+
+
+def test_one_of_several_cables_in_parallel_has_to_stand_a_near_fault_alone() -> None:
+    """12 V / 5 mohm = 2,400 A through a breaker that may take 0.1 s: 576,000 A2s. A short just behind it in one of
+    three cables of 4 mm2 flows in that one: (115 x 4)² = 211,600 A2s, not nine times that."""
+    text = plan_text("70 A", kind="magnetic breaker", ohm="5 mohm", length="5 m", size="4 mm2")
+    (one,) = found(text.replace('size = "4 mm2"\n', 'size = "4 mm2"\nparallel = 3\n'), LET_THROUGH)
+    assert one.value == pytest.approx(576_000, rel=0.01)
+    assert one.limit == pytest.approx(211_600, rel=0.01)
+
+
+def test_a_type_without_opening_times_is_shown_to_open_nowhere() -> None:
+    """Even where the fault at the far end is one that the cable carries for good: nearer ones are not."""
+    own = '[protection_types.mine]\nkind = "fuse"\nratings = ["20 A"]\nvolts = "60 V"\ninterrupting = "5 kA"\n'
+    text = plan_text("20 A", kind="mine", length="60 m", size="6 mm2", extra=own)
+    assert found(text, FAR_END) == []
+    (one,) = found(text, LET_THROUGH)
+    assert one.value is None
+    assert "more than is known" in one.message
+
+
+def test_an_insulation_beyond_the_limit_for_short_circuits_withstands_nothing() -> None:
+    """250 degC is the limit that IEC 60364-4-43 Table 43A has for thermosetting insulation: none is left above it."""
+    (one,) = found(plan_text("10 A", length="2 m").replace("70 degC", "260 degC"), FAR_END)
+    assert (one.severity, one.limit) == ("fail", 0.0)
+
+
+def test_the_table_of_protection_tells_the_time_of_the_check() -> None:
+    """A thermal breaker at -20 °C counts as one of a higher rating, in the finding and in the table."""
+    text = plan_text("10 A", kind="thermal breaker", length="5.6 m", size="1 mm2", ohm="5 mohm")
+    result = study(planfile.parse(text.replace("nominal =", 'ambient = "-20 degC"\nnominal =', 1)), margins=False)
+    (one,) = (each for each in result.findings if each.rule == FAR_END)
+    (row,) = result.protections
+    assert one.value == pytest.approx(row.opens_s)
+    assert one.limit == pytest.approx(row.allowed_s)

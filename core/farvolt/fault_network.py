@@ -44,6 +44,8 @@ class FaultNetwork:
         cables = np.flatnonzero((self.run >= 0) & (self.cable_ohm > 0))
         keys = zip(self.run[cables].tolist(), self.pole[cables].tolist(), strict=True)
         self._branches = dict(zip(keys, cables.tolist(), strict=True))
+        runs = network.plan.runs
+        self._returns = [(run, place) for (run, _), place in self._branches.items() if runs[run].conducts == "return"]
 
     @property
     def guarded(self) -> list[tuple[tuple[int, int], int]]:
@@ -112,6 +114,11 @@ class FaultNetwork:
         near, far = found.parts_A(spot)
         at_end = int(self.circuit.a[branch] if end == "from" else self.circuit.b[branch])
         return abs(near if at_end == spot.node else far)
+
+    def returns_A(self, found: Shorted) -> tuple[tuple[int, float], ...]:
+        """The runs with a return conductor only that carry a fault's current, each with what it carries."""
+        amps = ((run, abs(found.in_branch(branch))) for run, branch in self._returns)
+        return tuple((run, one) for run, one in amps if one >= TRACE_A)
 
 
 def coldest(network: Network, islands: Islands) -> list[FaultNetwork]:

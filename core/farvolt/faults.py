@@ -63,6 +63,8 @@ class FarEnd:
     """`amps` is the current through the protection."""
     run_A: float
     """Current in the feed conductor of the stretch itself, where it is fed; through the protection for a device."""
+    returns: tuple[tuple[int, float], ...] = ()
+    """Runs with a return conductor only by which it comes back: (index of the run, current)."""
 
 
 class Faults:
@@ -184,13 +186,14 @@ def _far_ends(net: FaultNetwork, wanted: dict[int, Stretch]) -> Iterator[tuple[i
             shorts.setdefault(found[0], found[1:])
             groups.setdefault(found[0], []).append(number)
     for key, short in zip(shorts, net.circuit.shorted([place for place, _ in shorts.values()]), strict=True):
+        returns = net.returns_A(short)
         for number in groups[key]:
             stretch = wanted[number]
             amps = net.feed_A(short, *_seat(stretch))
             if amps >= TRACE_A:
                 fault = _fault(net, short, amps, shorts[key][1])
                 in_run = net.feed_A(short, stretch.run, stretch.end) if stretch.run >= 0 else amps
-                yield number, FarEnd(stretch, fault, in_run)
+                yield number, FarEnd(stretch, fault, in_run, returns)
 
 
 def _far_place(net: FaultNetwork, stretch: Stretch) -> tuple[Hashable, Place, str] | None:

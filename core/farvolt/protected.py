@@ -10,7 +10,7 @@ from functools import cached_property
 from typing import overload
 
 from farvolt.checks.demand import Demands
-from farvolt.checks.far_end import opening, thinnest
+from farvolt.checks.far_end import Opening, opening, thinnest
 from farvolt.checks.rating import limit_for
 from farvolt.checks.under_load import protected_by
 from farvolt.checks.ways import ampacity_A, limited_A
@@ -131,7 +131,7 @@ def _result(
     nominal = context.cases[0].solutions["plan"].condition.islands.nominal(context.network.feed(_point(context, index)))
     worst = _worst(context, one, ends)
     least = min(ends, key=lambda far: far.fault.amps, default=None)
-    at = worst[0] if worst is not None else least
+    at = worst.far if worst is not None else least
     return ProtectionResult(
         run=run.name,
         end=one.end,
@@ -144,8 +144,8 @@ def _result(
         interrupts_A=one.interrupting.si if one.interrupting else one.kind.interrupting_at(nominal),
         lowest_A=at.fault.amps if at is not None else None,
         far_end=at.fault.place if at is not None else "",
-        opens_s=one.kind.opens_within_s(at.fault.amps, one.rating.si) if at is not None else None,
-        allowed_s=worst[1] if worst is not None else None,
+        opens_s=worst.opens_s if worst is not None else _opens_s(one, least),
+        allowed_s=worst.allowed_s if worst is not None else None,
         estimated=any(fault.estimated for fault in (highest, at.fault if at else None) if fault is not None),
     )
 
@@ -156,13 +156,14 @@ def _point(context: Context, index: int) -> str:
     return run.from_point if (run.from_point, FEED) in context.network.nodes else run.to_point
 
 
-def _worst(context: Context, one: Protection, ends: list[FarEnd]) -> tuple[FarEnd, float] | None:
-    """The far end at which a protection is worst off against the cable, and the time that the cable gives it."""
-    found = [(far, opened) for far in ends if (opened := opening(context, far, one)) is not None]
-    if not found:
-        return None
-    far, opened = max(found, key=lambda pair: pair[1].opens_s / pair[1].allowed_s)
-    return far, opened.allowed_s
+def _worst(context: Context, one: Protection, ends: list[FarEnd]) -> Opening | None:
+    """The far end at which a protection is worst off against the cable, as the check of far ends has it."""
+    found = [opened for far in ends if (opened := opening(context, far, one)) is not None]
+    return max(found, key=lambda each: (each.damaging, each.times_late), default=None)
+
+
+def _opens_s(one: Protection, far: FarEnd | None) -> float | None:
+    return one.kind.opens_within_s(far.fault.amps, one.rating.si) if far is not None else None
 
 
 def _cable_A(context: Context, own: int, one: Protection, behind: list[int]) -> float | None:
@@ -194,8 +195,8 @@ def time_current(context: Context, run_name: str) -> TimeCurrent:
         curves += _band(guard.protection, largest, "opens", label(context.plan.runs[guard.run]))
     if upstream is not None:
         curves += _band(upstream.protection, largest, "upstream", label(context.plan.runs[upstream.run]))
-    if run.size is not None:
-        stands = thinnest(context, run)
+    stands = thinnest(context, run) if run.size is not None else None
+    if run.size is not None and stands is not None and stands.joule_A2s > 0:
         points = tuple(reversed(stands.points(5.0, SHORTEST_S)))
         curves.append(Curve(f"{run.size.name} at its insulation's limit", "cable", tuple(sorted(points))))
     curves += _loads(context, index)

@@ -26,6 +26,8 @@ class Opening:
     far: FarEnd
     run: int
     """Index of the run whose conductor is at stake."""
+    amps: float
+    """What that conductor carries."""
     rating_A: float
     """Corrected for the coldest ambient, where it opens last."""
     opens_s: float
@@ -36,35 +38,50 @@ class Opening:
     @property
     def allowed_s(self) -> float:
         """The time in which it has to open: until the conductor is at its limit, and within five seconds."""
-        return min(self.stands.reaches_limit_s(self.far.run_A), LONGEST_S)
+        return min(self.stands.reaches_limit_s(self.amps), LONGEST_S)
 
     @property
     def damaging(self) -> bool:
         """Whether the conductor may be past its limit; what it stands for longer than five seconds counts as well,
         since some heat has left by then (common practice)."""
-        return self.opens_s > self.stands.reaches_limit_s(self.far.run_A) * (1 + 1e-9)
+        return self.opens_s > self.stands.reaches_limit_s(self.amps) * (1 + 1e-9)
 
     @property
     def in_time(self) -> bool:
         """Whether it opens before the conductor is at its limit, within the time for which that is claimed."""
         return self.opens_s <= self.allowed_s * (1 + 1e-9)
 
+    @property
+    def times_late(self) -> float:
+        """The time it takes over the time that is allowed; infinite where none is."""
+        return self.opens_s / self.allowed_s if self.allowed_s > 0 else math.inf
+
 
 def opening(context: Context, far: FarEnd, protection: Protection) -> Opening | None:
     """A protection at the seat of a far end's guard, of its type or of another, against that short.
 
-    None where nothing is at stake: an exempt run, one that carries the fault for good, within its ampacity, or the
-    start of a run before its own protection where that may go without.
+    Of the run and the return conductors that the fault comes back by, the one that is first at its limit counts. None
+    where nothing is at stake: exempt runs, those that carry the fault for good, within their ampacity, or the start of
+    a run before its own protection where that may go without.
     """
     index = far.stretch.run if far.stretch.run >= 0 else far.stretch.guard.run
     if _bare_start(context, far.stretch):
         return None
-    run, kind, seat = context.plan.runs[index], protection.kind, context.plan.runs[far.stretch.guard.run]
-    if run.size is None or exempt(context, run) or far.run_A <= (ampacity_A(context, index) or 0.0):
+    at_stake = [(one, amps) for one, amps in ((index, far.run_A), *far.returns) if _at_stake(context, one, amps)]
+    if not at_stake:
         return None
+    stands = [thinnest(context, context.plan.runs[one]) for one, _ in at_stake]
+    first = min(range(len(stands)), key=lambda place: stands[place].reaches_limit_s(at_stake[place][1]))
+    kind, seat = protection.kind, context.plan.runs[far.stretch.guard.run]
     coldest = min(run_ambient_degC(context.plan, seat, one.case) for one in context.cases)
     rating = kind.rating_at_A(protection.rating.si, min(coldest, kind.reference_degC))
-    return Opening(far, index, rating, kind.opens_within_s(far.fault.amps, rating), thinnest(context, run))
+    return Opening(far, *at_stake[first], rating, kind.opens_within_s(far.fault.amps, rating), stands[first])
+
+
+def _at_stake(context: Context, index: int, amps: float) -> bool:
+    """Whether a run needs the protection to open: it is not exempt, and does not carry the current for good."""
+    run = context.plan.runs[index]
+    return run.size is not None and not exempt(context, run) and amps > (ampacity_A(context, index) or 0.0)
 
 
 def _bare_start(context: Context, stretch: Stretch) -> bool:
@@ -77,13 +94,14 @@ def _bare_start(context: Context, stretch: Stretch) -> bool:
     return any(length is not None and stretch.until_m <= length + 1e-9 for length in allowed)
 
 
-def thinnest(context: Context, run: Run) -> Withstand:
-    """What the thinner of a run's conductors withstands; one of several in parallel carries most of a near fault."""
+def thinnest(context: Context, run: Run, *, near: bool = False) -> Withstand:
+    """What the thinner of a run's conductors withstands: all in parallel at its far end, where they share the fault;
+    one alone where it is `near`, of which that carries most."""
     sizes = [size for size in (run.size, return_size(run)) if size is not None]
     if run.conducts != "both" or run.return_path == "chassis":
         sizes = sizes[:1]
     area = min(size.area_mm2 for size in sizes)
-    return withstand(run.material, area, insulation_degC(run, context.rulebook), run.parallel)
+    return withstand(run.material, area, insulation_degC(run, context.rulebook), 1 if near else run.parallel)
 
 
 @check("protection.far-end", title="Opening in time for a short at the far end of what each protection protects")
@@ -96,7 +114,7 @@ def far_end(context: Context) -> Iterator[Finding]:
         found = [opening(context, far, far.stretch.guard.protection) for far in ends]
         late = [one for one in found if one is not None and not one.in_time]
         if late:
-            yield _finding(context, max(late, key=lambda one: (one.damaging, one.opens_s / one.allowed_s)), len(late))
+            yield _finding(context, max(late, key=lambda one: (one.damaging, one.times_late)), len(late))
 
 
 def _finding(context: Context, worst: Opening, count: int) -> Finding:
@@ -127,17 +145,16 @@ def _working(worst: Opening, guard: Guard, percent: float) -> tuple[str, ...]:
     if abs(worst.rating_A - guard.rating_A) > 1e-9:
         rated += f" A, in the cold as {number(worst.rating_A)}"
     opens = f"opens within {_time(worst.opens_s)}" if math.isfinite(worst.opens_s) else "need not open at all"
-    limit_s = worst.stands.reaches_limit_s(far.run_A)
+    limit_s = worst.stands.reaches_limit_s(worst.amps)
     return (
         f"Least fault current, {BOLTED}: {far.fault.working[0]}" if far.fault.working else BOLTED,
         *far.fault.working[1:],
         f"{number(far.fault.amps, 4)} A is {number(percent)} % of {rated} A: {opens} ({kind.times_basis})",
         *worst.stands.working,
-        f"t = k² S² / I² = {number(worst.stands.joule_A2s, 4)} / {number(far.run_A, 4)}² = {_time(limit_s)}; "
+        f"t = k² S² / I² = {number(worst.stands.joule_A2s, 4)} / {number(worst.amps, 4)}² = {_time(limit_s)}; "
         f"and within {number(LONGEST_S)} s",
     )
 
 
 def _time(time_s: float) -> str:
     return f"{number(time_s)} s"
-

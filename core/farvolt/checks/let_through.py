@@ -40,9 +40,11 @@ class NearFault:
         return joule, every[place]
 
     def holds(self, protection: Protection) -> bool:
-        """Whether the conductor withstands it; a fault that is cleared after 5 s or more is the far end's."""
+        """Whether the conductor withstands it; a fault that is cleared after 5 s or more is the far end's, but none is
+        where no opening time is stated at all."""
         late = protection.kind.opens_within_s(self.amps, protection.rating.si) > LONGEST_S
-        return late or self.through(protection)[0] <= self.stands.joule_A2s * (1 + 1e-9)
+        stated = bool(protection.kind.band.greatest)
+        return (late and stated) or self.through(protection)[0] <= self.stands.joule_A2s * (1 + 1e-9)
 
 
 def near_faults(context: Context) -> Iterator[NearFault]:
@@ -72,7 +74,7 @@ def near_faults(context: Context) -> Iterator[NearFault]:
             if guard.run != index and start is not None and start.amps < fault.amps:
                 fault = start
             if fault.amps > (ampacity_A(context, index) or 0.0):
-                stands = thinnest(context, run)
+                stands = thinnest(context, run, near=True)
                 yield NearFault(guard, index, fault.amps, fault.place, fault.estimated, stands, _before(context, guard))
 
 
@@ -133,7 +135,7 @@ def _remedy(context: Context, one: NearFault, joule: float) -> str:
     stands = (
         size
         for size in (larger_sizes(run.size) if run.size else [])
-        if thinnest(context, run.model_copy(update={"size": size, "return_path": "same"})).joule_A2s >= joule
+        if thinnest(context, run.model_copy(update={"size": size, "return_path": "same"}), near=True).joule_A2s >= joule
     )
     size = next(stands, None)
     thicker = f"{label(run)}: {size.name} stands that; or " if size is not None else ""
