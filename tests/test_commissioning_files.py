@@ -11,6 +11,7 @@ from pathlib import Path
 import pytest
 from click.testing import CliRunner
 from openpyxl import load_workbook
+from streamlit.testing.v1 import AppTest
 
 from farvolt import commissioning, examples, meter, planfile
 from farvolt.commissioning import Sheet
@@ -139,3 +140,19 @@ def test_what_cannot_be_used_is_told_in_one_line(options: list[str], said: str, 
     assert done.exit_code == 2
     assert said in done.stderr
     assert "Traceback" not in done.output
+
+
+def part() -> None:
+    from farvolt import examples, planfile
+    from farvolt.study import study
+    from farvolt_app.pages import commissioning_part
+
+    commissioning_part.show(study(planfile.parse(examples.text("instrument-repair-van")), margins=False))
+
+
+def test_a_page_offers_the_sheet_for_a_case_that_holds() -> None:
+    shown = AppTest.from_function(part, default_timeout=60).run()
+    assert not shown.exception
+    assert "Everything on, no charging" in shown.selectbox(key="test_sheet_case").options
+    assert [one.label for one in shown.get("download_button")] == ["Download test sheet",
+                                                                   "Download test sheet as a workbook"]  # fmt: skip

@@ -16,7 +16,7 @@ import click
 
 from farvolt import __version__
 from farvolt.errors import FarvoltError
-from farvolt_app import commissioning_command, shopping_command
+from farvolt_app import as_built_command, commissioning_command, shopping_command
 
 if TYPE_CHECKING:
     from datetime import datetime
@@ -474,6 +474,7 @@ def labels(plan: str, output: str, size: str, sheet: bool, paper: str | None) ->
 main.add_command(shopping_command.shopping)
 main.add_command(shopping_command.prices)
 main.add_command(commissioning_command.write_sheet)
+main.add_command(as_built_command.as_built)
 
 
 @main.command()

@@ -19,15 +19,20 @@ Rows = list[tuple[int, list[str]]]
 
 def read(path: str, plan: Plan) -> tuple[ReadingSet, ...]:
     """The readings of a file; `-` is CSV from standard input. Raises ReadingsError."""
+    return reading_table.from_rows(rows_in(path), plan, "standard input" if path == "-" else path)
+
+
+def rows_in(path: str) -> Rows:
+    """The numbered rows of a file; `-` is CSV from standard input. Raises ReadingsError."""
     if path == "-":
         import sys
 
-        return reading_table.from_rows(rows_of("standard input.csv", sys.stdin.buffer.read()), plan, "standard input")
+        return rows_of("standard input.csv", sys.stdin.buffer.read())
     try:
         data = Path(path).read_bytes()
     except OSError as error:
         raise ReadingsError([Fault("", "", "", f"cannot be read ({error.strerror})")], path) from None
-    return reading_table.from_rows(rows_of(path, data), plan, path)
+    return rows_of(path, data)
 
 
 def rows_of(name: str, data: bytes) -> Rows:

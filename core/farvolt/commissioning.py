@@ -13,12 +13,13 @@ from functools import cached_property
 import numpy as np
 
 from farvolt.causes import SOUND_FIXED_SHARE, alphas, sound_degC, source_ports
+from farvolt.conductors import temperature_coefficient
 from farvolt.context import CaseStudy, Context
 from farvolt.errors import FarvoltError
 from farvolt.integrity import nearest
 from farvolt.lugs import known_stud
 from farvolt.meter import Meter
-from farvolt.network import FEED, RETURN, Floats, joints_ohm, protection_ohm
+from farvolt.network import FEED, RETURN, Floats, Network, joints_ohm, protection_ohm
 from farvolt.plan import CHASSIS, Device, Protection, Run
 from farvolt.readings import Pin
 from farvolt.response import Probe, State
@@ -177,6 +178,23 @@ def _aged(one: CaseStudy) -> bool:
     return any(state.aged for state in one.case.sources.values())
 
 
+def conductor_ohm(network: Network, branch: int, degC: tuple[float, float, float]) -> Band:
+    """Resistance of a conductor of a run, sound, within the plan's tolerances: at the middle one of three temperatures,
+    the least at the first, the most at the last."""
+    run, stated = network.plan.runs[int(network.run[branch])], network.plan.tolerances
+    length = 0.0 if run.resistance is not None else stated.length.si
+    cable, fixed = float(network.cable_ohm_20[branch]), float(network.fixed_ohm[branch])
+    joints = joints_ohm(run) if run.resistance is None and cable > 0 else 0.0
+    alpha = temperature_coefficient(run.material).value
+    least, middle, most = (1 + alpha * (one - 20) for one in degC)
+    rest = fixed - joints
+    return Band(
+        cable * middle + fixed,
+        cable * least * (1 - length) + rest * (1 - SOUND_FIXED_SHARE) + joints * min(stated.joints, 1.0),
+        cable * most * (1 + length) + rest * (1 + SOUND_FIXED_SHARE) + joints * max(stated.joints, 1.0),
+    )  # fmt: skip
+
+
 class _Maker:
     """Works the tests out of one case, solved with sound parts."""
 
@@ -219,20 +237,10 @@ class _Maker:
     def _ohm(self, branch: int, *, cold: bool = False) -> Band:
         """Resistance of a branch of a run, of sound parts over the tolerances; `cold` at the ambient of the run."""
         at = int(self.network.run[branch])
-        run, stated = self.plan.runs[at], self.plan.tolerances
-        length = 0.0 if run.resistance is not None else stated.length.si
-        cable, fixed = float(self.network.cable_ohm_20[branch]), float(self.network.fixed_ohm[branch])
-        joints = joints_ohm(run) if run.resistance is None and cable > 0 else 0.0
         middle, half = float(self.middle[at]), float(self.half[at])
         if cold:
-            middle, half = run_ambient_degC(self.plan, run, self.case.case), 0.0
-        least, mid, most = (1 + float(self.alpha[at]) * (middle + way * half - 20) for way in (-1, 0, 1))
-        rest = fixed - joints
-        return Band(
-            cable * mid + fixed,
-            cable * least * (1 - length) + rest * (1 - SOUND_FIXED_SHARE) + joints * min(stated.joints, 1.0),
-            cable * most * (1 + length) + rest * (1 + SOUND_FIXED_SHARE) + joints * max(stated.joints, 1.0),
-        )  # fmt: skip
+            middle, half = run_ambient_degC(self.plan, self.plan.runs[at], self.case.case), 0.0
+        return conductor_ohm(self.network, branch, (middle - half, middle, middle + half))
 
     def _current(self, branch: int) -> float:
         """Of a branch: that of the case, or the stated one (in at the feed of `from`, back at its return)."""
