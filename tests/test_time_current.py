@@ -2,6 +2,7 @@
 
 import math
 
+import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
@@ -164,6 +165,14 @@ def test_any_band_falls_and_passes_its_gates(stated: list[Gate], one: float, oth
         # Of two gates at one multiple both hold there.
         assert gate.greatest_s is None or found.greatest_s(gate.times) <= gate.greatest_s * rounding
         assert gate.least_s is None or found.least_s(gate.times) * rounding >= gate.least_s
+
+
+@given(gates(), st.lists(st.floats(0.1, 100), min_size=1, max_size=20))
+def test_many_multiples_at_once_are_as_one_by_one(stated: list[Gate], times: list[float]) -> None:
+    for found in (band(stated), UNSTATED):
+        every = np.array([*times, 1.0, *(gate.times for gate in stated)])
+        assert found.greatest_over(every) == pytest.approx([found.greatest_s(one) for one in every], rel=1e-9)
+        assert found.least_over(every) == pytest.approx([found.least_s(one) for one in every], rel=1e-9)
 
 
 def test_a_band_that_states_nothing_promises_nothing() -> None:

@@ -10,6 +10,12 @@ from bisect import bisect_left, bisect_right
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+Ints = NDArray[np.int64]
+
 _SAME = 1e-9
 """Relative difference below which a current stands at a gate: 27 A / 20 A is 1.35."""
 
@@ -65,6 +71,28 @@ class Band:
         high, high_s = self.least[at]
         return high_s if times >= high else _between(times, (low, low_s), (high, high_s))
 
+    def greatest_over(self, times: Floats) -> Floats:
+        """As `greatest_s`, over many multiples."""
+        if not self.greatest:
+            return np.full(len(times), math.inf)
+        after = np.searchsorted([gate[0] for gate in self.greatest], times * (1 + _SAME), side="right")
+        low, high = np.maximum(after - 1, 0), np.minimum(after, len(self.greatest) - 1)
+        found = _between_over(times, np.array(self.greatest), low, high)
+        return np.where(after == 0, math.inf, found)
+
+    def least_over(self, times: Floats) -> Floats:
+        """As `least_s`, over many multiples."""
+        first, first_s = self.least[0] if self.least else (math.inf, 0.0)
+        below = np.where((times < 1) | ((times <= 1 + _SAME) & (first > 1)), math.inf, first_s)
+        if not self.least:
+            return below
+        at = np.searchsorted([gate[0] for gate in self.least], times * (1 - _SAME), side="left")
+        low, high = np.maximum(at - 1, 0), np.minimum(at, len(self.least) - 1)
+        found = _between_over(times, np.array(self.least), low, high)
+        last, last_s = self.least[-1]
+        found = np.where(at == len(self.least), last_s * (last / times) ** 2, found)
+        return np.where(at == 0, below, found)
+
     @property
     def last(self) -> tuple[float, float]:
         """The last gate of the greatest time: (multiple, s); both infinite where there is none."""
@@ -115,3 +143,16 @@ def _between(times: float, low: tuple[float, float], high: tuple[float, float]) 
     share = math.log(times / low[0]) / math.log(high[0] / low[0])
     found = math.exp((1 - share) * math.log(low[1]) + share * math.log(high[1]))
     return min(low[1], max(high[1], found))
+
+
+def _between_over(times: Floats, gates: Floats, low: Ints, high: Ints) -> Floats:
+    """As `_between`, between gates by their places; a multiple that stands at a gate has the time of that gate."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        logs = np.log(gates)
+        share = (np.log(times) - logs[low, 0]) / (logs[high, 0] - logs[low, 0])
+        found = np.exp((1 - share) * logs[low, 1] + share * logs[high, 1])
+    found = np.clip(found, gates[high, 1], gates[low, 1])
+    found = np.where(times <= gates[low, 0], gates[low, 1], found)
+    found = np.where(times >= gates[high, 0], gates[high, 1], found)
+    within: Floats = np.where((gates[high, 1] == 0) & (times > gates[low, 0]), 0.0, found)
+    return within

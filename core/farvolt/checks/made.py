@@ -16,7 +16,7 @@ def rating_not_made(context: Context) -> Iterator[Finding]:
     for run in context.plan.runs:
         for guard in run.protections:
             kind, rating = guard.kind, guard.rating.si
-            if any(abs(rating - made) <= 1e-6 * made for made in kind.ratings_A):
+            if rating in kind.ratings_A or any(abs(rating - made) <= 1e-6 * made for made in kind.ratings_A):
                 continue
             basis = f"{kind.basis} (provisional)" if kind.provisional else kind.basis
             yield run_finding(

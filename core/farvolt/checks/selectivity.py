@@ -16,7 +16,8 @@ from farvolt.units import number
 SHORT_S = 0.1
 """Below so short a time the heat let through decides, above it the time itself (common practice)."""
 
-_STEPS = 60
+_SHARES = np.linspace(0, 1, 60)
+"""Currents looked at between the least and the largest, on a logarithmic scale."""
 
 
 def selective_up_to_A(lower: Protection, upper: Protection, most_A: float) -> float:
@@ -27,21 +28,18 @@ def selective_up_to_A(lower: Protection, upper: Protection, most_A: float) -> fl
     the bands overlap already just above the lower rating.
     """
     start = min(lower.rating.si, most_A) * 1.0001
-    for amps in np.geomspace(start, max(most_A, start), _STEPS):
-        if not _first(lower, upper, float(amps)):
-            return float(amps) if amps > start else 0.0
+    currents = start * (max(most_A, start) / start) ** _SHARES
+    holds = upper.kind.band.least_over(currents / upper.rating.si)
+    opens = lower.kind.band.greatest_over(currents / lower.rating.si)
+    slow = (opens > SHORT_S) & (holds > SHORT_S)
+    for place in np.flatnonzero(~np.isinf(holds) & (opens >= holds)).tolist():
+        amps = float(currents[place])
+        if slow[place] or not _lets_less_through(lower, upper, amps):
+            return amps if place else 0.0
     return math.inf
 
 
-def _first(lower: Protection, upper: Protection, amps: float) -> bool:
-    holds = upper.kind.holds_for_s(amps, upper.rating.si)
-    if math.isinf(holds):
-        return True
-    opens = lower.kind.opens_within_s(amps, lower.rating.si)
-    if opens < holds:
-        return True
-    if opens > SHORT_S and holds > SHORT_S:
-        return False
+def _lets_less_through(lower: Protection, upper: Protection, amps: float) -> bool:
     return lower.kind.let_through_A2s(amps, lower.rating.si) < upper.kind.holds_A2s(amps, upper.rating.si)
 
 
