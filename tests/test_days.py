@@ -346,3 +346,14 @@ def test_a_full_bank_helps_a_sun_that_falls_short(watts: float) -> None:
         assert first == pytest.approx(watts, rel=1e-9)
         assert found.sums.bank_V[17, 0] < 12.9
     assert_balanced(found)
+
+
+def test_a_charger_that_starts_within_a_step_runs_at_its_full_current_from_there() -> None:
+    # 10 A from 7:30 to 8:45: 1.25 h · 10 A · 0.85 of 100 Ah, whether in hours or in quarters of them.
+    text = BANK.replace('emf = "12 V"', 'chemistry = "agm"') + 'self_discharge = "0 %"\n' + CHARGER
+    text += 'schedule = ["07:30-08:45"]\n' + RUN + load('current = "2 A"\nhours_per_day = 0')
+    for step in (60, 15):
+        found = run(text, Period(dt.date(2027, 3, 1), 1, step), charge=0.5)
+        assert found.sums.charge[-1, 0] == pytest.approx(0.5 + 0.1 * 1.25 * 0.85, rel=1e-9)
+        assert found.sums.peak_A[0, 1] == pytest.approx(10.0)
+        assert_balanced(found)

@@ -6,6 +6,7 @@ full; then it falls back, until the banks have given a tenth or it starts anew. 
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from itertools import pairwise
 
 import numpy as np
 
@@ -43,17 +44,22 @@ class _Stage:
 
 
 class Charging:
-    """All chargers and solar controllers of a plan over a course."""
+    """All chargers and solar controllers of a plan over a course, piece by piece: a step is cut where a charger starts
+    or ends within it. `steps` and `hours` are over pieces, `running` over (piece, source)."""
 
     def __init__(self, ready: Ready, course: Course, banks: Sequence[BankUnit]) -> None:
         self.banks = banks
-        self.running = course.sources > 0
+        chargers = [index for index, one in enumerate(ready.plan.sources) if isinstance(one, Charger)]
+        self.steps, self.hours, on = _pieces(course, chargers)
+        self.running = course.sources[self.steps] > 0
+        self.running[:, chargers] = on
         self._sources = movable(ready)
         volts = ready.condition.volts[: len(ready.plan.sources)] + _compensation(ready, course)
-        self._volts = volts[:, self._sources]
-        high, power = _limits(ready, course)
+        self._volts = volts[self.steps][:, self._sources]
+        high, power = (one[self.steps] for one in _limits(ready, course))
+        high[:, chargers] *= on
         self._high, self._power = high[:, self._sources], power[:, self._sources]
-        self._degC = course.bank_degC.tolist()
+        self._degC = course.bank_degC[self.steps].tolist()
         self._tail_A = sum(one.tail_A for one in banks)
         self._stages = [
             _Stage(index, float(ready.condition.volts[index]) - one.float_volts.si)
@@ -61,20 +67,21 @@ class Charging:
             if isinstance(one, Charger | Solar) and one.float_volts is not None
         ]
 
-    def set(self, laws: Laws, step: int, hours: float) -> None:
-        """Put in the laws of a step: chargers at their voltage, banks with the room that they have."""
+    def set(self, laws: Laws, piece: int, hours: float) -> None:
+        """Put in the laws of a piece: chargers at their voltage, banks with the room that they have."""
         mine = self._sources
-        laws.high[mine], laws.power[mine], laws.volts[mine] = self._high[step], self._power[step], self._volts[step]
+        laws.high[mine], laws.power[mine], laws.volts[mine] = self._high[piece], self._power[piece], self._volts[piece]
         for stage in self._stages:
             if stage.floating:
                 laws.volts[stage.source] -= stage.fall_V
         for one in self.banks:
-            laws.low[one.port] = 0.0 if self._degC[step] < one.least_degC else -one.room_A(hours)
+            cold = self._degC[piece] < one.least_degC
+            laws.low[one.port] = 0.0 if cold else -one.room_A(hours)
 
-    def after(self, laws: Laws, step: int, network: StepNetwork, settled: Settled) -> None:
-        """Chargers that fall back or start anew for the next step."""
+    def after(self, laws: Laws, piece: int, network: StepNetwork, settled: Settled) -> None:
+        """Chargers that fall back or start anew for the next piece."""
         for stage in self._stages:
-            on = bool(self.running[step, stage.source])
+            on = bool(self.running[piece, stage.source])
             if on and not stage.was_on:
                 stage.floating = False
             elif on:
@@ -92,6 +99,33 @@ class Charging:
             taken = -sum(one.amps for one in self.banks)
             ended = charge >= FULL or 0 <= taken <= self._tail_A
             stage.floating = ended and amps < _LIMITED * most
+
+
+def _pieces(course: Course, chargers: Sequence[int]) -> tuple[np.ndarray, Floats, np.ndarray]:
+    """Steps cut where a charger starts or ends in them: over pieces, their step and hours, and which chargers run.
+
+    A charger that runs on into the next step does so from within this one; any other runs from its beginning.
+    """
+    shares = course.sources[:, chargers]
+    steps, hours, on = [], [], []
+    partial = np.any((shares > 0) & (shares < 1), axis=1)
+    goes_on = np.append(shares[1:] > 0, np.zeros((1, len(chargers)), dtype=bool), axis=0)
+    came = np.append(np.zeros((1, len(chargers)), dtype=bool), shares[:-1] > 0, axis=0)
+    for step in range(len(course)):
+        if not partial[step]:
+            steps.append(step)
+            hours.append(course.hours)
+            on.append(shares[step] > 0)
+            continue
+        late = goes_on[step] & ~came[step]
+        start, end = np.where(late, 1 - shares[step], 0.0), np.where(late, 1.0, shares[step])
+        edges = np.unique(np.round([0.0, 1.0, *start, *end], 9))
+        for one, other in pairwise(edges.tolist()):
+            middle = (one + other) / 2
+            steps.append(step)
+            hours.append(float(other - one) * course.hours)
+            on.append((start < middle) & (middle < end))
+    return np.array(steps), np.array(hours), np.array(on, dtype=bool).reshape(len(steps), len(chargers))
 
 
 def _compensation(ready: Ready, course: Course) -> Floats:
@@ -117,7 +151,7 @@ def _limits(ready: Ready, course: Course) -> tuple[Floats, Floats]:
     high, power = np.tile(c.high[:count], (len(course), 1)), np.tile(c.power[:count], (len(course), 1))
     for index, one in enumerate(plan.sources):
         if isinstance(one, Charger):
-            high[:, index] = course.sources[:, index] * (one.hot_amps or one.amps).si
+            high[:, index] = (one.hot_amps or one.amps).si
         elif isinstance(one, Solar):
             power[:, index] = course.sources[:, index] * one.power.si
     if c.arrays:

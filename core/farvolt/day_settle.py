@@ -181,8 +181,10 @@ class _Step:
             length = self._length(us, delivered, sides, after) if own else 1.0
             if length < 1.0:
                 after = u + length * (after - u)
-            before, moved = moved, float(np.abs(after - u).max())
-            u = self._with_banks(after, delivered, sides, matrix)
+            brought = self._with_banks(after, delivered, sides, matrix)
+            # With one bank what it brings along is exact at once; several settle among themselves.
+            before, moved = moved, float(np.abs((after if len(self.banks) < 2 else brought) - u).max())
+            u = brought
             if length < 1.0:
                 moved = np.inf
             elif moved <= tolerance or (before < np.inf and moved * min(moved / before, 1.0) <= tolerance):

@@ -22,7 +22,7 @@ def movable(ready: Ready) -> list[int]:
 
 
 class Supply:
-    """The networks of a plan by the sources that work; `running` is over (step, source)."""
+    """The networks of a plan by the sources that work; `running` is over (piece of a step, source)."""
 
     def __init__(self, ready: Ready, banks: Sequence[BankUnit], running: np.ndarray) -> None:
         self.ready, self.running = ready, running
@@ -32,11 +32,11 @@ class Supply:
         self._networks: dict[tuple[bytes, Cut], StepNetwork | None] = {}
         self._fed: dict[Cut, np.ndarray] = {}
 
-    def network(self, step: int, cut: Cut) -> StepNetwork | None:
-        """The network of the sources that work in a step; None where nothing feeds anything."""
-        key = self._names[step], cut
+    def network(self, piece: int, cut: Cut) -> StepNetwork | None:
+        """The network of the sources that work in a piece of a step; None where nothing feeds anything."""
+        key = self._names[piece], cut
         if key not in self._networks:
-            self._networks[key] = self._built(self.running[step], cut)
+            self._networks[key] = self._built(self.running[piece], cut)
         return self._networks[key]
 
     def fed_by_banks(self, cut: Cut) -> np.ndarray:

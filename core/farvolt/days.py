@@ -97,13 +97,13 @@ class _Run:
 
     def all(self, progress: Progress | None) -> Outcome:
         """Every step, one after another."""
-        steps = len(self.course)
-        for step in range(steps):
-            left = self.course.hours
+        hours = self.charging.hours.tolist()
+        for piece, step in enumerate(self.charging.steps.tolist()):
+            left = hours[piece]
             while left > _REST * self.course.hours:
-                left -= self._part(step, left)
-            if progress is not None and step % _TELL == 0:
-                progress(step / steps)
+                left -= self._part(piece, step, left)
+            if progress is not None and piece % _TELL == 0:
+                progress(piece / len(hours))
         watts, amps, siemens = self.demand
         volts = self.ready.load_nominal_V
         return Outcome(
@@ -112,20 +112,20 @@ class _Run:
             watts + volts * (amps + volts * siemens), self.unsolved,
         )  # fmt: skip
 
-    def _part(self, step: int, hours: float) -> float:
-        """Solve what is left of a step, or less where a bank is empty before; returns the hours that it took."""
+    def _part(self, piece: int, step: int, hours: float) -> float:
+        """Solve what is left of a piece, or less where a bank is empty before; returns the hours that it took."""
         cut = tuple(one.cut for one in self.banks)
-        network = self.supply.network(step, cut)
+        network = self.supply.network(piece, cut)
         without = self.wanted[step] & ~self.supply.fed_by_banks(cut)
         if network is None:
             return self._rest(step, hours, self.wanted[step])
-        settled, silent = self._settle(step, hours, network, without)
+        settled, silent = self._settle(piece, step, hours, network, without)
         for _ in range(_TIMES):
             empty = self._first_empty(network, settled, hours) if settled is not None else None
             if empty is None:
                 break
             hours *= empty
-            settled, silent = self._settle(step, hours, network, without)
+            settled, silent = self._settle(piece, step, hours, network, without)
         if settled is None:
             self.unsolved += 1
             return self._rest(step, hours, self.wanted[step])
@@ -135,14 +135,14 @@ class _Run:
         self.record.keep(step, hours, network, settled, self._charge(step, network, settled, hours))
         if self.off.any():
             self.off &= ~(network.load_volts(settled.u, len(self.off)) > self.back_V)
-        self.charging.after(self.laws, step, network, settled)
+        self.charging.after(self.laws, piece, network, settled)
         return hours
 
     def _settle(
-        self, step: int, hours: float, network: StepNetwork, without: np.ndarray
+        self, piece: int, step: int, hours: float, network: StepNetwork, without: np.ndarray
     ) -> tuple[Settled | None, np.ndarray]:
         """The step with every load off that lets go, and which are silent; None where nothing holds."""
-        self.charging.set(self.laws, step, hours)
+        self.charging.set(self.laws, piece, hours)
         wanted, silent = self.wanted[step], without | (self.off & self.wanted[step])
         start = self._before(step, network)
         while True:
