@@ -90,7 +90,7 @@ def steps(raw: Raw, delta: Delta) -> list[Step]:
                 # A case in a word ("all", "none") becomes a list before one of its loads can differ.
                 found.append(Set("cases", index, ("loads",), _listed(raw, cases[index])))
                 listed.add(index)
-            found.append(Set("cases", index, path, _value(path, value)))
+            found.append(Set("cases", index, path, typed(path, value)))
     return found
 
 
@@ -98,7 +98,8 @@ def _listed(raw: Raw, case: dict[str, Any]) -> dict[str, float]:
     return dict.fromkeys(names(raw, "loads"), 1.0) if case.get("loads", "all") == "all" else {}
 
 
-def _value(path: tuple[str, ...], value: Any) -> Any:
+def typed(path: tuple[str, ...], value: Any) -> Any:
+    """What is typed about a field of a case as the file holds it; None for nothing, and for a load that is off."""
     text = "" if value is None else str(value).strip()
     if path[0] == "surge":
         return [part.strip() for part in text.split(",") if part.strip()] or None

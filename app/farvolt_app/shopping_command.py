@@ -38,7 +38,8 @@ def shopping(
         if file is not None:
             cli._refuse_plan(plan, file)
     how = shopping_rows.wanted(prices if prices != EXAMPLE else None, spare, reels, example=prices == EXAMPLE)
-    found = cli._studied(plan, margins=False)
+    read = cli._read(plan)
+    found = cli._studied_of(read, plan, margins=False)
     from farvolt import shopping as core
     from farvolt import upsizing
 
@@ -54,7 +55,7 @@ def shopping(
     elif output is not None:
         from farvolt_app import workbook
 
-        cli._write_beside(plan, output, workbook.to_bytes(found, how))
+        cli._write_beside(plan, output, workbook.to_bytes(found, how, read.text))
 
 
 @click.command()

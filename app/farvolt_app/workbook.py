@@ -17,7 +17,7 @@ from farvolt import cable_kinds, shopping
 from farvolt.planfile import write_whole
 from farvolt.results import Study
 from farvolt.shopping import Wanted
-from farvolt_app import schedule, sheet_cables, sheet_shopping
+from farvolt_app import plan_text, schedule, sheet_cables, sheet_shopping
 from farvolt_app.schedule import LoadLine, ProtectionLine
 from farvolt_app.sheet_cables import FOOT_M, HELD, OVER, live, of_number, pretty
 from farvolt_app.sheets import FIRST, Column, Formula, Header, fill, letters, mark_where
@@ -34,8 +34,11 @@ def write(study: Study, path: Path | BinaryIO, wanted: Wanted | None = None) -> 
         path.write(data)
 
 
-def to_bytes(study: Study, wanted: Wanted | None = None) -> bytes:
-    """The whole workbook as a file's content; `wanted` says how its shopping list is to be made."""
+def to_bytes(study: Study, wanted: Wanted | None = None, text: str | None = None) -> bytes:
+    """The whole workbook as a file's content; `wanted` says how its shopping list is to be made.
+
+    With the plan's own `text` in a sheet the workbook can be read back as the plan.
+    """
     book = Workbook()
     book.remove(book.active)
     plan = study.plan.plan.name
@@ -52,6 +55,8 @@ def to_bytes(study: Study, wanted: Wanted | None = None) -> bytes:
     _findings(book.create_sheet("Findings"), plan, study)
     _assumptions(book.create_sheet("Assumptions"), plan, study)
     _ways(book.create_sheet("Ways"), plan, lines, len(found))
+    if text is not None:
+        plan_text.write(book.create_sheet(plan_text.TITLE), text)
     out = io.BytesIO()
     book.save(out)
     return out.getvalue()

@@ -11,7 +11,7 @@ from farvolt.results import Study
 from farvolt.shopping import Bill, Wanted
 from farvolt.upsizing import Hint
 from farvolt_app import shopping_rows, workbook
-from farvolt_app.pages import results
+from farvolt_app.pages import results, state
 from farvolt_app.shown import plain
 
 NO_PRICES, EXAMPLE, OWN = "No prices", "Example prices (invented)", "Your own price list"
@@ -101,11 +101,13 @@ def _in_short(row: dict[str, Any], bill: Bill) -> dict[str, Any]:
 
 
 def _downloads(study: Study, bill: Bill) -> None:
+    text = state.draft().valid_text
     with st.container(horizontal=True):
         for name, data, file, mime in (
             ("Download shopping list", partial(_bytes, shopping_rows.list_csv, bill), "shopping.csv", "text/csv"),
             ("Download cut list", partial(_bytes, shopping_rows.cuts_csv, bill), "cuts.csv", "text/csv"),
-            ("Download workbook with this list", partial(workbook.to_bytes, study, bill.wanted), "cables.xlsx", EXCEL),
+            ("Download workbook with this list", partial(workbook.to_bytes, study, bill.wanted, text), "cables.xlsx",
+             EXCEL),
         ):
             st.download_button(name, data, file, mime, on_click="ignore", key=f"{file}_{name[9:13]}")
 

@@ -7,11 +7,14 @@ import streamlit as st
 from farvolt import examples
 from farvolt.errors import FarvoltError, PlanError
 from farvolt_app import draft as drafts
+from farvolt_app import template, workbook_plan
 from farvolt_app.draft import Draft
 from farvolt_app.pages import state
 from farvolt_app.shown import plain
+from farvolt_app.workbook_cells import WorkbookError
 
 OWN_TEXT = "Starter plan"
+XLSX = "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet"
 POPOVER = "opening"
 """Key of the popover that this is drawn in; it closes when something was chosen."""
 
@@ -25,6 +28,12 @@ def show() -> None:
     st.markdown("**A plan file** on this machine")
     st.text_input("Path of the file", key="path", placeholder="/home/me/my-van.toml")
     st.button("Open file", on_click=_open_file, key="open_file")
+    st.markdown("**A workbook**: the template filled in, or an exported one")
+    key = f"workbook-{st.session_state.get('workbooks', 0)}"
+    st.file_uploader("Workbook", "xlsx", key=key, on_change=_open_workbook, args=(key,), label_visibility="collapsed",
+                     max_upload_size=10)  # fmt: skip
+    st.download_button("Download template", template.to_bytes, "template.xlsx", XLSX, on_click="ignore",
+                       key="download_template", help="A workbook to fill in: a sheet for each table.")  # fmt: skip
 
 
 def questions() -> None:
@@ -79,6 +88,25 @@ def _open_file() -> None:
     if opened is not None and opened.faults:
         take_with_faults(opened, str(PlanError(list(opened.faults), str(opened.path))))
     elif opened is not None:
+        take(opened)
+
+
+def _open_workbook(key: str) -> None:
+    given = st.session_state[key]
+    if given is None:
+        return
+    # The next one to be chosen is another widget: this one would go on showing its file.
+    st.session_state["workbooks"] = st.session_state.get("workbooks", 0) + 1
+    try:
+        found = workbook_plan.read(given.getvalue(), given.name)
+    except FarvoltError as error:
+        state.say(str(error))
+        return
+    opened = drafts.begin(found.text, new=True)
+    if found.faults:
+        take_with_faults(opened, str(WorkbookError(list(found.faults), given.name)))
+    else:
+        state.say("\n".join(("The plan was read from the workbook. Save writes it as a plan file.", *found.notes)))
         take(opened)
 
 
