@@ -150,6 +150,19 @@ def test_protection_is_held_to_the_table_whatever_the_current(capacity: str, mai
     assert only(other, RULE, "main").value == pytest.approx(300)
 
 
+def test_protection_at_the_far_end_of_a_run_is_held_to_the_table_as_well() -> None:
+    """The second on the way from the bank, at the other end of the run, against the second figure of up to 650 CCA;
+    the first, wherever along the way it sits, against the first."""
+    source = {"name": "bank", "kind": "battery", "at": "bank", "emf": "12.8 V", "short_circuit": "300 A"}
+    weak = fuse("15 A", "0 m", interrupting="1 A")
+    for ends, asked in (({"protection": weak, "protection_to": weak}, [750, 1500]), ({"protection_to": weak}, [1500])):
+        runs = [cable("feed", "bank", "lamp", **ends)]
+        plan = plan_of(
+            runs, [lamp("lamp", "lamp")], sources=[source | {"capacity": "100 Ah"}], rulebook="small-craft-us"
+        )
+        assert sorted(one.value or 0 for one in findings(plan, RULE)) == asked
+
+
 def test_a_bank_beyond_the_table_or_of_unknown_size_is_named() -> None:
     for more, words in (({"capacity": "600 Ah"}, "600 Ah at 12 V is beyond the table"), ({}, "states no capacity")):
         found = only(behind("900 A", fuse("20 A", "0 m"), "small-craft-us", **more), RULE, "bank")

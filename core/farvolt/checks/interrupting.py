@@ -10,6 +10,7 @@ from farvolt.plan import Battery, Protection, Run
 from farvolt.protection_types import ProtectionType, protection_type, protection_type_names
 from farvolt.results import Finding
 from farvolt.rulebook import InterruptingStep
+from farvolt.sections import Exposure
 from farvolt.units import number
 
 RULE = "protection.interrupting"
@@ -89,16 +90,22 @@ def devices(context: Context) -> Iterator[Interrupts]:
 def _asked(
     context: Context, index: int, one: Protection, system_V: float
 ) -> tuple[InterruptingStep | None, float, float]:
-    """What the rulebook asks for behind the batteries that feed this end of the run; 0 where it asks for nothing."""
+    """What the rulebook asks for behind the batteries that feed this end of the run, else those that feed its other
+    one; 0 where it asks for nothing."""
     rule = context.rulebook.protection.interrupting
-    ways = [way for way in context.sections.by_run.get(index, []) if way.end == one.end]
-    banks = {way.source: way for way in ways if isinstance(context.plan.sources[way.source], Battery)}
+    every = context.sections.by_run.get(index, [])
+    ways = [way for way in every if way.end == one.end and _is_battery(context, way)] or every
+    banks = {way.source: way for way in ways if _is_battery(context, way)}
     capacity = sum(_capacity_Ah(context, source) for source in banks)
     step = rule.step(system_V, capacity) if rule is not None and capacity > 0 else None
     if step is None:
         return None, 0.0, capacity
-    first = any(way.upstream is None for way in banks.values())
+    first = any((way.upstream if way.end == one.end else way.guard) is None for way in banks.values())
     return step, step.main_A if first else step.branch_A, capacity
+
+
+def _is_battery(context: Context, way: Exposure) -> bool:
+    return isinstance(context.plan.sources[way.source], Battery)
 
 
 def _capacity_Ah(context: Context, source: int) -> float:
