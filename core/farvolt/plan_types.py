@@ -32,7 +32,8 @@ class Entry(BaseModel):
     def model_copy(self, *, update: Mapping[str, Any] | None = None, deep: bool = False) -> Self:
         """A copy with some fields changed; what was worked out from the old ones is forgotten."""
         copy = super().model_copy(update=update, deep=deep)
-        for name in [name for name in copy.__dict__ if name not in type(self).model_fields]:
+        fields = type(self).model_fields
+        for name in [name for name in copy.__dict__ if name not in fields]:
             del copy.__dict__[name]
         return copy
 

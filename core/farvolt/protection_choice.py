@@ -260,7 +260,7 @@ def _offers(context: Context, place: Place, demands: Demands) -> Iterator[Offer]
     present = _present(run, place)
     most = limit_for(context, run, amps).amps if amps is not None else 0.0
     kinds = [present.kind] if present is not None else []
-    kinds += [kind for kind in _kinds(context.plan) if present is None or kind != present.kind]
+    kinds += [kind for kind in _kinds(context.plan) if present is None or kind.name != present.kind.name]
     here = [Offer(kind, rating) for kind in kinds for rating in _between(kind, demand, most)]
     if present is None:
         # Of any type: the lowest rating with a quarter in hand comes first.
