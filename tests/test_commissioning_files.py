@@ -156,3 +156,10 @@ def test_a_page_offers_the_sheet_for_a_case_that_holds() -> None:
     assert "Everything on, no charging" in shown.selectbox(key="test_sheet_case").options
     assert [one.label for one in shown.get("download_button")] == ["Download test sheet",
                                                                    "Download test sheet as a workbook"]  # fmt: skip
+
+
+def test_readings_that_a_table_has_no_room_for_are_counted(monkeypatch: pytest.MonkeyPatch) -> None:
+    whole = len(commissioning_rows.reading_rows(sheet()))
+    assert commissioning_rows.left_out(sheet()) == 0
+    monkeypatch.setattr(commissioning_rows, "MOST_ROWS", whole - 2)
+    assert (len(commissioning_rows.reading_rows(sheet())), commissioning_rows.left_out(sheet())) == (whole - 3, 3)

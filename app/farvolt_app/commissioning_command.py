@@ -32,6 +32,10 @@ def write_sheet(
     with cli._placed(read, plan), cli._progress("Working out what to expect"):
         sheet = sheet_of(prepared(read.plan, read.folder), with_meter, case_name, amps)
     cli._write_beside(plan, output, written(sheet, suffix, paper))
+    from farvolt_app import commissioning_rows
+
+    if suffix != ".pdf" and (more := commissioning_rows.left_out(sheet)):
+        click.echo(f"The readings to fill in leave {more} out: a table of them has at most 2000 rows.", err=True)
 
 
 def written(sheet: object, suffix: str, paper: str = "a4") -> bytes:

@@ -113,9 +113,18 @@ def reading_rows(sheet: Sheet) -> list[dict[str, str]]:
     same = {"set": "1", "case": sheet.case.name}
     if sheet.meter.text != ACCURACY:
         same["accuracy"] = sheet.meter.text
-    under = (*_over(sheet), *_clamped(sheet)) if sheet.amps is None else ()
-    rows = [same | row for row in (*_points(sheet), *under)]
+    rows = [same | row for row in _readings(sheet)]
     return [{name: row.get(name, "") for name in COLUMNS} for row in rows[: MOST_ROWS - 1]]
+
+
+def left_out(sheet: Sheet) -> int:
+    """Readings for which a table has no row left."""
+    return max(len(_readings(sheet)) - MOST_ROWS + 1, 0)
+
+
+def _readings(sheet: Sheet) -> list[dict[str, str]]:
+    under = (*_over(sheet), *_clamped(sheet)) if sheet.amps is None else ()
+    return [*_points(sheet), *under]
 
 
 def _points(sheet: Sheet) -> Iterator[dict[str, str]]:
