@@ -404,3 +404,37 @@ def test_plans_stand_side_by_side_with_what_differs(page: AppTest, tmp_path: Pat
         "fridge feed", "length", "6.5 m", "9 m")  # fmt: skip
     page.multiselect(key="compared").set_value([str(tmp_path / "none.toml")]).run()
     assert "no such file" in page.warning[0].value
+
+
+def test_a_workbook_is_opened_as_an_unsaved_plan_and_its_faults_are_told_by_cell(page: AppTest) -> None:
+    from farvolt.study import study
+    from farvolt_app import template, workbook
+
+    exported = workbook.to_bytes(study(planfile.parse(longer("9 m")), margins=False), text=longer("9 m"))
+    page.file_uploader[0].set_value(("cables.xlsx", exported, "application/zip")).run()
+    assert not page.exception
+    assert page.session_state["draft"].text == longer("9 m")
+    assert not page.session_state["draft"].saved
+    page.file_uploader[0].set_value(("empty.xlsx", template.to_bytes(), "application/zip")).run()
+    assert not page.exception
+    assert "Settings" in page.info[0].value
+    page.file_uploader[0].set_value(("bomb.xlsx", b"PK\x03\x04", "application/zip")).run()
+    assert "is not a workbook" in page.info[0].value
+    assert page.session_state["draft"].text == longer("9 m")
+
+
+def test_results_in_american_units_are_the_same_lengths_and_temperatures(page: AppTest) -> None:
+    page.switch_page("schedule_page.py").run()
+    metric = table(page, "Length one way (m)")
+    assert "Length one way (ft)" not in metric.columns
+    page.button_group(key="units").set_value("american").run()
+    assert not page.exception
+    american = table(page, "Length one way (ft)")
+    assert "Length one way (m)" not in american.columns
+    # 1 ft = 0.3048 m and 9/5 of a degree, by definition.
+    assert american["Length one way (ft)"].tolist() == pytest.approx((metric["Length one way (m)"] / 0.3048).tolist())
+    assert american["Insulation (degF)"].tolist() == pytest.approx((metric["Insulation (degC)"] * 1.8 + 32).tolist())
+    page.switch_page("drawing_page.py").run()
+    assert not page.exception
+    assert page.session_state["units"] == "american"
+    assert page.session_state["draft"].text == VAN

@@ -8,12 +8,11 @@ import streamlit as st
 
 from farvolt.results import CaseResult, Study
 from farvolt_app import drawing, drawing_file, shown
-from farvolt_app.pages import results
+from farvolt_app.pages import results, state
 from farvolt_app.paper import PAPERS, foot
 
 FIT, WHOLE = "whole drawing", "full size"
 ALT = "Single-line diagram of the plan; the tables below give the same numbers"
-UNITS = {"metric": "metres", "american": "feet"}
 
 
 def show(study: Study) -> None:
@@ -21,20 +20,17 @@ def show(study: Study) -> None:
     names = [case.name for case in study.cases]
     with st.container(horizontal=True, vertical_alignment="bottom"):
         chosen = st.selectbox("Case", range(len(names)), format_func=names.__getitem__, key="drawn_case", width=420)
-        units = st.segmented_control(
-            "Lengths in", list(UNITS), default="metric", required=True, format_func=UNITS.__getitem__, key="drawn_units"
-        )
         whole = st.segmented_control("Show", [FIT, WHOLE], default=FIT, required=True, key="drawn_at")
-    case = study.cases[chosen]
+    case, units = study.cases[chosen], state.units()
     dark = st.context.theme.type == "dark"
-    svg = drawing.svg(study.plan, case, study.findings, dark=dark, units=str(units))
+    svg = drawing.svg(study.plan, case, study.findings, dark=dark, units=units)
     if whole == FIT:
         st.image(svg, width="stretch", alt=ALT)
     else:
         with st.container(height=720):
             # An image is drawn but never runs or loads anything, whatever the plan's text holds.
             st.html(f'<img alt="{ALT}" src="data:image/svg+xml;base64,{base64.b64encode(svg.encode()).decode()}">')
-    _downloads(study, case, str(units))
+    _downloads(study, case, units)
     left, right = st.columns(2)
     with left:
         st.markdown("**Points**: volts between feed and return, and of each against the reference's return")

@@ -10,6 +10,7 @@ from farvolt_app import shown
 from farvolt_app.draft import Draft
 from farvolt_app.pages import keyboard, opening, state
 from farvolt_app.shown import plain
+from farvolt_app.units_shown import NAMES
 
 SAVING = "saving"
 """Key of the popover Save; it closes when the file was written."""
@@ -33,7 +34,12 @@ def show() -> None:
             "Download plan", draft.text, _file_name(draft), "text/plain", on_click="ignore", key="download_plan",
             help="The plan as a text file, as it stands now, faults and all.",
         )  # fmt: skip
-    st.caption(plain(_whereabouts(draft)))
+    with st.container(horizontal=True, vertical_alignment="center"):
+        st.caption(plain(_whereabouts(draft)), width="stretch")
+        st.segmented_control(
+            "Units of results", list(NAMES), default="metric", required=True, format_func=NAMES.__getitem__,
+            key="units", label_visibility="collapsed", persist_state="session",
+        )  # fmt: skip
     _messages(draft)
     keyboard.show()
 

@@ -7,11 +7,9 @@ import streamlit as st
 from farvolt import examples
 from farvolt.errors import FarvoltError, PlanError
 from farvolt_app import draft as drafts
-from farvolt_app import template, workbook_plan
 from farvolt_app.draft import Draft
 from farvolt_app.pages import state
 from farvolt_app.shown import plain
-from farvolt_app.workbook_cells import WorkbookError
 
 OWN_TEXT = "Starter plan"
 XLSX = "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet"
@@ -32,7 +30,7 @@ def show() -> None:
     key = f"workbook-{st.session_state.get('workbooks', 0)}"
     st.file_uploader("Workbook", "xlsx", key=key, on_change=_open_workbook, args=(key,), label_visibility="collapsed",
                      max_upload_size=10)  # fmt: skip
-    st.download_button("Download template", template.to_bytes, "template.xlsx", XLSX, on_click="ignore",
+    st.download_button("Download template", _template, "template.xlsx", XLSX, on_click="ignore",
                        key="download_template", help="A workbook to fill in: a sheet for each table.")  # fmt: skip
 
 
@@ -91,10 +89,19 @@ def _open_file() -> None:
         take(opened)
 
 
+def _template() -> bytes:
+    from farvolt_app import template
+
+    return template.to_bytes()
+
+
 def _open_workbook(key: str) -> None:
     given = st.session_state[key]
     if given is None:
         return
+    from farvolt_app import workbook_plan
+    from farvolt_app.workbook_cells import WorkbookError
+
     # The next one to be chosen is another widget: this one would go on showing its file.
     st.session_state["workbooks"] = st.session_state.get("workbooks", 0) + 1
     try:

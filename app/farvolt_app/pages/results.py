@@ -5,7 +5,7 @@ from typing import Any
 import streamlit as st
 
 from farvolt.results import Study
-from farvolt_app import shown
+from farvolt_app import shown, units_shown
 from farvolt_app.pages import heading, state
 from farvolt_app.shown import plain
 
@@ -32,7 +32,8 @@ def study() -> Study | None:
 
 
 def table(rows: list[shown.Cells], key: str, alt: str, *, tall: bool = False) -> None:
-    """A table of results, its numbers rounded for reading."""
+    """A table of results in the units that are chosen, its numbers rounded for reading."""
+    rows = units_shown.rows(rows, state.units())
     numbers = {name for row in rows for name, value in row.items() if isinstance(value, float)}
     config: dict[str, Any] = {
         name: st.column_config.NumberColumn(format=FORMATS.get(name, "%.4g")) for name in {*numbers, *FORMATS}

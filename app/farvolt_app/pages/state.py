@@ -12,6 +12,7 @@ from farvolt_app import draft as drafts
 from farvolt_app import keep
 from farvolt_app.draft import Draft
 from farvolt_app.server import FOLDER_VARIABLE, PLAN_VARIABLE
+from farvolt_app.units_shown import Units
 
 FIRST_EXAMPLE = "instrument-repair-van"
 ADDRESS_FIELD = "draft"
@@ -77,6 +78,11 @@ def shown_text() -> str:
 def editor_key(name: str) -> str:
     """The key of an editor: another one whenever the editors start anew."""
     return f"{name}-{st.session_state['revision']}"
+
+
+def units() -> Units:
+    """The units that results are shown in."""
+    return "american" if st.session_state.get("units") == "american" else "metric"
 
 
 def say(message: str) -> None:
