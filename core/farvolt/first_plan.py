@@ -10,11 +10,13 @@ from dataclasses import dataclass
 from functools import lru_cache
 
 from farvolt import planfile, units
+from farvolt.checks import run_some
 from farvolt.conductors import Size
+from farvolt.context import Context
 from farvolt.errors import FarvoltError, QuantityError
 from farvolt.integrity import nearest, shorten
 from farvolt.plan import Plan
-from farvolt.protection_choice import Offer, Place, choices
+from farvolt.protection_choice import RULES, Offer, Place, choices
 from farvolt.rulebook import load as load_rulebook
 from farvolt.study import build_context
 from farvolt.tables import read
@@ -111,20 +113,35 @@ def appliance(name: str) -> Appliance:
 
 def first_plan(answers: Answers) -> str:
     """The text of a first plan, with cables and protection chosen. Raises FarvoltError for answers of no sense."""
-    draft = _text(answers, {}, {})
-    plan = planfile.parse(draft, "the answers")
-    book = load_rulebook(plan.plan.rulebook, None)
-    context = build_context(plan, book)
-    sizes = dict(context.interim)
-    found = choices(context, [Place(index, _end(run.name)) for index, run in enumerate(plan.runs)])
-    offers: dict[str, Offer] = {}
-    for one in found:
+    context = _context(_text(answers, {}, {}))
+    sizes, offers = dict(context.interim), dict[str, Offer]()
+    for _ in range(_ROUNDS):
+        _choose(context, sizes, offers)
+        text = _text(answers, sizes, offers)
+        context = _context(text)
+        if all(one.severity != "fail" for one in run_some(context, RULES)):
+            break
+    return text
+
+
+_ROUNDS = 3
+"""How often protection is chosen, at most: chargers share otherwise when the cables have become thicker."""
+
+
+def _context(text: str) -> Context:
+    plan = planfile.parse(text, "the answers")
+    return build_context(plan, load_rulebook(plan.plan.rulebook, None))
+
+
+def _choose(context: Context, sizes: dict[str, Size], offers: dict[str, Offer]) -> None:
+    """Put in the protection that passes with the currents of a plan, and the cables that it wants."""
+    runs = context.plan.runs
+    for one in choices(context, [Place(index, _end(run.name)) for index, run in enumerate(runs)]):
         if one.offer is not None:
-            name = plan.runs[one.place.run].name
+            name = runs[one.place.run].name
             offers[name] = one.offer
             if one.offer.size is not None:
                 sizes[name] = one.offer.size
-    return _text(answers, sizes, offers)
 
 
 def _end(run: str) -> str:

@@ -23,7 +23,8 @@ def show() -> None:
     """Ask, and make the plan."""
     st.markdown(
         "Answer what you know; everything can be changed afterwards. The plan gets cables and fuses that pass the "
-        "checks. Figures of appliances are typical: put in those of the rating plates later."
+        "checks, as far as there are some: Findings tells what is left, and what is not verified. Figures of "
+        "appliances are typical: put in those of the rating plates later."
     )
     with st.form("guided"):
         left, middle, right = st.columns(3)
