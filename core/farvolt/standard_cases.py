@@ -239,7 +239,7 @@ def _output_A(source: Source) -> float:
     return source.amps.si
 
 
-def _drawn_A(plan: Plan, feeds: _Feeds, points: set[str], names: Set[str], lost: Source) -> float:
+def _drawn_A(plan: Plan, feeds: _Feeds, points: Set[str], names: Set[str], lost: Source) -> float:
     """Current of an island at nominal voltage: its loads, and what its converters draw at their rating."""
     on = feeds.every - {lost.name}
     total = sum(
