@@ -19,7 +19,7 @@ from farvolt.plan import CHASSIS
 from farvolt.readings import Pin, between
 from farvolt.response import Probe, State
 
-_HYPOTHESES = 14
+_HYPOTHESES = 40
 _PINS = 26
 _PERCENT, _DIGITS = 0.005, 2
 
@@ -112,7 +112,7 @@ def _remaining(located: Located) -> list[Hypothesis]:
     """The likely hypotheses to tell apart, without those that only add something less likely to a likelier one."""
     found: list[Hypothesis] = []
     for one in located.hypotheses:
-        if len(found) == _HYPOTHESES or one.probability < 2e-3:
+        if len(found) == _HYPOTHESES or one.probability < 1e-3:
             break
         if not any(before.causes and set(before.causes) < set(one.causes) for before in found):
             found.append(one)
