@@ -67,6 +67,9 @@ class Offer:
         return f"{cable}{number(self.rating_A)} A {self.kind.name}"
 
 
+Unfit = Callable[[ProtectionType], bool]
+
+
 @dataclass(slots=True)
 class Choice:
     """The offers for a place in order of preference, and how far they have been tried."""
@@ -78,12 +81,18 @@ class Choice:
     """Rules that the offers tried so far did not pass, in that order."""
     unfinished: bool = False
     """The rounds ended before an offer was shown to pass."""
+    further: Iterator[Offer] = field(default_factory=lambda: iter(()))
+    """Offers with thicker cables, made when the others have failed."""
+    unfit: list[tuple[str, Unfit]] = field(default_factory=list)
+    """Types that are ruled out, and the rule that they break."""
     fallen: Offer | None = None
     """An offer of a type that was ruled out."""
 
     @property
     def offer(self) -> Offer | None:
         """The offer that stands; None when all have failed."""
+        if self.tried >= len(self.offers):
+            self.offers += self._fit(list(self.further), self.unfit)
         return self.offers[self.tried] if self.tried < len(self.offers) else None
 
     def fails(self, rules: list[str]) -> None:
@@ -93,28 +102,38 @@ class Choice:
         assert failed is not None
         self.blocking |= dict.fromkeys(rules)
         self.tried += 1
-        if _OF_TYPE.intersection(rules):
-            self.drop(lambda kind: kind == failed.kind)
+        for rule in _OF_TYPE.intersection(rules):
+            self.rule_out(rule, partial(_is_named, failed.kind.name))
         while (offer := self.offer) is not None and offer.kind == failed.kind and offer.size == failed.size:
             higher = offer.rating_A > failed.rating_A
             if not (_WANT_LESS if higher else _WANT_MORE).intersection(rules):
                 break
             self.tried += 1
 
-    def drop(self, unfit: Callable[[ProtectionType], bool]) -> bool:
-        """Leave out the offers still to be tried that are of an unfit type; whether there were any."""
-        ahead = self.offers[self.tried :]
-        kept = [one for one in ahead if not unfit(one.kind)]
-        if len(kept) < len(ahead):
-            self.fallen = self.fallen or ahead[-1]
-            self.offers[self.tried :] = kept
-        return len(kept) < len(ahead)
+    def rule_out(self, rule: str, unfit: Unfit) -> None:
+        """Leave out the offers still to be tried that are of an unfit type."""
+        self.unfit.append((rule, unfit))
+        self.offers[self.tried :] = self._fit(self.offers[self.tried :], [(rule, unfit)])
+
+    def _fit(self, offers: list[Offer], rules: list[tuple[str, Unfit]]) -> list[Offer]:
+        """Those of some offers that no rule excludes."""
+        for rule, unfit in rules:
+            out = {kind.name for kind in {one.kind.name: one.kind for one in offers}.values() if unfit(kind)}
+            if out:
+                self.blocking[rule] = None
+                self.fallen = self.fallen or offers[-1]
+                offers = [one for one in offers if one.kind.name not in out]
+        return offers
 
     @property
     def stand_in(self) -> Offer | None:
         """What stands here while the other places are tried: the offer, or the last that failed, so that nobody else is
         blamed for a place without protection."""
         return self.offer or (self.offers[-1] if self.offers else self.fallen)
+
+
+def _is_named(name: str, kind: ProtectionType) -> bool:
+    return kind.name == name
 
 
 _OF_TYPE = {"protection.interrupting", "protection.voltage-rating"}
@@ -125,7 +144,7 @@ _WANT_MORE = {"protection.under-load"}
 def choices(context: Context, places: Iterable[Place]) -> list[Choice]:
     """For each place the first of its offers that passes, all tried together; see `Choice.offer`."""
     demands = Demands(context)
-    found = [Choice(place, list(_offers(context, place, demands))) for place in places]
+    found = [_choice(context, place, demands) for place in places]
     _made_for_the_volts(context, found)
     open_ones: list[Choice] = []
     for turn in range(min(_ROUNDS, max(2, _RUNS_TRIED // max(1, len(context.plan.runs))))):
@@ -152,8 +171,7 @@ def _made_for_the_volts(context: Context, found: list[Choice]) -> None:
     """Leave out types that are made for less than the voltage: no trial is needed to see that they do not pass."""
     volts = highest_V(context)
     for one in found:
-        if one.drop(partial(_made_for_less, volts[one.place.run])):
-            one.blocking["protection.voltage-rating"] = None
+        one.rule_out("protection.voltage-rating", partial(_made_for_less, volts[one.place.run]))
 
 
 def _made_for_less(volts: float, kind: ProtectionType) -> bool:
@@ -165,8 +183,8 @@ def _strong_enough(changed: Context, found: list[Choice]) -> None:
     needed = {Place(one.index, one.one.end): one for one in devices(changed) if one.one.pole == "feed"}
     for one in found:
         place = needed.get(one.place)
-        if place is not None and one.drop(partial(_too_weak, place)):
-            one.blocking["protection.interrupting"] = None
+        if place is not None:
+            one.rule_out("protection.interrupting", partial(_too_weak, place))
 
 
 def _too_weak(place: Interrupts, kind: ProtectionType) -> bool:
@@ -251,7 +269,7 @@ def _places(context: Context, finding: Finding) -> list[Place]:
     return list(dict.fromkeys(Place(one.run, one.protection.end) for one in guards))
 
 
-def _offers(context: Context, place: Place, demands: Demands) -> Iterator[Offer]:
+def _choice(context: Context, place: Place, demands: Demands) -> Choice:
     """Ratings between the load and what the cable may carry: of the present type first, then of the others; then with
     a thicker cable."""
     run = context.plan.runs[place.run]
@@ -265,14 +283,17 @@ def _offers(context: Context, place: Place, demands: Demands) -> Iterator[Offer]
     if present is None:
         # Of any type: the lowest rating with a quarter in hand comes first.
         here.sort(key=lambda one: (one.rating_A < SPARE * demand, one.rating_A))
-    yield from here
+    return Choice(place, here, further=_thicker(context, run, demand, kinds if present is None else kinds[:1]))
+
+
+def _thicker(context: Context, run: Run, demand: float, kinds: list[ProtectionType]) -> Iterator[Offer]:
     if run.size is None or exempt(context, run):
         return
     for size in larger_sizes(run.size)[:_SIZES]:
         thicker = _resized(run, size)
         found = run_ampacity(context.plan, context.rulebook, thicker, None, context.together[run.name])
         limit = limit_for(context, thicker, found.amps).amps if found is not None and found.amps is not None else 0.0
-        for kind in kinds if present is None else kinds[:1]:
+        for kind in kinds:
             yield from (Offer(kind, rating, size) for rating in _between(kind, demand, limit))
 
 

@@ -9,6 +9,7 @@ import math
 from bisect import bisect_left, bisect_right
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -75,9 +76,10 @@ class Band:
         """As `greatest_s`, over many multiples."""
         if not self.greatest:
             return np.full(len(times), math.inf)
-        after = np.searchsorted([gate[0] for gate in self.greatest], times * (1 + _SAME), side="right")
+        gates = _arrays(self.greatest)
+        after = np.searchsorted(gates[0], times * (1 + _SAME), side="right")
         low, high = np.maximum(after - 1, 0), np.minimum(after, len(self.greatest) - 1)
-        found = _between_over(times, np.array(self.greatest), low, high)
+        found = _between_over(times, gates, low, high)
         return np.where(after == 0, math.inf, found)
 
     def least_over(self, times: Floats) -> Floats:
@@ -86,9 +88,10 @@ class Band:
         below = np.where((times < 1) | ((times <= 1 + _SAME) & (first > 1)), math.inf, first_s)
         if not self.least:
             return below
-        at = np.searchsorted([gate[0] for gate in self.least], times * (1 - _SAME), side="left")
+        gates = _arrays(self.least)
+        at = np.searchsorted(gates[0], times * (1 - _SAME), side="left")
         low, high = np.maximum(at - 1, 0), np.minimum(at, len(self.least) - 1)
-        found = _between_over(times, np.array(self.least), low, high)
+        found = _between_over(times, gates, low, high)
         last, last_s = self.least[-1]
         found = np.where(at == len(self.least), last_s * (last / times) ** 2, found)
         return np.where(at == 0, below, found)
@@ -145,14 +148,23 @@ def _between(times: float, low: tuple[float, float], high: tuple[float, float]) 
     return min(low[1], max(high[1], found))
 
 
-def _between_over(times: Floats, gates: Floats, low: Ints, high: Ints) -> Floats:
+@lru_cache(maxsize=200)
+def _arrays(limit: Limit) -> tuple[Floats, Floats, Floats, Floats]:
+    """Multiples and times of gates, and the logarithms of both."""
+    times, seconds = np.array(limit).T.copy()
+    with np.errstate(divide="ignore"):
+        return times, seconds, np.log(times), np.log(seconds)
+
+
+def _between_over(times: Floats, gates: tuple[Floats, Floats, Floats, Floats], low: Ints, high: Ints) -> Floats:
     """As `_between`, between gates by their places; a multiple that stands at a gate has the time of that gate."""
+    at, seconds, log_at, log_s = gates
+    low_s, high_s, low_at, low_log = seconds[low], seconds[high], at[low], log_at[low]
     with np.errstate(divide="ignore", invalid="ignore"):
-        logs = np.log(gates)
-        share = (np.log(times) - logs[low, 0]) / (logs[high, 0] - logs[low, 0])
-        found = np.exp((1 - share) * logs[low, 1] + share * logs[high, 1])
-    found = np.clip(found, gates[high, 1], gates[low, 1])
-    found = np.where(times <= gates[low, 0], gates[low, 1], found)
-    found = np.where(times >= gates[high, 0], gates[high, 1], found)
-    within: Floats = np.where((gates[high, 1] == 0) & (times > gates[low, 0]), 0.0, found)
+        share = (np.log(times) - low_log) / (log_at[high] - low_log)
+        found = np.exp((1 - share) * log_s[low] + share * log_s[high])
+    found = np.minimum(low_s, np.maximum(high_s, found))
+    found = np.where(times <= low_at, low_s, found)
+    found = np.where(times >= at[high], high_s, found)
+    within: Floats = np.where((high_s == 0) & (times > low_at), 0.0, found)
     return within
