@@ -236,10 +236,13 @@ def test_a_sound_installation_raises_no_alarm() -> None:
     assert [one.rank for one in bench.along(12, 0) if one.rank != "fits"] == []
 
 
-def test_proposed_readings_leave_one_place() -> None:
+def test_proposed_readings_lead_to_the_bad_joint() -> None:
+    """It comes first within 4 more readings, and what is then said to be unique is it; how often it is unique is
+    measured by `bench/locate.py`."""
     found = [one for one in bench.proposed(6) if one.visible]
-    assert found
-    assert sum(one.unique and one.rank == "first" for one in found) >= 0.8 * len(found)
+    assert len(found) >= 3
+    assert [one.rank for one in found if one.rank != "first"] == []
+    assert sum(one.unique for one in found) >= len(found) / 2
 
 
 @pytest.mark.spice
