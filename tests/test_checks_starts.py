@@ -30,6 +30,19 @@ def test_a_start_that_its_fuse_surely_does_not_survive() -> None:
     assert "provisional" in found.basis
 
 
+def test_a_start_that_the_network_cannot_feed_is_not_verified() -> None:
+    """12.8 V behind 60 mohm gives 12.8² / (4 x 0.06) = 683 W at the most: not the 720 W of this start."""
+    weak = {"name": "bank", "kind": "battery", "at": "bank", "emf": "12.8 V", "resistance": "60 mohm"}
+    runs = [cable("feed", "bank", "winch", "2 m", "8 AWG", protection=fuse("20 A"))]
+    load = {"name": "winch", "at": "winch", "power": "120 W", "surge": {"times": 6, "seconds": 2}}
+    plan = plan_of(runs, [load], rulebook=US, sources=[weak], cases=[{"name": "evening"}])
+    found = only(plan, RULE, "Test plan")
+    assert found.severity == "warn"
+    assert 'Not verified against opening times: the start of "winch" in "evening"' in found.message
+    asked = plan_of(runs, [load], rulebook=US, sources=[weak], cases=[{"name": "start", "surge": ["winch"]}])
+    assert findings(asked, RULE) == []  # volts.collapse names that case
+
+
 @pytest.mark.parametrize(("seconds", "warns"), [(0.15, False), (0.16, True)])
 def test_a_start_that_its_fuse_may_not_survive(seconds: float, warns: bool) -> None:
     # ISO 8820-3: at 200 % (40 A through 20 A) a medium blade holds for 0.15 s at least, and may hold for 5 s.

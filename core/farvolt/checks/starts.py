@@ -64,6 +64,7 @@ class _Test:
 def starts(context: Context) -> Iterator[Finding]:
     """Protection that may open while a load starts, in any case that has the load on."""
     yield from _not_tried(context)
+    yield from _not_solved(context)
     found, demands, behind = list(_starts(context)), Demands(context), protected_by(context)
     for index, run in enumerate(context.plan.runs):
         for one in run.protections:
@@ -95,6 +96,22 @@ def _not_tried(context: Context) -> Iterator[Finding]:
             "protection.under-load", "note", context.plan.plan.name, "plan", None, None, None, None,
             f"Not checked against opening times: the start of {names}, which no case asks for",
             f"what this version does in a plan of {large}", (), "a case with surge naming them",
+        )  # fmt: skip
+
+
+def _not_solved(context: Context) -> Iterator[Finding]:
+    """Starts alone that the network gives way in, so that no current is known; cases that do are named as such."""
+    told = {one.name for one in context.cases if not one.solutions["hot"].state.solved}
+    failed = [case for case, one in context.starts.solved if not one.state.solved and case.name not in told]
+    lost = {name: case.name for case in reversed(failed) for name in case.surge}
+    if lost:
+        told_of = [f'"{name}" in "{case}"' for name, case in lost.items()]
+        names = ", ".join(told_of[:8]) + (", …" if len(told_of) > 8 else "")
+        yield Finding(
+            "protection.under-load", "warn", context.plan.plan.name, "plan", None, None, None, None,
+            f"Not verified against opening times: the start of {names}, in which the network gives way",
+            f"{PRACTICE}: a start is over before its protection may open", (),
+            "thicker cables or a stronger battery, so that the start can be fed",
         )  # fmt: skip
 
 
