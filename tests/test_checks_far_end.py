@@ -240,3 +240,12 @@ def test_the_table_of_protection_tells_the_time_of_the_check() -> None:
     (row,) = result.protections
     assert one.value == pytest.approx(row.opens_s)
     assert one.limit == pytest.approx(row.allowed_s)
+
+
+def test_far_beyond_its_band_a_fuse_needs_no_more_than_its_joule_integral() -> None:
+    """12 V / 20 mohm and 0.5 m of 1.5 mm2 is some 340 A, 34 times a 10 A blade: (60 A)² x 0.15 s = 540 A2s at most, by
+    the last gate of ISO 8820-3, against the 29,756 A2s of the cable; 0.15 s of 340 A would be 17,000 A2s, and of
+    2,000 A from a stronger battery far too many."""
+    assert found(plan_text("10 A", length="0.5 m"), FAR_END) == []
+    assert found(plan_text("10 A", length="0.5 m", ohm="2 mohm"), FAR_END) == []
+    assert found(plan_text("10 A", length="0.5 m", ohm="2 mohm", kind="thermal breaker"), FAR_END) != []

@@ -10,7 +10,7 @@ from functools import cached_property
 from typing import overload
 
 from farvolt.checks.demand import Demands
-from farvolt.checks.far_end import Opening, opening, thinnest
+from farvolt.checks.far_end import Opening, opening, opens_s, thinnest
 from farvolt.checks.rating import limit_for
 from farvolt.checks.under_load import protected_by
 from farvolt.checks.ways import ampacity_A, limited_A
@@ -163,7 +163,7 @@ def _worst(context: Context, one: Protection, ends: list[FarEnd]) -> Opening | N
 
 
 def _opens_s(one: Protection, far: FarEnd | None) -> float | None:
-    return one.kind.opens_within_s(far.fault.amps, one.rating.si) if far is not None else None
+    return opens_s(one.kind, far.fault.amps, one.rating.si) if far is not None else None
 
 
 def _cable_A(context: Context, own: int, one: Protection, behind: list[int]) -> float | None:

@@ -10,6 +10,7 @@ from farvolt.context import Context, basis_text, label
 from farvolt.faults import FarEnd
 from farvolt.network import insulation_degC, return_size
 from farvolt.plan import Protection, Run
+from farvolt.protection_types import ProtectionType
 from farvolt.results import Finding
 from farvolt.sections import Guard, Stretch
 from farvolt.temperatures import run_ambient_degC
@@ -75,7 +76,12 @@ def opening(context: Context, far: FarEnd, protection: Protection) -> Opening | 
     kind, seat = protection.kind, context.plan.runs[far.stretch.guard.run]
     coldest = min(run_ambient_degC(context.plan, seat, one.case) for one in context.cases)
     rating = kind.rating_at_A(protection.rating.si, min(coldest, kind.reference_degC))
-    return Opening(far, *at_stake[first], rating, kind.opens_within_s(far.fault.amps, rating), stands[first])
+    return Opening(far, *at_stake[first], rating, opens_s(kind, far.fault.amps, rating), stands[first])
+
+
+def opens_s(kind: ProtectionType, amps: float, rating_A: float) -> float:
+    """The greatest time that counts as heat in the cable: beyond its band a fuse needs no more than its I2t."""
+    return min(kind.opens_within_s(amps, rating_A), kind.let_through_A2s(amps, rating_A) / amps**2)
 
 
 def _at_stake(context: Context, index: int, amps: float) -> bool:
@@ -145,6 +151,8 @@ def _working(worst: Opening, guard: Guard, percent: float) -> tuple[str, ...]:
     if abs(worst.rating_A - guard.rating_A) > 1e-9:
         rated += f" A, in the cold as {number(worst.rating_A)}"
     opens = f"opens within {_time(worst.opens_s)}" if math.isfinite(worst.opens_s) else "need not open at all"
+    if worst.opens_s < kind.opens_within_s(far.fault.amps, worst.rating_A) * (1 - 1e-9):
+        opens += f", letting through {number(kind.let_through_A2s(far.fault.amps, worst.rating_A), 4)} A2s at most"
     limit_s = worst.stands.reaches_limit_s(worst.amps)
     return (
         f"Least fault current, {BOLTED}: {far.fault.working[0]}" if far.fault.working else BOLTED,
