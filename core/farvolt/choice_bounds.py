@@ -8,7 +8,7 @@ resistance of the option that is taken. Options that cannot occur within the
 known cost, by the reduced costs of the relaxed model, are left out.
 """
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -17,11 +17,15 @@ from farvolt.choice_limits import Carried, Currents, Limit, Row, Rows, Shared, l
 from farvolt.choice_model import Model
 from farvolt.choice_options import Options
 from farvolt.context import Context
+from farvolt.network import Floats, Ints
 from farvolt.operating import KNEE_SHARE
 from farvolt.solution import Solution
 from farvolt.temperatures import Mode
 
 _ROUNDING = 1e-7
+_PRICES = 60
+_NEAR = 0.2
+"""Share of a rating: currents further below it than this never reach it by what a voltage can do to them."""
 
 
 @dataclass(slots=True)
@@ -39,7 +43,8 @@ class Sharper:
     def every(self) -> Iterator[Row]:
         """The rows: of what is carried beyond the least, and of every limit with it."""
         mine = [one for one in limits(self.best, self.drop_factor) if one.proven]
-        for case, mode in dict.fromkeys((one.case, one.mode) for one in mine):
+        hot: list[tuple[int, Mode]] = [(case, "hot") for case in dict.fromkeys(one.case for one in mine)]
+        for case, mode in dict.fromkeys([*((one.case, one.mode) for one in mine), *hot]):
             solution = self.best.cases[case].solutions[mode]
             currents = self._currents[case, mode] = Currents.of(solution)
             yield from self._beyond(case, mode, solution, currents)
@@ -76,19 +81,40 @@ class Sharper:
         tangents: dict[int, tuple[dict[int, float], float]] = {}
         groups = {key: tuple(loads) for key, loads in currents.beyond.items() if len(loads) > 1}
         done: set[tuple[int, ...]] = set()
-        for loads in [tuple(sorted({load for mine in groups.values() for load in mine})), *groups.values()]:
+        root = _root(case, mode, currents)
+        sag_ohm = _source_ohm(solution)
+        for loads in [root.loads, *groups.values()]:
             if loads in done or not loads:
                 continue
             done.add(loads)
-            total, least = dict[int, float](), 0.0
-            for load in loads:
-                if load not in tangents:
-                    tangents[load] = self._tangent(case, mode, load, solution, currents)
-                slopes, start = tangents[load]
-                least += start
-                for place, slope in slopes.items():
-                    total[place] = total.get(place, 0.0) + slope
-            yield Row(total, -least, shared={Shared(case, mode, loads): -1.0})
+            for load in set(loads) - set(tangents):
+                tangents[load] = self._tangent(case, mode, load, solution, currents)
+            total, least = _together([tangents[load] for load in loads])
+            shared: dict[Shared | Carried, float] = {root: sag_ohm * self._slopes(case, mode, loads, solution)}
+            key = Shared(case, mode, loads)
+            shared[key] = shared.get(key, 0.0) - 1.0
+            yield Row(total, -least, shared=shared)
+        if mode == "hot" and not self.best.cases[case].case.surge:
+            yield from self._within_ratings(case, tangents, currents)
+
+    def _within_ratings(
+        self, case: int, tangents: dict[int, tuple[dict[int, float], float]], currents: Currents
+    ) -> Iterator[Row]:
+        """No protection that stays as it is carries more than its rating."""
+        for run in self.best.plan.runs:
+            loads = currents.beyond.get(("run", run.name, "feed"), {})
+            index = self.best.run_index(run.name)
+            chosen = any(one.rating_A is not None for one in self.rows.options.by_run.get(index, ()))
+            ratings = [one.rating.si for one in run.protections if one.pole == "feed"]
+            if not ratings or chosen or not set(loads) <= set(tangents):
+                continue
+            total, least = _together([tangents[load] for load in loads])
+            now_A = sum(currents.load_amps(load) for load in loads)
+            if (min(ratings) - now_A) < _NEAR * min(ratings):
+                solution = currents.solution
+                sag = _source_ohm(solution) * self._slopes(case, "hot", tuple(loads), solution)
+                most = min(ratings) - now_A - least
+                yield Row(total, most, text="protection.under-load", shared={_root(case, "hot", currents): sag})
 
     def _tangent(
         self, case: int, mode: Mode, load: int, solution: Solution, currents: Currents
@@ -97,37 +123,115 @@ class Sharper:
         watts = float(solution.condition.load_W[load])
         if watts <= 0:
             return {}, 0.0
-        top = terminals_V(solution, load)
-        drop_V = float(self.known.cases[case].solutions[mode].load_drop_V[load])
-        slope = watts / (top - drop_V) ** 2
-        alone = watts / (top - drop_V) - slope * drop_V
+        known_V = float(self.known.cases[case].solutions[mode].load_volts[load])
+        slope = watts / known_V**2
+        alone = watts / known_V - slope * (terminals_V(solution, load) - known_V)
         alone += float(solution.condition.load_A[load]) - currents.load_amps(load)
         coefficients, fixed_V = self.rows.drop(load, solution, currents)
         return {place: slope * volts for place, volts in coefficients.items()}, alone + slope * fixed_V
+
+    def _slopes(self, case: int, mode: Mode, loads: Iterable[int], solution: Solution) -> float:
+        """By how much the loads draw more, together, for each volt that their source's terminals stand lower, A/V."""
+        volts = self.known.cases[case].solutions[mode].load_volts
+        return sum(float(solution.condition.load_W[load] / volts[load] ** 2) for load in loads
+                   if solution.condition.load_W[load] > 0)  # fmt: skip
 
     def _of_limit(self, limit: Limit, solution: Solution) -> Row:
         currents = self._currents[limit.case, limit.mode]
         row = self.rows.row(limit, solution, currents, own_at_limit="alone")
         shared = self.rows.shared(limit, solution, currents, self.kept)
         if limit.rule == "volts.low":
-            port = solution.references[limit.load]
-            loads = tuple(sorted({load for mine in currents.beyond.values() if len(mine) > 1 for load in mine}))
-            if port is not None and limit.load in loads:
-                key = Shared(limit.case, limit.mode, loads)
-                shared[key] = shared.get(key, 0.0) + float(solution.condition.ohm[port])
+            root = _root(limit.case, limit.mode, currents)
+            if limit.load in root.loads:
+                shared[root] = shared.get(root, 0.0) + _source_ohm(solution)
         row.shared = shared
         return row
 
 
-def worth(model: Model, rows: list[Row], below: float) -> frozenset[int]:
-    """Places of the options that can occur in a choice that costs no more than `below`.
+def _root(case: int, mode: Mode, currents: Currents) -> Shared:
+    """All loads that share any conductor with another: what they draw passes through the source."""
+    return Shared(case, mode, tuple(sorted({load for mine in currents.beyond.values() if len(mine) > 1
+                                            for load in mine})))  # fmt: skip
 
-    By linear programming: taking an option raises the relaxed optimum by its reduced cost at least.
+
+def _source_ohm(solution: Solution) -> float:
+    """Resistance of the one source that feeds a case."""
+    port = next((one for one in solution.references if one is not None), None)
+    return float(solution.condition.ohm[port]) if port is not None else 0.0
+
+
+def _together(tangents: Iterable[tuple[dict[int, float], float]]) -> tuple[dict[int, float], float]:
+    total, least = dict[int, float](), 0.0
+    for slopes, start in tangents:
+        least += start
+        for place, slope in slopes.items():
+            total[place] = total.get(place, 0.0) + slope
+    return total, least
+
+
+@dataclass(frozen=True, slots=True)
+class Within:
+    """What can occur in a choice that costs no more than a known one.
+
+    By linear programming: each option taken raises the relaxed optimum by its reduced cost at least, so that the reduced
+    costs of all that are taken sum to no more than what lies between that and the known cost.
     """
-    value, reduced = model.relaxed(rows)
-    if not np.isfinite(value):
-        return frozenset(range(len(reduced)))
-    return frozenset(np.flatnonzero(value + reduced <= below * (1 + _ROUNDING) + _ROUNDING).tolist())
+
+    reduced: Floats
+    spare: float
+    kept: frozenset[int]
+    """Places of the options that can occur."""
+
+    @classmethod
+    def of(cls, model: Model, rows: list[Row], cost: float) -> "Within":
+        """Relax the model with these rows."""
+        value, reduced = model.relaxed(rows)
+        if not np.isfinite(value):
+            return cls(np.zeros(len(reduced)), np.inf, frozenset(range(len(reduced))))
+        spare = max(0.0, cost * (1 + _ROUNDING) - value) + _ROUNDING
+        return cls(reduced, spare, frozenset(np.flatnonzero(reduced <= spare).tolist()))
+
+    def least(self, row: Row, starts: Ints) -> float:
+        """The least that a sum over options can come to, where each run takes one of those that can occur.
+
+        A Lagrangian bound: for any price on reduced cost, the cheapest option of each run less the price of what is
+        spare. `starts` are the places at which the runs' options begin.
+        """
+        sums = np.zeros(len(self.reduced))
+        sums[list(row.coefficients)] = list(row.coefficients.values())
+        out = np.full(len(sums), np.inf)
+        out[list(self.kept)] = 0.0
+        if not np.isfinite(self.spare):
+            return float(np.minimum.reduceat(sums, starts).sum())
+        scale = max(float(np.abs(sums).sum()), _ROUNDING) / max(self.spare, _ROUNDING)
+        prices = np.concatenate([[0.0], scale * np.geomspace(1e-5, 1.0, _PRICES)])
+        every = sums + out + prices[:, None] * self.reduced
+        found = np.minimum.reduceat(every, starts, axis=1).sum(axis=1) - prices * self.spare
+        return float(found.max())
+
+
+def raised(rows: Iterable[Row], within: Within, starts: Ints) -> Iterator[Row]:
+    """The rows of a `Sharper` with what each shared conductor carries beyond its least put in as a number, the least
+    that it can be."""
+    every = list(rows)
+    least: dict[Shared, float] = {}
+    for row in every:
+        defines = [key for key, value in row.shared.items() if value < 0]
+        if row.coefficients and len(defines) == 1 and isinstance(defines[0], Shared):
+            key = defines[0]
+            known = sum(value * least.get(one, 0.0) for one, value in row.shared.items()
+                        if isinstance(one, Shared) and one != key)  # fmt: skip
+            least[key] = max(0.0, within.least(row, starts) + known - row.most) / -row.shared[key]
+    for row in every:
+        if all(value >= 0 for value in row.shared.values()) and (row.limit is not None or row.text):
+            coefficients, most = dict(row.coefficients), row.most
+            for one, value in row.shared.items():
+                if isinstance(one, Carried):
+                    more = value * least.get(one.by, 0.0)
+                    coefficients[one.option] = coefficients.get(one.option, 0.0) + more
+                else:
+                    most -= value * least.get(one, 0.0)
+            yield Row(coefficients, most, row.limit, row.text)
 
 
 def kept_only(options: Options, kept: frozenset[int], places: Mapping[int, list[int]]) -> list[Row]:

@@ -10,8 +10,10 @@ import time
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 
+import numpy as np
+
 from farvolt import interim, study
-from farvolt.choice_bounds import Sharper, kept_only, worth
+from farvolt.choice_bounds import Sharper, Within, kept_only, raised
 from farvolt.choice_faults import FaultRows
 from farvolt.choice_limits import Currents, Limit, Row, Rows, limits
 from farvolt.choice_model import Answer, Model, links
@@ -36,6 +38,8 @@ from farvolt.rulebook import Rulebook
 from farvolt.temperatures import Mode
 
 _ROUNDS = 25
+_RAISES = 2
+_ROUNDING = 1e-9
 _INTERRUPTING = "protection.interrupting"
 _OVER = 1.001
 """A limit that the exact solution breaks is tightened by this much more than it is broken by."""
@@ -226,6 +230,8 @@ class _Search:
         self.verdict: Verdict | None = None
         self.cost, self.bound, self.rounds = float("inf"), 0.0, 0
         self.ended, self.impossible = "no better", False
+        self.sharp: list[Row] = []
+        self.exact = False
         self.run_by_run, self.run_by_run_cost = self._run_by_run()
 
     @property
@@ -285,12 +291,12 @@ class _Search:
             return self._holding(verdict) if learnt else None
         better = self._keep(picked, verdict, self.problem.model.cost_of(dict(picked)))
         self._tell("Checked a choice that passes")
-        if self._done() or not (better or self.rounds == 1):
+        if self._done():
             return None
-        return self._sharper()
+        return self._sharper() if better or self.rounds == 1 else self._exactly()
 
     def _done(self) -> bool:
-        if self.cost < float("inf") and 1 - self.bound / max(self.cost, 1e-12) <= self.problem.wishes.gap:
+        if self.cost < float("inf") and 1 - self.bound / max(self.cost, 1e-12) <= self.problem.wishes.gap + _ROUNDING:
             self.ended = "proven"
             return True
         if self.left_s <= 0:
@@ -309,12 +315,28 @@ class _Search:
         problem, verdict = self.problem, self.verdict
         assert verdict is not None
         self._tell("Looking for a sharper bound")
-        rows = problem.bound_rows()
-        kept = worth(problem.model, rows, self.cost)
-        sharper = Sharper(problem.rows, problem.best, verdict.context, kept, problem.wishes.drop_factor)
-        every = [*rows, *kept_only(problem.options, kept, problem.rows.places), *sharper.every()]
-        target = self.cost * (1 - problem.wishes.gap)
-        answer = problem.model.solve(every, problem.wishes.gap / 2, self.left_s, below=target)
+        rows, gap = problem.bound_rows(), problem.wishes.gap
+        starts = np.cumsum([0, *map(len, problem.options.by_run.values())])[:-1]
+        within = Within.of(problem.model, rows, self.cost)
+        for _ in range(_RAISES):
+            sharper = Sharper(problem.rows, problem.best, verdict.context, within.kept, problem.wishes.drop_factor)
+            every = list(sharper.every())
+            higher = [*rows, *raised(every, within, starts)]
+            within = Within.of(problem.model, higher, self.cost)
+        out = kept_only(problem.options, within.kept, problem.rows.places)
+        self.sharp = [*higher, *out, *every]
+        answer = problem.model.solve([*higher, *out], gap / 4, self.left_s)
+        self.bound = max(self.bound, self.cost if answer.impossible else min(answer.bound, self.cost))
+        return answer.picked
+
+    def _exactly(self) -> Mapping[int, Option] | None:
+        """The last bound, with the currents themselves as variables: slower, and all but exact. Looked for once."""
+        if self.exact or not self.sharp:
+            return None
+        self.exact = True
+        self._tell("Looking for the last bound")
+        target = self.cost * (1 - self.problem.wishes.gap)
+        answer = self.problem.model.solve(self.sharp, self.problem.wishes.gap / 2, self.left_s, below=target)
         # Nothing costs so little: then none is cheaper than that.
         self.bound = max(self.bound, target if answer.impossible else min(answer.bound, target))
         return answer.picked
