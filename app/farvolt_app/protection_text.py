@@ -20,6 +20,8 @@ NOTES = (
     "loose joint draws less. Opens within, cable stands: at the least fault current, at the far end that is worst off."
 )
 
+UNVERIFIED = "What the typical figures of a type leave unverified, such as what it lets through, counts as no failure."
+
 
 def show(context: Context, run: str | None) -> None:
     """Print every protection, or those of one run with the ratings of each type that pass all checks there.
@@ -32,8 +34,9 @@ def show(context: Context, run: str | None) -> None:
     table(out, "Protection", HEADINGS, [row(context, one) for one in found])
     out.print(NOTES, markup=False)
     if index is not None:
-        table(out, "Ratings that pass all checks of protection here", (("type", False), ("ratings A", False)),
+        table(out, "Ratings that fail no check of protection here", (("type", False), ("ratings A", False)),
               _fitting(context, index))  # fmt: skip
+        out.print(UNVERIFIED, markup=False)
 
 
 def row(context: Context, one: ProtectionResult) -> tuple[str, ...]:
@@ -43,7 +46,7 @@ def row(context: Context, one: ProtectionResult) -> tuple[str, ...]:
     return (
         f"{label(context.plan.runs[context.run_index(one.run)])}{where}", one.type, number(one.rating_A),
         number(one.load_A), shown(one.cable_A), shown(one.highest_A) + estimated, shown(one.interrupts_A),
-        shown(one.lowest_A), shown(one.opens_s), shown(one.allowed_s, "for good"),
+        shown(one.lowest_A), shown(one.opens_s), shown(one.allowed_s, "for good" if one.carried else "-"),
     )  # fmt: skip
 
 

@@ -83,7 +83,7 @@ def source_rows(case: CaseResult) -> list[Cells]:
 PROTECTION_NOTES = (
     "Cable allows: the highest rating that all cables behind it allow. Fault currents are of bolted shorts; an arc or "
     "a loose joint draws less. Opens within, cable stands: at the least fault current, at the far end that is worst "
-    "off; a cable without a time carries that current for good."
+    "off; a cable without a time carries that current for good, is exempt or states no size."
 )
 
 

@@ -50,7 +50,10 @@ class ProtectionResult:
     opens_s: float | None
     """The greatest time in which it opens there; infinite where it need not."""
     allowed_s: float | None
-    """The time until the cable there is at its limit, at most five seconds; None where the cable carries the fault."""
+    """The time until the cable there is at its limit, at most five seconds; None where nothing has to open in time or
+    nothing is known of the cable."""
+    carried: bool
+    """Whether the cables at every far end are known to carry the fault current for good."""
     estimated: bool
     """Some fault current comes from a battery whose resistance is an estimate."""
 
@@ -146,6 +149,7 @@ def _result(
         far_end=at.fault.place if at is not None else "",
         opens_s=worst.opens_s if worst is not None else _opens_s(one, least),
         allowed_s=worst.allowed_s if worst is not None else None,
+        carried=bool(ends) and all(_carried(context, far) for far in ends),
         estimated=any(fault.estimated for fault in (highest, at.fault if at else None) if fault is not None),
     )
 
@@ -160,6 +164,11 @@ def _worst(context: Context, one: Protection, ends: list[FarEnd]) -> Opening | N
     """The far end at which a protection is worst off against the cable, as the check of far ends has it."""
     found = [opened for far in ends if (opened := opening(context, far, one)) is not None]
     return max(found, key=lambda each: (each.damaging, each.times_late), default=None)
+
+
+def _carried(context: Context, far: FarEnd) -> bool:
+    index = far.stretch.run if far.stretch.run >= 0 else far.stretch.guard.run
+    return all(amps <= (ampacity_A(context, run) or 0.0) for run, amps in ((index, far.run_A), *far.returns))
 
 
 def _opens_s(one: Protection, far: FarEnd | None) -> float | None:
