@@ -126,6 +126,16 @@ def test_a_start_warms_no_cable() -> None:
     assert fails(plan_of(runs, loads, cases=lasting), "conductor.ampacity") == ["feed"]
 
 
+def test_a_size_carries_what_lasts_after_a_start() -> None:
+    """50 A last, more than 14 AWG carries: the size offered carries those, whatever the start draws for a moment."""
+    runs = [cable("feed", "bank", "galley", "1 m", "14 AWG", protection=fuse("50 A", kind="strip"))]
+    loads = [lamp("fridge", "galley", "50 A", surge={"times": 5})]
+    started = only(plan_of(runs, loads, cases=[{"name": "Start", "surge": ["fridge"]}]), "conductor.ampacity", "feed")
+    steady = only(plan_of(runs, loads, cases=[{"name": "Running"}]), "conductor.ampacity", "feed")
+    assert started.remedy == steady.remedy
+    assert "carries this where it lies" in (started.remedy or "")
+
+
 def test_the_worst_case_is_named() -> None:
     runs = [cable("feed", "bank", "pump", "2 m", "10 AWG", protection=fuse("100 A", kind="strip"))]
     cases = [

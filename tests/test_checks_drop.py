@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from farvolt.plan import Plan
+from farvolt.plan import Case, Plan, Surge
 from strategies import Wishes, random_draft
 from strategies import plan_of as drafted
 from wiring import (
@@ -278,6 +278,17 @@ def test_branch_is_counted_from_the_last_protection(mohm: float, over: bool) -> 
         assert 'last protection at "block"' in found[0].message
         assert "NEC 210.19" in found[0].basis
         assert steps_add_up(found[0]) == pytest.approx(10 * mohm / 1000, rel=1e-3)
+
+
+@pytest.mark.parametrize(("mohm", "case"), [(30, "Start"), (40, "Running")])
+def test_a_start_is_told_of_a_branch_only_where_nothing_else_is_over(mohm: float, case: str) -> None:
+    """10 A over 30 mohm are 2.5 % of 12 V and over 40 mohm 3.33 %, with 3 % allowed; twice that in a start."""
+    plan = feeder_and_branch(mohm)
+    load = plan.loads[0].model_copy(update={"surge": Surge(times=2)})
+    cases = (Case(name="Start", surge=("lamp",)), Case(name="Running"))
+    found = only(plan.model_copy(update={"loads": (load,), "cases": cases}), "drop.branch", "lamp")
+    assert (found.case, "starts" in found.message) == (case, case == "Start")
+    assert found.value == pytest.approx(100 * (20 if case == "Start" else 10) * mohm / 1000 / 12, rel=1e-9)
 
 
 def test_branch_without_protection_of_its_own_starts_at_the_feeders() -> None:

@@ -88,6 +88,16 @@ def test_boundaries_of_what_terminals_allow(amps: str, severity: str | None) -> 
         assert "110.14(C)" in found[0].basis
 
 
+def test_a_start_warms_no_terminal() -> None:
+    """18 A last, within the 20 A of 12 AWG at 60 degC; three times that in a start. At 21 A the case is over anyway."""
+    runs = [cable("feed", "bank", "lamp", size="12 AWG", protection=fuse("100 A"))]
+    for amps, told in (("18 A", []), ("21 A", [21.0])):
+        loads = [lamp("pump", "lamp", amps, surge={"times": 3})]
+        plan = plan_of(runs, loads, cases=[{"name": "Start", "surge": ["pump"]}], rulebook="cabin-nec")
+        found = findings(plan, "conductor.temperature-rating")
+        assert [one.value for one in found] == pytest.approx(told)
+
+
 def test_thick_conductors_are_taken_at_marked_terminals() -> None:
     """NEC 110.14(C)(1)(b): above 1 AWG, 75 degC: 1/0 AWG is 125 A at 60 degC and 150 A at 75 degC (Table 310.16)."""
     assert carried("150 A", size="1/0 AWG") == []

@@ -37,13 +37,13 @@ def starts(
         if not case.surge and case.share(load.name) > 0 and _unnamed(made := _with_start(case, load)) not in known
     ]
     tried = others[:MOST] if alone else []
-    solved += zip([case for _, case in tried], _solved(network, rulebook, [case for _, case in tried]), strict=True)
+    solved += zip([case for _, case in tried], solved_hot(network, rulebook, [case for _, case in tried]), strict=True)
     asked = {name for case, _ in cases for name in case.surge}
     left = dict.fromkeys(load.name for load, _ in others[len(tried) :] if alone or load.name not in asked)
     return Starts(tuple(solved), tuple(left))
 
 
-def _solved(network: Network, rulebook: Rulebook, cases: Sequence[Case]) -> list[Solution]:
+def solved_hot(network: Network, rulebook: Rulebook, cases: Sequence[Case]) -> list[Solution]:
     """Cases with hot conductors; those at equal temperatures together."""
     islands = operating.islands(network) if cases else None
     alike: dict[bytes, list[int]] = {}

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from farvolt.checks.drop import drop_class, line, loads_on, over_limit
+from farvolt.checks.drop import drop_class, exceptional, line, loads_on, over_limit
 from farvolt.checks.enlarge import Aim, Remedies
 from farvolt.checks.registry import apart, check
 from farvolt.context import Context
@@ -51,7 +51,10 @@ class _Branch:
 
 @check("drop.branch", title="Voltage drop from the last protection to each load", reads=("classes", "drop_basis"))
 def drop_on_branch(context: Context) -> Iterator[Finding]:
-    """The worst case of every load over its class's limit for the branch, where the rulebook has one."""
+    """The worst case of every load over its class's limit for the branch, where the rulebook has one.
+
+    Starts, and what stands in for lost batteries, are told of only where no other case is over.
+    """
     limits = [drop_class(context, load).branch_limit_percent for load in range(len(context.plan.loads))]
     if all(limit is None for limit in limits):
         return
@@ -68,8 +71,9 @@ def drop_on_branch(context: Context) -> Iterator[Finding]:
             if branch is not None and percent > floors[load] * (1 + 1e-9):
                 over.setdefault(load, []).append((percent, case, branch))
     remedies = Remedies(context)
-    for _, found in sorted(over.items()):
-        yield _finding(context, found, remedies)
+    for load, found in sorted(over.items()):
+        in_service = [one for one in found if not exceptional(context.cases[one[1]].solutions["basis"], load)]
+        yield _finding(context, in_service or found, remedies)
 
 
 def _most_V(solution: Solution) -> Floats:
@@ -127,6 +131,8 @@ def _finding(context: Context, found: list[tuple[float, int, _Branch]], remedies
         f'"{name}" loses {apart(percent, limit)} % of {number(nominal)} V from {where} on; '
         f'{number(limit)} % is the limit of the class "{rule.name}" for the branch'
     )
+    special = exceptional(solution, branch.load)
+    message += f"; {special}" if special else ""
     aim = Aim(
         branch.load, "basis", case, tuple(one for _, one, _ in found), (*branch.feed, *branch.back(solution)),
         branch.percent, limit, -100 / nominal, "%",

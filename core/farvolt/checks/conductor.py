@@ -4,6 +4,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from farvolt import interim, network
 from farvolt.ampacity import Ampacity, at_current
 from farvolt.checks.demand import Demands
 from farvolt.checks.registry import apart, cannot_be_made, check, run_finding
@@ -12,6 +13,7 @@ from farvolt.context import CaseStudy, Context, basis_text, label, larger_sizes
 from farvolt.network import Floats, return_size, strand
 from farvolt.plan import CHASSIS, Run
 from farvolt.results import Finding
+from farvolt.started import solved_hot
 from farvolt.temperatures import run_ambient_degC, run_ampacity
 from farvolt.units import number
 
@@ -126,7 +128,13 @@ def _ampacity_with(context: Context, run: Run, size: Size, case: int) -> float:
 
 
 def _drawn(context: Context, run: Run, size: Size, index: int, case: int) -> float:
-    solution = context.resolve({run.name: size}, case, "hot")
+    """The lasting current of a run with another size, in a case as it is after any start."""
+    one = context.cases[case].case
+    if one.surge:
+        changed = network.build(interim.with_sizes(context.plan, {run.name: size}), context.rulebook)
+        (solution,) = solved_hot(changed, context.rulebook, [one.model_copy(update={"surge": ()})])
+    else:
+        solution = context.resolve({run.name: size}, case, "hot")
     return float(solution.largest_run_amps[index]) if solution.state.solved else float("inf")
 
 

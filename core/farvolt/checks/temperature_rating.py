@@ -41,12 +41,14 @@ def temperature_rating(context: Context) -> Iterator[Finding]:
     reads=("terminals",),
 )  # fmt: skip
 def terminals(context: Context) -> Iterator[Finding]:
-    """Runs that carry more than the table's figure at the terminals' rating, in the case where they carry most."""
+    """Runs that carry more than the table's figure at the terminals' rating, in the case where they carry most; a start
+    is too short to warm a terminal."""
     rule = context.rulebook.terminals
     if rule is None:
         return  # a rulebook without one says in its own words how to judge terminals
-    solved = [one for one in context.cases if one.solutions["hot"].state.solved]
-    currents = np.array([one.solutions["hot"].largest_run_amps for one in solved])
+    every = zip(context.cases, context.lasting, strict=True)
+    solved = [(one, lasting.largest_run_amps) for one, lasting in every if lasting.state.solved]
+    currents = np.array([amps for _, amps in solved])
     for index, run in enumerate(context.plan.runs if solved else ()):
         if run.size is None:
             continue
@@ -54,7 +56,7 @@ def terminals(context: Context) -> Iterator[Finding]:
         worst = int(np.argmax(currents[:, index]))
         found = _beyond(context, run, size, float(currents[worst, index]), rule)
         if found is not None:
-            yield _terminals(run, float(currents[worst, index]), found, rule, solved[worst].name)
+            yield _terminals(run, float(currents[worst, index]), found, rule, solved[worst][0].name)
 
 
 def _beyond(
