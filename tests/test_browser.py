@@ -295,3 +295,29 @@ def test_undo_while_a_text_is_typed_is_the_texts_own(browser: Any, address: str)
     page.tab.keyboard.press("Control+z")
     page.tab.wait_for_timeout(1500)
     assert 'length = "9 m"' in page.download("Download plan").decode()
+
+
+ADDRESSES = (
+    "", "start", "drawing", "findings", "protection", "choice", "bank", "days", "schedule", "readings", "compare",
+)  # fmt: skip
+RULES = "axe.run({runOnly: ['wcag2a', 'wcag2aa', 'wcag21a', 'wcag21aa']})"
+
+
+@pytest.mark.parametrize(("scheme", "width"), [("light", 1024), ("dark", 768)])
+def test_every_page_has_labels_contrast_and_fits_its_width(browser: Any, address: str, scheme: str, width: int) -> None:
+    package = pytest.importorskip("axe_playwright_python", reason="needs the rules of accessibility that it brings")
+    rules = Path(package.__file__).with_name("axe.min.js").read_text()
+    tab = browser.new_context(viewport={"width": width, "height": 1000}, color_scheme=scheme).new_page()
+    found = []
+    for page in ADDRESSES:
+        tab.goto(f"{address}/{page}")
+        tab.locator(".st-key-undo button").first.wait_for(timeout=60_000)
+        tab.locator("[data-testid=stApp][data-test-script-state=notRunning]").wait_for(timeout=60_000)
+        tab.wait_for_timeout(1500)
+        tab.evaluate(rules)
+        broken = tab.evaluate(RULES)["violations"]
+        found += [(page, one["id"], node["target"], node["failureSummary"]) for one in broken for node in one["nodes"]]
+        beyond = tab.evaluate("document.documentElement.scrollWidth - document.documentElement.clientWidth")
+        assert (page, beyond) == (page, 0)
+        assert tab.locator("[data-testid=stException]").count() == 0
+    assert found == []

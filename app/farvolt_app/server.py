@@ -44,7 +44,7 @@ _THEME = {
     "theme.light.primaryColor": "#8a4b14",
     "theme.light.backgroundColor": "#ffffff",
     "theme.light.secondaryBackgroundColor": "#f4f1ec",
-    "theme.light.textColor": "#1f2328",
+    "theme.light.textColor": "#14171b",
     "theme.dark.primaryColor": "#e0924a",
     "theme.dark.backgroundColor": "#16191d",
     "theme.dark.secondaryBackgroundColor": "#22272d",
