@@ -173,8 +173,8 @@ def _together(tangents: Iterable[tuple[dict[int, float], float]]) -> tuple[dict[
 class Within:
     """What can occur in a choice that costs no more than a known one.
 
-    By linear programming: each option taken raises the relaxed optimum by its reduced cost at least, so that the reduced
-    costs of all that are taken sum to no more than what lies between that and the known cost.
+    By linear programming: each option taken raises the relaxed optimum by its reduced cost at least, so that the
+    reduced costs of all that are taken sum to no more than what lies between that and the known cost.
     """
 
     reduced: Floats

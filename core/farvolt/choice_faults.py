@@ -12,8 +12,8 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from farvolt.checks.far_end import thinnest
-from farvolt.checks.ways import exempt
+from farvolt.checks.far_end import opens_s, thinnest
+from farvolt.checks.ways import ampacity_A, exempt
 from farvolt.choice_limits import Row
 from farvolt.choice_options import Option, Options, ohm_of
 from farvolt.choice_verify import runs_on_way
@@ -109,15 +109,22 @@ class FaultRows:
             fixed_ohm -= sum(cable) * float(factors[run]) + sum(fixed)
             for place, one in zip(self.places[run], self.options.by_run[run], strict=True):
                 ohm[place] = sum(one.cable_ohm_20) * float(factors[run]) + sum(one.fixed_ohm)
-        yield from self._rows(far, volts, fixed_ohm, ohm)
+        most_ohm = fixed_ohm + sum(max(ohm[place] for place in self.places[run]) for run in way)
+        yield from self._rows(far, volts, fixed_ohm, ohm, volts / most_ohm)
 
-    def _rows(self, far: FarEnd, volts: float, fixed_ohm: float, ohm: dict[int, float]) -> Iterator[Row]:
+    def _rows(
+        self, far: FarEnd, volts: float, fixed_ohm: float, ohm: dict[int, float], least_A: float
+    ) -> Iterator[Row]:
+        """From above and from below; from above only where no fault current, `least_A` being the least, can be so low
+        that the cable carries it for good."""
         run, guard = far.stretch.run, far.stretch.guard
+        carried_A = ampacity_A(self.context, run) or 0.0
         if run not in self.options.by_run:
             stands = thinnest(self.context, self.context.plan.runs[run])
             window = self._window(guard.protection.kind, self._rating(far, guard.rating_A), stands)
             if window is not None:
-                yield Row(dict(ohm), volts / window[0] - fixed_ohm, text="protection.far-end")
+                if least_A > carried_A:
+                    yield Row(dict(ohm), volts / window[0] - fixed_ohm, text="protection.far-end")
                 yield Row({place: -value for place, value in ohm.items()}, fixed_ohm - volts / window[1],
                           text="protection.far-end")  # fmt: skip
             return
@@ -125,11 +132,13 @@ class FaultRows:
         for place, one in zip(self.places[run], self.options.by_run[run], strict=True):
             window = self._of_option(far, one)
             if window is None:
-                yield Row({place: 1.0}, 0.0, text="protection.far-end")
+                if least_A > one.limit_A:
+                    yield Row({place: 1.0}, 0.0, text="protection.far-end")
                 continue
             most[place] -= volts / window[0] - fixed_ohm
             least[place] += volts / window[1] - fixed_ohm
-        yield Row(most, 0.0, text="protection.far-end")
+        if least_A > max(one.limit_A for one in self.options.by_run[run]):
+            yield Row(most, 0.0, text="protection.far-end")
         yield Row(least, 0.0, text="protection.far-end")
 
     def _of_option(self, far: FarEnd, one: Option) -> tuple[float, float] | None:
@@ -154,7 +163,7 @@ class FaultRows:
 
 def _window(kind: ProtectionType, rating_A: float, stands: Withstand) -> tuple[float, float] | None:
     def safe(amps: float) -> bool:
-        return kind.opens_within_s(amps, rating_A) <= stands.reaches_limit_s(amps) * (1 + 1e-9)
+        return opens_s(kind, amps, rating_A) <= stands.reaches_limit_s(amps) * (1 + 1e-9)
 
     every = np.geomspace(rating_A, _LARGEST_A, _STEPS).tolist()
     good = [place for place, amps in enumerate(every) if safe(amps)]

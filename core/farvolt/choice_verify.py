@@ -12,10 +12,10 @@ from functools import cached_property
 from typing import cast
 
 from farvolt import checks
-from farvolt.checks.far_end import opening
+from farvolt.checks.far_end import opening, opens_s
 from farvolt.checks.let_through import near_faults
 from farvolt.choice_limits import Currents, Limit, Row, Rows, excess_V, limits
-from farvolt.choice_options import Option, Options
+from farvolt.choice_options import Option
 from farvolt.context import Context
 from farvolt.network import FEED, RETURN, Network
 from farvolt.results import Finding
@@ -121,7 +121,7 @@ class Cuts:
             way = [run for run in runs_on_way(context, far.stretch.source, found.run) if run != found.run]
             kind, larger = far.stretch.guard.protection.kind, _MORE * far.fault.amps
             # Whether a larger fault current does less harm: it opens the protection so much sooner.
-            sooner = kind.opens_within_s(larger, found.rating_A) * _MORE**2 < found.opens_s
+            sooner = opens_s(kind, larger, found.rating_A) * _MORE**2 < found.opens_s
             upstream = _thicker if sooner else _thinner
             better = [(found.run, _thicker), (far.stretch.guard.run, _less_rating), *((run, upstream) for run in way)]
             yield self._row("protection.far-end", better, verdict.options)

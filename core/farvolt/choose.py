@@ -15,6 +15,7 @@ import numpy as np
 from farvolt import interim, study
 from farvolt.choice_bounds import Sharper, Within, kept_only, raised
 from farvolt.choice_faults import FaultRows
+from farvolt.choice_least import at_least
 from farvolt.choice_limits import Currents, Limit, Row, Rows, limits
 from farvolt.choice_model import Answer, Model, links
 from farvolt.choice_options import (
@@ -102,6 +103,8 @@ class Problem:
     options: Options
     best: Context
     """Every run to choose at its thickest: the highest voltages and least currents there can be."""
+    least: Context
+    """The same with heaters as what they draw at the least (see `choice_least`)."""
     model: Model
     rows: Rows
     cuts: Cuts
@@ -121,7 +124,7 @@ class Problem:
 
     def bound_rows(self) -> list[Row]:
         """Limits that every passing choice keeps, at the least currents."""
-        return [row for row in (*self._rows(self.best, tree=True), *self.learnt) if row.proven]
+        return [row for row in (*self._rows(self.least, tree=True), *self.learnt) if row.proven]
 
     def holding_rows(self, context: Context) -> list[Row]:
         """All limits at the currents of a solved choice."""
@@ -176,7 +179,8 @@ def prepare(plan: Plan, rulebook: Rulebook, wishes: Wishes) -> Problem:
     thick = interim.with_sizes(plan, {plan.runs[index].name: _thickest(plan, index, sizes) for index in runs})
     places = seats(study.build_context(thick, rulebook), plan, runs, wishes)
     best = study.build_context(seated(thick, places), rulebook)
-    options = Builder(best, wishes, runs, sizes).options(plan, places)
+    least = at_least(best, wishes.drop_factor)
+    options = Builder(least, wishes, runs, sizes).options(plan, places)
     behind: dict[int, list[int]] = {}
     for index in runs:
         for guard in guards_to_choose(best, index, places):
@@ -184,7 +188,7 @@ def prepare(plan: Plan, rulebook: Rulebook, wishes: Wishes) -> Problem:
     fixed = frozenset(run.size.name for i, run in enumerate(plan.runs) if run.size is not None and i not in runs)
     rows = Rows(options)
     model = Model(options, links(options, behind), wishes.most_sizes, wishes.size_cost, fixed)
-    problem = Problem(plan, rulebook, wishes, runs, options, best, model, rows, Cuts(rows), frozenset())
+    problem = Problem(plan, rulebook, wishes, runs, options, best, least, model, rows, Cuts(rows), frozenset())
     if all(options.by_run.values()):
         problem.aside = _aside(problem)
         model.rows += FaultRows(best, options, rows.places, problem.aside, frozenset(places)).rows()
@@ -319,7 +323,7 @@ class _Search:
         starts = np.cumsum([0, *map(len, problem.options.by_run.values())])[:-1]
         within = Within.of(problem.model, rows, self.cost)
         for _ in range(_RAISES):
-            sharper = Sharper(problem.rows, problem.best, verdict.context, within.kept, problem.wishes.drop_factor)
+            sharper = Sharper(problem.rows, problem.least, verdict.context, within.kept, problem.wishes.drop_factor)
             every = list(sharper.every())
             higher = [*rows, *raised(every, within, starts)]
             within = Within.of(problem.model, higher, self.cost)
@@ -354,7 +358,7 @@ class _Search:
     def choice(self) -> Choice:
         """What the search came to."""
         problem, found = self.problem, self.picked is not None
-        every = limits(problem.best, problem.wishes.drop_factor)
+        every = limits(problem.least, problem.wishes.drop_factor)
         return Choice(
             problem.plan, problem.wishes, problem.options, problem.runs, self.picked, self.verdict,
             self.cost if found else None, min(self.bound, self.cost), all(one.proven for one in every),
