@@ -112,7 +112,7 @@ class Faults:
             amps = np.abs(currents)
             higher = amps > most * (1 + 1e-9)
             most, where = np.where(higher, amps, most), np.where(higher, place, where)
-        places = np.unique(where[where >= 0]).tolist()
+        places = sorted(set(where[where >= 0].tolist()))
         for place, found in zip(places, net.circuit.shorted([net.point(names[one]) for one in places]), strict=True):
             for number in np.flatnonzero(where == place):
                 _keep_larger(best, guards[number][0], net, found, float(most[number]), f'at "{names[place]}"')

@@ -105,7 +105,7 @@ def islands(network: Network) -> Islands:
         a.append(np.array([start]))
         b.append(np.array([end]))
     part = components(network.node_count, np.concatenate(a), np.concatenate(b))
-    nominal = {int(number): plan.plan.nominal.si for number in np.unique(part)}
+    nominal = {int(number): plan.plan.nominal.si for number in sorted(set(part.tolist()))}
     for index, node, _ in network.arrays:
         nominal[int(part[node])] = array_V(plan.sources[index])
     # Batteries first, so that a charger or converter, which states its system's nominal, has the last word.

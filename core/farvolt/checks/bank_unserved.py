@@ -3,17 +3,18 @@
 import datetime as dt
 import math
 from collections.abc import Iterator
+from typing import TYPE_CHECKING
 
-from farvolt import day_course, day_setup, days, energy
+from farvolt import energy
 from farvolt.bank_sizing import sizing
 from farvolt.checks.registry import check
 from farvolt.context import Context
-from farvolt.day_course import Period
-from farvolt.day_results import DaysStudy, LoadDays, days_study
-from farvolt.day_setup import Ready, Start
 from farvolt.plan import Battery
 from farvolt.results import Finding
 from farvolt.units import number
+
+if TYPE_CHECKING:
+    from farvolt.day_results import DaysStudy, LoadDays
 
 _MOST_DAYS = 14
 _MOST_RUNS = 400
@@ -40,24 +41,28 @@ def unserved(context: Context) -> Iterator[Finding]:
         yield _empty(found, asked)
 
 
-def _alone(context: Context, asked: float) -> DaysStudy:
+def _alone(context: Context, asked: float) -> "DaysStudy":
     """The days of autonomy on the design day, in hours, from a full bank."""
+    # Many modules that other plans do without.
+    from farvolt import day_course, day_setup, days
+    from farvolt.day_results import days_study
+
     plan = context.plan
     sized = sizing(context.network, energy.budgets(context.network))
     day = sized.day if sized is not None and sized.day in {one.name for one in plan.days} else None
-    ready: Ready = day_setup.of_network(context.network, context.rulebook)
+    ready = day_setup.of_network(context.network, context.rulebook)
     # Any date serves: the type of day is given, and no sun shines.
-    period = Period(dt.date(2027, 1, 1), math.ceil(asked))
+    period = day_course.Period(dt.date(2027, 1, 1), math.ceil(asked))
     course = day_course.course(plan, period, day=day, charging=False)
     hours = max(round(asked * 24), 1)
-    return days_study(days.simulate(ready, course.first(hours), Start(1.0, aged=True)))
+    return days_study(days.simulate(ready, course.first(hours), day_setup.Start(1.0, aged=True)))
 
 
 _BASIS = "bank.autonomy of the plan, hour by hour on its cables, from full, at the end of the bank's life"
 _LOOK = "look at it with: farvolt days PLAN"
 
 
-def _cuts_out(context: Context, found: DaysStudy, one: LoadDays, asked: float) -> Finding:
+def _cuts_out(context: Context, found: "DaysStudy", one: "LoadDays", asked: float) -> Finding:
     index = next(place for place, load in enumerate(context.plan.loads) if load.name == one.load)
     first = int((found.outcome.off[:, index] * found.outcome.wanted_W[:, index] > 0).argmax())
     charge = found.outcome.sums.charge[max(first - 1, 0)].max()
@@ -71,7 +76,7 @@ def _cuts_out(context: Context, found: DaysStudy, one: LoadDays, asked: float) -
     )  # fmt: skip
 
 
-def _empty(found: DaysStudy, asked: float) -> Finding:
+def _empty(found: "DaysStudy", asked: float) -> Finding:
     bank = max(found.banks, key=lambda one: one.empty_hours)
     return Finding(
         "bank.unserved", "warn", bank.bank, "source", None, found.unserved_Wh, 0.0, "Wh",

@@ -85,7 +85,7 @@ def _most_V(solution: Solution) -> Floats:
     on = solution.supply.source_on & np.isfinite(volts[c.source_a]) & np.isfinite(volts[c.source_b])
     found = np.full(len(solution.network.plan.loads), np.nan)
     loads = group[c.load_a[: len(found)]]
-    for part in np.unique(group[c.source_a[on]]):
+    for part in sorted(set(group[c.source_a[on]].tolist())):
         mine = on & (group[c.source_a] == part)
         found[loads == part] = volts[c.source_a[mine]].max() - volts[c.source_b[mine]].min()
     return found

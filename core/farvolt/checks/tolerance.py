@@ -1,14 +1,16 @@
 """Voltages within the tolerances that a plan states, where bounds on them are proven."""
 
 from collections.abc import Iterator
+from typing import TYPE_CHECKING
 
 from farvolt.checks.registry import apart, check
 from farvolt.context import CaseStudy, Context
-from farvolt.proof import proof
 from farvolt.results import Finding
 from farvolt.solve import State
-from farvolt.tolerances import Spread, loads_on, spread
 from farvolt.units import number
+
+if TYPE_CHECKING:
+    from farvolt.tolerances import Spread
 
 _BASIS = "the load's own range and the tolerances, as the plan states them; bounds proven for a tree fed by one source"
 
@@ -18,6 +20,8 @@ def tolerance(context: Context) -> Iterator[Finding]:
     """Loads that pass as planned but may leave their range within the tolerances that the plan states."""
     if "tolerances" not in context.plan.model_fields_set:
         return
+    from farvolt.proof import proof  # what most plans do not need takes a while to import
+
     sampled = []
     for one in context.cases:
         found = one.solutions["plan"]
@@ -33,6 +37,8 @@ def tolerance(context: Context) -> Iterator[Finding]:
 
 def _at_the_ends(context: Context, one: CaseStudy) -> Iterator[Finding]:
     """What breaks a load's range with all tolerances at one end, and does not as planned."""
+    from farvolt.tolerances import loads_on, spread
+
     within = spread(context, one)
     low, high = within.corner(within.lowers), within.corner(within.raises)
     if not low.solved:
@@ -45,7 +51,7 @@ def _at_the_ends(context: Context, one: CaseStudy) -> Iterator[Finding]:
 
 
 def _beyond(
-    context: Context, one: CaseStudy, within: Spread, load: int, ends: tuple[State, State]
+    context: Context, one: CaseStudy, within: "Spread", load: int, ends: tuple[State, State]
 ) -> Iterator[Finding]:
     entry = context.plan.loads[load]
     low_V, high_V = (float(within.load_volts(state)[load]) for state in ends)
