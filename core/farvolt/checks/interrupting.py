@@ -52,6 +52,7 @@ class Interrupts:
 
     @property
     def name(self) -> str:
+        """How a text names it."""
         pole = " in the return" if self.one.pole == "return" else ""
         return f"its {self.one.rating} {self.one.type}{pole}"
 
