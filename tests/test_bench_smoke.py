@@ -2,6 +2,8 @@
 
 import shutil
 
+import choice
+import choice_against_all
 import cold_start
 import days as days_of_the_van
 import file_to_findings
@@ -54,3 +56,13 @@ def test_days() -> None:
     for row in days_of_the_van.rows(1, 1).values():
         assert row["uncertified"] == 0
         assert row["energy_error"] < 1e-9
+
+
+def test_choice() -> None:
+    row = choice.measure(20, 1, {"gap": 1e-3})
+    assert row["kg"] <= row["run_by_run_kg"] * (1 + 1e-6)
+    assert row["gap_percent"] <= 0.1 + 1e-6
+
+
+def test_choice_against_all() -> None:
+    assert choice_against_all.judged(1) in ("same", "none passes")

@@ -116,7 +116,10 @@ class Cuts:
         rule = context.rulebook.protection.fault_damage
         for far in context.faults.far_ends:
             found = opening(context, far, far.stretch.guard.protection)
+            seat = context.plan.runs[far.stretch.guard.run].name
             if found is None or found.in_time or not found.damaging or rule is None or rule.severity != "fail":
+                continue
+            if ("protection.far-end", seat) in verdict.aside:
                 continue
             way = [run for run in runs_on_way(context, far.stretch.source, found.run) if run != found.run]
             kind, larger = far.stretch.guard.protection.kind, _MORE * far.fault.amps
@@ -129,7 +132,9 @@ class Cuts:
     def _near(self, verdict: Verdict) -> Iterator[Row | None]:
         context = verdict.context
         for one in near_faults(context):
-            if one.holds(one.guard.protection) or one.estimated:
+            seat = context.plan.runs[one.guard.run].name
+            out = one.estimated or ("protection.let-through", seat) in verdict.aside
+            if out or one.holds(one.guard.protection):
                 continue
             before = [run for run in self._before(context, one.guard.run) if run != one.run]
             better = [(one.run, _thicker), (one.guard.run, _less_rating), *((run, _thinner) for run in before)]
