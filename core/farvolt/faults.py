@@ -187,13 +187,15 @@ def _far_ends(net: FaultNetwork, wanted: dict[int, Stretch]) -> Iterator[tuple[i
             groups.setdefault(found[0], []).append(number)
     for key, short in zip(shorts, net.circuit.shorted([place for place, _ in shorts.values()]), strict=True):
         returns = net.returns_A(short)
+        faults: dict[float, Fault] = {}  # most protections on the way to a short carry all of it
         for number in groups[key]:
             stretch = wanted[number]
             amps = net.feed_A(short, *_seat(stretch))
             if amps >= TRACE_A:
-                fault = _fault(net, short, amps, shorts[key][1])
+                if amps not in faults:
+                    faults[amps] = _fault(net, short, amps, shorts[key][1])
                 in_run = net.feed_A(short, stretch.run, stretch.end) if stretch.run >= 0 else amps
-                yield number, FarEnd(stretch, fault, in_run, returns)
+                yield number, FarEnd(stretch, faults[amps], in_run, returns)
 
 
 def _far_place(net: FaultNetwork, stretch: Stretch) -> tuple[Hashable, Place, str] | None:
