@@ -11,8 +11,10 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from farvolt import shorts
+from farvolt.fault_network import coldest
 from farvolt.faults import Fault, Faults
 from farvolt.network import build
+from farvolt.operating import islands
 from farvolt.plan import Plan
 from farvolt.rulebook import load
 from farvolt.spurs import spurs
@@ -121,6 +123,18 @@ def test_spurs_are_what_hangs_by_single_conductors() -> None:
     assert found.way(7) == [7, 5, 3]
     assert found.beyond(np.array([4, 5, 6, 7]), 7).tolist() == [True, True, False, True]
     assert [found.holds(end, 6) for end in (3, 5, 6, 7)] == [True, True, True, False]
+
+
+@settings(max_examples=30, deadline=None)
+@given(SEEDS)
+def test_currents_of_some_branches_are_those_of_all(seed: int) -> None:
+    plan = plan_of(random_draft(random.Random(seed), ANYTHING))
+    built = build(plan, load(plan.plan.rulebook))
+    for net in coldest(built, islands(built)):
+        every = np.arange(len(net.circuit.a))
+        for found in net.circuit.shorted([net.point(name) for name in plan.point_names]):
+            assert found.in_branches(every) == pytest.approx(found.branch_A, rel=1e-12, abs=1e-12)
+            assert [found.in_branch(one) for one in every] == pytest.approx(found.branch_A, rel=1e-12, abs=1e-12)
 
 
 @settings(max_examples=60, deadline=None)

@@ -45,7 +45,8 @@ class FaultNetwork:
         keys = zip(self.run[cables].tolist(), self.pole[cables].tolist(), strict=True)
         self._branches = dict(zip(keys, cables.tolist(), strict=True))
         runs = network.plan.runs
-        self._returns = [(run, place) for (run, _), place in self._branches.items() if runs[run].conducts == "return"]
+        alone = [(run, place) for (run, _), place in self._branches.items() if runs[run].conducts == "return"]
+        self._returns = np.array(alone, dtype=np.int64).reshape(-1, 2)
 
     @property
     def guarded(self) -> list[tuple[tuple[int, int], int]]:
@@ -117,8 +118,10 @@ class FaultNetwork:
 
     def returns_A(self, found: Shorted) -> tuple[tuple[int, float], ...]:
         """The runs with a return conductor only that carry a fault's current, each with what it carries."""
-        amps = ((run, abs(found.in_branch(branch))) for run, branch in self._returns)
-        return tuple((run, one) for run, one in amps if one >= TRACE_A)
+        runs, branches = self._returns.T
+        amps = np.abs(found.in_branches(branches)) if len(runs) else np.zeros(0)
+        some = amps >= TRACE_A
+        return tuple(zip(runs[some].tolist(), amps[some].tolist(), strict=True))
 
 
 def coldest(network: Network, islands: Islands) -> list[FaultNetwork]:

@@ -133,6 +133,18 @@ class Shorted:
         times = c.spurs.holds(child, c.seat(self.place.feed)) - c.spurs.holds(child, c.seat(self.place.back))
         return times * (self.amps if c.b[branch] == child else -self.amps)
 
+    def in_branches(self, branches: Ints) -> Floats:
+        """Currents in some branches, as `branch_A` has them."""
+        c, found = self.circuit, np.zeros(len(branches))
+        hanging = c.spurs.child[branches] >= 0
+        rest, spurs_too = branches[~hanging], branches[hanging]
+        volts = self.volts[c.index[c.a[rest]]] - self.volts[c.index[c.b[rest]]]
+        found[~hanging] = c.siemens[rest] * volts
+        feed, back = (c.spurs.beyond(spurs_too, c.seat(spot)) for spot in (self.place.feed, self.place.back))
+        sign = np.where(c.b[spurs_too] == c.spurs.child[spurs_too], 1.0, -1.0)
+        found[hanging] = self.amps * sign * (feed.astype(float) - back)
+        return found
+
     def parts_A(self, spot: Spot) -> tuple[float, float]:
         """Current that arrives at a spot within a branch from its `node` and from its `other` end.
 
