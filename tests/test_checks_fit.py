@@ -5,8 +5,8 @@ from typing import Any
 
 import pytest
 
-from farvolt.lugs import known_stud
 from farvolt.conductors import parse_size
+from farvolt.lugs import known_stud
 from farvolt.plan import Plan
 from farvolt.tables import read
 from farvolt_data import ROOT

@@ -68,7 +68,8 @@ def plan(tmp_path: Path) -> Path:
 
 
 def days(plan: Path, *more: str) -> Result:
-    return CliRunner().invoke(main, ["days", str(plan), "--from", "2027-06-10", "--days", "2", *more])
+    wide = CliRunner(env={"COLUMNS": "160"})
+    return wide.invoke(main, ["days", str(plan), "--from", "2027-06-10", "--days", "2", *more])
 
 
 def study(**changes: object) -> DaysStudy:

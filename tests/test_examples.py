@@ -23,7 +23,7 @@ FAILS = {
     },
 }
 WARNS = {
-    VAN: {("drop.load", "fridge")},
+    VAN: {("drop.load", "fridge"), ("protection.far-end", "bank main")},
     CABIN: {
         *((rule, load) for rule in ("drop.load", "drop.branch") for load in ("east camera", "east housing heater")),
         ("protection.far-end", "east mast feed"),

@@ -38,9 +38,9 @@ def test_a_van_of_five_appliances_is_complete_and_fails_nothing() -> None:
 
 
 def test_the_fuse_of_a_charger_carries_what_it_gives_through_the_cables_chosen() -> None:
-    """A 400 W controller beside larger chargers gives less through thin cables than through those that are chosen."""
+    """A 350 W controller beside larger chargers gives less through thin cables than through those that are chosen."""
     answers = replace(
-        VAN, rulebook="small-craft-us", loads=VAN.loads[:2], short_circuit="3000 A", alternator="60 A", solar="400 W",
+        VAN, rulebook="small-craft-us", loads=VAN.loads[:2], short_circuit="3000 A", alternator="60 A", solar="350 W",
         bank_distance="1 m",
     )  # fmt: skip
     assert failures(first_plan(answers)) == []

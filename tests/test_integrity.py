@@ -70,6 +70,7 @@ def test_a_case_starts_what_states_a_surge(loads: Any, surge: Any, problem: Any,
     assert len(found) == (problem is not None)
     for fault in found:
         assert (fault.place, fault.field) == ('cases "start"', "surge")
+        assert problem is not None
         assert problem in fault.problem
         assert accepted in fault.accepted
 

@@ -138,11 +138,11 @@ def test_a_name_is_only_text_in_the_chart() -> None:
 def test_the_command_lists_protection_and_draws_one(tmp_path: Path) -> None:
     plan, drawn = tmp_path / "van.toml", tmp_path / "curve.svg"
     plan.write_text(examples.text("instrument-repair-van"))
-    done = CliRunner().invoke(cli.main, ["protection", str(plan), "--run", "fridge feed", "--output", str(drawn)])
+    done = CliRunner(env={"COLUMNS": "160"}).invoke(cli.main, ["protection", str(plan), "--run", "fridge feed", "--output", str(drawn)])
     assert done.exit_code == 0, done.output
     assert "Ratings that fail no check" in done.output
     assert drawn.read_text().startswith("<svg")
-    every = CliRunner().invoke(cli.main, ["protection", str(plan)])
+    every = CliRunner(env={"COLUMNS": "160"}).invoke(cli.main, ["protection", str(plan)])
     assert "cartridge" in every.output
 
 
@@ -157,6 +157,6 @@ def test_the_command_lists_protection_and_draws_one(tmp_path: Path) -> None:
 def test_what_cannot_be_drawn_is_said(arguments: list[str], words: str, tmp_path: Path) -> None:
     plan = tmp_path / "van.toml"
     plan.write_text(examples.text("instrument-repair-van"))
-    done = CliRunner().invoke(cli.main, ["protection", str(plan), *arguments])
+    done = CliRunner(env={"COLUMNS": "160"}).invoke(cli.main, ["protection", str(plan), *arguments])
     assert done.exit_code == 2
     assert words in done.output

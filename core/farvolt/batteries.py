@@ -154,8 +154,8 @@ def model(
     """One string of the battery at a state of charge 0..1 and a temperature; `emf_V` overrides its curve.
 
     A stated resistance is that of a new battery at 25 °C, as in data sheets; a stated EMF is taken as it stands. Cases
-    state the charge of a moment and take the resistance as stated; over days, where the charge is worked out, it
-    `rises_at_low_charge`.
+    state the charge of a moment and take the resistance as stated; over days, where the charge is worked out, and for
+    the least fault current it `rises_at_low_charge`.
     """
     nominal_V = battery.nominal.si if battery.nominal else nominal_V
     stated = emf_V if emf_V is not None else battery.emf.si if battery.emf else None

@@ -97,7 +97,7 @@ def _battery(network: Network, index: int, battery: Battery, nominal_V: float, e
     count = 1 if linked(battery) else battery.strings
     ohm = string.resistance_ohm / count
     each = f" ({count} strings)" if count > 1 else " (each string)" if linked(battery) else ""
-    aged = f", {number(string.times)} times for cold and age" if string.times != 1 else ""
+    aged = f", {number(string.times)} times for cold, age and low charge" if string.times != 1 else ""
     text = (
         f'"{battery.name}"{each}: {number(string.emf_V, 4)} V ({string.emf_source}) behind '
         f"{number(1000 * ohm, 4)} mohm ({string.resistance_source}{aged})"
@@ -133,7 +133,7 @@ def _least(plan: Plan, battery: Battery, nominal_V: float) -> batteries.BatteryM
     low = low_charge(battery)
     charges = [low.si if low is not None else battery.charge.si]
     charges += [state.charge.si for state in _states(plan, battery.name) if state.charge is not None]
-    least = batteries.model(battery, min(charges), nominal_V, degC=cold, aged=True)
+    least = batteries.model(battery, min(charges), nominal_V, degC=cold, aged=True, rises_at_low_charge=True)
     stated = [state.emf.si for state in _states(plan, battery.name) if state.emf is not None]
     emf_V, ohm = min([least.emf_V, *stated]), least.resistance_ohm
     if battery.resistance is None and battery.short_circuit is not None:
