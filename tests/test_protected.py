@@ -138,7 +138,8 @@ def test_a_name_is_only_text_in_the_chart() -> None:
 def test_the_command_lists_protection_and_draws_one(tmp_path: Path) -> None:
     plan, drawn = tmp_path / "van.toml", tmp_path / "curve.svg"
     plan.write_text(examples.text("instrument-repair-van"))
-    done = CliRunner(env={"COLUMNS": "160"}).invoke(cli.main, ["protection", str(plan), "--run", "fridge feed", "--output", str(drawn)])
+    wide = CliRunner(env={"COLUMNS": "160"})
+    done = wide.invoke(cli.main, ["protection", str(plan), "--run", "fridge feed", "--output", str(drawn)])
     assert done.exit_code == 0, done.output
     assert "Ratings that fail no check" in done.output
     assert drawn.read_text().startswith("<svg")
